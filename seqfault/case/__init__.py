@@ -1,0 +1,1 @@
+"""Text to validated records: quantities, the tables of the case file, scenarios."""

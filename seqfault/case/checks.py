@@ -1,0 +1,105 @@
+"""Rules across records: names, the whole file, then record by record."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from seqfault.case.branches import check_line, check_transformer
+from seqfault.case.draft import Draft
+from seqfault.case.earthing import check_neutral, star_point_named, star_points
+from seqfault.case.findings import SINGULAR, Findings
+from seqfault.case.quantities import parse_quantity
+from seqfault.case.records import TABLES
+from seqfault.case.sources import check_generator, check_infeed, check_motor
+from seqfault.case.subject import Site, Subject, real
+from seqfault.case.units import normalised
+from seqfault.case.wording import quoted
+from seqfault.errors import QuantityError
+
+RESERVED = ("base", "all")
+_PREFAULT = (0.8, 1.2)
+
+
+def check(draft: Draft, findings: Findings) -> None:
+    """Tell ``findings`` every rule that the records break, and what looks doubtful."""
+    case, site = draft.case, Site(draft, findings)
+    _names(draft, findings)
+    _whole(draft, site)
+    for name, bus in case.buses.items():
+        Subject(site, "buses", name).positive({"voltage": bus.voltage})
+    for name, infeed in case.infeeds.items():
+        check_infeed(Subject(site, "infeeds", name), infeed)
+    for name, generator in case.generators.items():
+        check_generator(Subject(site, "generators", name), generator)
+    for name, motor in case.motors.items():
+        check_motor(Subject(site, "motors", name), motor)
+    for name, line in case.lines.items():
+        check_line(Subject(site, "lines", name), line)
+    for name, unit in case.transformers.items():
+        check_transformer(Subject(site, "transformers", name), unit)
+    users = star_points(case)
+    for name, neutral in case.neutrals.items():
+        check_neutral(Subject(site, "neutrals", name), neutral, users.get(name, ()))
+
+
+def _names(draft: Draft, findings: Findings) -> None:
+    for table in TABLES:
+        records = draft.tree.get(table)
+        for name in records if isinstance(records, Mapping) else ():
+            problem = name_problem(name)
+            owner = draft.names.get(name, table)
+            if problem is None and owner != table:
+                article = "an" if SINGULAR[owner][0] in "aeiou" else "a"
+                problem = (
+                    f"{article} {SINGULAR[owner]} has this name already; names are unique over all tables"
+                )
+            if problem is None and table == "neutrals":
+                problem = _neutral_name(draft, name)
+            if problem is not None:
+                findings.error(table, name, "", problem)
+
+
+def name_problem(name: str) -> str | None:
+    """Return what is wrong with the name of a record or a scenario, or None."""
+    if not name.strip():
+        return "a name cannot be empty"
+    if "@" in name:
+        return "a name cannot hold @, which joins an element to its bus in the name of a place"
+    if name in RESERVED:
+        return f"the name is reserved; {' and '.join(RESERVED)} are words of the program"
+    if (not name[0].isalpha() or name[0] == "j") and _reads_as_quantity(name):
+        return f"this name reads as a quantity; add a word, as in {quoted(f'at {name}')}"
+    try:
+        name.encode()
+    except UnicodeEncodeError:
+        return "the name holds half a character"
+    return None
+
+
+def _reads_as_quantity(name: str) -> bool:
+    try:
+        parse_quantity(name)
+    except QuantityError:
+        return False
+    return True
+
+
+def _neutral_name(draft: Draft, name: str) -> str | None:
+    if name in ("solid", "isolated"):
+        return f"the name is reserved; neutral = {quoted(name)} has a meaning of its own"
+    return star_point_named(draft.case, name)
+
+
+def _whole(draft: Draft, site: Site) -> None:
+    case, findings = draft.case, site.findings
+    if "buses" not in draft.names.values():
+        findings.error("", "", "", 'there is no bus; write one below [buses], as in main = "11 kV"')
+    sources = [*case.infeeds.values(), *case.generators.values()]
+    broken = any(draft.names[name] in ("infeeds", "generators") for name in draft.broken)
+    if not broken and all(source.out for source in sources):
+        findings.warn("", "", "", "no infeed or generator is in service, so no current can flow")
+    prefault, subject = case.prefault.voltage, Subject(site, "prefault", "")
+    voltage = real(prefault)
+    if voltage is not None and subject.positive({"voltage": prefault}):
+        text = f"{normalised(prefault.text)} is outside the usual 0.8 to 1.2 pu"
+        subject.usual("voltage", voltage, _PREFAULT, text, 100)

@@ -1,0 +1,192 @@
+"""The raw tree of a file to records, before any rule across records has been applied."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from seqfault.case.conversion import (
+    STRAY,
+    TOP_LEVEL,
+    convert_record,
+    fields_of,
+    proper_text,
+)
+from seqfault.case.findings import Findings
+from seqfault.case.quantities import Dimensions, missing_unit, read_quantity, wanted
+from seqfault.case.records import TABLES, Bus, Case, Prefault, Record
+from seqfault.case.synonyms import LATER_TABLES, table_for
+from seqfault.case.wording import quoted, shown
+from seqfault.errors import FieldError
+
+_BASE_POWER = 100e6  # VA, where the file states none
+_KEYS = (*TOP_LEVEL, "prefault", *TABLES, "scenarios")
+
+
+@dataclass(frozen=True, slots=True)
+class Draft:
+    """What could be read: a case without the ``broken`` records, and the tree it came from.
+
+    ``names`` gives every name of the file its table, broken records included.
+    """
+
+    case: Case
+    tree: Mapping[str, Any]
+    names: Mapping[str, str]
+    broken: frozenset[str]
+
+
+def draft(tree: Mapping[str, Any], findings: Findings, source: str, earlier: Draft | None = None) -> Draft:
+    """Return the records of ``tree``; what cannot be read is told to ``findings``.
+
+    Records whose raw table is the very same object as in ``earlier`` are taken over from it.
+    """
+    for key in tree:
+        if key not in _KEYS:
+            findings.error("", "", "", _unknown_key(str(key)))
+    names: dict[str, str] = {}
+    broken: set[str] = set()
+    strays: set[str] = set()
+    tables: dict[str, Any] = {}
+    for table, kind in TABLES.items():
+        raw = tree.get(table)
+        records: dict[str, Record] = {}
+        tables[table] = records
+        before = earlier.tree.get(table) if earlier else None
+        before = before if isinstance(before, Mapping) else {}
+        known: Mapping[str, Record] = getattr(earlier.case, table) if earlier else {}
+        for name, value in _entries(table, raw, findings).items():
+            if name in TOP_LEVEL and not isinstance(value, Mapping):
+                findings.error("", "", f"[{table}], {name}", STRAY)
+                strays.add(name)
+                continue
+            if kind is not Bus and name in fields_of(kind) and not isinstance(value, Mapping):
+                findings.error("", "", f"[{table}], {name}", _nameless(table))
+                break
+            names.setdefault(name, table)
+            record = known.get(name) if before.get(name) is value else None
+            if record is None:
+                record = _record(kind, table, name, value, findings, strays)
+            if record is None:
+                broken.add(name)
+            else:
+                records[name] = record
+    prefault = _prefault(tree, findings, strays)
+    case = Case(
+        title=_title(tree, findings),
+        frequency=_frequency(tree, findings, strays),
+        base_power=_positive(tree, "base_power", "power", findings) or _BASE_POWER,
+        prefault=prefault,
+        scenarios=tuple(_entries("scenarios", tree.get("scenarios"), findings)),
+        tree=tree,
+        source=source,
+        **tables,
+    )
+    return Draft(case, tree, names, frozenset(broken))
+
+
+def _record(
+    kind: type[Record], table: str, name: str, value: object, findings: Findings, strays: set[str]
+) -> Record | None:
+    def complain(field: str, problem: str) -> None:
+        if problem is STRAY:
+            strays.add(field)
+        findings.error(table, name, field, problem)
+
+    if kind is Bus:
+        if isinstance(value, (str, int, float)):
+            value = {"voltage": value}
+        elif not isinstance(value, Mapping):
+            complain("", f'{shown(value)}: the voltage is wanted, as in "11 kV"')
+            return None
+    return convert_record(kind, value, complain, table, name)
+
+
+def _entries(table: str, raw: object, findings: Findings) -> Mapping[str, Any]:
+    """Return the named entries of a table; none, after a complaint, when it is no table."""
+    if raw is None:
+        return {}
+    if isinstance(raw, Mapping):
+        return {str(name): value for name, value in raw.items() if value is not None}
+    problem = f"{shown(raw)}: a table keyed by name is wanted, as in [{table}.NAME]"
+    if isinstance(raw, list):
+        problem = f"records are keyed by name; write [{table}.NAME], not [[{table}]]"
+    findings.error("", "", table, problem)
+    return {}
+
+
+def _nameless(table: str) -> str:
+    return f"this is a field of a record, and the record has no name; write [{table}.NAME] above it"
+
+
+def _unknown_key(key: str) -> str:
+    if key in LATER_TABLES:
+        return f"the table {quoted(key)} is not read by this version"
+    meant = table_for(key, _KEYS)
+    if meant in TOP_LEVEL:
+        return f"there is no key {quoted(key)}; write {meant}"
+    if meant is not None:
+        return f"there is no table {quoted(key)}; write {meant}"
+    return f"there is no key or table {quoted(key)}; there are {', '.join(_KEYS)}"
+
+
+def _title(tree: Mapping[str, Any], findings: Findings) -> str:
+    title = tree.get("title", "")
+    if not isinstance(title, str):
+        findings.error("", "", "title", f"{shown(title)}: a text in quotes is wanted")
+        return ""
+    try:
+        return proper_text(title)
+    except FieldError as error:
+        findings.error("", "", "title", str(error))
+        return ""
+
+
+def _frequency(tree: Mapping[str, Any], findings: Findings, strays: set[str]) -> float:
+    if tree.get("frequency") is None:
+        if "frequency" not in strays:
+            findings.error(
+                "",
+                "",
+                "frequency",
+                'this is missing; write frequency = "50 Hz" or "60 Hz" above the first [table]',
+            )
+        return 0.0
+    return _positive(tree, "frequency", "frequency", findings) or 0.0
+
+
+def _positive(tree: Mapping[str, Any], key: str, dimension: str, findings: Findings) -> float | None:
+    """Return a top-level quantity in SI units; None when not stated or wrong."""
+    value, dimensions = tree.get(key), Dimensions(dimension)
+    if value is None:
+        return None
+    problem = None
+    if isinstance(value, str):
+        try:
+            quantity = read_quantity(value, dimensions)
+        except FieldError as error:
+            problem = str(error)
+        else:
+            if not isinstance(quantity.value, complex) and quantity.value > 0:
+                return quantity.value
+            problem = f"{quoted(value, 80)}: this must be more than zero"
+    elif isinstance(value, (int, float)) and not isinstance(value, bool):
+        problem = f"{shown(value)}: {missing_unit(shown(value), (dimension,))}"
+    else:
+        problem = f"{shown(value)}: {wanted(dimensions)}"
+    findings.error("", "", key, problem)
+    return None
+
+
+def _prefault(tree: Mapping[str, Any], findings: Findings, strays: set[str]) -> Prefault:
+    raw = tree.get("prefault")
+    if raw is None:
+        return Prefault()
+
+    def complain(field: str, problem: str) -> None:
+        if problem is STRAY:
+            strays.add(field)
+        findings.error("prefault", "", field, problem)
+
+    return convert_record(Prefault, raw, complain, "prefault") or Prefault()

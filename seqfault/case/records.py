@@ -1,0 +1,203 @@
+"""The tables of the case file, one frozen struct each, and the case they make.
+
+A field holds what stands in the file: a quantity with its unit, a name, a number. Which dimensions
+a quantity may have is part of its type (``Dimensions``), so the reader, the schema and the messages
+all speak from this page. Nothing is converted to per unit here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from typing import Annotated, Any, ClassVar, Literal
+
+import msgspec
+
+from seqfault.case.quantities import Dimensions, Quantity, Refers
+
+Voltage = Annotated[Quantity, Dimensions("voltage")]
+Power = Annotated[Quantity, Dimensions("power")]
+Current = Annotated[Quantity, Dimensions("current")]
+CurrentOrPower = Annotated[Quantity, Dimensions("current", "power")]
+Ratio = Annotated[Quantity, Dimensions("ratio")]
+Resistance = Annotated[Quantity, Dimensions("impedance")]
+Ohms = Annotated[Quantity, Dimensions("impedance", complex=True)]
+OhmsOrRatio = Annotated[Quantity, Dimensions("impedance", "ratio", complex=True)]
+RealOhmsOrRatio = Annotated[Quantity, Dimensions("impedance", "ratio")]
+LineOhms = Annotated[Quantity, Dimensions("impedance/length", "impedance", complex=True)]
+LineFarads = Annotated[Quantity, Dimensions("capacitance/length", "capacitance")]
+LineSiemens = Annotated[Quantity, Dimensions("admittance/length", "admittance")]
+Farads = Annotated[Quantity, Dimensions("capacitance")]
+Length = Annotated[Quantity, Dimensions("length")]
+Frequency = Annotated[Quantity, Dimensions("frequency")]
+Duration = Annotated[Quantity, Dimensions("time")]
+Speed = Annotated[Quantity, Dimensions("speed")]
+Temperature = Annotated[Quantity, Dimensions("temperature")]
+BusName = Annotated[str, Refers("buses")]
+StarPoint = Annotated[str, Refers("neutrals", "solid", "isolated")]
+MagneticCircuit = Literal["three-limb", "five-limb", "shell-form", "three-single-phase"]
+
+
+class Record(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """What every record may carry."""
+
+    note: str = ""
+    out: bool = False  # normally out of service
+
+
+class Bus(Record, frozen=True, kw_only=True):
+    """A node of the three-phase network; ``voltage`` is nominal, line to line."""
+
+    voltage: Voltage
+
+
+class Infeed(Record, frozen=True, kw_only=True):
+    """The utility, or any network, seen from its connection point alone."""
+
+    bus: BusName
+    three_phase: CurrentOrPower | None = None
+    x_over_r: float | None = None
+    z1: Ohms | None = None
+    z2: Ohms | None = None
+    line_ground: Current | None = None
+    x0_over_r0: float | None = None
+    z0: Ohms | Literal["open"] | None = None
+
+
+class Generator(Record, frozen=True, kw_only=True):
+    """A synchronous machine, motors included, behind its star point."""
+
+    bus: BusName
+    rating: Power
+    voltage: Voltage | None = None
+    subtransient: OhmsOrRatio
+    transient: OhmsOrRatio | None = None
+    synchronous: OhmsOrRatio | None = None
+    x2: OhmsOrRatio | None = None
+    x0: OhmsOrRatio | None = None
+    resistance: RealOhmsOrRatio | None = None
+    neutral: StarPoint | None = None
+    c0: Farads | None = None
+
+
+class Motor(Record, frozen=True, kw_only=True):
+    """An induction motor, or ``count`` of them alike."""
+
+    bus: BusName
+    rating: Power | None = None
+    shaft_power: Power | None = None
+    efficiency: float | Ratio | None = None
+    power_factor: float | Ratio | None = None
+    voltage: Voltage | None = None
+    locked_rotor: float
+    x_over_r: float | None = None
+    count: int = 1
+    speed: Speed | None = None
+    c0: Farads | None = None
+
+
+class Line(Record, frozen=True, kw_only=True, rename={"from_": "from"}):
+    """An overhead line or a cable; ``to`` and ``from_`` are buses of one nominal voltage."""
+
+    from_: BusName
+    to: BusName
+    z1: LineOhms
+    z0: LineOhms
+    c1: LineFarads | None = None
+    c0: LineFarads | None = None
+    b1: LineSiemens | None = None
+    b0: LineSiemens | None = None
+    length: Length | None = None
+    count: int = 1
+    open: tuple[BusName, ...] = ()
+
+
+class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """One side of a transformer; ``voltage`` is rated, line to line."""
+
+    bus: BusName
+    voltage: Voltage
+    neutral: StarPoint | None = None
+
+
+class Transformer(Record, frozen=True, kw_only=True):
+    """A two-winding transformer, or ``count`` of them alike in parallel."""
+
+    vector_group: str
+    rating: Power
+    hv: Winding
+    lv: Winding
+    impedance: Annotated[Quantity, Dimensions("ratio", "impedance", complex=True)]
+    x_over_r: float | None = None
+    load_loss: Power | None = None
+    z0: OhmsOrRatio | None = None
+    z0_over_z1: float | None = None
+    tap: Ratio | None = None
+    magnetic_circuit: MagneticCircuit | None = None
+    count: int = 1
+
+
+class Neutral(Record, frozen=True, kw_only=True):
+    """What joins star points to earth: resistance and reactance in series, beside a resistance."""
+
+    resistance: Resistance | None = None
+    reactance: Resistance | None = None
+    parallel_resistance: Resistance | None = None
+    current: Current | None = None
+    voltage: Voltage | None = None
+    duration: Duration | None = None
+    continuous: Current | None = None
+    temperature_rise: Temperature | None = None
+
+
+class Prefault(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """The state before the fault; flat: every live bus at ``voltage`` of its nominal voltage."""
+
+    voltage: Ratio = Quantity(1.0, "ratio", "1.0 pu")
+    state: Literal["flat"] = "flat"
+
+
+TABLES: dict[str, type[Record]] = {
+    "buses": Bus,
+    "infeeds": Infeed,
+    "generators": Generator,
+    "motors": Motor,
+    "lines": Line,
+    "transformers": Transformer,
+    "neutrals": Neutral,
+}
+
+
+class Case(msgspec.Struct, frozen=True, kw_only=True):
+    """One installation in one operating state, read and checked.
+
+    ``frequency`` is in Hz, ``base_power`` in VA. Records keep the order of the file; those out of
+    service are here too, with ``out`` set. ``tree`` is the file as read, before any overlay, and
+    ``sha256`` its fingerprint. ``assumptions`` and ``warnings`` are sentences of the reader.
+    """
+
+    tables: ClassVar[tuple[str, ...]] = tuple(TABLES)
+
+    title: str = ""
+    frequency: float
+    base_power: float
+    prefault: Prefault
+    buses: Mapping[str, Bus]
+    infeeds: Mapping[str, Infeed]
+    generators: Mapping[str, Generator]
+    motors: Mapping[str, Motor]
+    lines: Mapping[str, Line]
+    transformers: Mapping[str, Transformer]
+    neutrals: Mapping[str, Neutral]
+    scenarios: tuple[str, ...] = ()
+    state: str = "base"
+    tree: Mapping[str, Any]
+    source: str = "case"
+    sha256: str = ""
+    assumptions: tuple[str, ...] = ()
+    warnings: tuple[str, ...] = ()
+
+    def records(self) -> Iterator[tuple[str, str, Record]]:
+        """Yield ``(table, name, record)`` of everything in the file, in its order."""
+        for table in TABLES:
+            for name, record in getattr(self, table).items():
+                yield table, name, record

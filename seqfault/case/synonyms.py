@@ -1,0 +1,120 @@
+"""Words of the trade for the tables and fields of the case file, and what later versions read."""
+
+from __future__ import annotations
+
+from collections.abc import Collection
+
+from seqfault.case.wording import Spelling, quoted
+
+_TABLES = {
+    "buses": "bus busbar busbars node nodes switchboard switchboards board boards",
+    "infeeds": "infeed source sources grid grids utility utilities network supply supplies",
+    "generators": "generator gens machine machines synchronous_machines synchronous_motors alternators",
+    "motors": "motor induction_motors asynchronous_motors drives",
+    "lines": "line cable cables feeder feeders overhead_lines branches circuits",
+    "transformers": "transformer trafo trafos xfmr xfmrs power_transformers",
+    "neutrals": "neutral earthing earthings grounding groundings ngr ngrs ner ners "
+    "neutral_earthing_resistors neutral_grounding_resistors earthing_resistors star_points",
+    "scenarios": "scenario states cases",
+    "prefault": "pre_fault",
+    "frequency": "f hz nominal_frequency",
+    "base_power": "base sbase base_mva mva_base s_base",
+    "title": "name heading project",
+}
+_FIELDS = {
+    "length": "length_km km length_m l distance",
+    "z1": "r1 x1 z r x zpos z_1 r1x1 impedance",
+    "z0": "r0 x0 zzero z_0",
+    "z2": "zneg z_2 r2",
+    "c1": "c c_1 capacitance",
+    "b1": "b b_1 susceptance",
+    "x2": "negative_sequence x_2",
+    "x0": "zero_sequence x_0",
+    "rating": "mva kva s rated_power rated_mva sr size power",
+    "shaft_power": "kw hp mechanical_power p output rated_power_kw",
+    "voltage": "kv v vn un ur u rated_voltage nominal_voltage base_kv nominal",
+    "impedance": "uk ukr uk_percent z_percent percent_impedance z1 z xk short_circuit_voltage",
+    "load_loss": "copper_loss copper_losses load_losses losses pk pkr",
+    "x_over_r": "xr x_r x/r x_r_ratio xr_ratio r_over_x",
+    "x0_over_r0": "x0r0 x0_r0 xr0 x0/r0",
+    "z0_over_z1": "z0z1 z0_z1 z0/z1",
+    "subtransient": "xd\" xdss xd2 x\"d x1 x subtransient_reactance xd''",
+    "transient": "xd' x'd xds transient_reactance",
+    "synchronous": "xd synchronous_reactance",
+    "resistance": "r ra r1 resistor ohms",
+    "reactance": "x reactor",
+    "three_phase": "ik3 ik isc fault_level short_circuit_power short_circuit_current mva_sc sc "
+    "fault_current",
+    "line_ground": "ik1 earth_fault_level earth_fault line_earth single_phase",
+    "vector_group": "group connection winding winding_group clock",
+    "hv": "primary high hv_side",
+    "lv": "secondary low lv_side",
+    "bus": "node busbar at connected_to bus_name",
+    "from": "from_bus bus1 start source sending",
+    "to": "to_bus bus2 end receiving",
+    "neutral": "earthing grounding star_point starpoint ngr ner neutral_earthing",
+    "count": "n number parallel circuits quantity units parallel_circuits",
+    "locked_rotor": "lrc lra starting_current locked_rotor_current ilr start_current",
+    "efficiency": "eff eta",
+    "power_factor": "pf cos_phi cosphi cos",
+    "current": "let_through rated_current i let_through_current",
+    "continuous": "continuous_current continuous_rating",
+    "duration": "time rated_time t",
+    "temperature_rise": "temp_rise rise",
+    "magnetic_circuit": "core core_type core_form",
+    "tap": "tap_position tap_percent",
+    "note": "notes comment comments description remark remarks",
+    "out": "out_of_service in_service disabled status off",
+    "open": "normally_open open_at open_point",
+    "state": "loading profile",
+}
+# Named on the page of the case format and not read by this version.
+LATER_TABLES = (
+    *("mutual_couplings", "earthing_transformers", "series_reactors", "capacitors", "loads"),
+    *("converters", "ties", "relays", "breakers", "current_transformers", "demands"),
+)
+_LATER_FIELDS = {
+    "infeeds": ("voltage",),
+    "generators": ("power", "holds"),
+    "lines": ("earthed",),
+    "transformers": ("tv", "impedance_on", "z0_magnetising", "zero_tests"),
+    "neutrals": ("kind", "detuning", "loss", "ratio"),
+}
+_PARTS = ("r", "x", "r1", "x1", "r0", "x0")
+
+
+def table_for(word: str, known: Collection[str]) -> str | None:
+    """Return the table that ``word`` means, or None."""
+    return _meant(word, _TABLES, known)
+
+
+def field_for(word: str, known: Collection[str]) -> str | None:
+    """Return which of the ``known`` fields ``word`` means, or None."""
+    return _meant(word, _FIELDS, known)
+
+
+def is_later_field(table: str, word: str) -> bool:
+    """Tell whether the case format has a field that this version does not read."""
+    return word in _LATER_FIELDS.get(table, ())
+
+
+def unknown_field(table: str, word: str, meant: str | None, known: Collection[str]) -> str:
+    """Return what to say of a field that is none; ``meant`` is what it seems to stand for."""
+    if is_later_field(table, word):
+        return f"the field {quoted(word)} is not read by this version"
+    problem = f"there is no field {quoted(word)}"
+    if meant in ("z1", "z0") and word.lower() in _PARTS:
+        return f'{problem}; write {meant} with both parts, as in "0.125+j0.096 ohm/km"'
+    if meant is not None:
+        return f"{problem}; write {meant}"
+    return f"{problem}; there are {', '.join(known)}"
+
+
+def _meant(word: str, synonyms: dict[str, str], known: Collection[str]) -> str | None:
+    plain = word.strip().lower().replace("-", "_").replace(" ", "_")
+    if plain in known:
+        return plain
+    for name, others in synonyms.items():
+        if name in known and plain in others.split():
+            return name
+    return Spelling(known).nearest(plain)

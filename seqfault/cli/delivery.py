@@ -1,0 +1,96 @@
+"""The answer to where it goes: page, JSON or CSV, on standard output or in a file."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from seqfault.cli.run import say
+from seqfault.errors import RequestError, quoted
+
+if TYPE_CHECKING:
+    from seqfault.report.data import Quantity
+    from seqfault.report.tables import Page
+
+
+@dataclass(frozen=True)
+class Answer:
+    """One answer in its three forms, each made only when asked for."""
+
+    page: Callable[[], Page]
+    tree: Callable[[], dict[str, Any]]
+    rows: Callable[[], Iterable[Quantity]]
+    warnings: Sequence[str] = ()
+
+
+def form_wanted(options: argparse.Namespace) -> str:
+    """table, json or csv. Raises ``RequestError`` for a file that cannot or must not be written."""
+    from seqfault.report.files import check_target, form_of
+
+    if options.output is None:
+        return options.format or "table"
+    form = options.format or form_of(options.output)
+    if form is None:
+        name = quoted(options.output)
+        raise RequestError(f"--output {name}: the suffix is not .json, .csv or .txt; add --format")
+    check_target(options.output, options.overwrite, options.case)
+    return str(form)
+
+
+def deliver(options: argparse.Namespace, form: str, answers: Sequence[Answer]) -> int:
+    """Write ``answers`` in ``form``; warnings go to standard error, and into JSON as well."""
+    if form == "table":
+        _pages(options, [answer.page() for answer in answers])
+    else:
+        from seqfault.report.files import as_csv, as_json
+
+        if form == "json":
+            content = as_json(_together([answer.tree() for answer in answers]))
+        else:
+            content = as_csv(row for answer in answers for row in answer.rows())
+        _write(options, content)
+    if form != "json":
+        for warning in dict.fromkeys(text for answer in answers for text in answer.warnings):
+            say(f"warning: {warning}")
+    return 0
+
+
+def _together(trees: list[dict[str, Any]]) -> dict[str, Any]:
+    """One answer as it is, several as a list under ``answers``."""
+    if len(trees) == 1:
+        return trees[0]
+    shared = {key: trees[0][key] for key in ("format", "case")}
+    rest = [{k: v for k, v in tree.items() if k not in shared} for tree in trees]
+    return {**shared, "answers": rest}
+
+
+def _pages(options: argparse.Namespace, pages: list[Page]) -> None:
+    from seqfault.report.terminal import page_text, show
+
+    if options.output is not None:
+        text = "\n\n".join(page_text(page, options.width) for page in pages)
+        _write(options, text.encode())
+        return
+    for number, page in enumerate(pages):
+        if number:
+            sys.stdout.write("\n\n")
+        show(page, sys.stdout, options.width, options.color)
+
+
+def _write(options: argparse.Namespace, content: bytes) -> None:
+    if options.output is not None:
+        from seqfault.report.files import write_whole
+
+        write_whole(options.output, content, options.overwrite)
+        say(f"wrote {options.output}")
+        return
+    sys.stdout.flush()
+    buffer = getattr(sys.stdout, "buffer", None)
+    if buffer is None:
+        sys.stdout.write(content.decode())
+    else:  # JSON and CSV are UTF-8 whatever the terminal speaks
+        buffer.write(content)
+        buffer.flush()

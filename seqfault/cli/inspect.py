@@ -1,0 +1,77 @@
+"""``seqfault inspect CASE``: what was read."""
+
+from __future__ import annotations
+
+import argparse
+
+from seqfault.cli.options import (
+    Commands,
+    add_case,
+    add_command,
+    add_output,
+    read_networks,
+    read_states,
+)
+
+NAME = "inspect"
+
+
+def add(commands: Commands) -> None:
+    """Add the command to the parser."""
+    parser = add_command(
+        commands,
+        NAME,
+        "what was read: zones, per unit, windings, assumptions",
+        "What was read of a case: voltage zones and base values, impedances per unit, what each"
+        " winding does to zero sequence, star points, and every assumption.",
+    )
+    add_case(parser)
+    parser.add_argument(
+        "--places", action="store_true", help="print one place a line, nothing else"
+    )
+    add_output(parser)
+    parser.set_defaults(run=run)
+
+
+def run(options: argparse.Namespace) -> int:
+    """Answer the command."""
+    if options.places:
+        return _places(options)
+    from functools import partial
+
+    from seqfault.cli.delivery import Answer, deliver, form_wanted
+
+    form = form_wanted(options)
+    networks = read_networks(options)
+    from seqfault.report.inspect import inspect_page, inspect_rows, inspect_tree
+    from seqfault.studies.inspect import inspect_network
+
+    answers = []
+    for network in networks:
+        inspection = inspect_network(network)
+        answers.append(
+            Answer(
+                partial(inspect_page, inspection),
+                partial(inspect_tree, inspection),
+                partial(inspect_rows, inspection),
+                network.model.warnings,
+            )
+        )
+    return deliver(options, form, answers)
+
+
+def _places(options: argparse.Namespace) -> int:
+    """Names as ``fault`` takes them, unescaped: this is for programs, so never dressed up."""
+    import sys
+
+    names = dict.fromkeys(
+        name for case in read_states(options) for name, bus in case.buses.items() if not bus.out
+    )
+    text = "".join(f"{name}\n" for name in names)
+    buffer = getattr(sys.stdout, "buffer", None)
+    if buffer is None:
+        sys.stdout.write(text)
+    else:
+        buffer.write(text.encode())
+        buffer.flush()
+    return 0

@@ -1,0 +1,1 @@
+"""Pure functions of numbers and arrays, each with its published source."""

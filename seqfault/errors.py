@@ -1,0 +1,66 @@
+"""Every error this package raises on purpose.
+
+SeqfaultError
+├── InputError              the command or the case is wrong           exit code 2
+│   ├── CaseError           complaints about a case file, all of them
+│   ├── QuantityError       a text that is no number with a unit, or the wrong one
+│   └── RequestError        a place, kind, option or file asked for that cannot be
+├── NoAnswerError           the case is fine, yet no answer exists      exit code 3
+└── CheckError              an answer failed its own check: a defect    exit code 70
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+
+class SeqfaultError(Exception):
+    """Root of the tree; ``exit_code`` is what the command line returns."""
+
+    exit_code = 70
+
+
+class InputError(SeqfaultError):
+    """What was asked for or read is wrong, and the message says what would be right."""
+
+    exit_code = 2
+
+
+class CaseError(InputError):
+    """A case file with one or more faults of its own.
+
+    ``complaints`` holds one line for each, in the order of the file.
+    """
+
+    def __init__(self, complaints: Iterable[str], source: str = "case") -> None:
+        self.complaints = tuple(complaints)
+        self.source = source
+        super().__init__("\n".join(self.complaints))
+
+
+class FieldError(InputError):
+    """A value that its field cannot take; the message repeats it and says what would be right."""
+
+
+class QuantityError(FieldError):
+    """A text that does not read as a quantity, or reads as one of the wrong dimension."""
+
+
+class RequestError(InputError):
+    """A place, a fault, an option or a file that cannot be served."""
+
+
+class NoAnswerError(SeqfaultError):
+    """The network has no answer to the question, for example at exact resonance."""
+
+    exit_code = 3
+
+
+class CheckError(SeqfaultError):
+    """A computed answer did not pass its own check and is withheld."""
+
+
+def quoted(name: str) -> str:
+    """``name`` in double quotes on one line, control characters and quotes escaped."""
+    body = name.replace("\\", "\\\\").replace('"', '\\"')
+    return '"' + "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in body) + '"'

@@ -1,0 +1,1 @@
+"""Networks and a fault to a solution. Per unit inside, SI in what is returned."""

@@ -1,0 +1,161 @@
+"""Faults as branches on the phases of ports.
+
+With E the incidence of the fault branches, Z the port impedances in phase coordinates, v the voltages
+before the fault and B what a unit of each free potential of a floating part puts on the phases:
+
+    (Eᵀ Z E + Z_f) i − Eᵀ B u = Eᵀ v,        Σ d i0 = 0 over the ports of each floating part
+
+Source: fault impedance matrices in phase coordinates, as in M. Laughton, "Analysis of unbalanced
+polyphase networks by the method of phase co-ordinates", Proc. IEE 115 (1968) (from memory). Positive
+sequence between ports of clocks m and n turns by −30° (m − n), negative by +30° (m − n).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from seqfault.equations.symmetrical import TO_PHASES, TO_SEQUENCE, Complex, clock_turn
+from seqfault.errors import NoAnswerError
+from seqfault.faults.kinds import Fault, branches
+from seqfault.model.elements import Ints
+from seqfault.networks.factors import SequenceNetworks
+
+Slack = dict[tuple[int, int], complex]
+SINGULAR = 1e-13
+
+
+@dataclass(frozen=True, eq=False)
+class PortSolution:
+    """Currents of the faults, in per unit of each place.
+
+    ``current`` (3, r) sequence currents from the network into each fault, physical angles;
+    ``impedance`` (3, r) driving-point impedances, infinite where there is no path; ``columns`` of each
+    sequence for the ports; ``slack`` the free potentials of each sequence, and ``unseen`` those no
+    fault branch sees.
+    """
+
+    current: Complex
+    impedance: Complex
+    columns: tuple[Complex, Complex, Complex]
+    slack: tuple[Slack, Slack, Slack]
+    unseen: tuple[set[tuple[int, int]], ...]
+
+
+def solve_ports(
+    networks: SequenceNetworks, nodes: Ints, faults: Sequence[Fault], clocks: Ints
+) -> PortSolution:
+    """Solve ``faults`` at the buses ``nodes`` (r,), all at once.
+
+    ``clocks`` (r,) are the displacements of the places behind the reference of angles. Raises
+    ``NoAnswerError`` where the equations have no unique solution.
+    """
+    model = networks.model
+    r = len(nodes)
+    turn = np.stack([np.ones(r), clock_turn(clocks), clock_turn(clocks).conj()])
+    columns = tuple(networks[s].columns(nodes) for s in range(3))
+    z = np.stack([networks[s].port_impedance(nodes, columns[s]) for s in range(3)])
+    z = z * turn[:, :, None] * turn[:, None, :].conj()
+    z_phase = np.einsum("ps,sij,sq->ipjq", TO_PHASES, z, TO_SEQUENCE)
+    before = model.before[nodes] * turn[1]
+    v = before[:, None] * TO_PHASES[:, 1]
+
+    shapes = [branches(fault) for fault in faults]
+    widths = [e.shape[1] for e, _ in shapes]
+    start = np.concatenate([[0], np.cumsum(widths)])
+    incidence = np.zeros((r, 3, start[-1]), complex)
+    z_fault = np.zeros((start[-1], start[-1]), complex)
+    for k, (e, zf) in enumerate(shapes):
+        own = slice(start[k], start[k + 1])
+        incidence[k, :, own] = e
+        z_fault[own, own] = zf * (model.base_power / model.nominal[nodes[k]] ** 2)
+    matrix = np.einsum("ipa,ipjq,jqb->ab", incidence, z_phase, incidence) + z_fault
+    rhs = np.einsum("ipa,ip->a", incidence, v)
+
+    lift, constraint, keys, alone = [], [], [], []
+    for s in range(3):
+        free, names = networks[s].slack_at(nodes)
+        for q, name in enumerate(names):
+            on_phases = (free[:, q] * turn[s])[:, None] * TO_PHASES[:, s]
+            lift.append(np.einsum("ipa,ip->a", incidence, on_phases))
+            into = (free[:, q] * turn[s].conj())[:, None] * TO_SEQUENCE[s]
+            constraint.append(np.einsum("ip,ipa->a", into, incidence))
+            keys.append((s, name))
+            touched = np.flatnonzero(np.abs(free[:, q]) > 1e-9)
+            if len(touched) == 1:
+                alone.append((s, touched[0]))
+    width = int(start[-1])
+    up = np.array(lift, complex).reshape(len(keys), width).T
+    i, u = _solve(matrix, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
+
+    # Components of each branch first: one clear of earth has exactly no zero sequence.
+    current = np.einsum("sp,ipa->sia", TO_SEQUENCE, incidence) @ i
+    for s, held in alone:
+        current[s, held] = 0  # to the last bit, where elimination leaves a rounding
+    slack: tuple[Slack, Slack, Slack] = ({}, {}, {})
+    unseen: tuple[set[tuple[int, int]], ...] = (set(), set(), set())
+    scale = np.abs(up).max(initial=0.0)
+    for q, (s, name) in enumerate(keys):
+        if np.abs(up[:, q]).max(initial=0.0) > 1e-9 * max(scale, 1.0):
+            slack[s][name] = complex(u[q])
+        else:
+            unseen[s].add(name)
+    own_z = np.stack([np.diagonal(z[s]) for s in range(3)])
+    for s in range(3):
+        free, _ = networks[s].slack_at(nodes)
+        own_z[s, (np.abs(free) > 1e-9).any(axis=1)] = np.inf
+    return PortSolution(current, own_z, (columns[0], columns[1], columns[2]), slack, unseen)
+
+
+def _solve(z: Complex, v: Complex, lift: Complex, constraint: Complex) -> tuple[Complex, Complex]:
+    """Currents i with ``constraint`` i = 0 exactly, and the free potentials u that go with them."""
+    free = _null_basis(constraint)
+    if free.shape[1]:
+        # The lift of a floating part does no work on currents that obey its constraint.
+        work = free.conj().T if not len(constraint) else _null_basis(lift.T).T
+        small = work @ z @ free
+        balance = np.abs(small).max(axis=1, initial=0.0)
+        if (balance == 0).any() or np.linalg.cond(small / balance[:, None]) > 1 / SINGULAR:
+            raise NoAnswerError(
+                "the fault current has no limit: the network's impedances to this fault cancel (series"
+                " resonance) or are zero; check reactances of opposite sign"
+            )
+        i: Complex = free @ np.linalg.solve(small, work @ v)
+    else:
+        i = np.zeros(len(v), complex)
+    if not lift.shape[1]:
+        return i, np.zeros(0, complex)
+    return i, np.asarray(np.linalg.lstsq(lift, z @ i - v, rcond=None)[0], complex)
+
+
+def _null_basis(rows: Complex) -> Complex:
+    """Basis (b, q) of the vectors that ``rows`` (k, b) map to zero, by elimination with pivots.
+
+    Entries come out exact where the rows hold ones only, so that currents cancel to the last bit.
+    """
+    a = np.array(rows, complex)
+    width = a.shape[1]
+    pivots: list[int] = []
+    scale = np.abs(a).max(initial=0.0)
+    for _ in range(min(a.shape)):
+        left = a[len(pivots) :]
+        size = np.abs(left)
+        if size.max(initial=0.0) <= 1e-9 * max(scale, 1e-300):
+            break
+        at, column = divmod(int(size.argmax()), width)
+        top = len(pivots)
+        a[[top, top + at]] = a[[top + at, top]]
+        a[top] /= a[top, column]
+        for other in range(len(a)):
+            if other != top:
+                a[other] -= a[other, column] * a[top]
+        pivots.append(column)
+    loose = [column for column in range(width) if column not in pivots]
+    basis = np.zeros((width, len(loose)), complex)
+    for q, column in enumerate(loose):
+        basis[column, q] = 1
+        for top, pivot in enumerate(pivots):
+            basis[pivot, q] = -a[top, column]
+    return basis

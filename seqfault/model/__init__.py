@@ -1,0 +1,1 @@
+"""Records to per-unit elements, as columns: one array an attribute, one entry a record."""

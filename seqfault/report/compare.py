@@ -1,0 +1,229 @@
+"""Kinds of fault side by side, as a page, a tree and rows."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Any
+
+import numpy as np
+
+from seqfault.faults.network import Network
+from seqfault.faults.solution import FaultSolution
+from seqfault.report.data import Quantity, fault_rows, fault_tree, header
+from seqfault.report.facts import after, conditions, impedances
+from seqfault.report.numbers import figures, kilovolt, quiet
+from seqfault.report.tables import (
+    AMPERE,
+    PERCENT,
+    SHARE,
+    WORDS,
+    Block,
+    Cell,
+    Column,
+    Fact,
+    Facts,
+    Group,
+    Page,
+    Row,
+    Table,
+    Title,
+    greatest,
+)
+from seqfault.studies.compare import Comparison, Extreme
+
+FEW = 0.0005
+"""Paths home below this share of 3I0 in every kind are told together."""
+
+
+def compare_page(network: Network, comparison: Comparison) -> Page:
+    """The page of ``comparison``, a comparison made on ``network``."""
+    solutions = comparison.solutions
+    first = solutions[0]
+    groups = tuple(Group(_heading(s.fault.kind.name)) for s in solutions)
+    blocks = [_symbols(solutions), _into(comparison)]
+    if any(s.home for s in solutions):
+        blocks.append(_home(solutions))
+    blocks += [_left(comparison), _ratio(solutions)]
+    title = Title(
+        network.model.title, f"{comparison.place}  {kilovolt(first.nominal)}", conditions(solutions)
+    )
+    return Page(
+        (
+            title,
+            Table(groups, tuple(blocks)),
+            impedances(first),
+            Facts(tuple(_facts(comparison))),
+            *after(solutions),
+        )
+    )
+
+
+def _heading(kind: str) -> tuple[str, ...]:
+    if len(kind) <= 12:
+        return ("", kind)
+    cut = kind.rindex("-") + 1
+    return (kind[:cut], kind[cut:])
+
+
+def _symbols(solutions: tuple[FaultSolution, ...]) -> Block:
+    return Block(
+        "",
+        (WORDS,),
+        (
+            Row("standard symbol", tuple((s.fault.kind.symbol,) for s in solutions)),
+            Row("faulted phases", tuple((" ".join(s.fault.phases),) for s in solutions)),
+        ),
+    )
+
+
+def _row(label: str, values: list[float], references: list[float | None]) -> Row:
+    cells: list[tuple[Cell, ...]] = []
+    for value, reference in zip(values, references, strict=True):
+        share: Cell = value / reference if value and reference else "-"
+        cells.append((value, share))
+    return Row(label, tuple(cells), greatest(values))
+
+
+def _into(comparison: Comparison) -> Block:
+    solutions = comparison.solutions
+    reference = comparison.reference
+    tops = [float(np.abs(s.current).max()) for s in solutions]
+    rows = []
+    for k, phase in enumerate("abc"):
+        values = [abs(quiet(s.current[k], top)) for s, top in zip(solutions, tops, strict=True)]
+        rows.append(_row(f"phase {phase}", values, [reference] * len(values)))
+    earth = [abs(quiet(s.residual, top)) for s, top in zip(solutions, tops, strict=True)]
+    rows.append(_row("to earth (3I0)", earth, [reference] * len(earth)))
+    share = ", and as a share of the three-phase current" if reference else ""
+    return Block(f"Into the fault: ampere{share}", (AMPERE, SHARE), tuple(rows))
+
+
+def _home(solutions: tuple[FaultSolution, ...]) -> Block:
+    names = list(dict.fromkeys(path.path for s in solutions for path in s.home))
+    carried = [{path.path: path.current for path in s.home} for s in solutions]
+    earth = [abs(s.residual) if s.home else 0.0 for s in solutions]
+    tops = [max([top, *map(abs, own.values())]) for top, own in zip(earth, carried, strict=True)]
+
+    def row(label: str, paths: list[str]) -> Row:
+        sums = [sum(own.get(path, 0j) for path in paths) for own in carried]
+        values = [abs(quiet(i, top)) for i, top in zip(sums, tops, strict=True)]
+        return _row(label, values, [e or None for e in earth])
+
+    few = [
+        name
+        for name in names
+        if all(abs(own.get(name, 0)) <= FEW * top for own, top in zip(carried, tops, strict=True))
+    ]
+    rows = [row(name, [name]) for name in names if name not in few]
+    if len(few) == 1:
+        rows.append(row(few[0], few))
+    elif few:
+        rows.append(row(f"{len(few)} more below {FEW:g}", few))
+    heading = "How that earth current gets home: ampere, shares of the 3I0 above (phasors)"
+    return Block(heading, (AMPERE, SHARE), tuple(rows))
+
+
+def _left(comparison: Comparison) -> Block:
+    solutions, place = comparison.solutions, comparison.place
+    k = solutions[0].index[place]
+    before = [abs(complex(s.before[k])) for s in solutions]
+
+    def cells(label: str, volts: list[float]) -> Row:
+        values: list[float | None] = []
+        made: list[tuple[Cell, ...]] = []
+        for s, volt, reference in zip(solutions, volts, before, strict=True):
+            if s.undefined[k]:
+                values.append(None)
+                made.append(("undefined",))
+                continue
+            percent = 100 * volt / reference if reference else 0.0
+            values.append(0.0 if percent < 1e-7 else percent)
+            made.append((values[-1],))
+        return Row(label, tuple(made), greatest(values))
+
+    rows = [
+        cells(f"phase {phase} to earth", [abs(complex(s.voltage[p, k])) for s in solutions])
+        for p, phase in enumerate("abc")
+    ]
+    rows.append(
+        cells("displacement (3V0)", [3 * abs(complex(s.voltage_sequence[0, k])) for s in solutions])
+    )
+    return Block(
+        "Left on the bus: per cent of the phase voltage before the fault", (PERCENT,), tuple(rows)
+    )
+
+
+def ratio_cell(solution: FaultSolution) -> Cell:
+    """X/R of the loop that limits the current."""
+    ratio = solution.x_over_r
+    if ratio != ratio:
+        return "-"
+    return "no R" if abs(ratio) == float("inf") else ratio
+
+
+def _ratio(solutions: tuple[FaultSolution, ...]) -> Block:
+    row = Row("X/R", tuple((ratio_cell(s),) for s in solutions))
+    return Block("What limits the current: X/R of its loop", (Column("", 3, 3),), (row,))
+
+
+def _facts(comparison: Comparison) -> Iterator[Fact]:
+    top, least, clear = comparison.greatest, comparison.least, comparison.least_clear_of_earth
+    if top.value == 0:
+        yield Fact("Greatest current", "0 A", "nothing feeds this bus in this state")
+        return
+    yield Fact("Greatest current", f"{figures(top.value)} A", _of(top))
+    text = _of(least)
+    if clear is not None and clear.kind != least.kind:
+        text += f"; without earth: {figures(clear.value)} A, {_of(clear)}"
+    yield Fact("Least current", f"{figures(_quieted(least.value, top.value))} A", text)
+    factor = comparison.earth_fault_factor
+    if factor is not None:
+        of = f"{factor.kind}, phase {factor.phase}"
+        yield Fact("Earth-fault factor", f"{factor.value:.2f}", of)
+
+
+def _quieted(value: float, top: float) -> float:
+    return abs(quiet(value, top))
+
+
+def _of(extreme: Extreme) -> str:
+    if extreme.kind in ("line-line-ground",):
+        return f"{extreme.kind}, phase {extreme.phase}"
+    return extreme.kind
+
+
+def compare_tree(network: Network, comparison: Comparison) -> dict[str, Any]:
+    """The comparison as plain values for JSON; each of ``faults`` as ``fault`` gives it."""
+
+    def extreme(value: Extreme | None) -> dict[str, Any] | None:
+        if value is None:
+            return None
+        return {"value": value.value, "kind": value.kind, "phase": value.phase}
+
+    faults = []
+    for solution in comparison.solutions:
+        tree = fault_tree(network, solution)
+        for shared in ("format", "case", "scenario", "assumptions", "warnings"):
+            del tree[shared]
+        faults.append(tree)
+    first = comparison.solutions[0]
+    return {
+        **header(network),
+        "place": comparison.place,
+        "nominal": first.nominal,
+        "prefault": first.prefault,
+        "reference": comparison.reference,
+        "greatest": extreme(comparison.greatest),
+        "least": extreme(comparison.least),
+        "least_clear_of_earth": extreme(comparison.least_clear_of_earth),
+        "earth_fault_factor": extreme(comparison.earth_fault_factor),
+        "faults": faults,
+        "assumptions": [text for a in first.assumptions for text in a.sentences()],
+        "warnings": list(first.warnings),
+    }
+
+
+def compare_rows(comparison: Comparison) -> Iterator[Quantity]:
+    """The comparison in long form: the rows of each fault in turn."""
+    for solution in comparison.solutions:
+        yield from fault_rows(solution)

@@ -1,0 +1,185 @@
+"""A solved fault as plain values: the tree for JSON, the long rows for CSV.
+
+Complex values are ``[magnitude, degrees]``, impedances ``[R, X]``; A, V to earth, ohm. What is
+rounding beside the greatest of its kind is exactly ``[0, 0]``; what nothing fixes is null.
+"""
+
+from __future__ import annotations
+
+import cmath
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from seqfault.faults.network import Network
+from seqfault.faults.solution import FaultSolution, Terminals
+from seqfault.report.numbers import quiet
+
+FORMAT = 1
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """One value of the long form.
+
+    ``place`` and ``kind`` say which fault, ``where`` the bus, ``ELEMENT@BUS`` or star point the
+    value belongs to; ``value`` is None where undefined, ``angle`` (degrees) where it has none.
+    """
+
+    place: str
+    kind: str
+    quantity: str
+    phase: str
+    value: float | str | None
+    unit: str
+    angle: float | None
+    where: str
+    state: str
+
+
+def polar(value: complex) -> list[float]:
+    """``[magnitude, degrees]``."""
+    value = complex(value)
+    if value == 0:
+        return [0.0, 0.0]
+    return [abs(value), math.degrees(cmath.phase(value))]
+
+
+def cartesian(value: complex) -> list[float] | None:
+    """``[R, X]``, None for what is infinite."""
+    value = complex(value)
+    return [value.real, value.imag] if cmath.isfinite(value) else None
+
+
+def header(network: Network) -> dict[str, Any]:
+    """What every answer in JSON opens with."""
+    model = network.model
+    return {
+        "format": FORMAT,
+        "case": {"title": model.title, "sha256": model.sha256},
+        "scenario": model.state,
+        "machine": model.machine,
+    }
+
+
+def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
+    """``solution`` as plain values."""
+    s = solution
+    top = float(np.abs(s.current).max())
+    current = {p: polar(quiet(s.current[k], top)) for k, p in enumerate("abc")}
+    current |= {f"i{k}": polar(quiet(s.current_sequence[k], top)) for k in range(3)}
+    return {
+        **header(network),
+        "fault": {
+            "place": s.fault.place,
+            "kind": s.fault.kind.name,
+            "phases": s.fault.phases,
+            "zf": cartesian(s.fault.zf),
+            "zg": cartesian(s.fault.zg),
+            "nominal": s.nominal,
+            "prefault": s.prefault,
+        },
+        "impedance": {f"z{k}": cartesian(s.impedance[k]) for k in (1, 2, 0)},
+        "x_over_r": s.x_over_r if math.isfinite(s.x_over_r) else None,
+        "current": current | {"residual": polar(quiet(s.residual, top))},
+        "voltages": _voltages(s),
+        "flows": _flows(s.terminals),
+        "neutrals": {
+            star.name: {
+                "current": polar(star.current),
+                "voltage": None if star.voltage is None else polar(star.voltage),
+                "kind": star.kind,
+                "bus": star.bus,
+            }
+            for star in s.star_points
+        },
+        "deltas": [
+            {"element": d.element, "side": d.side, "bus": d.bus, "current": polar(d.current)}
+            for d in s.deltas
+        ],
+        "home": [{"path": path.path, "current": polar(path.current)} for path in s.home],
+        "notes": list(s.notes),
+        "assumptions": [text for a in s.assumptions for text in a.sentences()],
+        "warnings": list(s.warnings),
+        "undefined": list(s.undefined_notes),
+    }
+
+
+def _voltages(s: FaultSolution) -> dict[str, Any]:
+    phases, sequence, before = s.voltage, s.voltage_sequence, np.abs(s.before)
+    out: dict[str, Any] = {}
+    for k, bus in enumerate(s.buses):
+        top = max(float(before[k]), float(np.abs(phases[:, k]).max()))
+        row: dict[str, Any] = {p: polar(quiet(phases[j, k], top)) for j, p in enumerate("abc")}
+        row |= {f"v{j}": polar(quiet(sequence[j, k], top)) for j in range(3)}
+        if s.undefined[k]:
+            row |= dict.fromkeys(("a", "b", "c", "v0"))
+        out[bus] = row
+    return out
+
+
+def _flows(t: Terminals) -> list[dict[str, Any]]:
+    phases, sequence = t.phases, t.sequence
+    top = float(np.abs(phases).max(initial=0.0))
+    out = []
+    for k, element in enumerate(t.element):
+        row: dict[str, Any] = {
+            "element": element,
+            "bus": t.bus[k],
+            "side": t.side[k],
+            "kind": t.kind[k],
+            "count": int(t.count[k]),
+        }
+        row |= {p: polar(quiet(phases[j, k], top)) for j, p in enumerate("abc")}
+        row |= {f"i{j}": polar(quiet(sequence[j, k], top)) for j in range(3)}
+        out.append(row | {"residual": polar(quiet(3 * sequence[0, k], top))})
+    return out
+
+
+def fault_rows(solution: FaultSolution) -> Iterator[Quantity]:
+    """``solution`` in long form."""
+    s, place = solution, solution.fault.place
+
+    def row(
+        quantity: str, phase: str, value: complex | None, unit: str, where: str, real: bool = False
+    ) -> Quantity:
+        size, turn = (None, None) if value is None else polar(value)
+        if real and value is not None:
+            size, turn = complex(value).real, None
+        kind = s.fault.kind.name
+        return Quantity(place, kind, quantity, phase, size, unit, turn, where, s.state)
+
+    top = float(np.abs(s.current).max())
+    for k, phase in enumerate("abc"):
+        yield row("fault current", phase, quiet(s.current[k], top), "A", place)
+    for k in range(3):
+        yield row("fault current", str(k), quiet(s.current_sequence[k], top), "A", place)
+    yield row("fault current", "residual", quiet(s.residual, top), "A", place)
+    for k in range(3):
+        z = complex(s.impedance[k])
+        yield row("impedance", str(k), z if cmath.isfinite(z) else None, "ohm", place)
+    if math.isfinite(s.x_over_r):
+        yield row("X/R", "", s.x_over_r, "", place, real=True)
+    voltages = _voltages(s)
+    for bus, values in voltages.items():
+        for key, pair in values.items():
+            phase = key.removeprefix("v")
+            yield row("voltage to earth", phase, _phasor(pair), "V", bus)
+    for flow in _flows(s.terminals):
+        where = f"{flow['element']}@{flow['bus']}"
+        for key in ("a", "b", "c", "i0", "i1", "i2", "residual"):
+            yield row("current into element", key.removeprefix("i"), _phasor(flow[key]), "A", where)
+    for star in s.star_points:
+        yield row("neutral current", "", star.current, "A", star.name)
+        yield row("neutral voltage", "", star.voltage, "V", star.name)
+    for delta in s.deltas:
+        yield row("current round the delta", "", delta.current, "A", f"{delta.element}@{delta.bus}")
+    for path in s.home:
+        yield row("earth current home", "", path.current, "A", path.path)
+
+
+def _phasor(pair: list[float] | None) -> complex | None:
+    return None if pair is None else cmath.rect(pair[0], math.radians(pair[1]))

@@ -1,0 +1,141 @@
+"""Answers as JSON and CSV, and files written whole or not at all.
+
+CSV is long, one value a line, UTF-8 without a byte-order mark, lines ended by LF. A spreadsheet
+runs a cell that begins with ``=``, ``+``, ``-``, ``@``, a tab or a return as a formula, so a *text*
+that begins so (a name from the case file, say) gets a single quote ``'`` before it; numbers never
+do. Strip that quote before comparing such a name with the case file.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterable, Iterator
+from typing import Any
+
+import msgspec
+
+from seqfault.errors import RequestError, quoted
+from seqfault.report.data import Quantity
+
+SUFFIXES = {".json": "json", ".csv": "csv", ".txt": "table"}
+COLUMNS = ("place", "kind", "quantity", "phase", "value", "unit", "angle", "where", "state")
+FORMULA = ("=", "+", "-", "@", "\t", "\r")
+
+
+def as_json(tree: dict[str, Any]) -> bytes:
+    """``tree`` as UTF-8, indented, lists of numbers on one line; what is not finite is null."""
+    return ("".join(_pieces(tree, "\n")) + "\n").encode()
+
+
+def _pieces(value: Any, line: str) -> Iterator[str]:
+    deeper = line + "  "
+    if isinstance(value, dict) and value:
+        separator = "{"
+        for key, item in value.items():
+            yield f"{separator}{deeper}{_scalar(key)}: "
+            yield from _pieces(item, deeper)
+            separator = ","
+        yield f"{line}}}"
+    elif isinstance(value, (list, tuple)) and any(isinstance(v, (dict, list, str)) for v in value):
+        separator = "["
+        for item in value:
+            yield f"{separator}{deeper}"
+            yield from _pieces(item, deeper)
+            separator = ","
+        yield f"{line}]"
+    elif isinstance(value, (list, tuple)):
+        yield f"[{', '.join(map(_scalar, value))}]"
+    else:
+        yield _scalar(value)
+
+
+def _scalar(value: Any) -> str:
+    return msgspec.json.encode(value).decode()
+
+
+def as_csv(rows: Iterable[Quantity]) -> bytes:
+    """``rows`` under one line of column names."""
+    import csv
+    import io
+
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(COLUMNS)
+    for row in rows:
+        writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
+    return text.getvalue().encode()
+
+
+def _field(value: float | str | None) -> str:
+    if value is None:
+        return ""
+    if isinstance(value, str):
+        return f"'{value}" if value.startswith(FORMULA) else value
+    return repr(float(value))
+
+
+def form_of(path: str) -> str | None:
+    """The format that the suffix of ``path`` asks for, if any."""
+    return SUFFIXES.get(os.path.splitext(path)[1].lower())
+
+
+def check_target(path: str, overwrite: bool, case: str) -> None:
+    """Raises ``RequestError`` where ``path`` cannot be written; asked before the work begins."""
+    folder = os.path.dirname(os.path.realpath(path))
+    name = quoted(path)
+    if os.path.isdir(path):
+        raise RequestError(f"--output {name}: this is a folder; give the name of a file in it")
+    if not os.path.isdir(folder):
+        raise RequestError(f"--output {name}: there is no folder {quoted(folder)}")
+    if not os.path.exists(path):
+        return
+    if not os.path.isfile(path):
+        raise RequestError(f"--output {name}: this is no ordinary file; leave --output out")
+    if os.path.exists(case) and os.path.samefile(path, case):
+        raise RequestError(f"--output {name}: this is the case file itself; give another name")
+    if not overwrite:
+        raise RequestError(f"--output {name}: the file exists; give another name, or --overwrite")
+
+
+def write_whole(path: str, content: bytes, overwrite: bool) -> None:
+    """Write ``content`` to ``path``, whole or not at all.
+
+    Raises ``RequestError`` where that fails, or where ``path`` has come to exist meanwhile.
+    """
+    target = os.path.realpath(path)
+    draft = f"{target}.{os.getpid()}.part"
+    try:
+        descriptor = os.open(draft, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
+        try:
+            with open(descriptor, "wb") as file:
+                file.write(content)
+                file.flush()
+                os.fsync(file.fileno())
+            if overwrite:
+                if os.path.exists(target):
+                    os.chmod(draft, os.stat(target).st_mode & 0o7777)
+                os.replace(draft, target)
+            else:
+                _place(draft, target)
+        finally:
+            if os.path.lexists(draft):
+                os.unlink(draft)
+    except FileExistsError:
+        raise RequestError(
+            f"--output {quoted(path)}: the file exists; give another name, or --overwrite"
+        ) from None
+    except OSError as error:
+        reason = error.strerror or str(error)
+        raise RequestError(f"--output {quoted(path)}: cannot be written: {reason}") from None
+
+
+def _place(draft: str, target: str) -> None:
+    """Give ``draft`` its name where nothing has that name; a hard link cannot replace a file."""
+    try:
+        os.link(draft, target)
+    except FileExistsError:
+        raise
+    except OSError:  # a file system without hard links
+        if os.path.lexists(target):
+            raise FileExistsError from None
+        os.replace(draft, target)

@@ -1,0 +1,1 @@
+"""Solutions to engineering answers, as data."""

@@ -1,0 +1,104 @@
+"""Kinds of fault side by side at one bus."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from seqfault.faults.network import Network
+from seqfault.faults.solution import FaultSolution
+
+ORDER = ("three-phase", "line-line", "line-line-ground", "line-ground")
+"""Kinds in the order of IEC 60909-0; three-phase to ground has the currents of three-phase."""
+
+
+@dataclass(frozen=True)
+class Extreme:
+    """A greatest or least value: of which kind of fault, and in which phase."""
+
+    value: float
+    kind: str
+    phase: str
+
+
+@dataclass(frozen=True, eq=False)
+class Comparison:
+    """Solutions of several kinds of fault at one place, in the order asked for."""
+
+    place: str
+    solutions: tuple[FaultSolution, ...]
+
+    def _currents(self) -> list[tuple[float, FaultSolution, str]]:
+        """The largest faulted-phase current of each kind, A."""
+        out = []
+        for solution in self.solutions:
+            size = np.abs(solution.current)
+            k = int(size.argmax())
+            out.append((float(size[k]), solution, "abc"[k]))
+        return out
+
+    @property
+    def reference(self) -> float | None:
+        """The three-phase current (A) that shares refer to, None where it was not asked for."""
+        for solution in self.solutions:
+            if solution.fault.kind.name.startswith("three-phase"):
+                return float(np.abs(solution.current).max())
+        return None
+
+    @property
+    def greatest(self) -> Extreme:
+        """The greatest phase current of all kinds."""
+        return _extreme(max(self._currents(), key=lambda row: row[0]))
+
+    @property
+    def least(self) -> Extreme:
+        """The least of the kinds' fault currents: what the dullest protection must still see."""
+        return _extreme(min(self._currents(), key=lambda row: row[0]))
+
+    @property
+    def least_clear_of_earth(self) -> Extreme | None:
+        """The least among kinds that do not touch earth."""
+        rows = [row for row in self._currents() if not row[1].fault.kind.earth]
+        return _extreme(min(rows, key=lambda row: row[0])) if rows else None
+
+    @property
+    def earth_fault_factor(self) -> Extreme | None:
+        """The highest earth-fault factor at the place, its kind and phase."""
+        best: Extreme | None = None
+        for solution in self.solutions:
+            factors = solution.earth_fault_factor
+            if factors is None:
+                continue
+            k = solution.index[self.place]
+            factor = float(factors[k])
+            if np.isfinite(factor) and (best is None or factor > best.value):
+                size = np.abs(solution.at(self.place))
+                for phase in solution.fault.phases:
+                    size["abc".index(phase)] = -1
+                best = Extreme(factor, solution.fault.kind.name, "abc"[int(size.argmax())])
+        return best
+
+
+def _extreme(row: tuple[float, FaultSolution, str]) -> Extreme:
+    return Extreme(row[0], row[1].fault.kind.name, row[2])
+
+
+def compare(
+    network: Network,
+    place: str,
+    kinds: tuple[str, ...] = ORDER,
+    *,
+    zf: complex = 0,
+    zg: complex = 0,
+) -> Comparison:
+    """Solve ``kinds`` at the bus ``place``; ``zf`` and ``zg`` in ohm.
+
+    ``zg`` enters the kinds that touch earth. Raises what ``Network.fault`` raises.
+    """
+    from seqfault.faults.kinds import fault_kind
+
+    return Comparison(
+        place,
+        tuple(network.fault(place, kind, zf=zf, zg=zg if fault_kind(kind).earth else 0) for kind in kinds),
+    )

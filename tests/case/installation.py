@@ -1,0 +1,95 @@
+"""A small sound installation in the text of a case file, and how tests spoil it."""
+
+from collections.abc import Iterator
+from pathlib import Path
+
+from seqfault.case.reader import read_case
+from seqfault.case.records import Case
+
+BASE = """\
+title = "Small works, 33/11 kV"
+frequency = "50 Hz"
+base_power = "100 MVA"
+
+[buses]
+grid = "33 kV"
+main = "11 kV"
+pump = "11 kV"
+
+[infeeds.utility]
+bus = "grid"
+three_phase = "8 kA"
+x_over_r = 10
+line_ground = "4 kA"
+x0_over_r0 = 5
+
+[transformers.T1]
+vector_group = "Dyn11"
+rating = "10 MVA"
+hv = { bus = "grid", voltage = "33 kV" }
+lv = { bus = "main", voltage = "11 kV", neutral = "NER" }
+impedance = "10 %"
+x_over_r = 20
+
+[lines.F1]
+from = "main"
+to = "pump"
+z1 = "0.125+j0.096 ohm/km"
+z0 = "0.6+j0.3 ohm/km"
+c1 = "0.42 uF/km"
+c0 = "0.42 uF/km"
+length = "1.8 km"
+
+[neutrals.NER]
+resistance = "15.9 ohm"
+"""
+
+GENERATOR = """
+[generators.G1]
+bus = "main"
+rating = "5 MVA"
+subtransient = "18 %"
+"""
+MOTOR = """
+[motors.M1]
+bus = "pump"
+rating = "300 kVA"
+locked_rotor = 6
+"""
+
+
+def spoilt(*changes: tuple[str, str], more: str = "") -> str:
+    """Return the base text with each old part, which must be there, replaced by its new part."""
+    text = BASE
+    for old, new in changes:
+        assert text.count(old) >= 1, old
+        text = text.replace(old, new, 1)
+    return text + more
+
+
+def read_text(folder: Path, text: str, name: str = "case.toml") -> Case:
+    """Return the case read from a file that holds ``text``."""
+    path = folder / name
+    path.write_text(text, encoding="utf-8", errors="surrogatepass", newline="")
+    return read_case(path)
+
+
+def entries(page: str) -> Iterator[tuple[str, str, list[str]]]:
+    """Yield the name, the text of the case file and the messages of each entry of a page.
+
+    An entry opens with ``# name``. ``-`` is a part of the base text and ``+`` what stands in its
+    place; ``>`` is added at the end; ``=`` is a whole file instead; ``!`` is what the reader says.
+    """
+    for entry in page.split("\n# "):
+        name, _, body = entry.removeprefix("# ").partition("\n")
+        changes: list[tuple[str, str]] = []
+        parts: dict[str, list[str]] = {sign: [] for sign in "-+>=!"}
+        for line in [*body.splitlines(), "."]:
+            if line and line[0] != "+" and parts["-"] and (parts["+"] or line[0] != "-"):
+                changes.append(("\n".join(parts["-"]), "\n".join(parts["+"])))
+                parts["-"], parts["+"] = [], []
+            if line and line[0] in parts:
+                parts[line[0]].append(line[1:])
+        more = "".join(f"{line}\n" for line in parts[">"])
+        whole = "".join(f"{line}\n" for line in parts["="])
+        yield name, whole or spoilt(*changes, more=more), parts["!"]
