@@ -6,7 +6,6 @@
 from __future__ import annotations
 
 import numpy as np
-import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
@@ -14,8 +13,14 @@ from seqfault.case.reader import case_from_tree
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from tests.referee import Result
-from tests.strategies import FaultRequest, PlainNetwork, base_powers, fault_requests, networks
-from tests.strategies import to_case_tree, to_referee
+from tests.strategies import (
+    FaultRequest,
+    PlainNetwork,
+    fault_requests,
+    networks,
+    to_case_tree,
+    to_referee,
+)
 
 TOLERANCE = 1e-8
 

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import argparse
+from collections.abc import Iterable
+from typing import TYPE_CHECKING, Any
 
 from seqfault.cli.options import (
     Commands,
@@ -14,14 +16,17 @@ from seqfault.cli.options import (
     read_ohms,
 )
 
-NAME = "compare"
+if TYPE_CHECKING:
+    from seqfault.faults.network import Network
+    from seqfault.report.data import Quantity
+    from seqfault.report.tables import Page
 
 
 def add(commands: Commands) -> None:
     """Add the command to the parser."""
     parser = add_command(
         commands,
-        NAME,
+        "compare",
         "kinds of fault side by side",
         "Three-phase, line-line, line-line-ground and line-ground faults at one bus, side by side:"
         " currents, voltages left, and how earth current gets home.",
@@ -35,25 +40,31 @@ def add(commands: Commands) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Answer the command."""
-    from functools import partial
-
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
     form = form_wanted(options)
     zf, zg = read_ohms(options.zf, "--zf"), read_ohms(options.zg, "--zg")
     networks = read_networks(options, options.place)
-    from seqfault.report.compare import compare_page, compare_rows, compare_tree
     from seqfault.studies.compare import compare
 
-    answers = []
-    for network in networks:
+    def answer(network: Network) -> Answer:
         comparison = compare(network, options.place, zf=zf, zg=zg)
-        answers.append(
-            Answer(
-                partial(compare_page, network, comparison),
-                partial(compare_tree, network, comparison),
-                partial(compare_rows, comparison),
-                network.model.warnings,
-            )
-        )
-    return deliver(options, form, answers)
+
+        def page() -> Page:
+            from seqfault.report.compare import compare_page
+
+            return compare_page(network, comparison)
+
+        def tree() -> dict[str, Any]:
+            from seqfault.report.compare_data import compare_tree
+
+            return compare_tree(network, comparison)
+
+        def rows() -> Iterable[Quantity]:
+            from seqfault.report.compare_data import compare_rows
+
+            return compare_rows(comparison)
+
+        return Answer(page, tree, rows, network.model.warnings)
+
+    return deliver(options, form, [answer(network) for network in networks])

@@ -6,7 +6,6 @@ import argparse
 
 from seqfault.cli.options import Commands, add_command
 
-NAME = "completion"
 SHELLS = ("bash", "zsh", "fish")
 
 
@@ -14,7 +13,7 @@ def add(commands: Commands) -> None:
     """Add the command to the parser."""
     parser = add_command(
         commands,
-        NAME,
+        "completion",
         "a completion script for bash, zsh or fish",
         "Print a script that completes commands, options, case files and places. bash:"
         ' eval "$(seqfault completion bash)"; zsh: the same, after compinit; fish: seqfault'

@@ -5,8 +5,7 @@ from __future__ import annotations
 import argparse
 import sys
 from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 from seqfault.cli.run import say
 from seqfault.errors import RequestError, quoted
@@ -16,8 +15,7 @@ if TYPE_CHECKING:
     from seqfault.report.tables import Page
 
 
-@dataclass(frozen=True)
-class Answer:
+class Answer(NamedTuple):
     """One answer in its three forms, each made only when asked for."""
 
     page: Callable[[], Page]
@@ -28,10 +26,10 @@ class Answer:
 
 def form_wanted(options: argparse.Namespace) -> str:
     """table, json or csv. Raises ``RequestError`` for a file that cannot or must not be written."""
-    from seqfault.report.files import check_target, form_of
-
     if options.output is None:
         return options.format or "table"
+    from seqfault.report.files import check_target, form_of
+
     form = options.format or form_of(options.output)
     if form is None:
         name = quoted(options.output)

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import argparse
+from collections.abc import Iterable
+from typing import TYPE_CHECKING, Any
 
 from seqfault.cli.options import (
     Commands,
@@ -14,7 +16,11 @@ from seqfault.cli.options import (
     read_ohms,
 )
 
-NAME = "fault"
+if TYPE_CHECKING:
+    from seqfault.faults.network import Network
+    from seqfault.report.data import Quantity
+    from seqfault.report.tables import Page
+
 KINDS = ("three-phase", "three-phase-ground", "line-line", "line-line-ground", "line-ground")
 
 
@@ -22,7 +28,7 @@ def add(commands: Commands) -> None:
     """Add the command to the parser."""
     parser = add_command(
         commands,
-        NAME,
+        "fault",
         "one fault in full",
         "One fault at one bus in full: the current, how it gets home, the voltages at every bus,"
         " who feeds it, what flows elsewhere, and what each star point sees.",
@@ -51,31 +57,32 @@ def add(commands: Commands) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Answer the command."""
-    from functools import partial
-
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
     form = form_wanted(options)
     zf, zg = read_ohms(options.zf, "--zf"), read_ohms(options.zg, "--zg")
     networks = read_networks(options, options.place)
-    from seqfault.report.data import fault_rows, fault_tree
-    from seqfault.report.fault import fault_page
 
-    answers = []
-    for network in networks:
+    def answer(network: Network) -> Answer:
         solution = network.fault(options.place, options.kind, phases=options.phases, zf=zf, zg=zg)
-        answers.append(
-            Answer(
-                partial(
-                    fault_page,
-                    network,
-                    solution,
-                    every_flow=options.flows,
-                    sequence=options.components,
-                ),
-                partial(fault_tree, network, solution),
-                partial(fault_rows, solution),
-                network.model.warnings,
+
+        def page() -> Page:
+            from seqfault.report.fault import fault_page
+
+            return fault_page(
+                network, solution, every_flow=options.flows, sequence=options.components
             )
-        )
-    return deliver(options, form, answers)
+
+        def tree() -> dict[str, Any]:
+            from seqfault.report.data import fault_tree
+
+            return fault_tree(network, solution)
+
+        def rows() -> Iterable[Quantity]:
+            from seqfault.report.data import fault_rows
+
+            return fault_rows(solution)
+
+        return Answer(page, tree, rows, network.model.warnings)
+
+    return deliver(options, form, [answer(network) for network in networks])

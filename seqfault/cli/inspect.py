@@ -13,14 +13,12 @@ from seqfault.cli.options import (
     read_states,
 )
 
-NAME = "inspect"
-
 
 def add(commands: Commands) -> None:
     """Add the command to the parser."""
     parser = add_command(
         commands,
-        NAME,
+        "inspect",
         "what was read: zones, per unit, windings, assumptions",
         "What was read of a case: voltage zones and base values, impedances per unit, what each"
         " winding does to zero sequence, star points, and every assumption.",

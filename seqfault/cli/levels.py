@@ -6,14 +6,12 @@ import argparse
 
 from seqfault.cli.options import Commands, add_case, add_command, add_output, read_networks
 
-NAME = "levels"
-
 
 def add(commands: Commands) -> None:
     """Add the command to the parser."""
     parser = add_command(
         commands,
-        NAME,
+        "levels",
         "fault levels at every bus",
         "Bolted-fault currents at every bus, by voltage; with --scenario all the greatest and the"
         " least of each, and the states that give them.",

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import argparse
 import sys
+from importlib import import_module
 from typing import NoReturn
 
 from seqfault import __version__
-from seqfault.cli import compare, completion, fault, inspect, levels
 
-COMMANDS = (inspect, fault, compare, levels, completion)
+COMMANDS = ("inspect", "fault", "compare", "levels", "completion")
 EPILOG = """\
 examples:
   seqfault inspect plant.toml
@@ -26,18 +26,18 @@ class Parser(argparse.ArgumentParser):
 
     def error(self, message: str) -> NoReturn:
         """Say what is wrong on standard error and leave with exit code 2."""
+        message = message.removeprefix("argument ")
         if message.endswith("expected one argument"):
-            option = message.removeprefix("argument ").partition(":")[0]
+            option = message.partition(":")[0]
             message = f"{option}: a value is missing; where it begins with - write {option}=-…"
         from seqfault.report.spelling import Spelling
 
         spell = Spelling(getattr(sys.stderr, "encoding", None))
-        message = message.removeprefix("argument ")
         self.exit(2, f"seqfault: {spell(message)}; {self.prog} --help explains\n")
 
 
-def build_parser() -> Parser:
-    """The parser of all commands."""
+def build_parser(only: str | None = None) -> Parser:
+    """The parser of all commands, or of ``only`` one: each costs a module and its options."""
     parser = Parser(
         prog="seqfault",
         description="Unbalanced faults in power networks: what flows, what voltage is left, and how"
@@ -50,20 +50,20 @@ def build_parser() -> Parser:
     commands = parser.add_subparsers(
         dest="command", metavar="COMMAND", title="commands", required=True, parser_class=Parser
     )
-    for command in COMMANDS:
-        command.add(commands)
+    for name in COMMANDS:
+        if only in (None, name):
+            import_module(f"seqfault.cli.{name}").add(commands)
     return parser
 
 
 def read_arguments(arguments: list[str]) -> argparse.Namespace:
     """The options that ``arguments`` state; ``run`` among them is the command's function."""
-    parser = build_parser()
-    names = [command.NAME for command in COMMANDS]
-    word = next((a for a in arguments if not a.startswith("-")), None)
+    first = arguments[0] if arguments else ""
+    parser = build_parser(first if first in COMMANDS else None)
     if not arguments:
-        parser.error(f"a command is wanted: {', '.join(names)}")
-    if word is not None and word not in names and arguments[0] == word:
-        parser.error(f'there is no command "{word}"{nearest(word, names)}')
+        parser.error(f"a command is wanted: {', '.join(COMMANDS)}")
+    if not first.startswith("-") and first not in COMMANDS:
+        parser.error(f'there is no command "{first}"{nearest(first, COMMANDS)}')
     options, extra = parser.parse_known_args(arguments)
     if extra:
         own: Parser = options.parser
@@ -75,7 +75,7 @@ def read_arguments(arguments: list[str]) -> argparse.Namespace:
     return options
 
 
-def nearest(word: str, known: list[str]) -> str:
+def nearest(word: str, known: tuple[str, ...] | list[str]) -> str:
     """``; did you mean X?``, or nothing."""
     import difflib
 

@@ -17,10 +17,6 @@ from seqfault.model.windings import incidence, induced
 from seqfault.networks.assembly import open_ended, star_admittances
 
 
-FLOOR = 1e-3
-"""Share of the voltage before the fault below which a potential counts as rounding."""
-
-
 @dataclass(frozen=True, eq=False)
 class TerminalMap:
     """Every terminal of every element, in one order for all sequences.
@@ -131,8 +127,8 @@ def check_balance(
 ) -> float:
     """Largest imbalance over its allowance at any node; raises ``CheckError`` above 1.
 
-    At every node |Σ I| ≤ 1e-9 max|I_fault| + 1e-13 Σ|Y||V|, where |V| is no less than a thousandth
-    of the voltage before the fault: what is smaller is the rounding of phase voltages. ``fault`` (3, r) per-unit currents from
+    At every node |Σ I| ≤ 1e-9 max|I_fault| + 1e-13 Σ|Y||V|, where |V| is no less than the voltage
+    before the fault: every potential stems from phase voltages of that size and their rounding. ``fault`` (3, r) per-unit currents from
     the network into the fault at each of the buses ``buses``, all sequences.
     """
     n = len(model.buses)
@@ -141,7 +137,7 @@ def check_balance(
     np.add.at(total, buses, fault[sequence])
     terminals = terminal_map(model)
     np.add.at(total, terminals.bus, flows.terminal)
-    level = np.abs(w) + FLOOR * np.abs(model.before).max(initial=0.0)
+    level = np.abs(w) + np.abs(model.before).max(initial=0.0)
     lines = model.lines
     whole = lines.closed.all(axis=0)
     i, j = lines.ends[:, whole]

@@ -89,15 +89,21 @@ def fault_at(place: str, kind: str, phases: str | None = None, zf: complex = 0, 
 
 
 def branches(fault: Fault) -> tuple[Complex, Complex]:
-    """Incidence (3, b) of the fault's branches on phases a, b, c, and their impedances (b, b) in ohm."""
+    """Incidence (3, b) of the fault's loops on phases a, b, c, and their impedances (b, b) in ohm.
+
+    Loops run from each faulted phase to the next, and for faults to earth from the last phase to
+    earth. A loop between phases sees exactly nothing of zero sequence, whose impedance may be larger
+    than the others by more digits than a number holds.
+    """
     at = ["abc".index(phase) for phase in fault.phases]
     zf, zg = fault.zf, fault.zg
-    eye = np.eye(3, dtype=complex)
-    if fault.kind.earth:
-        e = eye[:, at]
-        size = len(at)
-        return e, zf * np.eye(size) + zg * np.ones((size, size))
+    size = len(at)
     if fault.kind.name == "line-line":
-        return (eye[:, at[0]] - eye[:, at[1]])[:, None], np.array([[zf]])
-    e = np.stack([eye[:, 0] - eye[:, 1], eye[:, 1] - eye[:, 2]], axis=1)
-    return e, zf * np.array([[2, -1], [-1, 2]], complex)
+        to_loops, z = np.array([[1], [-1]], complex), np.array([[zf, 0], [0, 0]])
+    else:
+        width = size if fault.kind.earth else size - 1
+        to_loops = (np.eye(size) - np.eye(size, k=-1))[:, :width].astype(complex)
+        z = zf * np.eye(size) + (zg if fault.kind.earth else 0) * np.ones((size, size))
+    incidence = np.zeros((3, to_loops.shape[1]), complex)
+    incidence[at] = to_loops
+    return incidence, to_loops.T @ z @ to_loops

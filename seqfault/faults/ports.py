@@ -33,15 +33,15 @@ class PortSolution:
 
     ``current`` (3, r) sequence currents from the network into each fault, physical angles;
     ``impedance`` (3, r) driving-point impedances, infinite where there is no path; ``columns`` of each
-    sequence for the ports; ``slack`` the free potentials of each sequence, and ``unseen`` those no
-    fault branch sees.
+    sequence for the ports; ``slack`` the free potentials of each sequence, and ``unseen`` the mixtures
+    of zero-sequence ones that no fault branch sees.
     """
 
     current: Complex
     impedance: Complex
     columns: tuple[Complex, Complex, Complex]
     slack: tuple[Slack, Slack, Slack]
-    unseen: tuple[set[tuple[int, int]], ...]
+    unseen: tuple[Slack, ...]
 
 
 def solve_ports(
@@ -58,7 +58,6 @@ def solve_ports(
     columns = tuple(networks[s].columns(nodes) for s in range(3))
     z = np.stack([networks[s].port_impedance(nodes, columns[s]) for s in range(3)])
     z = z * turn[:, :, None] * turn[:, None, :].conj()
-    z_phase = np.einsum("ps,sij,sq->ipjq", TO_PHASES, z, TO_SEQUENCE)
     before = model.before[nodes] * turn[1]
     v = before[:, None] * TO_PHASES[:, 1]
 
@@ -71,17 +70,19 @@ def solve_ports(
         own = slice(start[k], start[k + 1])
         incidence[k, :, own] = e
         z_fault[own, own] = zf * (model.base_power / model.nominal[nodes[k]] ** 2)
-    matrix = np.einsum("ipa,ipjq,jqb->ab", incidence, z_phase, incidence) + z_fault
+    # Components of each loop first: one clear of earth has exactly no zero sequence, whose impedance
+    # may drown the others in phase coordinates.
+    seen = np.einsum("ps,ipa->sia", TO_PHASES, incidence)
+    driven = np.einsum("sp,ipa->sia", TO_SEQUENCE, incidence)
+    matrix = np.einsum("sia,sij,sjb->ab", seen, z, driven) + z_fault
     rhs = np.einsum("ipa,ip->a", incidence, v)
 
     lift, constraint, keys, alone = [], [], [], []
     for s in range(3):
         free, names = networks[s].slack_at(nodes)
         for q, name in enumerate(names):
-            on_phases = (free[:, q] * turn[s])[:, None] * TO_PHASES[:, s]
-            lift.append(np.einsum("ipa,ip->a", incidence, on_phases))
-            into = (free[:, q] * turn[s].conj())[:, None] * TO_SEQUENCE[s]
-            constraint.append(np.einsum("ip,ipa->a", into, incidence))
+            lift.append((free[:, q] * turn[s]) @ seen[s])
+            constraint.append((free[:, q] * turn[s].conj()) @ driven[s])
             keys.append((s, name))
             touched = np.flatnonzero(np.abs(free[:, q]) > 1e-9)
             if len(touched) == 1:
@@ -90,18 +91,16 @@ def solve_ports(
     up = np.array(lift, complex).reshape(len(keys), width).T
     i, u = _solve(matrix, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
 
-    # Components of each branch first: one clear of earth has exactly no zero sequence.
-    current = np.einsum("sp,ipa->sia", TO_SEQUENCE, incidence) @ i
+    current = driven @ i
     for s, held in alone:
         current[s, held] = 0  # to the last bit, where elimination leaves a rounding
     slack: tuple[Slack, Slack, Slack] = ({}, {}, {})
-    unseen: tuple[set[tuple[int, int]], ...] = (set(), set(), set())
-    scale = np.abs(up).max(initial=0.0)
     for q, (s, name) in enumerate(keys):
-        if np.abs(up[:, q]).max(initial=0.0) > 1e-9 * max(scale, 1.0):
-            slack[s][name] = complex(u[q])
-        else:
-            unseen[s].add(name)
+        slack[s][name] = complex(u[q])
+    unseen = tuple(
+        {name: complex(share) for (s, name), share in zip(keys, column, strict=True) if s == 0}
+        for column in _null_basis(up).T
+    )
     own_z = np.stack([np.diagonal(z[s]) for s in range(3)])
     for s in range(3):
         free, _ = networks[s].slack_at(nodes)

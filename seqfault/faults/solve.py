@@ -27,6 +27,9 @@ from seqfault.faults.solution import (
 from seqfault.model.elements import DELTA, Bools, Complex, Model
 from seqfault.networks.factors import SequenceNetworks
 
+SEEN = 1e-9
+"""Share of a free potential below which a node does not take part in it."""
+
 
 def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
     """Solve one fault at a bus.
@@ -98,13 +101,20 @@ def _ohms(per_unit: Complex, base: float) -> Complex:
 def _undefined(networks: SequenceNetworks, ports: PortSolution) -> tuple[Bools, Bools]:
     """Buses (n,) and star points (k,) whose potential to earth no branch fixes."""
     model, zero = networks.model, networks[0]
-    loose = zero.slacks.copy()
-    for p, _ in ports.slack[0]:
-        loose[p] -= 1
     part = zero.free.part
+    at = np.flatnonzero(part >= 0)
+    untouched = zero.slack.copy()
+    for p, x in ports.slack[0]:
+        untouched[p, :, x] = 0
     floating = np.zeros(zero.size, bool)
-    at = part >= 0
-    floating[at] = loose[part[at]] > 0
+    reach = np.einsum("ik,ikx->ix", zero.direction[at], untouched[part[at]])
+    floating[at] = (np.abs(reach) > SEEN).any(axis=1)
+    for mixture in ports.unseen:
+        total = np.zeros(zero.size, complex)
+        for (p, x), share in mixture.items():
+            inside = part == p
+            total[inside] += share * (zero.direction[inside] @ zero.slack[p, :, x])
+        floating |= np.abs(total) > SEEN
     buses = floating[: len(model.buses)] & model.live
     stars = np.zeros(len(model.stars.names), bool)
     own = model.stars.node >= 0

@@ -22,9 +22,11 @@ TOLERANCE = 1e-9
 
 @dataclass(frozen=True, eq=False)
 class FreeSpace:
-    """``part`` (n,) number of the floating part a node belongs to, −1 where it is tied to earth;
-    ``basis`` (n, k) its free vectors; ``dimension`` (parts,) how many each part has;
-    ``reference`` nodes held at zero, one a free vector.
+    """Free vectors by part: a part is what strong elements join, so that parts do not see each other.
+
+    ``part`` (n,) number of the part a node belongs to, −1 where a part leaves nothing free;
+    ``basis`` (n, k) its free vectors, zero at nodes that are tied to earth; ``dimension`` (parts,) how
+    many each part has; ``reference`` nodes held at zero, one a free vector.
     """
 
     part: Ints
@@ -57,8 +59,23 @@ def free_space(model: Model, sequence: int) -> FreeSpace:
     grounded = model.sources.admittance[sequence] != 0
     tied[group[model.sources.bus[grounded]]] = True
     ties = _ties(model, sequence, group)
-    basis, part = _solve(ties, tied, size)
-    return _spread(basis, part, group)
+    vectors, number = _solve(ties, tied, size)
+    return _spread(vectors, number, group, _parts(model, sequence, group, size))
+
+
+def _parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
+    """Labels (size,) of the merged nodes that strong elements join."""
+    first, second = [], []
+    for sets in model.winding_sets:
+        inc = incidence(sets, sequence, model.stars.node)
+        m, w = inc.node.shape[:2]
+        carries = (inc.admittance != 0).any(axis=2)[:, :, None]
+        node = np.where((inc.weight != 0) & carries, inc.node, -1).reshape(m, 2 * w)
+        head = node.max(axis=1, initial=-1)[:, None]
+        unit, place = np.nonzero((node >= 0) & (node != head))
+        first.append(group[head[unit, 0]])
+        second.append(group[node[unit, place]])
+    return components(size, np.concatenate(first), np.concatenate(second))
 
 
 def _ties(model: Model, sequence: int, group: Ints) -> Ties:
@@ -115,8 +132,8 @@ def _conditions(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int |
     return [(unit, first, second) for unit, first, second in out if len(unit)]
 
 
-def _solve(ties: Ties, tied: np.ndarray, size: int) -> tuple[dict[int, Floats], Ints]:
-    """Free vectors of the merged nodes: basis rows by node, and the part each node belongs to."""
+def _solve(ties: Ties, tied: np.ndarray, size: int) -> tuple[list[tuple[Ints, Floats]], Ints]:
+    """Free vectors of the merged nodes: those over several nodes, and the nodes free on their own."""
     row, node, weight = ties.row, ties.node, ties.weight
     tied = tied.copy()
     while True:  # a condition on one free node alone ties it to earth
@@ -128,13 +145,11 @@ def _solve(ties: Ties, tied: np.ndarray, size: int) -> tuple[dict[int, Floats], 
             break
         tied[node[single]] = True
     label = components(size + ties.rows, node, size + row)[:size]
-    number = np.full(size, -1, np.int64)
-    basis: dict[int, Floats] = {}
     order = np.argsort(label[node], kind="stable")
     row, node, weight = row[order], node[order], weight[order]
     touched = np.zeros(size, bool)
     touched[node] = True
-    parts = 0
+    vectors: list[tuple[Ints, Floats]] = []
     bounds = np.flatnonzero(np.diff(label[node], prepend=-1, append=-1)) if len(node) else np.zeros(0, int)
     for a, b in pairwise(bounds.tolist()):
         members, column = np.unique(node[a:b], return_inverse=True)
@@ -143,13 +158,8 @@ def _solve(ties: Ties, tied: np.ndarray, size: int) -> tuple[dict[int, Floats], 
         np.add.at(dense, (at, column), weight[a:b])
         free = _null_space(dense)
         if free.shape[1]:
-            number[members] = parts
-            parts += 1
-            for position, member in enumerate(members.tolist()):
-                basis[member] = free[position]
-    alone = np.flatnonzero(~touched & ~tied)
-    number[alone] = parts + np.arange(len(alone))
-    return basis, number
+            vectors.append((members, free))
+    return vectors, np.flatnonzero(~touched & ~tied)
 
 
 def _null_space(dense: Floats) -> Floats:
@@ -165,28 +175,40 @@ def _null_space(dense: Floats) -> Floats:
     return free
 
 
-def _spread(basis: dict[int, Floats], number: Ints, group: Ints) -> FreeSpace:
-    """From merged nodes back to all nodes, with one reference node a free vector."""
-    k = max((len(v) for v in basis.values()), default=1)
-    merged = np.zeros((len(number), k))
-    merged[number >= 0, 0] = 1.0
-    for node, vector in basis.items():
-        merged[node] = 0
-        merged[node, : len(vector)] = vector
-    parts = int(number.max(initial=-1)) + 1
-    dimension = np.ones(parts, np.int64)
-    for node, vector in basis.items():
-        dimension[number[node]] = len(vector)
-    part, full = number[group], merged[group]
-    floating = np.flatnonzero(part >= 0)
-    order = floating[np.lexsort((-np.abs(full[floating, 0]), part[floating]))]
+def _spread(vectors: list[tuple[Ints, Floats]], alone: Ints, group: Ints, label: Ints) -> FreeSpace:
+    """From merged nodes back to all nodes, vectors gathered by part, with their reference nodes."""
+    size = len(label)
+    filled = np.zeros(size, np.int64)  # free vectors of each part, by its label
+    np.add.at(filled, label[alone], 1)
+    for members, free in vectors:
+        filled[label[members[0]]] += free.shape[1]
+    floating = np.flatnonzero(filled)
+    number = np.full(size, -1, np.int64)
+    number[floating] = np.arange(len(floating))
+    dimension = filled[floating]
+    basis = np.zeros((size, int(dimension.max(initial=1))))
+    at = np.zeros(size, np.int64)
+    for members, free in vectors:
+        here = label[members[0]]
+        basis[members, at[here] : at[here] + free.shape[1]] = free
+        at[here] += free.shape[1]
+    order = alone[np.argsort(label[alone], kind="stable")]
+    rank = np.arange(len(order)) - np.searchsorted(label[order], label[order])
+    basis[order, at[label[order]] + rank] = 1.0
+    part, full = number[label[group]], basis[group]
+    return FreeSpace(part, full, dimension, _references(part, full, dimension))
+
+
+def _references(part: Ints, basis: Floats, dimension: Ints) -> Ints:
+    """A node for each free vector, such that holding them at zero leaves none."""
+    inside = np.flatnonzero(part >= 0)
+    order = inside[np.lexsort((-np.abs(basis[inside, 0]), part[inside]))]
     first = order[np.flatnonzero(np.diff(part[order], prepend=-1))]
-    simple = first[dimension[part[first]] == 1]
-    reference = [simple]
+    reference = [first[dimension[part[first]] == 1]]
     for p in np.flatnonzero(dimension > 1).tolist():
         nodes = np.flatnonzero(part == p)
-        reference.append(nodes[_independent_rows(full[nodes, : dimension[p]])])
-    return FreeSpace(part, full, dimension, np.concatenate(reference).astype(np.int64))
+        reference.append(nodes[_independent_rows(basis[nodes, : dimension[p]])])
+    return np.concatenate(reference).astype(np.int64)
 
 
 def _independent_rows(matrix: Floats) -> Ints:

@@ -3,13 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from typing import Any
 
 import numpy as np
 
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
-from seqfault.report.data import Quantity, fault_rows, fault_tree, header
 from seqfault.report.facts import after, conditions, impedances
 from seqfault.report.numbers import figures, kilovolt, quiet
 from seqfault.report.tables import (
@@ -190,40 +188,3 @@ def _of(extreme: Extreme) -> str:
     if extreme.kind in ("line-line-ground",):
         return f"{extreme.kind}, phase {extreme.phase}"
     return extreme.kind
-
-
-def compare_tree(network: Network, comparison: Comparison) -> dict[str, Any]:
-    """The comparison as plain values for JSON; each of ``faults`` as ``fault`` gives it."""
-
-    def extreme(value: Extreme | None) -> dict[str, Any] | None:
-        if value is None:
-            return None
-        return {"value": value.value, "kind": value.kind, "phase": value.phase}
-
-    faults = []
-    for solution in comparison.solutions:
-        tree = fault_tree(network, solution)
-        for shared in ("format", "case", "scenario", "assumptions", "warnings"):
-            del tree[shared]
-        faults.append(tree)
-    first = comparison.solutions[0]
-    return {
-        **header(network),
-        "place": comparison.place,
-        "nominal": first.nominal,
-        "prefault": first.prefault,
-        "reference": comparison.reference,
-        "greatest": extreme(comparison.greatest),
-        "least": extreme(comparison.least),
-        "least_clear_of_earth": extreme(comparison.least_clear_of_earth),
-        "earth_fault_factor": extreme(comparison.earth_fault_factor),
-        "faults": faults,
-        "assumptions": [text for a in first.assumptions for text in a.sentences()],
-        "warnings": list(first.warnings),
-    }
-
-
-def compare_rows(comparison: Comparison) -> Iterator[Quantity]:
-    """The comparison in long form: the rows of each fault in turn."""
-    for solution in comparison.solutions:
-        yield from fault_rows(solution)

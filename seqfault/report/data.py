@@ -9,9 +9,9 @@ from __future__ import annotations
 import cmath
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
 from typing import Any
 
+import msgspec
 import numpy as np
 
 from seqfault.faults.network import Network
@@ -21,8 +21,7 @@ from seqfault.report.numbers import quiet
 FORMAT = 1
 
 
-@dataclass(frozen=True)
-class Quantity:
+class Quantity(msgspec.Struct, frozen=True):
     """One value of the long form.
 
     ``place`` and ``kind`` say which fault, ``where`` the bus, ``ELEMENT@BUS`` or star point the

@@ -7,8 +7,8 @@ label too long for its column takes lines of its own: nothing is shortened, noth
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
 
+import msgspec
 from rich.cells import cell_len
 
 from seqfault.report.numbers import figures, fixed
@@ -142,8 +142,7 @@ def _sentences(part: Sentences, width: int, spell: Spell) -> Iterator[Line]:
             yield [(2 * indent + text, style)]
 
 
-@dataclass(frozen=True)
-class Frame:
+class Frame(msgspec.Struct, frozen=True):
     """Widths shared by tables with the same groups: columns and totals by group, and the labels."""
 
     columns: list[list[int]]
@@ -179,7 +178,7 @@ def _table(
         yield from _headings(table.groups, panel, frame, spell)
         for block, text in zip(table.blocks, texts, strict=True):
             if block.heading:
-                if number or block is not table.blocks[0] or table.heading:
+                if block is not table.blocks[0]:
                     yield []
                 yield from ([(line, "heading")] for line in wrap(spell(block.heading), width))
             for row, cells in zip(block.rows, text, strict=True):

@@ -141,11 +141,12 @@ def _ranges(states: Sequence[Levels]) -> tuple[Table, Table]:
                 for name, each in ranges:
                     values, given_by = ends(each)
                     value, state = float(values[at[bus]]), given_by[at[bus]]
-                    known = math.isfinite(value)
-                    unknown = "dead" if name == "k3" else "-"
-                    cells.append(
-                        (_text(name, value), f"({number[state]})") if known else (unknown, "")
-                    )
+                    if not math.isfinite(value):
+                        cells.append(("dead" if name == "k3" else "-", ""))
+                    elif name == "k1_over_k3":
+                        cells.append((_text(name, value),))
+                    else:
+                        cells.append((value, f"({number[state]})"))
                 rows.append(Row(bus, tuple(cells)))
             blocks.append(Block(heading, (AMPERE, STATE), tuple(rows)))
         return Table(_groups(), tuple(blocks), f"{word}: ampere, and the state that gives it")
