@@ -18,9 +18,9 @@ the faulted place before the fault.
 >>> network = seqfault.Network(case)
 >>> fault = network.fault("main", "line-ground")
 >>> round(abs(fault.residual))
-389
+393
 >>> [(path.path, round(abs(path.current))) for path in fault.home]
-[('NER', 389)]
+[('NER', 393)]
 >>> seqfault.compare(network, "main").greatest.kind
 'three-phase'
 """

@@ -90,9 +90,10 @@ def differences(net: PlainNetwork, ours: FaultSolution, theirs: Result) -> list[
         name = star.name.removesuffix(".neutral")  # the referee calls a machine's star point so
         current(f"star {name}", star.current, theirs.star_current[name], nominal)
         unknown = name in theirs.star_undetermined
-        if star.voltage is not None and not unknown:
-            if abs(star.voltage - theirs.star_voltage[name]) > TOLERANCE * nominal:
-                out.append(f"star {star.name}: {star.voltage} against {theirs.star_voltage[name]}")
+        if star.voltage is None or unknown:
+            continue
+        if abs(star.voltage - theirs.star_voltage[name]) > TOLERANCE * nominal:
+            out.append(f"star {star.name}: {star.voltage} against {theirs.star_voltage[name]}")
     for delta in ours.deltas:
         theirs_delta = theirs.delta_current[f"{delta.element}.{delta.side}"]
         current(f"delta {delta.element}", delta.current, theirs_delta, net.buses[delta.bus])

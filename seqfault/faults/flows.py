@@ -128,8 +128,9 @@ def check_balance(
     """Largest imbalance over its allowance at any node; raises ``CheckError`` above 1.
 
     At every node |Σ I| ≤ 1e-9 max|I_fault| + 1e-13 Σ|Y||V|, where |V| is no less than the voltage
-    before the fault: every potential stems from phase voltages of that size and their rounding. ``fault`` (3, r) per-unit currents from
-    the network into the fault at each of the buses ``buses``, all sequences.
+    before the fault: every potential stems from phase voltages of that size and their rounding.
+    ``fault`` (3, r) per-unit currents from the network into the fault at each of the buses ``buses``,
+    all sequences.
     """
     n = len(model.buses)
     total = np.zeros(len(w), complex)

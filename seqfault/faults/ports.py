@@ -31,13 +31,15 @@ SINGULAR = 1e-13
 class PortSolution:
     """Currents of the faults, in per unit of each place.
 
-    ``current`` (3, r) sequence currents from the network into each fault, physical angles;
+    ``current`` (3, r) sequence and ``phases`` (3, r) phase currents from the network into each fault, at
+    their true angles, sound phases exactly zero;
     ``impedance`` (3, r) driving-point impedances, infinite where there is no path; ``columns`` of each
     sequence for the ports; ``slack`` the free potentials of each sequence, and ``unseen`` the mixtures
     of zero-sequence ones that no fault branch sees.
     """
 
     current: Complex
+    phases: Complex
     impedance: Complex
     columns: tuple[Complex, Complex, Complex]
     slack: tuple[Slack, Slack, Slack]
@@ -92,6 +94,7 @@ def solve_ports(
     i, u = _solve(matrix, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
 
     current = driven @ i
+    phases = np.einsum("ipa,a->pi", incidence, i)
     for s, held in alone:
         current[s, held] = 0  # to the last bit, where elimination leaves a rounding
     slack: tuple[Slack, Slack, Slack] = ({}, {}, {})
@@ -105,7 +108,7 @@ def solve_ports(
     for s in range(3):
         free, _ = networks[s].slack_at(nodes)
         own_z[s, (np.abs(free) > 1e-9).any(axis=1)] = np.inf
-    return PortSolution(current, own_z, (columns[0], columns[1], columns[2]), slack, unseen)
+    return PortSolution(current, phases, own_z, (columns[0], columns[1], columns[2]), slack, unseen)
 
 
 def _solve(z: Complex, v: Complex, lift: Complex, constraint: Complex) -> tuple[Complex, Complex]:

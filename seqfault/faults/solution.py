@@ -78,8 +78,8 @@ class FaultSolution:
     Angles are relative to the phase-a-to-earth voltage at the faulted place before the fault.
 
     ``impedance`` (3,) ohm, driving-point impedances, infinite where the place has no such path;
-    ``current_sequence`` (3,) A from the network into the fault; ``voltage_sequence`` (3, n) V to earth
-    at every bus of ``buses``; ``before`` (n,) V, phase a before the fault; ``undefined`` (n,) buses
+    ``current`` (3,) phases and ``current_sequence`` (3,) A from the network into the fault;
+    ``voltage_sequence`` (3, n) V to earth at every bus of ``buses``; ``before`` (n,) V, phase a before the fault; ``undefined`` (n,) buses
     whose potential to earth nothing fixes; ``balance`` the largest imbalance of any node over what the
     check allows.
     """
@@ -91,6 +91,7 @@ class FaultSolution:
     base_power: float
     prefault: float
     impedance: Complex
+    current: Complex
     current_sequence: Complex
     buses: tuple[str, ...]
     bus_nominal: Floats
@@ -108,11 +109,6 @@ class FaultSolution:
     assumptions: tuple[Assumption, ...]
     warnings: tuple[str, ...]
     index: dict[str, int] = field(repr=False)
-
-    @property
-    def current(self) -> Complex:
-        """Phase currents (3,) A from the network into the fault."""
-        return to_phases(self.current_sequence)
 
     @property
     def residual(self) -> complex:

@@ -68,6 +68,7 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
         base_power=model.base_power,
         prefault=float(np.abs(model.before[place])),
         impedance=_ohms(ports.impedance[:, 0], float(z_base)),
+        current=ports.phases[:, 0] * base_i[place],
         current_sequence=current,
         buses=model.buses,
         bus_nominal=model.nominal,

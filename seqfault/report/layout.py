@@ -6,37 +6,28 @@ label too long for its column takes lines of its own: nothing is shortened, noth
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 
 import msgspec
 from rich.cells import cell_len
 
 from seqfault.report.numbers import figures, fixed
+from seqfault.report.prose import INDENT, Line, Piece, Spell, padded, prose, wrap
 from seqfault.report.tables import (
     Block,
     Cell,
     Column,
-    Facts,
     Group,
     Page,
     Row,
-    Sentences,
     Table,
-    Title,
 )
-
-Piece = tuple[str, str]
-"""Text and the name of its style: title, heading, mark, quiet or nothing."""
-Line = list[Piece]
-Spell = Callable[[str], str]
 
 LABEL = 14
 """Least width of a label column before a table is cut into panels."""
-GAP, INNER, INDENT = 2, 1, 2
+GAP, INNER = 2, 1
 WORDY = 41
 """Texts wider than this are wrapped in their column."""
-PROSE = 100
-"""Sentences are not drawn wider than this."""
 
 
 def lay_out(page: Page, width: int, spell: Spell) -> list[Line]:
@@ -50,96 +41,11 @@ def lay_out(page: Page, width: int, spell: Spell) -> list[Line]:
             frame = _frame([(t, drawn[id(t)]) for t in alike], width, spell)
             made = list(_table(part, drawn[id(part)], frame, width, spell))
         else:
-            made = list(_part(part, width, spell))
+            made = list(prose(part, width, spell))
         if made and lines:
             lines.append([])
         lines += made
     return lines
-
-
-def _part(part: Title | Facts | Sentences, width: int, spell: Spell) -> Iterator[Line]:
-    match part:
-        case Title():
-            yield from _title(part, width, spell)
-        case Facts():
-            yield from _facts(part, width, spell)
-        case Sentences():
-            yield from _sentences(part, width, spell)
-
-
-def wrap(text: str, width: int) -> list[str]:
-    """Lines of at most ``width`` cells, broken at blanks, inside a word only where it must be."""
-    width = max(width, 8)
-    lines, line, used = [], "", 0
-    for word in text.split(" "):
-        size = cell_len(word)
-        if line and used + 1 + size > width:
-            lines.append(line)
-            line, used = word, size
-        else:
-            line = f"{line} {word}" if lines or line else word
-            used = cell_len(line)
-        while used > width:
-            cut = _fitting(line, width)
-            lines.append(line[:cut])
-            line = line[cut:]
-            used = cell_len(line)
-    return [*lines, line]
-
-
-def _fitting(text: str, width: int) -> int:
-    used = 0
-    for k, char in enumerate(text):
-        used += cell_len(char)
-        if used > width:
-            return max(k, 1)
-    return len(text)
-
-
-def _padded(text: str, width: int, left: bool = False) -> str:
-    blank = " " * max(0, width - cell_len(text))
-    return text + blank if left else blank + text
-
-
-def _title(title: Title, width: int, spell: Spell) -> Iterator[Line]:
-    if title.over:
-        for text in wrap(spell(title.over), width):
-            yield [(text, "quiet")]
-    name, conditions = spell(title.name), spell(title.conditions)
-    if cell_len(name) + 4 + cell_len(conditions) <= width:
-        yield [(name, "title"), ("    " + conditions, "")]
-        return
-    for text in wrap(name, width):
-        yield [(text, "title")]
-    for text in wrap(conditions, min(width, PROSE) - INDENT):
-        yield [(" " * INDENT + text, "")]
-
-
-def _facts(facts: Facts, width: int, spell: Spell) -> Iterator[Line]:
-    rows = [(spell(f.label), spell(f.figure), spell(f.text)) for f in facts.rows]
-    label = max((cell_len(row[0]) for row in rows), default=0)
-    figure = max((cell_len(row[1]) for row in rows), default=0)
-    for name, value, text in rows:
-        start = f"{_padded(name, label, left=True)}  "
-        lines = wrap(text, width - label - figure - 5)
-        end = "   " + lines[0] if text else ""
-        yield [(start, ""), (_padded(value, figure), "mark"), (end, "")]
-        for more in lines[1:]:
-            yield [(" " * (label + figure + 5) + more, "")]
-
-
-def _sentences(part: Sentences, width: int, spell: Spell) -> Iterator[Line]:
-    style = "quiet" if part.quiet else ""
-    if not part.items:
-        return
-    if part.heading:
-        yield [(spell(part.heading), "heading")]
-    indent = " " * INDENT if part.heading else ""
-    for item in part.items:
-        first, *rest = wrap(spell(item), min(width, PROSE) - 2 * len(indent))
-        yield [(indent + first, style)]
-        for text in rest:
-            yield [(2 * indent + text, style)]
 
 
 class Frame(msgspec.Struct, frozen=True):
@@ -157,7 +63,9 @@ Texts = list[list[list[str]]]
 
 def _frame(tables: list[tuple[Table, list[Texts]]], width: int, spell: Spell) -> Frame:
     groups = tables[0][0].groups
-    columns = [_column_widths(tables, g) for g in range(len(groups))]
+    columns = [
+        _column_widths(tables, g, min(WORDY, width - LABEL - GAP)) for g in range(len(groups))
+    ]
     totals = [
         max(_sum(inner), max((cell_len(spell(h)) for h in group.heading), default=0)) + GAP
         for inner, group in zip(columns, groups, strict=True)
@@ -204,7 +112,7 @@ def _headings(
             heading = groups[g].heading
             low = k - (tall - len(heading)) if groups[g].left else k
             text = spell(heading[low]) if 0 <= low < len(heading) else ""
-            line += " " * GAP + _padded(text, frame.totals[g] - GAP, groups[g].left)
+            line += " " * GAP + padded(text, frame.totals[g] - GAP, groups[g].left)
         if line.strip():
             yield [(line.rstrip(), "heading")]
 
@@ -253,7 +161,7 @@ def _text(cell: Cell, column: Column, mark: bool, spell: Spell) -> str:
     return (">" if mark else "") + text
 
 
-def _column_widths(tables: list[tuple[Table, list[Texts]]], g: int) -> list[int]:
+def _column_widths(tables: list[tuple[Table, list[Texts]]], g: int, wordy: int) -> list[int]:
     widths: list[int] = []
     spanning = 0
     blocks = [pair for table, texts in tables for pair in zip(table.blocks, texts, strict=True)]
@@ -265,7 +173,7 @@ def _column_widths(tables: list[tuple[Table, list[Texts]]], g: int) -> list[int]
                     continue
                 widths += [0] * (k + 1 - len(widths))
                 size = cell_len(text)
-                widths[k] = max(widths[k], min(size, WORDY) if block.columns[k].left else size)
+                widths[k] = max(widths[k], min(size, wordy) if block.columns[k].left else size)
     lacking = spanning - _sum(widths)
     if lacking > 0:
         widths = [widths[0] + lacking, *widths[1:]] if widths else [lacking]
@@ -287,7 +195,7 @@ def _row(
         g: wrap(cells[g][0], frame.columns[g][0]) for g in panel if _is_text(block, cells[g])
     }
     for k in range(max((len(texts) for texts in wrapped.values()), default=1)):
-        line: Line = [(" " * INDENT + _padded("" if k else name, room, left=True), "")]
+        line: Line = [(" " * INDENT + padded("" if k else name, room, left=True), "")]
         for g in panel:
             own = wrapped[g][k : k + 1] if g in wrapped else [] if k else cells[g]
             line += _group(block, row, own, g, frame)
@@ -301,12 +209,12 @@ def _is_text(block: Block, cells: list[str]) -> bool:
 def _group(block: Block, row: Row, cells: list[str], g: int, frame: Frame) -> Iterator[Piece]:
     size, columns = frame.totals[g] - GAP, frame.columns[g]
     if block.columns[0].spans:
-        yield " " * GAP + _padded(cells[0] if cells else "", size), ""
+        yield " " * GAP + padded(cells[0] if cells else "", size), ""
         return
     used = 0 if block.columns[0].left else size - _sum(columns)
     yield " " * (GAP + used), ""
     for k, text in enumerate(cells):
-        piece = " " * INNER * bool(k) + _padded(text, columns[k], block.columns[k].left)
+        piece = " " * INNER * bool(k) + padded(text, columns[k], block.columns[k].left)
         yield piece, "mark" if row.mark == g and k == 0 else ""
         used += INNER * bool(k) + columns[k]
     yield " " * (size - used), ""

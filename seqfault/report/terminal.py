@@ -5,7 +5,8 @@ from __future__ import annotations
 import os
 from typing import Literal, TextIO
 
-from seqfault.report.layout import Line, lay_out
+from seqfault.report.layout import lay_out
+from seqfault.report.prose import Line
 from seqfault.report.spelling import Spelling
 from seqfault.report.tables import Page
 

@@ -60,7 +60,10 @@ CURRENTS = Example(
     FORMULA,
     "closed forms with complex impedances, the network solution and the survey of all buses",
     (
-        *(Figure(f"{label}, closed form", kA, "kA", lambda n=n: _closed(n), 1e-9) for label, n, _, _, kA in _ROWS),
+        *(
+            Figure(f"{label}, closed form", kA, "kA", lambda n=n: _closed(n), 1e-9)
+            for label, n, _, _, kA in _ROWS
+        ),
         *(
             Figure(f"{label}, network", kA, "kA", lambda kind=kind, p=p: _solved(kind, p), 1e-9)
             for label, _, kind, p, kA in _ROWS

@@ -154,7 +154,7 @@ EARTHING = Example(
             "charging current, 3 ω C0 U/√3: 20 km of 0.35 uF/km at 11 kV, 50 Hz", 41.9, "A",
             lambda: charging_current(7e-6, 50, 11e3),
         ),
-        Figure("the same length as ten cables, earth fault by the full network", 41.9, "A", _charging, 5e-3),
+        Figure("the same length as ten cables, the full network", 41.9, "A", _charging, 5e-3),
     ),
 )  # fmt: skip
 

@@ -48,9 +48,8 @@ def page() -> str:
             got = figure.got()
             text = f"{got:.6g}" if abs(got) > 1e-9 else "0"
             quantity = figure.quantity.replace("|", "\\|")
-            out.append(
-                f"| {quantity} | {figure.published:.10g} | {text} | {figure.unit or '1'} | {figure.tolerance:g} |"
-            )
+            cells = (quantity, f"{figure.published:.10g}", text, figure.unit or "1", f"{figure.tolerance:g}")
+            out.append(f"| {' | '.join(cells)} |")
     return "\n".join(out) + "\n"
 
 

@@ -1,0 +1,91 @@
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+import os
+from pathlib import Path
+from typing import Any
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from seqfault.errors import RequestError
+from seqfault.report.data import Quantity
+from seqfault.report.files import FORMULA, as_csv, as_json, write_whole
+
+TREES = st.recursive(
+    st.none() | st.booleans() | st.floats(allow_nan=False, allow_infinity=False) | st.text(),
+    lambda inner: st.lists(inner) | st.dictionaries(st.text(), inner),
+    max_leaves=20,
+)
+
+
+@given(st.dictionaries(st.text(), TREES))
+def test_json_reads_back_to_the_last_bit(tree: dict[str, Any]) -> None:
+    assert json.loads(as_json(tree)) == tree
+
+
+def test_json_has_no_token_for_what_is_not_finite() -> None:
+    text = as_json({"a": [math.nan, math.inf], "b": math.nan}).decode()
+    assert json.loads(text) == {"a": [None, None], "b": None}
+
+
+def test_lists_of_numbers_stay_on_one_line() -> None:
+    assert '"a": [1.5, -30.0]' in as_json({"a": [1.5, -30.0]}).decode()
+
+
+def quantity(place: str, value: float | None = -1.5) -> Quantity:
+    return Quantity(place, "line-ground", "fault current", "a", value, "A", -30.0, place, "base")
+
+
+@given(st.text(st.characters(exclude_categories=["Cs", "Cc"]), min_size=1))
+def test_csv_reads_back_and_no_text_is_a_formula(place: str) -> None:
+    (row,) = csv.DictReader(io.StringIO(as_csv([quantity(place)]).decode()))
+    assert not row["place"].startswith(FORMULA)
+    assert row["place"].removeprefix("'") == place.removeprefix("'")
+    assert float(row["value"]) == -1.5
+
+
+def test_csv_leaves_what_is_undefined_empty() -> None:
+    (row,) = csv.DictReader(io.StringIO(as_csv([quantity("x", None)]).decode()))
+    assert row["value"] == ""
+
+
+def test_a_write_that_fails_leaves_the_old_file(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    target = tmp_path / "answer.json"
+    target.write_bytes(b"old")
+
+    def fail(_: int) -> None:
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(os, "fsync", fail)
+    with pytest.raises(RequestError, match="No space left"):
+        write_whole(str(target), b"new", overwrite=True)
+    assert target.read_bytes() == b"old"
+    assert [p.name for p in tmp_path.iterdir()] == ["answer.json"]
+
+
+def test_a_file_that_appears_meanwhile_is_kept(tmp_path: Path) -> None:
+    target = tmp_path / "answer.json"
+    target.write_bytes(b"of another")
+    with pytest.raises(RequestError, match="exists"):
+        write_whole(str(target), b"new", overwrite=False)
+    assert target.read_bytes() == b"of another"
+    assert len(list(tmp_path.iterdir())) == 1
+
+
+def test_without_hard_links(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def fail(*_: str) -> None:
+        raise OSError(1, "Operation not permitted")
+
+    monkeypatch.setattr(os, "link", fail)
+    target = tmp_path / "answer.json"
+    write_whole(str(target), b"new", overwrite=False)
+    assert target.read_bytes() == b"new"
+    with pytest.raises(RequestError, match="exists"):
+        write_whole(str(target), b"newer", overwrite=False)
