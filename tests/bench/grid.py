@@ -18,7 +18,7 @@ from typing import Any
 
 Tree = dict[str, Any]
 MESH = 0.12
-INFEED, GENERATOR, MOTOR = 0.10, 0.03, 0.075  # shares of mesh, 33 kV, other buses
+INFEED, GENERATOR, MOTOR = 0.10, 0.025, 0.06  # shares of the mesh, of 33 kV buses, of all others
 
 
 @dataclass(frozen=True)
