@@ -8,7 +8,7 @@ import numpy as np
 
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
-from seqfault.report.facts import after, conditions, impedances
+from seqfault.report.facts import after, conditions, impedances, x_over_r
 from seqfault.report.numbers import figures, kilovolt, quiet
 from seqfault.report.tables import (
     AMPERE,
@@ -130,11 +130,11 @@ def _left(comparison: Comparison) -> Block:
         values: list[float | None] = []
         made: list[tuple[Cell, ...]] = []
         for s, volt, reference in zip(solutions, volts, before, strict=True):
-            if s.undefined[k]:
+            if s.undefined[k] or not reference:
                 values.append(None)
-                made.append(("undefined",))
+                made.append(("undefined" if reference else "dead",))
                 continue
-            percent = 100 * volt / reference if reference else 0.0
+            percent = 100 * volt / reference
             values.append(0.0 if percent < 1e-7 else percent)
             made.append((values[-1],))
         return Row(label, tuple(made), greatest(values))
@@ -151,16 +151,8 @@ def _left(comparison: Comparison) -> Block:
     )
 
 
-def ratio_cell(solution: FaultSolution) -> Cell:
-    """X/R of the loop that limits the current."""
-    ratio = solution.x_over_r
-    if ratio != ratio:
-        return "-"
-    return "no R" if abs(ratio) == float("inf") else ratio
-
-
 def _ratio(solutions: tuple[FaultSolution, ...]) -> Block:
-    row = Row("X/R", tuple((ratio_cell(s),) for s in solutions))
+    row = Row("X/R", tuple((x_over_r(s),) for s in solutions))
     return Block("What limits the current: X/R of its loop", (Column("", 3, 3),), (row,))
 
 

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from seqfault.errors import quoted
 from seqfault.faults.solution import FaultSolution
 from seqfault.report.numbers import kilovolt, ohms
 from seqfault.report.tables import (
@@ -19,6 +20,9 @@ from seqfault.report.tables import (
     once,
 )
 
+SHOWN = 6
+"""Names in a sentence before "and 3 more"."""
+
 
 def conditions(solutions: Sequence[FaultSolution]) -> str:
     """``bolted, before the fault 1.00 of nominal, state: base``."""
@@ -30,7 +34,8 @@ def conditions(solutions: Sequence[FaultSolution]) -> str:
     if zg:
         parts.append(f"zg {ohms(zg)} to earth")
     how = ", ".join(parts) or "bolted"
-    text = f"{how}, before the fault {first.prefault:.2f} of nominal, state: {first.state}"
+    before = f"before the fault {first.prefault:.2f} of nominal" if first.prefault else "dead"
+    text = f"{how}, {before}, state: {first.state}"
     return text if first.machine == "subtransient" else f"{text}, {first.machine} reactances"
 
 
@@ -53,9 +58,35 @@ def impedances(solution: FaultSolution) -> Table:
     )
 
 
+def x_over_r(solution: FaultSolution) -> float | str:
+    """X/R of the loop that limits the current, in words where it is no ratio to use."""
+    ratio = solution.x_over_r
+    if ratio != ratio:
+        return "-"
+    if abs(ratio) == float("inf"):
+        return "no R"
+    return ratio if ratio >= 0 else "capacitive"
+
+
+def _undefined(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
+    names = once(
+        quoted(bus)
+        for s in solutions
+        for bus, loose in zip(s.buses, s.undefined, strict=True)
+        if loose
+    )
+    if not names:
+        return ()
+    shown, more = ", ".join(names[:SHOWN]), len(names) - SHOWN
+    end = f" and {more} more" if more > 0 else ""
+    if len(names) == 1:
+        return (f"potential of {shown} to earth: nothing fixes it",)
+    return (f"potentials of {shown}{end} to earth: nothing fixes them",)
+
+
 def after(solutions: Sequence[FaultSolution]) -> tuple[Sentences, ...]:
     """Notes, undefined potentials, assumptions and the caution, each once."""
-    notes = once(text for s in solutions for text in (*s.notes, *s.undefined_notes))
+    notes = once(text for s in solutions for text in s.notes) + _undefined(solutions)
     assumed = once(str(a) for s in solutions for a in s.assumptions)
     return (
         Sentences("Note", notes),

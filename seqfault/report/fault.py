@@ -9,7 +9,7 @@ import numpy as np
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from seqfault.model.elements import Complex
-from seqfault.report.facts import after, conditions, impedances
+from seqfault.report.facts import after, conditions, impedances, x_over_r
 from seqfault.report.flows import carried, components, feeding, leftover
 from seqfault.report.numbers import angle, figures, fixed, kilovolt, ohms, quiet
 from seqfault.report.tables import (
@@ -175,9 +175,9 @@ def _facts(s: FaultSolution) -> Iterator[Fact]:
     phase = "abc"[int(np.abs(s.current).argmax())]
     of = "" if len(s.fault.phases) == 3 else f"phase {phase}"
     yield Fact("Fault current", f"{figures(top)} A", of)
-    ratio = s.x_over_r
-    if ratio == ratio:
-        text = "no R" if np.isinf(ratio) else figures(ratio, 3, 3)
+    ratio = x_over_r(s)
+    if ratio != "-":
+        text = ratio if isinstance(ratio, str) else figures(float(ratio or 0), 3, 3)
         yield Fact("X/R", text, "of the loop that limits the current")
     factors = s.earth_fault_factor
     if factors is None:

@@ -61,9 +61,7 @@ def _colored(lines: list[Line], stream: TextIO) -> None:
     from rich.console import Console
     from rich.text import Text
 
-    console = Console(
-        file=stream, force_terminal=True, no_color=False, highlight=False, markup=False, emoji=False
-    )
+    console = Console(file=stream, force_terminal=True, color_system="standard", no_color=False)
     for line in lines:
         text = Text()
         for piece, style in line:

@@ -1,12 +1,14 @@
 from __future__ import annotations
 
+from typing import Any
+
 import pytest
 
 from seqfault.errors import CheckError, NoAnswerError
 from seqfault.faults.network import Network
 from tests.cli.console import PLANT, Run, Write, unearthed
 
-WRONG = [
+WRONG: list[tuple[list[Any], str]] = [
     ([], "a command is wanted"),
     (["compar", PLANT, "main"], "did you mean compare?"),
     (["compare", PLANT], "PLACE"),

@@ -175,7 +175,7 @@ def test_undefined_potentials(run: Run, write: Write) -> None:
     page = run("fault", path, "main", "--kind", "three-phase")
     assert page.code == 0
     assert page.row("main  11 kV", "Left at the buses") == ["undefined"] * 4
-    assert "nothing fixes it" in page.out
+    assert 'potentials of "intake", "main" to earth: nothing fixes them' in page.flat
     tree = run("fault", path, "main", "--kind", "three-phase", "--format", "json").tree
     voltages = tree["voltages"]["main"]
     assert [voltages[key] for key in ("a", "b", "c", "v0")] == [None] * 4
@@ -202,7 +202,11 @@ def test_dead_buses_and_their_warning(run: Run, write: Write) -> None:
     assert any("spare" in warning for warning in tree.tree["warnings"])
     at_dead = run("fault", path, "spare")
     assert at_dead.code == 0
-    assert "is dead in this state" in at_dead.out
+    assert "is dead in this state" in at_dead.flat
+    assert "bolted, dead, state: base" in at_dead.flat
+    side_by_side = run("compare", path, "spare")
+    assert side_by_side.row("phase a to earth") == ["dead"] * 4
+    assert "nothing feeds this bus" in side_by_side.out
 
 
 def test_csv_reads_back(run: Run, plant: Network) -> None:
@@ -228,3 +232,23 @@ def test_kinds_offered_are_the_kinds_there_are() -> None:
     assert set(KINDS) == set(kinds.KINDS)
     assert shells.KINDS == KINDS
     assert options.MACHINES == build.MACHINES
+
+
+def test_a_capacitive_loop_has_no_ratio(run: Run, write: Write) -> None:
+    tree = unearthed()
+    tree["lines"] = {
+        "cable": {
+            "from": "main",
+            "to": "spare",
+            "length": "2 km",
+            "z1": "0.2+j0.1 ohm/km",
+            "z0": "0.8+j0.3 ohm/km",
+            "c0": "0.4 uF/km",
+        }
+    }
+    page = run("fault", write(tree), "spare")
+    assert page.row("X/R")[0] == "capacitive"
+    # 3 omega C0 U / sqrt 3
+    expected = 3**0.5 * 11e3 * 314.159265 * 0.8e-6
+    assert float(page.row("fault current")[0]) == pytest.approx(expected, rel=5e-3)
+    assert page.row("capacitance 11 kV")[-1] == "1.000"
