@@ -79,9 +79,10 @@ class FaultSolution:
 
     ``impedance`` (3,) ohm, driving-point impedances, infinite where the place has no such path;
     ``current`` (3,) phases and ``current_sequence`` (3,) A from the network into the fault;
-    ``voltage_sequence`` (3, n) V to earth at every bus of ``buses``; ``before`` (n,) V, phase a before the fault; ``undefined`` (n,) buses
-    whose potential to earth nothing fixes; ``balance`` the largest imbalance of any node over what the
-    check allows.
+    ``voltage_sequence`` (3, n) V to earth at every bus of ``buses``; ``before`` (n,) V, phase a before
+    the fault; ``undefined`` (n,) buses whose potential to earth nothing fixes; ``joined`` (n,) buses
+    joined by metal to the place; ``balance`` the largest imbalance of any node over what the check
+    allows.
     """
 
     fault: Fault

@@ -53,7 +53,7 @@ class Comparison:
 
     @property
     def least(self) -> Extreme:
-        """The least of the kinds' fault currents: what the dullest protection must still see."""
+        """The least of the kinds' currents, 0 where an earth fault finds no way home."""
         return _extreme(min(self._currents(), key=lambda row: row[0]))
 
     @property
@@ -64,7 +64,7 @@ class Comparison:
 
     @property
     def earth_fault_factor(self) -> Extreme | None:
-        """The highest earth-fault factor at the place, its kind and phase."""
+        """The highest earth-fault factor at the place, its kind and phase (the first of two equal)."""
         best: Extreme | None = None
         for solution in self.solutions:
             factors = solution.earth_fault_factor

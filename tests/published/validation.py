@@ -48,7 +48,8 @@ def page() -> str:
             got = figure.got()
             text = f"{got:.6g}" if abs(got) > 1e-9 else "0"
             quantity = figure.quantity.replace("|", "\\|")
-            cells = (quantity, f"{figure.published:.10g}", text, figure.unit or "1", f"{figure.tolerance:g}")
+            printed, tolerance = f"{figure.published:.10g}", f"{figure.tolerance:g}"
+            cells = (quantity, printed, text, figure.unit or "1", tolerance)
             out.append(f"| {' | '.join(cells)} |")
     return "\n".join(out) + "\n"
 
