@@ -19,59 +19,33 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import accumulate
 from math import pi
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tests.referee_equations import (
+    EARTH,
+    LONG,
+    ONE,
+    TURN,
+    Branch,
+    Group,
+    Matrix,
+    Solution,
+    kirchhoff,
+    ohmic,
+    rotating,
+    size,
+    static,
+)  # fmt: skip
+from tests.referee_windings import Core, Pairs, Winding, star_pairs
+
 Phasors = NDArray[np.complex128]
-Matrix = NDArray[np.clongdouble]
-Solution = tuple[Matrix, list[tuple["Group", Matrix]], Matrix]
 
-EARTH = 0  # the node all voltages are measured from
+__all__ = ["Referee", "Result", "Winding", "star_pairs"]
 FAULT = ""  # no element bears this name
-# Extended precision where the platform has it (Linux); elsewhere plain double, at a loss of digits
-# where capacitances are very small.
-LONG = np.clongdouble
-ONE = np.eye(3, dtype=LONG)
-TURN = LONG(complex(-0.5, 0.0)) + LONG(1j) * np.sqrt(np.longdouble(3)) / 2  # 120 degrees ahead
-# Ohms that make unknowns comparable, and what then is nothing: 1 pF is 3e-9, data carry 1e-16.
-SCALE = 10.0
-NOTHING = 1e-13
-
-
-def _static(one: complex, zero: complex) -> Matrix:
-    """Phase matrix of a static element: self (2 z1 + z0)/3, mutual (z0 - z1)/3."""
-    mutual = (LONG(zero) - LONG(one)) / 3
-    return LONG(one) * ONE + mutual  # self = z1 + mutual
-
-
-def _rotating(z1: complex, z2: complex, z0: complex) -> Matrix:
-    """Phase matrix of a machine: circulant, since it answers differently to the two rotations.
-
-    Currents of rotation a b c see z1, those of rotation a c b see z2, equal currents z0: row a is
-    (z0 + z1 + z2, z0 + h z1 + h2 z2, z0 + h2 z1 + h z2)/3 with h the turn by 120 degrees.
-    """
-    one, two, zero = LONG(z1), LONG(z2), LONG(z0)
-    h, h2 = TURN, TURN * TURN
-    row = np.array([zero + one + two, zero + h * one + h2 * two, zero + h2 * one + h * two]) / 3
-    return np.array([row, np.roll(row, 1), np.roll(row, 2)])
-
-
-@dataclass(frozen=True)
-class Group:
-    """Branches, from -> to, that share a law: ``voltage @ v + current @ i = drive``."""
-
-    element: str
-    ends: Sequence[tuple[int, int]]
-    voltage: Matrix
-    current: Matrix
-    drive: complex | np.clongdouble = 0j
-
-
-def _impedance(element: str, p: int, q: int, ohms: complex, drive: complex | np.clongdouble = 0j) -> Group:
-    """One branch under Ohm's law, v - Z i = drive; zero ohm makes it a joint."""
-    return Group(element, [(p, q)], ONE[:1, :1], np.array([[-LONG(ohms)]]), drive)
 
 
 @dataclass(frozen=True)
@@ -95,6 +69,7 @@ class Result:
     star_share: dict[str, complex]  # what one winding or machine brings to its star point
     delta_current: dict[str, complex]  # "T1.lv": mean winding current in the sense a -> b -> c -> a
     winding_current: dict[str, Phasors]  # delta windings: a -> b, b -> c, c -> a
+    through: dict[str, Phasors]  # lines and reactors: in series, first -> second bus
     live: frozenset[str]  # buses with a source
     joined: frozenset[str]  # buses joined to the faulted one: only their clock is known
 
@@ -113,6 +88,8 @@ class Referee:
         self._bus: dict[str, tuple[int, int, int]] = {}
         self._bases: list[float] = [0.0]  # volts that scale each node; EARTH comes first
         self._groups: list[Group] = []
+        self._series: dict[str, tuple[list[Branch], Matrix]] = {}  # lines: branches, ohms
+        self._mutual: list[tuple[str, str, complex]] = []
         self._star: dict[str, int] = {}  # star point -> node
         # winding or machine -> star point, group, branches with their sign towards the star point
         self._star_of: dict[str, tuple[str, int, list[tuple[int, int]]]] = {}
@@ -129,42 +106,73 @@ class Referee:
     def neutral(self, name: str, impedance: complex) -> None:
         """A star point other elements may name; 0 ohm is a bolted joint."""
         node = self._star[name] = self._node(1.0)
-        self._groups.append(_impedance(name, node, EARTH, impedance))
+        self._groups.append(ohmic(name, node, EARTH, impedance))
 
     def infeed(self, name: str, bus: str, z1: complex, z2: complex, z0: complex | None) -> None:
         """A source behind its impedances; ``z0`` None means no path to earth."""
         star = self._node(self._nominal[bus]) if z0 is None else EARTH
-        self._machine(name, bus, _rotating(z1, z2, z1 if z0 is None else z0), star)
+        self._machine(name, bus, rotating(z1, z2, z1 if z0 is None else z0), star)
         self._sources.append(bus)
 
     def generator(self, name: str, bus: str, z1: complex, z2: complex, z0: complex, star: str) -> None:
         """``star`` is "solid", "isolated" or the name of a neutral."""
         point, node = self._star_node(star, bus, name)
         self._star_of[name] = (point, len(self._groups), [(0, 1), (1, 1), (2, 1)])
-        self._machine(name, bus, _rotating(z1, z2, z0), node)
+        self._machine(name, bus, rotating(z1, z2, z0), node)
         self._sources.append(bus)
 
     def motor(self, name: str, bus: str, z1: complex, z2: complex) -> None:
         """Star point to nothing: its currents add to zero, so z0 does not matter."""
-        self._machine(name, bus, _rotating(z1, z2, z1), self._node(self._nominal[bus]))
+        self._machine(name, bus, rotating(z1, z2, z1), self._node(self._nominal[bus]))
 
     def line(
         self, name: str, bus_i: str, bus_j: str, z1: complex, z0: complex, c1: float = 0.0,
-        c0: float = 0.0, open_ends: Sequence[str] = (),
+        c0: float = 0.0, open_ends: Sequence[str] = (), earthed: bool = False,
     ) -> None:  # fmt: skip
-        """Totals of a pi: half the capacitance at each end; an open end keeps its half."""
-        ends = [self._phase_nodes(name, bus, bus in open_ends) for bus in (bus_i, bus_j)]
-        if not open_ends:
+        """Totals of a pi: half the capacitance at each end; an open end keeps its half.
+
+        ``earthed``: taken off both buses and earthed at both ends.
+        """
+        ends = [self._phase_nodes(name, bus, earthed or bus in open_ends) for bus in (bus_i, bus_j)]
+        if earthed:
+            ends = [(EARTH, EARTH, EARTH)] * 2
+        elif not open_ends:
             self._links.append((bus_i, bus_j, 0))
-        pairs = list(zip(*ends, strict=True))
-        self._groups.append(Group(name, pairs, ONE, -_static(z1, z0)))  # Ohm: v = Z i
-        if c1 or c0:
+        self._series[name] = (list(zip(*ends, strict=True)), static(z1, z0))
+        if (c1 or c0) and not earthed:
             for nodes in ends:
-                self._capacitors(name, nodes, _static(c1, c0) / 2)
+                self._capacitors(name, nodes, static(c1, c0) / 2)
+
+    def couple(self, first: str, second: str, z0: complex) -> None:
+        """Zero-sequence coupling of two lines, ohm in all, both taken from their first bus.
+
+        Every conductor of one induces z0/3 in every conductor of the other.
+        """
+        self._mutual.append((first, second, z0))
+
+    def reactor(self, name: str, bus_i: str, bus_j: str, z1: complex, z0: complex) -> None:
+        """Ohms in series."""
+        self.line(name, bus_i, bus_j, z1, z0)
+
+    def tie(self, name: str, bus_i: str, bus_j: str, closed: bool) -> None:
+        """Three joints of 0 ohm if ``closed``, else nothing."""
+        pairs = zip(self._phase_nodes(name, bus_i), self._phase_nodes(name, bus_j), strict=True)
+        if closed:
+            self._groups += [ohmic(name, p, q, 0) for p, q in pairs]
+            self._links.append((bus_i, bus_j, 0))
 
     def capacitance(self, name: str, bus: str, c: float) -> None:
         """``c`` farad from each phase to earth."""
-        self._capacitors(name, self._phase_nodes(name, bus), LONG(c) * ONE)
+        self.capacitor(name, bus, c, "star-earthed")
+
+    def capacitor(self, name: str, bus: str, c: float, connection: str) -> None:
+        """Three of ``c`` farad: "star-earthed", "star" to a point that is not, or "delta"."""
+        nodes = self._phase_nodes(name, bus)
+        if connection == "delta":
+            self._capacitors(name, nodes, LONG(c) * ONE, (nodes[1], nodes[2], nodes[0]))
+        else:
+            star = EARTH if connection == "star-earthed" else self._node(self._nominal[bus])
+            self._capacitors(name, nodes, LONG(c) * ONE, (star, star, star))
 
     def transformer(
         self, name: str, hv_bus: str, lv_bus: str, hv_kind: str, lv_kind: str, clock: int,
@@ -176,39 +184,46 @@ class Referee:
         Kinds are "star" or "delta", rated voltages line to line with the tap in; ``z1``, ``z0`` are
         the leakage in ohm a phase of the equivalent star on the lv side.
         """
-        # Turns go with the voltage of a winding; a delta winding has 3 times its star's ohms.
-        per_winding = {"star": np.sqrt(np.longdouble(3)), "delta": 1}
-        turns = LONG(hv_rated) / per_winding[hv_kind] / (LONG(lv_rated) / per_winding[lv_kind])
-        leakage = _static(z1, z0) * (3 if lv_kind == "delta" else 1)
-        # Leg k carries the hv winding of phase k (star) or from phase k to the next (delta). With lv
-        # phase k on the same leg, lv lags by 0 h when the kinds agree; a delta voltage leads its phase by
-        # 1 h: star-delta 1, delta-star 11. Each shift of lv to the next leg adds 4 h, swapped ends 6 h.
-        own = {("star", "delta"): 1, ("delta", "star"): 11}.get((hv_kind, lv_kind), 0)
-        if (hours := (clock - own) % 12) % 2:
-            raise ValueError(f"{hv_kind}-{lv_kind} has no clock {clock}")
-        sign = -1 if hours % 4 == 2 else 1
-        shift = (hours - (6 if sign < 0 else 0)) % 12 // 4
-        ends: list[tuple[int, int]] = []
-        hv, lv = (hv_bus, hv_kind, hv_star, 0, 1), (lv_bus, lv_kind, lv_star, shift, sign)
-        for side, (bus, kind, star, moved, way) in (("hv", hv), ("lv", lv)):
-            nodes = self._phase_nodes(name, bus)
-            placed = [(len(ends) + (k + moved) % 3, way) for k in range(3)]  # branch of phase k
-            if kind == "star":
-                point, node = self._star_node(star, bus, f"{name}.{side}")
-                self._star_of[f"{name}.{side}"] = (point, len(self._groups), placed)
-                windings = [(nodes[k], node) for k in range(3)]
-            else:
-                self._delta[f"{name}.{side}"] = (len(self._groups), placed)
-                windings = [(nodes[k], nodes[(k + 1) % 3]) for k in range(3)]
-            on_legs = [windings[(leg - moved) % 3] for leg in range(3)]
-            ends += [(q, p) if way < 0 else (p, q) for p, q in on_legs]
-        none = np.zeros((3, 3), dtype=LONG)
-        # rows 0-2, ampere-turns of a leg: turns i_hv + i_lv = 0
-        # rows 3-5, induction and leakage:  v_lv = v_hv / turns + Z i_lv
-        voltage = np.block([[none, none], [-ONE / turns, ONE]])
-        current = np.block([[turns * ONE, ONE], [none, -leakage]])
-        self._groups.append(Group(name, ends, voltage, current))
-        self._links.append((hv_bus, lv_bus, clock))
+        sides = (
+            Winding("hv", hv_bus, hv_kind, hv_rated, 0, hv_star),
+            Winding("lv", lv_bus, lv_kind, lv_rated, clock, lv_star),
+        )
+        self.windings(name, sides, {("hv", "lv"): z1}, {("hv", "lv"): z0}, lv_rated)
+
+    def windings(
+        self, name: str, windings: Sequence[Winding], one: Pairs, zero: Pairs, volts: float
+    ) -> None:
+        """Any transformer: windings of one core, the first of clock 0, without magnetising current.
+
+        ``one`` and ``zero`` are the impedances between the pairs of sides, positive and zero sequence,
+        in ohm a phase of a star of ``volts`` line to line (the rated voltage of the side they are
+        seen from); a pair that ``zero`` leaves out is as in ``one``. Where ``zero`` pairs a side with
+        "tank" the core has three limbs: the flux that the limbs have in common returns through the
+        tank, which acts as a closed delta around them that meets nothing else.
+        """
+        core = Core(windings, one, zero, volts)
+        nodes = {w.side: self._phase_nodes(name, w.bus) for w in windings}
+        stars = {}
+        for w in core.starred():
+            stars[w.side] = self._star_node(w.star, w.bus, f"{name}.{w.side}" if w.side else name)
+        coils = core.coils(nodes, {side: node for side, (_, node) in stars.items()}, self._node)
+        deltas = [w.side for w in windings if w.kind == "delta"]
+        for number, coil in enumerate(coils):
+            branches = coil.of_phases(3 * number)
+            if coil.side in deltas:
+                self._delta[f"{name}.{coil.side}"] = (len(self._groups), branches)
+            elif coil.star is not None:
+                point = stars[coil.star][0]
+                full = f"{name}.{coil.star}" if coil.star else name
+                self._star_of[full] = (point, len(self._groups), branches)
+        ends = [pair for coil in coils for pair in coil.on_legs()]
+        self._groups.append(Group([name] * len(ends), ends, *core.law(coils)))
+        self._links += [(windings[0].bus, w.bus, w.clock) for w in windings[1:]]
+
+    def earthing_transformer(self, name: str, bus: str, z0: complex, star: str) -> None:
+        """A zigzag alone: ``z0`` ohm a phase to equal currents, nothing to any others."""
+        own = Winding("", bus, "zigzag", self._nominal[bus], 0, star, z0)
+        self.windings(name, [own], {}, {}, self._nominal[bus])
 
     def solve(
         self, bus: str, kind: str, phases: str, zf: complex = 0j, zg: complex = 0j,
@@ -232,57 +247,46 @@ class Referee:
         bases = [*self._bases, self._nominal[bus]]
         common = len(self._bases)  # where the faulted phases meet
         if kind == "line-ground":
-            fault = [_impedance(FAULT, first, EARTH, complex(zf) + complex(zg), -stood)]
+            fault = [ohmic(FAULT, first, EARTH, complex(zf) + complex(zg), -stood)]
         elif kind == "line-line":
-            fault = [_impedance(FAULT, first, others[0][0], zf, others[0][1] - stood)]
+            fault = [ohmic(FAULT, first, others[0][0], zf, others[0][1] - stood)]
         elif kind in ("line-line-ground", "three-phase-ground", "three-phase"):
-            fault = [_impedance(FAULT, node, common, zf, -volts) for node, volts in faulted]
+            fault = [ohmic(FAULT, node, common, zf, -volts) for node, volts in faulted]
             if kind != "three-phase":
-                fault.append(_impedance(FAULT, common, EARTH, zg))
+                fault.append(ohmic(FAULT, common, EARTH, zg))
         else:
             raise ValueError(f"no such kind of fault: {kind}")
-        return self._collect(bus, before, self._kirchhoff(bases, [*self._groups, *fault]))
+        groups = [*self._groups, *self._lines(), *fault]
+        return self._collect(bus, before, kirchhoff(bases, groups))
 
-    def _kirchhoff(self, bases: Sequence[float], groups: Sequence[Group]) -> Solution:
-        """All laws at once: node voltages, branch currents, node voltages nothing fixes."""
-        ends = np.array([pair for g in groups for pair in g.ends])
-        joins = np.zeros((len(ends), len(bases)), dtype=LONG)  # 1 where a branch begins, -1 where it ends
-        np.add.at(joins, (np.arange(len(ends)), ends[:, 0]), 1)
-        np.add.at(joins, (np.arange(len(ends)), ends[:, 1]), -1)
-        joins = joins[:, 1:]  # EARTH's voltage is zero, its current law follows from the others
-        nodes, count = len(bases) - 1, len(bases) - 1 + len(ends)
-        matrix, right = np.zeros((count, count), dtype=LONG), np.zeros(count, dtype=LONG)
-        matrix[:nodes, nodes:] = joins.T  # Kirchhoff's current law at every node
-        stop = nodes
-        for g in groups:  # law of each branch, its voltage by Kirchhoff's voltage law
-            start, stop = stop, stop + len(g.ends)
-            matrix[start:stop, :nodes] = g.voltage @ joins[start - nodes : stop - nodes]
-            matrix[start:stop, start:stop] = g.current
-            right[start:stop] = g.drive
-        volts_of = np.array(bases)
-        scale = np.append(volts_of[1:], np.max(volts_of[ends], axis=1) / SCALE).astype(np.longdouble)
-        matrix *= scale
-        largest = np.max(_size(matrix), axis=1)
-        largest[largest == 0] = 1  # a bus with nothing on it
-        solution, free = _eliminate(matrix / largest[:, None], right / largest)
-        if free.size and np.max(_size(free[nodes:])) > 1e-6:
-            raise ArithmeticError("a current is undetermined: resonance, or a loop of no impedance")
-        stops = np.cumsum([nodes, *(len(g.ends) for g in groups)])
-        volts, *amperes = np.split(solution * scale, stops)[:-1]
-        earth = np.zeros((1, free.shape[1]), dtype=LONG)
-        pairs = list(zip(groups, amperes, strict=True))
-        return np.append(LONG(0), volts), pairs, np.concatenate([earth, free[:nodes]])
+    def _lines(self) -> list[Group]:
+        """Series branches of all lines under one law, Ohm's with the coupling: v = Z i."""
+        if not self._series:
+            return []
+        at = dict(zip(self._series, accumulate([3] * len(self._series), initial=0), strict=False))
+        ohms = np.zeros((3 * len(at), 3 * len(at)), dtype=LONG)
+        for name, (_, own) in self._series.items():
+            ohms[at[name] : at[name] + 3, at[name] : at[name] + 3] = own
+        for first, second, z0 in self._mutual:
+            i, j = at[first], at[second]
+            ohms[i : i + 3, j : j + 3] += LONG(z0) / 3
+            ohms[j : j + 3, i : i + 3] += LONG(z0) / 3
+        ends = [pair for pairs, _ in self._series.values() for pair in pairs]
+        names = [name for name in at for _ in range(3)]
+        return [Group(names, ends, np.eye(len(ends), dtype=LONG), -ohms)]
 
     def _collect(self, bus: str, before: Mapping[str, Matrix], solution: Solution) -> Result:
         """Put the solution in the words of the network."""
         potential, groups, free = solution
 
+        branches = [branch for g, i in groups for branch in zip(g.elements, g.ends, i, strict=True)]
+
         def entering(element: str, nodes: Iterable[int]) -> Phasors:
             found = dict.fromkeys(nodes, LONG(0))
-            for g, amperes in groups:
-                for ends, i in zip(g.ends, amperes, strict=True):
+            for owner, ends, i in branches:
+                if owner == element:
                     for node, signed in zip(ends, (i, -i), strict=True):
-                        if g.element == element and node in found:
+                        if node in found:
                             found[node] += signed
             return np.array(list(found.values())).astype(complex)
 
@@ -290,7 +294,7 @@ class Referee:
             return np.array([sign * groups[index][1][k] for k, sign in branches]).astype(complex)
 
         def moves(rows: Matrix) -> NDArray[np.bool_]:
-            return np.array(np.any(_size(rows) > 1e-6, axis=1))
+            return np.array(np.any(size(rows) > 1e-6, axis=1))
 
         share = {n: complex(picked(g, b).sum()) for n, (_, g, b) in self._star_of.items()}
         total = dict.fromkeys(self._star, 0j)
@@ -299,6 +303,8 @@ class Referee:
         turning = {name: picked(g, branches) for name, (g, branches) in self._delta.items()}
         moved = {name: free[list(nodes)] for name, nodes in self._bus.items()}
         walked = self._walk(bus).items()
+        series = groups[len(self._groups)][1] if self._series else np.zeros(0)
+        through = dict(zip(self._series, series.reshape(-1, 3).astype(complex), strict=True))
         return Result(
             fault_current=entering(FAULT, self._bus[bus]),
             prefault={n: v.astype(complex) for n, v in before.items()},
@@ -312,6 +318,7 @@ class Referee:
             star_share=share,
             delta_current={n: complex(np.mean(i)) for n, i in turning.items()},
             winding_current=turning,
+            through=through,
             live=frozenset(n for n, (_, _, live) in walked if live),
             joined=frozenset(n for n, (root, _, _) in walked if root == bus),
         )
@@ -353,48 +360,11 @@ class Referee:
 
     def _machine(self, name: str, bus: str, impedance: Matrix, star: int) -> None:
         ends = [(node, star) for node in self._phase_nodes(name, bus)]
-        self._groups.append(Group(name, ends, ONE, -impedance))  # Ohm, source shorted: v = Z i
+        self._groups.append(Group([name] * 3, ends, ONE, -impedance))  # Ohm, source shorted: v = Z i
 
-    def _capacitors(self, name: str, nodes: Iterable[int], farads: Matrix) -> None:
+    def _capacitors(
+        self, name: str, nodes: Sequence[int], farads: Matrix, to: Sequence[int] = (EARTH, EARTH, EARTH)
+    ) -> None:
         admittance = LONG(1j) * self.omega * farads
-        ends = [(node, EARTH) for node in nodes]
-        self._groups.append(Group(name, ends, -admittance, ONE))  # charging: i = jwC v
-
-
-def _size(values: Matrix) -> NDArray[np.longdouble]:
-    return np.abs(values.real) + np.abs(values.imag)
-
-
-def _eliminate(matrix: Matrix, right: Matrix) -> tuple[Matrix, Matrix]:
-    """Gauss-Jordan with full pivoting: one solution (free unknowns 0) and the free directions.
-
-    Rows are scaled to 1; what is left below ``NOTHING`` is zero.
-    """
-    count = rank = len(right)
-    work = np.concatenate([matrix, right[:, None]], axis=1)
-    order = np.arange(count)
-    for k in range(count):
-        sizes = _size(work[k:, k:count])
-        row, column = np.unravel_index(np.argmax(sizes), sizes.shape)
-        if sizes[row, column] < NOTHING:
-            rank = k
-            break
-        across, down = np.array([k, k + int(row)]), np.array([k, k + int(column)])
-        work[across] = work[across[::-1]]
-        work[:, down] = work[:, down[::-1]]
-        order[down] = order[down[::-1]]
-        work[k, k:] /= work[k, k]
-        rows = np.flatnonzero(work[:, k])
-        rows = rows[rows != k]
-        columns = k + np.flatnonzero(work[k, k:])
-        work[np.ix_(rows, columns)] -= np.outer(work[rows, k], work[k, columns])
-        work[rows, k] = 0
-    left = _size(work[rank:, count])
-    if left.size and np.max(left) > 1e-10 * max(1.0, float(np.max(_size(right)))):
-        raise ArithmeticError("the equations contradict each other: no answer exists")
-    solution = np.zeros(count, dtype=LONG)
-    solution[order[:rank]] = work[:rank, count]
-    free = np.zeros((count, count - rank), dtype=LONG)
-    free[order[:rank]] = -work[:rank, rank:count]
-    free[order[rank:], np.arange(count - rank)] = 1
-    return solution, free
+        ends = list(zip(nodes, to, strict=True))
+        self._groups.append(Group([name] * 3, ends, -admittance, ONE))  # charging: i = jwC v

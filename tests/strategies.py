@@ -8,15 +8,16 @@ stands here alone: an error of the package in reading a nameplate shows as well 
 from __future__ import annotations
 
 import cmath
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 from decimal import Decimal
+from itertools import combinations
 from math import pi, sqrt
 from typing import Any
 
 from hypothesis import strategies as st
 from hypothesis.strategies import DrawFn, SearchStrategy
 
-from tests.referee import Referee
+from tests.referee import Referee, Winding, star_pairs
 
 LEVELS = (110e3, 33e3, 11e3, 0.4e3)
 POWERS = {"": 0, "u": -6, "m": -3, "k": 3, "M": 6}
@@ -29,6 +30,9 @@ FAULT_PHASES = {
     "three-phase-ground": ("abc",),
 }
 KINDS_OF_WINDING = {"D": "delta", "d": "delta"}
+KIND_OF_LETTER = {"Y": "star", "D": "delta", "Z": "zigzag", "A": "auto"}
+LAG_OF_LETTER = {"Y": 0, "D": 1, "Z": 1}  # parity of clocks: two kinds alike are an even number apart
+WITH_OWN_RETURN = ("five-limb", "shell-form", "three-single-phase")
 
 
 def quantity(value: complex, unit: str, prefix: str = "") -> str:
@@ -225,6 +229,7 @@ class PlainLine:
     length: float | None
     count: int
     open_end: str | None
+    earthed: bool = False
 
     def entry(self, frequency: float) -> dict[str, Any]:
         per = "" if self.length is None else "/km"
@@ -236,6 +241,8 @@ class PlainLine:
             length=None if self.length is None else f"{self.length!r} km",
             count=None if self.count == 1 else self.count,
             open=[self.open_end] if self.open_end else None,
+            earthed=self.earthed or None,
+            out=self.earthed or None,  # only a line out of service is earthed
         )
         for order, farads in (("1", self.c1), ("0", self.c0)):
             if farads is not None and self.susceptance:
@@ -244,12 +251,47 @@ class PlainLine:
                 entry[f"c{order}"] = quantity(farads, f"F{per}", "u")
         return entry
 
+    def size(self) -> float:
+        """What stated values are multiplied by."""
+        return 1.0 if self.length is None else self.length
+
+    def to_earth(self) -> float:
+        """Capacitance to earth of all circuits, F a phase."""
+        return (self.c0 or 0.0) * self.size() * self.count
+
+    def closed_ends(self) -> list[str]:
+        """Buses it is connected to."""
+        return [bus for bus in (self.bus_i, self.bus_j) if not self.earthed and bus != self.open_end]
+
     def put(self, name: str, referee: Referee) -> None:
-        size = 1.0 if self.length is None else self.length
-        z1, z0 = self.z1 * size / self.count, self.z0 * size / self.count
-        c1, c0 = ((c or 0.0) * size * self.count for c in (self.c1, self.c0))
+        z1, z0 = (z * self.size() / self.count for z in (self.z1, self.z0))
+        c1 = (self.c1 or 0.0) * self.size() * self.count
         ends = (self.open_end,) if self.open_end else ()
-        referee.line(name, self.bus_i, self.bus_j, z1, z0, c1, c0, ends)
+        sides = (self.bus_i, self.bus_j)
+        referee.line(name, *sides, z1, z0, c1, self.to_earth(), ends, self.earthed)
+
+
+@dataclass(frozen=True)
+class PlainCoupling:
+    """Zero-sequence coupling of every two of its lines: ohm in all, or ohm per km over some km."""
+
+    lines: tuple[str, ...]
+    z0: complex
+    length: float | None  # km over which it is per km
+    by_default: bool  # the length is that of the shorter line, and not stated
+
+    def entry(self) -> dict[str, Any]:
+        per = "" if self.length is None else "/km"
+        stand = self.length is not None and not self.by_default
+        return stated(
+            lines=list(self.lines),
+            z0=quantity(self.z0, f"ohm{per}"),
+            length=f"{self.length!r} km" if stand else None,
+        )
+
+    def put(self, name: str, referee: Referee) -> None:
+        for first, second in combinations(self.lines, 2):
+            referee.couple(first, second, self.z0 * (1.0 if self.length is None else self.length))
 
 
 @dataclass(frozen=True)
@@ -318,20 +360,253 @@ class PlainTransformer:
 
 
 @dataclass(frozen=True)
+class PlainWinding:
+    """One side of a unit; ``letters`` in capitals, "YN", "D", "A" ..., as its group writes them."""
+
+    bus: str
+    letters: str
+    clock: int
+    voltage: float
+    neutral: str | None  # None where the winding brings out no neutral
+
+    def entry(self) -> dict[str, Any]:
+        voltage = quantity(self.voltage, "V", "k")
+        return stated(bus=self.bus, voltage=voltage, neutral=self.neutral)
+
+
+@dataclass(frozen=True)
+class PlainUnit:
+    """One of ``count`` units of two or three windings, of any kind, on any core.
+
+    Impedances are fractions by pair, "hv_lv" and so on, on the rating of that pair where ``ratings``
+    has one, else on that of the unit. With a zigzag winding ``z0`` is that of this winding alone,
+    under the key "zigzag", on the rating of the unit; the others have z0 = z1.
+    """
+
+    sides: dict[str, PlainWinding]
+    rating: float
+    impedance: dict[str, complex]  # complex as stated; else sizes, with x_over_r
+    ratings: dict[str, float]
+    x_over_r: float | None
+    z0: dict[str, complex] | None
+    z0_over_z1: float | None
+    tap: float | None
+    magnetic_circuit: str | None
+    z0_magnetising: complex | None
+    zero_tests: tuple[complex, complex, complex] | None  # from_hv, from_lv, from_hv_lv_shorted
+    count: int
+    percent: bool
+
+    def group(self) -> str:
+        hv, *others = self.sides.values()
+        return hv.letters + "".join(f"{w.letters.lower()}{w.clock}" for w in others)
+
+    def auto(self) -> bool:
+        return self.sides["lv"].letters == "A"
+
+    def entry(self) -> dict[str, Any]:
+        def pairs(values: dict[str, complex] | None) -> Any:
+            if values is None:
+                return None
+            texts = {pair: share(z, self.percent) for pair, z in values.items()}
+            return texts if len(texts) == 3 else next(iter(texts.values()))
+
+        def part(value: complex | None) -> str | None:
+            return None if value is None else share(value, self.percent)
+
+        tests = None
+        if self.zero_tests is not None:
+            names = ("from_hv", "from_lv", "from_hv_lv_shorted")
+            tests = {name: part(z) for name, z in zip(names, self.zero_tests, strict=True)}
+        on = {pair: quantity(power, "VA", "k") for pair, power in self.ratings.items()}
+        return stated(
+            vector_group=self.group(),
+            rating=quantity(self.rating, "VA", "k"),
+            **{side: winding.entry() for side, winding in self.sides.items()},
+            impedance=pairs(self.impedance),
+            impedance_on=on or None,
+            x_over_r=self.x_over_r,
+            z0=pairs(self.z0),
+            z0_over_z1=self.z0_over_z1,
+            tap=None if self.tap is None else share(self.tap, True),
+            magnetic_circuit=self.magnetic_circuit,
+            z0_magnetising=part(self.z0_magnetising),
+            zero_tests=tests,
+            count=None if self.count == 1 else self.count,
+        )
+
+    def put(self, name: str, referee: Referee) -> None:
+        volts = self.sides["lv"].voltage  # lv ohms do not follow the tap
+        base = volts**2 / self.rating / self.count
+        rated = {
+            side: w.voltage * (1 + (self.tap or 0.0) * (side == "hv")) for side, w in self.sides.items()
+        }
+
+        def ohms(values: dict[str, complex]) -> dict[tuple[str, str], complex]:
+            found = {}
+            for pair, z in values.items():
+                a, b = pair.split("_")
+                found[a, b] = z * base * self.rating / self.ratings.get(pair, self.rating)
+            return found
+
+        one = self.impedance
+        if self.x_over_r is not None:
+            one = {pair: at_angle(abs(z), self.x_over_r) for pair, z in one.items()}
+        zigzag = 0j if self.z0 is None else self.z0.get("zigzag", 0j) * base
+        zero = one if self.z0 is None or zigzag else self.z0
+        if self.z0_over_z1 is not None:
+            zero = {pair: z * self.z0_over_z1 for pair, z in one.items()}
+        zero_ohms = ohms(zero)
+        if self.z0_magnetising is not None:  # half of the leakage on either side of it
+            half = zero_ohms["hv", "lv"] / 2
+            zero_ohms = star_pairs(hv=half, lv=half, tank=self.z0_magnetising * base)
+        if self.zero_tests is not None:
+            from_hv, from_lv, shorted = (z * base for z in self.zero_tests)
+            middle = cmath.sqrt(from_lv * (from_hv - shorted))
+            middle = -middle if middle.imag < 0 else middle
+            last = "tv" if "tv" in self.sides else "tank"
+            zero_ohms = star_pairs(hv=from_hv - middle, lv=from_lv - middle, **{last: middle})
+        windings = []
+        for side, w in self.sides.items():
+            kind = "auto" if self.auto() and side != "tv" else KIND_OF_LETTER[w.letters[0]]
+            own = zigzag * (rated[side] / volts) ** 2 if kind == "zigzag" else 0j
+            star = w.neutral or "isolated"
+            windings.append(Winding(side, w.bus, kind, rated[side], w.clock, star, own))
+        referee.windings(name, windings, ohms(one), zero_ohms, volts)
+
+
+@dataclass(frozen=True)
+class PlainEarthingTransformer:
+    """``z0`` in ohm a phase, or a fraction on ``rating`` at the voltage of the bus."""
+
+    bus: str
+    nominal: float
+    z0: complex  # complex as stated; else its size
+    x_over_r: float | None
+    neutral: str
+    rating: float | None
+    in_ohm: bool
+
+    def entry(self) -> dict[str, Any]:
+        return stated(
+            bus=self.bus,
+            z0=quantity(self.z0, "ohm") if self.in_ohm else share(self.z0, True),
+            x_over_r=self.x_over_r,
+            neutral=self.neutral,
+            rating=None if self.rating is None else quantity(self.rating, "VA", "k"),
+        )
+
+    def put(self, name: str, referee: Referee) -> None:
+        z0 = self.z0 if self.x_over_r is None else at_angle(abs(self.z0), self.x_over_r)
+        if not self.in_ohm:
+            assert self.rating is not None
+            z0 = z0 * self.nominal**2 / self.rating
+        referee.earthing_transformer(name, self.bus, z0, self.neutral)
+
+
+@dataclass(frozen=True)
+class PlainReactor:
+    """A series reactor: ohm, or fractions on ``rating`` at the voltage of its buses."""
+
+    bus_i: str
+    bus_j: str
+    nominal: float
+    impedance: complex  # complex as stated; else its size
+    x_over_r: float | None
+    z0: complex | None
+    rating: float | None
+
+    def entry(self) -> dict[str, Any]:
+        def part(value: complex) -> str:
+            return quantity(value, "ohm") if self.rating is None else share(value, True)
+
+        return stated(
+            from_=self.bus_i,
+            to=self.bus_j,
+            impedance=part(self.impedance),
+            x_over_r=self.x_over_r,
+            z0=None if self.z0 is None else part(self.z0),
+            rating=None if self.rating is None else quantity(self.rating, "VA", "M"),
+        )
+
+    def put(self, name: str, referee: Referee) -> None:
+        base = 1.0 if self.rating is None else self.nominal**2 / self.rating
+        z1 = self.impedance if self.x_over_r is None else at_angle(abs(self.impedance), self.x_over_r)
+        z0 = z1 if self.z0 is None else self.z0
+        referee.reactor(name, self.bus_i, self.bus_j, z1 * base, z0 * base)
+
+
+@dataclass(frozen=True)
+class PlainCapacitor:
+    """A bank by its power at nominal voltage, or by the capacitance of a phase."""
+
+    bus: str
+    nominal: float
+    power: float | None  # var
+    capacitance: float | None
+    connection: str
+
+    def entry(self) -> dict[str, Any]:
+        return stated(
+            bus=self.bus,
+            power=None if self.power is None else quantity(self.power, "var", "k"),
+            capacitance=None if self.capacitance is None else quantity(self.capacitance, "F", "u"),
+            connection=self.connection,
+        )
+
+    def farads(self, frequency: float) -> float:
+        """Of each of the three, those of a delta between two phases."""
+        if self.capacitance is not None:
+            return self.capacitance
+        assert self.power is not None
+        each = 3 if self.connection == "delta" else 1
+        return self.power / each / (2 * pi * frequency * self.nominal**2)
+
+    def put(self, name: str, referee: Referee, frequency: float) -> None:
+        referee.capacitor(name, self.bus, self.farads(frequency), self.connection)
+
+
+@dataclass(frozen=True)
+class PlainTie:
+    """A bus coupler."""
+
+    bus_i: str
+    bus_j: str
+    closed: bool
+
+    def entry(self) -> dict[str, Any]:
+        return stated(from_=self.bus_i, to=self.bus_j, closed=self.closed)
+
+    def put(self, name: str, referee: Referee) -> None:
+        referee.tie(name, self.bus_i, self.bus_j, self.closed)
+
+
+@dataclass(frozen=True)
 class PlainNeutral:
-    """Resistance and reactance in series, beside a resistance; or a resistor by its plate."""
+    """Resistance and reactance in series, beside a resistance; or a resistor by its plate.
+
+    With a ``ratio`` these stand behind a transformer of one phase. With ``detuning`` it is an
+    arc-suppression coil.
+    """
 
     resistance: float | None
     reactance: float | None
     parallel_resistance: float | None
     current: float | None  # A at the line-to-line voltage beside it
     voltage: float | None
+    ratio: float | None = None
+    detuning: float | None = None
+    loss: float | None = None
 
     def entry(self) -> dict[str, Any]:
         def text(value: float | None, unit: str) -> str | None:
             return None if value is None else quantity(value, unit)
 
         return stated(
+            kind=None if self.detuning is None else "arc-suppression",
+            detuning=None if self.detuning is None else share(self.detuning, True),
+            loss=None if self.loss is None else share(self.loss, True),
+            ratio=self.ratio,
             resistance=text(self.resistance, "ohm"),
             reactance=text(self.reactance, "ohm"),
             parallel_resistance=text(self.parallel_resistance, "ohm"),
@@ -339,13 +614,16 @@ class PlainNeutral:
             voltage=text(self.voltage, "V"),
         )
 
-    def put(self, name: str, referee: Referee) -> None:
+    def put(self, name: str, referee: Referee, charging: float) -> None:
+        """``charging`` is the susceptance to earth of the three phases, S; a coil is tuned to it."""
         z = complex(self.resistance or 0.0, self.reactance or 0.0)
         if self.current and self.voltage:
             z = complex(self.voltage / sqrt(3) / self.current)
+        if self.detuning is not None:
+            z = 1 / ((1 + self.detuning) * charging * complex(self.loss or 0.0, -1))
         if self.parallel_resistance:
             z = z * self.parallel_resistance / (z + self.parallel_resistance)
-        referee.neutral(name, z)
+        referee.neutral(name, z * (self.ratio or 1.0) ** 2)
 
 
 @dataclass(frozen=True)
@@ -358,8 +636,66 @@ class PlainNetwork:
     generators: dict[str, PlainGenerator]
     motors: dict[str, PlainMotor]
     lines: dict[str, PlainLine]
-    transformers: dict[str, PlainTransformer]
+    transformers: dict[str, PlainTransformer | PlainUnit]
     neutrals: dict[str, PlainNeutral]
+    mutual_couplings: dict[str, PlainCoupling] = field(default_factory=dict)
+    earthing_transformers: dict[str, PlainEarthingTransformer] = field(default_factory=dict)
+    series_reactors: dict[str, PlainReactor] = field(default_factory=dict)
+    capacitors: dict[str, PlainCapacitor] = field(default_factory=dict)
+    ties: dict[str, PlainTie] = field(default_factory=dict)
+
+    def star_points(self, neutral: str) -> list[str]:
+        """Buses of the windings and machines that name ``neutral``, one entry each."""
+        ends: list[tuple[str, str | None]] = [(g.bus, g.neutral) for g in self.generators.values()]
+        ends += [(e.bus, e.neutral) for e in self.earthing_transformers.values()]
+        for unit in self.transformers.values():
+            if isinstance(unit, PlainUnit):
+                ends += [(w.bus, w.neutral) for w in unit.sides.values()]
+            else:
+                ends += [(unit.hv_bus, unit.hv_neutral), (unit.lv_bus, unit.lv_neutral)]
+        return [bus for bus, name in ends if name == neutral]
+
+    def galvanic(self, start: str) -> set[str]:
+        """Buses joined to one by lines, reactors, closed ties and auto-transformers."""
+        joints = [tuple(line.closed_ends()) for line in self.lines.values()]
+        joints += [(r.bus_i, r.bus_j) for r in self.series_reactors.values()]
+        joints += [(t.bus_i, t.bus_j) for t in self.ties.values() if t.closed]
+        joints += [(u.sides["hv"].bus, u.sides["lv"].bus) for u in self.autos()]
+        found, grew = {start}, True
+        while grew:
+            reached = {bus for joint in joints if found & set(joint) for bus in joint}
+            grew = not reached <= found
+            found |= reached
+        return found
+
+    def autos(self) -> list[PlainUnit]:
+        units = self.transformers.values()
+        return [u for u in units if isinstance(u, PlainUnit) and u.auto()]
+
+    def charging(self, neutral: str) -> float:
+        """Susceptance to earth of the three phases of the network around ``neutral``, S."""
+        return self._charging(set().union(*self._networks(neutral)))
+
+    def tuned_to(self, coil: str) -> float:
+        """What a coil is tuned to, S: coils of one network share its susceptance equally."""
+        coils = [name for name, n in self.neutrals.items() if n.detuning is not None]
+        total = 0.0
+        for buses in self._networks(coil):
+            sharing = [name for name in coils if buses in self._networks(name)]
+            total += self._charging(set(buses)) / max(len(sharing), 1)
+        return total
+
+    def _networks(self, neutral: str) -> set[frozenset[str]]:
+        return {frozenset(self.galvanic(bus)) for bus in self.star_points(neutral)}
+
+    def _charging(self, buses: set[str]) -> float:
+        c = sum(line.to_earth() for line in self.lines.values() if buses & set(line.closed_ends()))
+        c += sum(g.c0 or 0.0 for g in self.generators.values() if g.bus in buses)
+        c += sum((m.c0 or 0.0) * m.count for m in self.motors.values() if m.bus in buses)
+        for bank in self.capacitors.values():
+            if bank.connection == "star-earthed" and bank.bus in buses:
+                c += bank.farads(self.frequency)
+        return 3 * 2 * pi * self.frequency * c
 
 
 @dataclass(frozen=True)
@@ -384,7 +720,10 @@ def to_case_tree(
     if prefault is not None:
         tree["prefault"] = {"voltage": quantity(prefault, "pu")}
     tree["buses"] = {name: quantity(v, "V", "k") for name, v in net.buses.items()}
-    for table in ("infeeds", "generators", "motors", "transformers", "neutrals"):
+    for table in (
+        "infeeds", "generators", "motors", "transformers", "neutrals", "mutual_couplings",
+        "earthing_transformers", "series_reactors", "capacitors", "ties",
+    ):  # fmt: skip
         tree[table] = {name: item.entry() for name, item in getattr(net, table).items()}
     tree["lines"] = {name: line.entry(net.frequency) for name, line in net.lines.items()}
     return {key: value for key, value in tree.items() if value}
@@ -395,9 +734,16 @@ def to_referee(net: PlainNetwork) -> Referee:
     referee = Referee(net.frequency)
     for name, nominal in net.buses.items():
         referee.bus(name, nominal)
-    for table in ("neutrals", "infeeds", "generators", "motors", "lines", "transformers"):
+    for name, neutral in net.neutrals.items():
+        neutral.put(name, referee, net.tuned_to(name))
+    for table in (
+        "infeeds", "generators", "motors", "lines", "mutual_couplings", "transformers",
+        "earthing_transformers", "series_reactors", "ties",
+    ):  # fmt: skip
         for name, item in getattr(net, table).items():
             item.put(name, referee)
+    for name, bank in net.capacitors.items():
+        bank.put(name, referee, net.frequency)
     return referee
 
 
@@ -426,6 +772,7 @@ class _Sketch:
     draw: DrawFn
     style: str
     net: PlainNetwork
+    every: bool  # element and form of one
 
     def name(self, letter: str, table: dict[str, Any]) -> str:
         return f"{letter}{len(table) + 1}{self.style}"
@@ -449,12 +796,14 @@ class _Sketch:
         name = self.name("N", neutrals)
         ohms = spread(nominal / sqrt(3) / 2000, nominal / sqrt(3) / 5)
         form = draw(st.sampled_from(("r", "r", "plate", "rx", "x", "x|r")))
+        ratio = draw(fractions(2, 80)) if self.every and form != "plate" and draw(chance(25)) else None
         r = draw(ohms) if form in ("r", "rx") else None
         x = draw(ohms) if form in ("x", "rx", "x|r") else None
         beside = draw(ohms) * 3 if form == "x|r" else None
         current = draw(spread(5, 2000)) if form == "plate" else None
         voltage = None if current is None else nominal
-        neutrals[name] = PlainNeutral(r, x, beside, current, voltage)
+        ohms_stated = (None if z is None else z / (ratio or 1.0) ** 2 for z in (r, x, beside))
+        neutrals[name] = PlainNeutral(*ohms_stated, current, voltage, ratio)
         return name
 
     def infeed(self, bus: str) -> None:
@@ -579,20 +928,254 @@ class _Sketch:
             percent=draw(st.booleans()),
         )
 
+    def joint(self, i: str, j: str) -> None:
+        """A line; of ``every`` element one in five a reactor or a closed tie, which make no loops."""
+        kind = self.draw(st.integers(0, 9)) if self.every else 9
+        if kind == 0:
+            self.reactor(i, j)
+        elif kind == 1:
+            self.tie(i, j, closed=True)
+        else:
+            self.line(i, j, may_open=False)
 
-@st.composite
-def networks(draw: DrawFn, min_buses: int = 2, max_buses: int = 8) -> PlainNetwork:
-    """Installations of every element, one to three voltages, meshed, split, dead or floating."""
+    def tie(self, i: str, j: str, closed: bool) -> None:
+        self.net.ties[self.name("K", self.net.ties)] = PlainTie(i, j, closed)
+
+    def reactor(self, i: str, j: str) -> None:
+        draw, nominal = self.draw, self.net.buses[i]
+        rating = self.maybe(50, spread(*((1e5, 2e6) if nominal < 1e3 else (1e6, 1e8))))
+        base = 1.0 if rating is None else nominal**2 / rating
+        ohms = draw(spread(nominal / 2e5, nominal / 2e3))
+        by_angle = draw(st.booleans())
+        z = at_angle(ohms, 30.0) / base
+        self.net.series_reactors[self.name("R", self.net.series_reactors)] = PlainReactor(
+            bus_i=i,
+            bus_j=j,
+            nominal=nominal,
+            impedance=abs(z) if by_angle else z,
+            x_over_r=draw(spread(5, 80)) if by_angle else None,
+            z0=self.maybe(40, fractions(0.5, 1.5).map(lambda x: z * x)),
+            rating=rating,
+        )
+
+    def capacitor(self, bus: str) -> None:
+        """Small banks: large ones resonate with what feeds them."""
+        draw, nominal = self.draw, self.net.buses[bus]
+        power = draw(spread(*((1e3, 5e4) if nominal < 1e3 else (5e4, 2e6))))
+        connection = draw(st.sampled_from(("star-earthed", "star", "delta")))
+        by_farads = connection != "delta" and draw(chance(40))
+        farads = float(f"{power / (2 * pi * self.net.frequency * nominal**2):.6g}")
+        self.net.capacitors[self.name("C", self.net.capacitors)] = PlainCapacitor(
+            bus=bus,
+            nominal=nominal,
+            power=None if by_farads else power,
+            capacitance=farads if by_farads else None,
+            connection=connection,
+        )
+
+    def earthing_transformer(self, bus: str) -> None:
+        draw, nominal = self.draw, self.net.buses[bus]
+        in_ohm, by_angle = draw(st.booleans()), draw(st.booleans())
+        rating = (
+            None
+            if in_ohm and draw(st.booleans())
+            else draw(spread(*((2e4, 5e5) if nominal < 1e3 else (2e5, 1e7))))
+        )
+        if in_ohm:
+            size = draw(spread(nominal / sqrt(3) / 2000, nominal / sqrt(3) / 50))
+        else:
+            size = draw(fractions(0.03, 0.3))
+        self.net.earthing_transformers[self.name("E", self.net.earthing_transformers)] = (
+            PlainEarthingTransformer(
+                bus=bus,
+                nominal=nominal,
+                z0=size if by_angle else at_angle(size, draw(spread(1, 30))),
+                x_over_r=draw(spread(1, 30)) if by_angle else None,
+                neutral=self.star(nominal),
+                rating=rating,
+                in_ohm=in_ohm,
+            )
+        )
+
+    def coupling(self) -> None:
+        """Couple two or three lines of one circuit, perhaps with one more that is earthed."""
+        draw, lines = self.draw, self.net.lines
+        single = [name for name, line in lines.items() if line.count == 1]
+        if not single:
+            return
+        chosen = draw(st.permutations(single))[: draw(st.sampled_from((2, 2, 3)))]
+        if len(chosen) < 2 or draw(chance(40)):
+            beside = lines[chosen[0]]
+            earthed = draw(chance(60))
+            chosen = [*chosen[:2], self.name("L", lines)]
+            lines[chosen[-1]] = replace(beside, open_end=None, earthed=earthed)
+        together = len(chosen) == 2 or draw(chance(30))  # all in one record, or one a pair
+        for group in [tuple(chosen)] if together else list(combinations(chosen, 2)):
+            lengths = [lines[name].length for name in group]
+            shorter = min((v for v in lengths if v is not None), default=None)
+            form = draw(st.sampled_from(("whole", "length", "half", "default")))
+            form = "whole" if shorter is None or (form == "default" and None in lengths) else form
+            length = None if shorter is None else shorter * (0.5 if form == "half" else 1.0)
+            own = [  # over the coupled length; no line stores less energy than all of them together
+                lines[name].z0 * (1.0 if of is None else length or 1.0)
+                for name, of in zip(group, lengths, strict=True)
+            ]
+            r, x = (
+                draw(fractions(0.02, 0.45)) * min(sqrt(a * b) for a, b in combinations(parts, 2))
+                for parts in ([z.real for z in own], [z.imag for z in own])
+            )
+            z = complex(float(f"{r:.6g}"), float(f"{x:.6g}"))
+            z = -z if len(chosen) == 2 and draw(chance(25)) else z  # one runs the other way
+            per_km = form != "whole" and length is not None
+            name = self.name("X", self.net.mutual_couplings)
+            self.net.mutual_couplings[name] = PlainCoupling(
+                lines=group,
+                z0=z / length if per_km and length else z,
+                length=length if per_km else None,
+                by_default=form == "default",
+            )
+
+    def star_equivalent(self, count: int, resistive: bool) -> list[complex]:
+        """Branches per unit; one of three may be negative, the pairs all store energy together."""
+        draw = self.draw
+        x = [draw(fractions(0.02, 0.1)) for _ in range(count)]
+        if count == 3 and draw(chance(40)):
+            k = draw(st.integers(0, 2))
+            a, b = (x[m] for m in range(3) if m != k)
+            x[k] = -draw(fractions(0.05, 0.6)) * a * b / (a + b)
+        r = [draw(fractions(0.0005, 0.006)) if resistive else 0.0 for _ in range(count)]
+        return [complex(*parts) for parts in zip(r, x, strict=True)]
+
+    def unit(self, ends: dict[str, tuple[str, int]], letters: list[str], limbs: bool = False) -> None:
+        """A transformer of the windings ``letters``; ``ends`` are bus and clock by side.
+
+        ``limbs``: its core has three and its zero sequence was tested.
+        """
+        draw, buses = self.draw, self.net.buses
+        sides = {}
+        for (side, (bus, clock)), letter in zip(ends.items(), letters, strict=True):
+            brought_out = letter in "YZ" and draw(chance(70))
+            star = self.star(buses[bus]) if brought_out else None
+            rated = (
+                buses[bus] * (1 + 0.02 * draw(st.integers(-4, 4))) if draw(st.booleans()) else buses[bus]
+            )
+            sides[side] = PlainWinding(bus, letter + "N" * brought_out, clock, rated, star)
+        lowest = min(buses[bus] for bus, _ in ends.values())
+        rating = draw(spread(*((1e5, 2.5e6) if lowest < 1e3 else (1e6, 1e8))))
+        by_angle = draw(st.booleans())
+        ratings: dict[str, float] = {}
+        if len(sides) == 3 and draw(chance(50)):
+            pairs = draw(st.sampled_from((("hv_tv",), ("hv_tv", "lv_tv"), ("hv_lv", "hv_tv", "lv_tv"))))
+            ratings = {pair: rating * draw(st.sampled_from((0.25, 0.3, 0.5, 1.0))) for pair in pairs}
+
+        def pairs_of(branches: list[complex]) -> dict[str, complex]:
+            found = {}
+            for (a, b), z in star_pairs(**dict(zip(sides, branches, strict=True))).items():
+                z = z * ratings.get(f"{a}_{b}", rating) / rating
+                found[f"{a}_{b}"] = complex(float(f"{z.real:.6g}"), float(f"{z.imag:.6g}"))
+            return found
+
+        impedance: dict[str, Any] = pairs_of(self.star_equivalent(len(sides), not by_angle))
+        if by_angle:
+            impedance = {pair: z.imag for pair, z in impedance.items()}
+        zigzag, delta = "Z" in letters, "D" in letters
+        magnetising = tests = z0 = ratio = circuit = None
+        tested = all(w.letters[0] != "Y" or w.neutral for w in sides.values())
+        if limbs and (tested or not delta):
+            circuit = "three-limb"
+            x = draw(fractions(0.02, 0.15) if delta else fractions(0.3, 1.5))
+            middle = complex(x * draw(fractions(0.01, 0.2)), x)
+            if delta or (tested and draw(st.booleans())):
+                first, second = self.star_equivalent(2, True)
+                beside = second * middle / (second + middle)
+                tests = (first + middle, second + middle, first + beside)
+            else:
+                magnetising = middle
+        elif not delta:
+            circuit = draw(st.sampled_from(WITH_OWN_RETURN))
+        if tests is None:
+            form = "z0" if zigzag else draw(st.sampled_from(("default", "ratio", "z0")))
+            if zigzag:
+                z0 = {"zigzag": complex(draw(fractions(0.0005, 0.01)), draw(fractions(0.005, 0.1)))}
+            elif form == "z0":
+                z0 = pairs_of(self.star_equivalent(len(sides), True))
+            ratio = draw(fractions(0.7, 1.0)) if form == "ratio" else None
+        self.net.transformers[self.name("T", self.net.transformers)] = PlainUnit(
+            sides=sides,
+            rating=rating,
+            impedance=impedance,
+            ratings=ratings,
+            x_over_r=draw(spread(2, 40)) if by_angle else None,
+            z0=z0,
+            z0_over_z1=ratio,
+            tap=self.maybe(40, st.integers(-4, 4).map(lambda n: 0.025 * n)),
+            magnetic_circuit=circuit,
+            z0_magnetising=magnetising,
+            zero_tests=tests,
+            count=draw(st.sampled_from((1, 1, 1, 2))),
+            percent=draw(st.booleans()),
+        )
+
+    def any_transformer(self, hv: str, lv: str, clock: int, third: str | None, late: int) -> None:
+        """Whatever can stand between two buses; ``third`` is one for a tertiary, ``late`` its clock."""
+        draw, buses = self.draw, self.net.buses
+        even = clock % 2 == 0
+        ends = {"hv": (hv, 0), "lv": (lv, clock)}
+        choices = ["plain", "zigzag", "three", "three"] + ["limbs"] * even
+        choices += ["auto", "auto", "auto"] * (clock == 0 and buses[hv] > 2 * buses[lv])
+        choice = draw(st.sampled_from(choices))
+        if choice == "three" or (choice == "auto" and draw(st.booleans())):
+            if third is None:
+                third = self.name("B", buses)
+                buses[third] = draw(st.sampled_from(LEVELS))
+            ends["tv"] = (third, late)
+        if choice == "auto":
+            last = [] if "tv" not in ends else ["D" if ends["tv"][1] % 2 else "Y"]
+            self.unit(ends, ["Y", "A", *last], limbs=last != ["Y"] and draw(chance(40)))
+        elif "tv" in ends:
+            first = draw(st.sampled_from("YYD"))
+            letters = [first]
+            for _, late in (ends["lv"], ends["tv"]):
+                letters.append("YD"[(late + LAG_OF_LETTER[first]) % 2])
+            if "D" in letters and draw(chance(25)):
+                letters[letters.index("D")] = "Z"
+            tested = letters == ["Y", "Y", "D"]
+            self.unit(ends, letters, limbs=tested and draw(chance(40)))
+        elif choice == "zigzag":
+            pairs = ("DZ", "DZ", "ZD") if even else ("YZ", "YZ", "ZY")
+            self.unit(ends, list(draw(st.sampled_from(pairs))))
+        elif choice == "limbs":
+            self.unit(ends, ["Y", "Y"], limbs=True)
+        else:
+            self.transformer(hv, lv, clock)
+
+    def coils(self) -> None:
+        """Make arc-suppression coils of some neutrals that one network with capacitance uses."""
+        draw, net = self.draw, self.net
+        beside_auto = {w.bus for u in net.autos() for side, w in u.sides.items() if side != "tv"}
+        for name in list(net.neutrals):
+            users = net.star_points(name)
+            around = net.galvanic(users[0]) if users else set()
+            alone = set(users) <= around and not around & beside_auto
+            if not (users and alone and net.charging(name) > 0 and draw(chance(40))):
+                continue
+            detuning = draw(st.sampled_from((-1, 1, 1))) * draw(fractions(0.02, 0.25))
+            loss = self.maybe(70, fractions(0.005, 0.05))
+            ohms = 1 / net.charging(name)
+            beside = float(f"{ohms * draw(fractions(2, 20)):.6g}") if draw(chance(30)) else None
+            net.neutrals[name] = PlainNeutral(None, None, beside, None, None, None, detuning, loss)
+
+
+def _build(draw: DrawFn, min_buses: int, max_buses: int, every: bool) -> PlainNetwork:
     net = PlainNetwork(draw(st.sampled_from((50.0, 60.0))), {}, {}, {}, {}, {}, {}, {})
-    sketch = _Sketch(draw, draw(st.sampled_from(("", "", ".x", ' "ü"'))), net)
+    sketch = _Sketch(draw, draw(st.sampled_from(("", "", ".x", ' "ü"'))), net, every)
     levels = draw(st.permutations(LEVELS))[: draw(st.sampled_from((2, 1, 2, 3, 3)))]
     # A zone holds buses of one voltage and one clock; lines stay inside it, transformers join two.
     count = draw(st.integers(min_buses, max_buses))
-    zones: list[tuple[float, int, list[str]]] = [
-        (level, draw(st.integers(0, 11)), []) for level in levels[:count]
-    ]
+    clocks = st.one_of(st.just(0), st.integers(0, 11)) if every else st.integers(0, 11)
+    zones: list[tuple[float, int, list[str]]] = [(level, draw(clocks), []) for level in levels[:count]]
     if count > len(zones) and draw(chance(40)):
-        zones.append((draw(st.sampled_from(levels)), draw(st.integers(0, 11)), []))
+        zones.append((draw(st.sampled_from(levels)), draw(clocks), []))
     for k in range(count):
         level, _, members = zones[k] if k < len(zones) else draw(st.sampled_from(zones))
         name = sketch.name("B", net.buses)
@@ -601,23 +1184,53 @@ def networks(draw: DrawFn, min_buses: int = 2, max_buses: int = 8) -> PlainNetwo
     for _, _, members in zones:
         for k in range(1, len(members)):
             if not draw(chance(7)):
-                sketch.line(draw(st.sampled_from(members[:k])), members[k], may_open=False)
+                sketch.joint(draw(st.sampled_from(members[:k])), members[k])
         for _ in range(draw(st.integers(0, 2)) if len(members) > 1 else 0):
             i, j = draw(st.permutations(members))[:2]
-            sketch.line(i, j, may_open=True)
+            if every and draw(chance(20)):
+                sketch.tie(i, j, closed=False)
+            else:
+                sketch.line(i, j, may_open=True)
     for k in range(1, len(zones)):
         for _ in range(draw(st.sampled_from((1, 2, 1, 2, 1, 3, 1, 0)))):
             pair = sorted((draw(st.sampled_from(zones[:k])), zones[k]), key=lambda z: -z[0])
             (_, ahead, upper), (_, behind, lower) = pair
             hv, lv = draw(st.sampled_from(upper)), draw(st.sampled_from(lower))
-            sketch.transformer(hv, lv, (behind - ahead) % 12)
+            clock = (behind - ahead) % 12
+            if not every:
+                sketch.transformer(hv, lv, clock)
+                continue
+            others = [(bus, z[1]) for z in zones if z[2] not in (upper, lower) for bus in z[2]]
+            third, late = draw(st.sampled_from(others)) if others and draw(chance(30)) else (None, 0)
+            late = (late - ahead) % 12 if third else draw(st.integers(0, 11))
+            sketch.any_transformer(hv, lv, clock, third, late)
     everywhere = st.sampled_from(sorted(net.buses))
     first = sketch.generator if draw(chance(30)) else sketch.infeed
     first(draw(everywhere))
-    for add, most in ((sketch.infeed, 1), (sketch.generator, 2), (sketch.motor, 2)):
+    more = ((sketch.earthing_transformer, 1), (sketch.capacitor, 1)) if every else ()
+    for add, most in ((sketch.infeed, 1), (sketch.generator, 2), (sketch.motor, 2), *more):
         for _ in range(draw(st.integers(0, most))):
             add(draw(everywhere))
+    if every:
+        if draw(chance(40)):
+            sketch.coupling()
+        sketch.coils()
     return net
+
+
+@st.composite
+def basic_networks(draw: DrawFn, min_buses: int = 2, max_buses: int = 8) -> PlainNetwork:
+    """Installations of infeeds, machines, lines, two-winding star and delta units, neutrals."""
+    return _build(draw, min_buses, max_buses, every=False)
+
+
+@st.composite
+def networks(draw: DrawFn, min_buses: int = 2, max_buses: int = 8) -> PlainNetwork:
+    """Installations of every element, one to three voltages, meshed, split, dead or floating.
+
+    Tertiary windings may add buses of their own.
+    """
+    return _build(draw, min_buses, max_buses, every=True)
 
 
 def base_powers() -> SearchStrategy[float]:

@@ -53,7 +53,7 @@ def differences(net: PlainNetwork, ours: FaultSolution, theirs: Result) -> list[
             (float(np.abs(i).max()) * net.buses[bus] for (_, bus), i in theirs.flows.items()),
             default=0.0,
         ),
-        1e-3 * ours.nominal,  # one milliampere
+        1e-2 * ours.nominal,  # ten milliampere
     )
 
     def current(label: str, a, b, nominal: float) -> None:
@@ -94,6 +94,9 @@ def differences(net: PlainNetwork, ours: FaultSolution, theirs: Result) -> list[
             continue
         if abs(star.voltage - theirs.star_voltage[name]) > TOLERANCE * nominal:
             out.append(f"star {star.name}: {star.voltage} against {theirs.star_voltage[name]}")
+    for line in ours.earthed_lines:
+        nominal = max(net.buses.values())
+        current(f"earthed {line.name}", line.residual, theirs.through[line.name].sum(), nominal)
     for delta in ours.deltas:
         theirs_delta = theirs.delta_current[f"{delta.element}.{delta.side}"]
         current(f"delta {delta.element}", delta.current, theirs_delta, net.buses[delta.bus])

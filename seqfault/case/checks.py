@@ -2,22 +2,45 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from typing import Any
 
-from seqfault.case.branches import check_line, check_transformer
+from seqfault.case.branches import check_line, check_series_reactor, check_tie
+from seqfault.case.couplings import check_coupling, check_couplings
 from seqfault.case.draft import Draft
-from seqfault.case.earthing import check_neutral, star_point_named, star_points
-from seqfault.case.findings import SINGULAR, Findings
+from seqfault.case.earthing import (
+    check_earthing_transformer,
+    check_neutral,
+    star_point_named,
+    star_points,
+)
+from seqfault.case.fields import references
+from seqfault.case.findings import Findings, one_of
 from seqfault.case.quantities import parse_quantity
 from seqfault.case.records import TABLES
+from seqfault.case.shunts import check_capacitor, check_converter
 from seqfault.case.sources import check_generator, check_infeed, check_motor
 from seqfault.case.subject import Site, Subject, real
+from seqfault.case.transformers import check_parallel, check_transformer
 from seqfault.case.units import normalised
 from seqfault.case.wording import quoted
 from seqfault.errors import QuantityError
 
 RESERVED = ("base", "all")
 _PREFAULT = (0.8, 1.2)
+_RULES: dict[str, Callable[[Subject, Any], None]] = {
+    "infeeds": check_infeed,
+    "generators": check_generator,
+    "motors": check_motor,
+    "lines": check_line,
+    "mutual_couplings": check_coupling,
+    "transformers": check_transformer,
+    "earthing_transformers": check_earthing_transformer,
+    "series_reactors": check_series_reactor,
+    "capacitors": check_capacitor,
+    "converters": check_converter,
+    "ties": check_tie,
+}
 
 
 def check(draft: Draft, findings: Findings) -> None:
@@ -27,16 +50,12 @@ def check(draft: Draft, findings: Findings) -> None:
     _whole(draft, site)
     for name, bus in case.buses.items():
         Subject(site, "buses", name).positive({"voltage": bus.voltage})
-    for name, infeed in case.infeeds.items():
-        check_infeed(Subject(site, "infeeds", name), infeed)
-    for name, generator in case.generators.items():
-        check_generator(Subject(site, "generators", name), generator)
-    for name, motor in case.motors.items():
-        check_motor(Subject(site, "motors", name), motor)
-    for name, line in case.lines.items():
-        check_line(Subject(site, "lines", name), line)
-    for name, unit in case.transformers.items():
-        check_transformer(Subject(site, "transformers", name), unit)
+    for table, rule in _RULES.items():
+        for name, record in getattr(case, table).items():
+            rule(Subject(site, table, name), record)
+    _broken_records(draft, site)
+    check_couplings(site)
+    check_parallel(site)
     users = star_points(case)
     for name, neutral in case.neutrals.items():
         check_neutral(Subject(site, "neutrals", name), neutral, users.get(name, ()))
@@ -49,10 +68,7 @@ def _names(draft: Draft, findings: Findings) -> None:
             problem = name_problem(name)
             owner = draft.names.get(name, table)
             if problem is None and owner != table:
-                article = "an" if SINGULAR[owner][0] in "aeiou" else "a"
-                problem = (
-                    f"{article} {SINGULAR[owner]} has this name already; names are unique over all tables"
-                )
+                problem = f"{one_of(owner)} has this name already; names are unique over all tables"
             if problem is None and table == "neutrals":
                 problem = _neutral_name(draft, name)
             if problem is not None:
@@ -88,6 +104,16 @@ def _neutral_name(draft: Draft, name: str) -> str | None:
     if name in ("solid", "isolated"):
         return f"the name is reserved; neutral = {quoted(name)} has a meaning of its own"
     return star_point_named(draft.case, name)
+
+
+def _broken_records(draft: Draft, site: Site) -> None:
+    """Check what the records refer to that cannot be read for another reason."""
+    for name in draft.broken:
+        table = draft.names[name]
+        records = draft.tree.get(table)
+        subject = Subject(site, table, name)
+        for field, mark, other in references(TABLES[table], records.get(name) if records else None):
+            subject.refers(field, mark, other)
 
 
 def _whole(draft: Draft, site: Site) -> None:

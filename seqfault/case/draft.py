@@ -6,17 +6,13 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from seqfault.case.conversion import (
-    STRAY,
-    TOP_LEVEL,
-    convert_record,
-    fields_of,
-    proper_text,
-)
+from seqfault.case.conversion import STRAY, TOP_LEVEL, convert_record
+from seqfault.case.fields import fields_of
 from seqfault.case.findings import Findings
 from seqfault.case.quantities import Dimensions, missing_unit, read_quantity, wanted
 from seqfault.case.records import TABLES, Bus, Case, Prefault, Record
 from seqfault.case.synonyms import LATER_TABLES, table_for
+from seqfault.case.values import proper_text
 from seqfault.case.wording import quoted, shown
 from seqfault.errors import FieldError
 

@@ -13,8 +13,14 @@ SINGULAR = {
     "generators": "generator",
     "motors": "motor",
     "lines": "line",
+    "mutual_couplings": "mutual coupling",
     "transformers": "transformer",
+    "earthing_transformers": "earthing transformer",
     "neutrals": "neutral",
+    "series_reactors": "series reactor",
+    "capacitors": "capacitor",
+    "converters": "converter",
+    "ties": "tie",
 }
 
 
@@ -22,6 +28,12 @@ def place(table: str, name: str = "", field: str = "") -> str:
     """Return ``transformer "T1", vector_group``: where in the file something stands."""
     where = f"{SINGULAR.get(table, table)} {quoted(name)}" if name or table in SINGULAR else table
     return ", ".join(part for part in (where, field) if part)
+
+
+def one_of(table: str) -> str:
+    """Return ``an infeed``: a record of a table, with its article."""
+    word = SINGULAR[table]
+    return f"{'an' if word[0] in 'aeiou' else 'a'} {word}"
 
 
 class Findings:

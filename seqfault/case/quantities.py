@@ -19,6 +19,9 @@ from seqfault.case.units import COMMON, EXAMPLES, KINDS, UNITS, normalised, resp
 from seqfault.case.wording import listed, quoted
 from seqfault.errors import QuantityError
 
+# Far beyond any quantity of the trade; squares and products of a few of them stay finite and not 0.
+LARGEST = 1e40
+_TOO_SMALL = "the number is too small to be held; write 0 if zero is meant"
 _NUMBER = r"(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 _TERM = rf"(?:j ?)?{_NUMBER}(?: ?j(?![a-zA-Z]))?"
 _LEADING = re.compile(rf"([+-]? ?{_TERM})(?: ?([+-] ?{_TERM}))?")
@@ -157,8 +160,11 @@ def _interpret(text: str, dimensions: tuple[str, ...]) -> Quantity:
         if value < 0:
             _refuse(text, "a magnitude is not negative; add 180 to the angle instead")
         value = cmath.rect(value, angle)
-    if not cmath.isfinite(value):
+    size = abs(value.real) + abs(value.imag)
+    if not size < LARGEST:
         _refuse(text, "the number is too large; a finite number is wanted")
+    if 0 < size < 1 / LARGEST:
+        _refuse(text, _TOO_SMALL)
     return Quantity(value, dimension, text)
 
 
@@ -195,7 +201,7 @@ def _number(text: str, written: str, power: int = 0) -> float:
         _refuse(text, "the exponent is too large; a finite number is wanted")
     value = float(f"{mantissa}e{int(exponent or 0) + power}")
     if value == 0 and re.search("[1-9]", mantissa):
-        _refuse(text, "the number is too small to be held; write 0 if zero is meant")
+        _refuse(text, _TOO_SMALL)
     return value
 
 
@@ -246,5 +252,5 @@ def _repairs(plain: str, dimensions: tuple[str, ...]) -> list[str]:
         return []
     unit, mark, angle = plain[found.end() :].strip().partition(" at ")
     candidates = [unit] if unit in UNITS else respelt(unit)
-    fitting = [name for name in candidates if UNITS[name][0] in dimensions] or candidates
+    fitting = [name for name in candidates if not dimensions or UNITS[name][0] in dimensions]
     return [quoted(f"{found[0]} {name}{mark}{angle}", 80) for name in fitting]

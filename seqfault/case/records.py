@@ -33,6 +33,7 @@ Duration = Annotated[Quantity, Dimensions("time")]
 Speed = Annotated[Quantity, Dimensions("speed")]
 Temperature = Annotated[Quantity, Dimensions("temperature")]
 BusName = Annotated[str, Refers("buses")]
+LineName = Annotated[str, Refers("lines")]
 StarPoint = Annotated[str, Refers("neutrals", "solid", "isolated")]
 MagneticCircuit = Literal["three-limb", "five-limb", "shell-form", "three-single-phase"]
 
@@ -109,6 +110,16 @@ class Line(Record, frozen=True, kw_only=True, rename={"from_": "from"}):
     length: Length | None = None
     count: int = 1
     open: tuple[BusName, ...] = ()
+    earthed: bool = False  # out of service and earthed at both ends
+
+
+class MutualCoupling(Record, frozen=True, kw_only=True):
+    """Zero-sequence coupling of two lines, both in their sense from → to."""
+
+    lines: tuple[LineName, ...]
+    z0: LineOhms
+    length: Length | None = None
+    start: Mapping[LineName, Length] | None = None
 
 
 class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
@@ -119,26 +130,111 @@ class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=T
     neutral: StarPoint | None = None
 
 
+class Pairs(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """Short-circuit impedances of the three pairs of windings of a three-winding transformer."""
+
+    hv_lv: OhmsOrRatio
+    hv_tv: OhmsOrRatio
+    lv_tv: OhmsOrRatio
+
+
+class PairRatings(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """Ratings that the per cent impedances of the pairs refer to."""
+
+    hv_lv: Power | None = None
+    hv_tv: Power | None = None
+    lv_tv: Power | None = None
+
+
+class ZeroTests(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """Zero-sequence tests of IEC 60076-1: other sides open, and lv shorted; any delta closed."""
+
+    from_hv: OhmsOrRatio
+    from_lv: OhmsOrRatio
+    from_hv_lv_shorted: OhmsOrRatio
+
+
 class Transformer(Record, frozen=True, kw_only=True):
-    """A two-winding transformer, or ``count`` of them alike in parallel."""
+    """A transformer of two or three windings, or ``count`` of them alike in parallel."""
 
     vector_group: str
     rating: Power
     hv: Winding
     lv: Winding
-    impedance: Annotated[Quantity, Dimensions("ratio", "impedance", complex=True)]
+    tv: Winding | None = None
+    impedance: OhmsOrRatio | Pairs
+    impedance_on: PairRatings | None = None
     x_over_r: float | None = None
     load_loss: Power | None = None
-    z0: OhmsOrRatio | None = None
+    z0: OhmsOrRatio | Pairs | None = None
     z0_over_z1: float | None = None
     tap: Ratio | None = None
     magnetic_circuit: MagneticCircuit | None = None
+    z0_magnetising: OhmsOrRatio | None = None
+    zero_tests: ZeroTests | None = None
     count: int = 1
 
 
-class Neutral(Record, frozen=True, kw_only=True):
-    """What joins star points to earth: resistance and reactance in series, beside a resistance."""
+class EarthingTransformer(Record, frozen=True, kw_only=True):
+    """A zigzag or star-delta transformer that gives a bus a star point; ``z0`` is per phase."""
 
+    bus: BusName
+    z0: OhmsOrRatio
+    x_over_r: float | None = None
+    neutral: StarPoint | None = None
+    rating: Power | None = None
+    duration: Duration | None = None
+
+
+class SeriesReactor(Record, frozen=True, kw_only=True, rename={"from_": "from"}):
+    """A reactor in series between two buses of one nominal voltage."""
+
+    from_: BusName
+    to: BusName
+    impedance: OhmsOrRatio
+    x_over_r: float | None = None
+    z0: OhmsOrRatio | None = None
+    rating: Power | None = None
+
+
+class Capacitor(Record, frozen=True, kw_only=True):
+    """A capacitor bank; ``power`` at nominal voltage, or ``capacitance`` a phase."""
+
+    bus: BusName
+    power: Power | None = None
+    capacitance: Farads | None = None
+    connection: Literal["star-earthed", "star", "delta"]
+
+
+class Converter(Record, frozen=True, kw_only=True):
+    """An inverter-fed infeed: a current-limited source of positive sequence during the fault."""
+
+    bus: BusName
+    rating: Power
+    fault_current: float
+    angle: Annotated[Quantity, Dimensions("angle")] | None = None
+    threshold: Ratio | None = None
+
+
+class Tie(Record, frozen=True, kw_only=True, rename={"from_": "from"}):
+    """A bus coupler or section switch: closed, its two buses are one node."""
+
+    from_: BusName
+    to: BusName
+    closed: bool
+
+
+class Neutral(Record, frozen=True, kw_only=True):
+    """What joins star points to earth: resistance and reactance in series, beside a resistance.
+
+    ``kind = "arc-suppression"`` is a coil tuned to the capacitance of the base case; ``ratio`` is that
+    of a distribution transformer between the star point and the impedance stated.
+    """
+
+    kind: Literal["impedance", "arc-suppression"] = "impedance"
+    detuning: Ratio | None = None
+    loss: Ratio | None = None
+    ratio: float | None = None
     resistance: Resistance | None = None
     reactance: Resistance | None = None
     parallel_resistance: Resistance | None = None
@@ -162,8 +258,14 @@ TABLES: dict[str, type[Record]] = {
     "generators": Generator,
     "motors": Motor,
     "lines": Line,
+    "mutual_couplings": MutualCoupling,
     "transformers": Transformer,
+    "earthing_transformers": EarthingTransformer,
     "neutrals": Neutral,
+    "series_reactors": SeriesReactor,
+    "capacitors": Capacitor,
+    "converters": Converter,
+    "ties": Tie,
 }
 
 
@@ -186,8 +288,14 @@ class Case(msgspec.Struct, frozen=True, kw_only=True):
     generators: Mapping[str, Generator]
     motors: Mapping[str, Motor]
     lines: Mapping[str, Line]
+    mutual_couplings: Mapping[str, MutualCoupling]
     transformers: Mapping[str, Transformer]
+    earthing_transformers: Mapping[str, EarthingTransformer]
     neutrals: Mapping[str, Neutral]
+    series_reactors: Mapping[str, SeriesReactor]
+    capacitors: Mapping[str, Capacitor]
+    converters: Mapping[str, Converter]
+    ties: Mapping[str, Tie]
     scenarios: tuple[str, ...] = ()
     state: str = "base"
     tree: Mapping[str, Any]

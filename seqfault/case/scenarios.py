@@ -1,7 +1,7 @@
 """The case in a named operating state: its ``[scenarios.NAME]`` laid over the file, checked again.
 
-A scenario lists records ``in`` and ``out`` of service, line ends to ``open`` and ``close`` as
-``LINE@BUS``, and states any other table of the file in part: a field stated replaces the field.
+A scenario lists records ``in`` and ``out`` of service, ties and line ends (``LINE@BUS``) to ``open``
+and ``close``, and states any other table of the file in part: a field stated replaces the field.
 """
 
 from __future__ import annotations
@@ -13,7 +13,7 @@ import msgspec
 
 from seqfault.case.checks import check, name_problem
 from seqfault.case.draft import Draft, draft
-from seqfault.case.findings import SINGULAR, Findings
+from seqfault.case.findings import Findings, one_of
 from seqfault.case.records import TABLES, Case
 from seqfault.case.synonyms import LATER_TABLES
 from seqfault.case.wording import Spelling, listed, quoted, shown
@@ -30,10 +30,10 @@ def in_state(
     open: Iterable[str] = (),
     close: Iterable[str] = (),
 ) -> Case:
-    """Return ``case`` in a scenario of its file, with further records out and line ends switched.
+    """Return ``case`` in a scenario of its file, with further records out, ties and line ends switched.
 
-    ``base`` is the file itself. ``without`` names records, ``open`` and ``close`` line ends as
-    ``LINE@BUS``. Raises RequestError for a scenario, record or place that is not there, and
+    ``base`` is the file itself. ``without`` names records, ``open`` and ``close`` ties, or line ends
+    as ``LINE@BUS``. Raises RequestError for a scenario, record or place that is not there, and
     CaseError when the state breaks a rule of the case file.
     """
     without, open, close = tuple(without), tuple(open), tuple(close)
@@ -149,7 +149,7 @@ def _merged(raw: object, change: object) -> object:
 def _switched(
     tree: dict[str, Any], switching: Mapping[str, tuple[str, ...]], out: str = "out"
 ) -> list[str]:
-    """Put records in or out and open or close line ends, in place; return what cannot be done.
+    """Put records in or out, open or close ties and line ends, in place; return what cannot be done.
 
     ``out`` is the word of the messages for taking a record out.
     """
@@ -171,7 +171,7 @@ def _switched(
                 _changed(tree, tables[name], name, {"out": key == "out"})
     for key in ("open", "close"):
         for place in switching.get(key, ()):
-            problem = _switch_end(tree, tables, place, key == "open")
+            problem = _switch(tree, tables, place, key == "open")
             if problem:
                 problems.append(f"{key}: {problem}")
     return problems
@@ -183,15 +183,21 @@ def _changed(tree: dict[str, Any], table: str, name: str, change: dict[str, Any]
         tree[table] = {**tree[table], name: {**raw, **change}}
 
 
-def _switch_end(tree: dict[str, Any], tables: Mapping[str, str], place: str, opened: bool) -> str | None:
-    """Open or close one end of a line; return what is wrong with the place, or None."""
+def _switch(tree: dict[str, Any], tables: Mapping[str, str], place: str, opened: bool) -> str | None:
+    """Open or close a tie or one end of a line; return what is wrong with the place, or None."""
     name, at, bus = place.partition("@")
     if name not in tables:
-        lines = [line for line, table in tables.items() if table == "lines"]
-        hint = Spelling(lines).hint(name)
-        return f"{quoted(place)}: there is no line {quoted(name)}{hint}"
+        fitting = ("lines",) if at else ("lines", "ties")
+        hint = Spelling([one for one, table in tables.items() if table in fitting]).hint(name)
+        return f"{quoted(place)}: there is no {'line' if at else 'line or tie'} {quoted(name)}{hint}"
+    if tables[name] == "ties":
+        if at:
+            return f"{quoted(place)}: a tie is opened and closed as a whole; write {quoted(name)}"
+        _changed(tree, "ties", name, {"closed": not opened})
+        return None
     if tables[name] != "lines":
-        return f"{quoted(place)}: {quoted(name)} is a {SINGULAR[tables[name]]}; a line is wanted"
+        wanted = "a line is wanted" if at else "a tie is wanted, or the end of a line as LINE@BUS"
+        return f"{quoted(place)}: {quoted(name)} is {one_of(tables[name])}; {wanted}"
     line = tree["lines"][name]
     if not isinstance(line, Mapping):
         return None  # told already

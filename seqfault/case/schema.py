@@ -8,11 +8,12 @@ from __future__ import annotations
 
 import re
 import types
+from collections.abc import Mapping
 from typing import Annotated, Any, Literal, Union, get_args, get_origin
 
 import msgspec
 
-from seqfault.case.conversion import fields_of
+from seqfault.case.fields import fields_of
 from seqfault.case.findings import SINGULAR
 from seqfault.case.quantities import Dimensions, Refers, wanted
 from seqfault.case.records import TABLES, Prefault
@@ -34,7 +35,7 @@ def case_schema() -> dict[str, Any]:
         "frequency": _quantity(Dimensions("frequency")),
         "base_power": _quantity(Dimensions("power")),
         "prefault": {"$ref": "#/$defs/prefault"},
-        **{table: _keyed({"$ref": f"#/$defs/{SINGULAR[table]}"}) for table in TABLES},
+        **{table: _keyed({"$ref": f"#/$defs/{_definition(table)}"}) for table in TABLES},
     }
     names = {"type": "array", "items": {"type": "string"}}
     scenario = {
@@ -47,7 +48,7 @@ def case_schema() -> dict[str, Any]:
         },
         "additionalProperties": False,
     }
-    definitions = {SINGULAR[table]: _record(kind) for table, kind in TABLES.items()}
+    definitions = {_definition(table): _record(kind) for table, kind in TABLES.items()}
     voltage = definitions["bus"]["properties"]["voltage"]
     definitions["bus"] = {"anyOf": [voltage, definitions["bus"]]}
     return {
@@ -59,6 +60,10 @@ def case_schema() -> dict[str, Any]:
         "additionalProperties": False,
         "$defs": {**definitions, "prefault": _record(Prefault)},
     }
+
+
+def _definition(table: str) -> str:
+    return SINGULAR[table].replace(" ", "_")
 
 
 def _keyed(entry: dict[str, Any]) -> dict[str, Any]:
@@ -90,6 +95,9 @@ def _value(hint: Any) -> dict[str, Any]:
         return parts[0] if len(parts) == 1 else {"anyOf": parts}
     if origin is Literal:
         return {"enum": list(arguments)}
+    if origin is Mapping:
+        names = {"description": _reference(get_args(arguments[0])[1])["description"]}
+        return {"type": "object", "propertyNames": names, "additionalProperties": _value(arguments[1])}
     if origin is tuple:
         return {"type": "array", "items": _value(arguments[0])}
     if isinstance(hint, type) and issubclass(hint, msgspec.Struct):

@@ -6,9 +6,9 @@ import math
 from collections.abc import Mapping
 
 from seqfault.case.draft import Draft
-from seqfault.case.findings import SINGULAR, Findings
-from seqfault.case.quantities import Quantity
-from seqfault.case.records import Bus
+from seqfault.case.findings import SINGULAR, Findings, one_of
+from seqfault.case.quantities import Quantity, Refers
+from seqfault.case.records import Bus, Line
 from seqfault.case.units import normalised
 from seqfault.case.wording import Spelling, quoted
 
@@ -26,14 +26,14 @@ class Site:
         self.findings = findings
         self._spelling = {
             table: Spelling([name for name, of in draft.names.items() if of == table])
-            for table in ("buses", "neutrals")
+            for table in ("buses", "lines", "neutrals")
         }
 
     def unknown(self, table: str, name: str) -> str:
         """Return what to say of a name that is not in ``table``."""
         other = self.names.get(name)
         if other is not None:
-            return f"{quoted(name)} is a {SINGULAR[other]}; a {SINGULAR[table]} is wanted"
+            return f"{quoted(name)} is {one_of(other)}; {one_of(table)} is wanted"
         hint = self._spelling[table].hint(name)
         return f"there is no {SINGULAR[table]} {quoted(name)}{hint}"
 
@@ -63,6 +63,13 @@ class Subject:
             self.error(field, self.site.unknown("buses", name))
         return found
 
+    def line(self, field: str, name: str) -> Line | None:
+        """Return a line; None, after a complaint, when there is none of this name."""
+        found = self.site.case.lines.get(name)
+        if found is None and not (self.site.names.get(name) == "lines" and name in self.site.broken):
+            self.error(field, self.site.unknown("lines", name))
+        return found
+
     def star_point(self, field: str, name: str | None) -> None:
         """Complain when a star point is neither a word nor a neutral of the file."""
         if name in (None, "solid", "isolated") or self.site.names.get(name) == "neutrals":
@@ -70,6 +77,11 @@ class Subject:
         problem = self.site.unknown("neutrals", name)
         guessed = "did you mean" in problem
         self.error(field, problem + ("" if guessed else '; "solid" and "isolated" are words too'))
+
+    def refers(self, field: str, mark: Refers, name: str) -> None:
+        """Complain when there is no record of this name in the table that a field refers to."""
+        rules = {"buses": self.bus, "lines": self.line, "neutrals": self.star_point}
+        rules[mark.words[0]](field, name)
 
     def positive(self, quantities: Mapping[str, Quantity | None], zero: bool = False) -> bool:
         """Tell whether each quantity stated is above zero, or not below it with ``zero``."""
@@ -113,6 +125,13 @@ class Subject:
         self.error(field, f"{said(quantity)}: {problem}")
         return False
 
+    def own_base(self, field: str, quantity: Quantity | None, rating: Quantity | None) -> bool:
+        """Tell whether per cent have the rating that they refer to."""
+        if quantity is None or quantity.dimension != "ratio" or rating is not None:
+            return True
+        self.error("rating", f"this is missing; {field} = {said(quantity)} refers to it")
+        return False
+
     def resistive(self, field: str, quantity: Quantity | None) -> None:
         """Doubt an impedance written without a reactance."""
         if quantity is not None and not isinstance(quantity.value, complex) and quantity.value > 0:
@@ -122,10 +141,10 @@ class Subject:
                 'write both parts, as in "0.1+j0.4 ohm"',
             )
 
-    def volt_amperes(self, quantity: Quantity | None) -> None:
+    def volt_amperes(self, quantity: Quantity | None, field: str = "rating") -> None:
         """Doubt a rating in watts, of which the program makes volt-amperes."""
         if quantity is not None and not normalised(quantity.text).endswith("VA"):
-            self.warn("rating", f"{said(quantity)}: a rating is in VA; this counts as so many VA")
+            self.warn(field, f"{said(quantity)}: a rating is in VA; this counts as so many VA")
 
     def rated_voltage(self, field: str, rated: Quantity | None, bus_name: str) -> None:
         """Complain of a rated voltage that is far from the nominal voltage of its bus."""

@@ -12,9 +12,16 @@ _TABLES = {
     "generators": "generator gens machine machines synchronous_machines synchronous_motors alternators",
     "motors": "motor induction_motors asynchronous_motors drives",
     "lines": "line cable cables feeder feeders overhead_lines branches circuits",
-    "transformers": "transformer trafo trafos xfmr xfmrs power_transformers",
+    "mutual_couplings": "mutual_coupling mutual mutuals couplings coupling coupled_lines",
+    "transformers": "transformer trafo trafos xfmr xfmrs power_transformers auto_transformers",
+    "earthing_transformers": "earthing_transformer grounding_transformers grounding_transformer zigzag "
+    "zigzags neutral_earthing_transformers earthing_trafos",
     "neutrals": "neutral earthing earthings grounding groundings ngr ngrs ner ners "
     "neutral_earthing_resistors neutral_grounding_resistors earthing_resistors star_points",
+    "series_reactors": "series_reactor reactor reactors current_limiting_reactors",
+    "capacitors": "capacitor capacitor_banks shunt_capacitors banks shunts",
+    "converters": "converter inverter inverters pv solar wind batteries battery",
+    "ties": "tie coupler couplers bus_couplers bus_ties switches section_switches",
     "scenarios": "scenario states cases",
     "prefault": "pre_fault",
     "frequency": "f hz nominal_frequency",
@@ -49,6 +56,14 @@ _FIELDS = {
     "vector_group": "group connection winding winding_group clock",
     "hv": "primary high hv_side",
     "lv": "secondary low lv_side",
+    "tv": "tertiary third tv_side",
+    "z0_magnetising": "zm zm0 z0m z0_mag z0_magnetizing",
+    "connection": "connected wiring",
+    "capacitance": "c farads",
+    "power": "q kvar mvar reactive_power rating",
+    "detuning": "mistuning tuning",
+    "loss": "losses",
+    "closed": "normally_closed state",
     "bus": "node busbar at connected_to bus_name",
     "from": "from_bus bus1 start source sending",
     "to": "to_bus bus2 end receiving",
@@ -69,16 +84,10 @@ _FIELDS = {
     "state": "loading profile",
 }
 # Named on the page of the case format and not read by this version.
-LATER_TABLES = (
-    *("mutual_couplings", "earthing_transformers", "series_reactors", "capacitors", "loads"),
-    *("converters", "ties", "relays", "breakers", "current_transformers", "demands"),
-)
+LATER_TABLES = ("loads", "relays", "breakers", "current_transformers", "demands")
 _LATER_FIELDS = {
     "infeeds": ("voltage",),
     "generators": ("power", "holds"),
-    "lines": ("earthed",),
-    "transformers": ("tv", "impedance_on", "z0_magnetising", "zero_tests"),
-    "neutrals": ("kind", "detuning", "loss", "ratio"),
 }
 _PARTS = ("r", "x", "r1", "x1", "r0", "x0")
 

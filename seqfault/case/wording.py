@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import re
 from collections.abc import Collection, Iterable
 
 _ESCAPES = {'"': '\\"', "\\": "\\\\", "\n": "\\n", "\r": "\\r", "\t": "\\t"}
@@ -26,6 +27,11 @@ def _escaped(char: str) -> str:
     if char.isprintable():
         return char
     return f"\\u{ord(char):04x}" if ord(char) < 0x10000 else f"\\U{ord(char):08x}"
+
+
+def keyed(name: str) -> str:
+    """Return a name as a key of TOML: in quotes where it cannot stand without them."""
+    return name if re.fullmatch("[A-Za-z0-9_-]+", name) else quoted(name)
 
 
 def shown(value: object) -> str:

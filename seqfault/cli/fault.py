@@ -48,9 +48,7 @@ def add(commands: Commands) -> None:
     add_impedances(parser)
     shown = parser.add_argument_group("what is shown")
     shown.add_argument("--flows", action="store_true", help="every element, small flows included")
-    shown.add_argument(
-        "--components", action="store_true", help="zero, positive, negative sequence"
-    )
+    shown.add_argument("--components", action="store_true", help="zero, positive, negative sequence")
     add_output(parser)
     parser.set_defaults(run=run)
 
@@ -69,9 +67,7 @@ def run(options: argparse.Namespace) -> int:
         def page() -> Page:
             from seqfault.report.fault import fault_page
 
-            return fault_page(
-                network, solution, every_flow=options.flows, sequence=options.components
-            )
+            return fault_page(network, solution, every_flow=options.flows, sequence=options.components)
 
         def tree() -> dict[str, Any]:
             from seqfault.report.data import fault_tree

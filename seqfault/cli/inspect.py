@@ -24,9 +24,7 @@ def add(commands: Commands) -> None:
         " winding does to zero sequence, star points, and every assumption.",
     )
     add_case(parser)
-    parser.add_argument(
-        "--places", action="store_true", help="print one place a line, nothing else"
-    )
+    parser.add_argument("--places", action="store_true", help="print one place a line, nothing else")
     add_output(parser)
     parser.set_defaults(run=run)
 

@@ -29,9 +29,7 @@ def add_command(commands: Commands, name: str, what: str, text: str) -> argparse
 
 def add_case(parser: argparse.ArgumentParser) -> None:
     """CASE and the options that pick its state."""
-    parser.add_argument(
-        "case", metavar="CASE", help="case file, TOML or JSON; - reads standard input"
-    )
+    parser.add_argument("case", metavar="CASE", help="case file, TOML or JSON; - reads standard input")
     state = parser.add_argument_group("state")
     state.add_argument(
         "--scenario",
@@ -83,17 +81,13 @@ def add_output(parser: argparse.ArgumentParser) -> None:
     group.add_argument(
         "--format", choices=FORMATS, help="default: what the suffix of --output says, or table"
     )
-    group.add_argument(
-        "--output", metavar="FILE", help="write the answer to a file: .json .csv .txt"
-    )
+    group.add_argument("--output", metavar="FILE", help="write the answer to a file: .json .csv .txt")
     group.add_argument("--overwrite", action="store_true", help="let --output replace a file")
     group.add_argument("--width", metavar="COLUMNS", type=_width, help="40 and more")
     group.add_argument(
         "--color", choices=COLORS, default="auto", help="auto heeds NO_COLOR and the terminal"
     )
-    group.add_argument(
-        "--debug", action="store_true", help="show the traceback of an internal error"
-    )
+    group.add_argument("--debug", action="store_true", help="show the traceback of an internal error")
 
 
 def _width(text: str) -> int:

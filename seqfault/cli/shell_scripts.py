@@ -168,8 +168,7 @@ def fish(commands: tuple[Command, ...]) -> str:
         here = f"-n '__fish_seen_subcommand_from {command.name}'"
         for option in command.options:
             names = " ".join(
-                f"-l {name[2:]}" if name.startswith("--") else f"-s {name[1:]}"
-                for name in option.names
+                f"-l {name[2:]}" if name.startswith("--") else f"-s {name[1:]}" for name in option.names
             )
             value = {
                 "none": "-f",
@@ -177,9 +176,7 @@ def fish(commands: tuple[Command, ...]) -> str:
                 "text": "-x",
                 "words": f"-x -a '{' '.join(option.words)}'",
             }[option.value]
-            lines.append(
-                f"complete -c seqfault {here} {names} {value} -d {_fish_text(option.help)}"
-            )
+            lines.append(f"complete -c seqfault {here} {names} {value} -d {_fish_text(option.help)}")
         for number, words in enumerate(command.words):
             when = f"-n '__seqfault_at {command.name} {number}'"
             if words == "case":

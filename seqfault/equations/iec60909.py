@@ -7,16 +7,14 @@ sequence enters as an admittance, so that a place without any such path is exact
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
+import msgspec
 import numpy as np
 import numpy.typing as npt
 
 from seqfault.equations.symmetrical import A, Complex
 
 
-@dataclass(frozen=True, eq=False)
-class BoltedCurrents:
+class BoltedCurrents(msgspec.Struct, frozen=True, eq=False):
     """Complex currents (n,) A of bolted faults: three-phase, line-line, line-line-ground (phase b, c
     and to earth) and line-ground.
     """

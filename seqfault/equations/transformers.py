@@ -43,3 +43,41 @@ def delta_sense(clock: int, on_hv: bool) -> int:
     Follows from the vector diagrams of IEC 60076-1 for a star and a delta winding on one leg.
     """
     return 1 if (clock % 12 in _ALONG_ON_HV) == on_hv else -1
+
+
+def three_winding_leakage(z_hl: complex, z_ht: complex, z_lt: complex) -> npt.NDArray[np.complex128]:
+    """Leakage admittance matrix (3, 3) from the short-circuit impedances of the three pairs.
+
+    With hv as reference, Z' = [[z_hl, (z_hl + z_ht − z_lt)/2], [·, z_ht]] relates the currents into lv
+    and tv to their voltages above hv; ampere-turns balance. The star equivalent of the books is its
+    diagonal form: J. L. Blackburn, "Protective Relaying: Principles and Applications" (from memory). A
+    branch of that star may be negative or zero. One base for all.
+    """
+    mutual = (z_hl + z_ht - z_lt) / 2
+    inverse = np.linalg.inv(np.array([[z_hl, mutual], [mutual, z_ht]], complex))
+    above = np.array([[-1, 1, 0], [-1, 0, 1]], complex)
+    return np.asarray(above.T @ inverse @ above)
+
+
+def star_branches(z_hl: complex, z_ht: complex, z_lt: complex) -> tuple[complex, complex, complex]:
+    """Star equivalent (hv, lv, tv) of the three pairs: z_h = (z_hl + z_ht − z_lt)/2 and round."""
+    return (z_hl + z_ht - z_lt) / 2, (z_hl + z_lt - z_ht) / 2, (z_ht + z_lt - z_hl) / 2
+
+
+def magnetised_leakage(z_h: complex, z_l: complex, z_m: complex) -> npt.NDArray[np.complex128]:
+    """Admittance matrix (2, 2) of a T: ``z_m`` to the reference between ``z_h`` and ``z_l``."""
+    return np.linalg.inv(np.array([[z_h + z_m, z_m], [z_m, z_l + z_m]], complex))
+
+
+def magnetising_from_tests(
+    from_hv: complex, from_lv: complex, from_hv_lv_shorted: complex
+) -> tuple[complex, complex, complex]:
+    """The T (z_h, z_l, z_m) of zero-sequence tests, each per unit of its own side.
+
+    Z_m = √(Z_lv,open (Z_hv,open − Z_hv,short)), the root with positive reactance: IEC 60076-1 and
+    60076-8, three-limb cores and closed deltas (from memory).
+    """
+    z_m = complex(np.sqrt(complex(from_lv * (from_hv - from_hv_lv_shorted))))
+    if z_m.imag < 0:
+        z_m = -z_m
+    return from_hv - z_m, from_lv - z_m, z_m

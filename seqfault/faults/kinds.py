@@ -3,16 +3,15 @@
 from __future__ import annotations
 
 import difflib
-from dataclasses import dataclass
 
+import msgspec
 import numpy as np
 
 from seqfault.equations.symmetrical import Complex
 from seqfault.errors import RequestError, quoted
 
 
-@dataclass(frozen=True)
-class Kind:
+class Kind(msgspec.Struct, frozen=True):
     """A kind of fault; ``symbol`` is the subscript of IEC 60909-0, ``phases`` what it takes unasked."""
 
     name: str
@@ -38,8 +37,7 @@ SAME = {
 }
 
 
-@dataclass(frozen=True)
-class Fault:
+class Fault(msgspec.Struct, frozen=True):
     """A fault asked for: ``zf`` and ``zg`` in ohm.
 
     ``zf`` lies in each faulted phase up to the common point (line-line: once, between the phases),

@@ -13,22 +13,23 @@ sequence between ports of clocks m and n turns by −30° (m − n), negative by
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
+import msgspec
 import numpy as np
 
 from seqfault.equations.symmetrical import TO_PHASES, TO_SEQUENCE, Complex, clock_turn
 from seqfault.errors import NoAnswerError
 from seqfault.faults.kinds import Fault, branches
-from seqfault.model.elements import Ints
-from seqfault.networks.factors import SequenceNetworks
+from seqfault.model.elements import Floats, Ints
+from seqfault.networks.factors import SEEN, SequenceNetworks
 
 Slack = dict[tuple[int, int], complex]
 SINGULAR = 1e-13
+CANCELLED = 1e-12
+"""A loop whose impedances cancel to this share of their sizes is in series resonance."""
 
 
-@dataclass(frozen=True, eq=False)
-class PortSolution:
+class PortSolution(msgspec.Struct, frozen=True, eq=False):
     """Currents of the faults, in per unit of each place.
 
     ``current`` (3, r) sequence and ``phases`` (3, r) phase currents from the network into each fault, at
@@ -47,20 +48,23 @@ class PortSolution:
 
 
 def solve_ports(
-    networks: SequenceNetworks, nodes: Ints, faults: Sequence[Fault], clocks: Ints
+    networks: SequenceNetworks, places: Ints, faults: Sequence[Fault], clocks: Ints, lifted: Complex
 ) -> PortSolution:
-    """Solve ``faults`` at the buses ``nodes`` (r,), all at once.
+    """Solve ``faults`` at the buses ``places`` (r,), all at once.
 
-    ``clocks`` (r,) are the displacements of the places behind the reference of angles. Raises
+    ``clocks`` (r,) are the displacements of the places behind the reference of angles; ``lifted`` (r,)
+    what other sources add to the positive-sequence voltage before the fault, in the frame of each
+    place. Raises
     ``NoAnswerError`` where the equations have no unique solution.
     """
     model = networks.model
+    nodes = model.node[places]
     r = len(nodes)
     turn = np.stack([np.ones(r), clock_turn(clocks), clock_turn(clocks).conj()])
     columns = tuple(networks[s].columns(nodes) for s in range(3))
     z = np.stack([networks[s].port_impedance(nodes, columns[s]) for s in range(3)])
     z = z * turn[:, :, None] * turn[:, None, :].conj()
-    before = model.before[nodes] * turn[1]
+    before = (model.before[places] + lifted) * turn[1]
     v = before[:, None] * TO_PHASES[:, 1]
 
     shapes = [branches(fault) for fault in faults]
@@ -71,12 +75,13 @@ def solve_ports(
     for k, (e, zf) in enumerate(shapes):
         own = slice(start[k], start[k + 1])
         incidence[k, :, own] = e
-        z_fault[own, own] = zf * (model.base_power / model.nominal[nodes[k]] ** 2)
+        z_fault[own, own] = zf * (model.base_power / model.nominal[places[k]] ** 2)
     # Components of each loop first: one clear of earth has exactly no zero sequence, whose impedance
     # may drown the others in phase coordinates.
     seen = np.einsum("ps,ipa->sia", TO_PHASES, incidence)
     driven = np.einsum("sp,ipa->sia", TO_SEQUENCE, incidence)
     matrix = np.einsum("sia,sij,sjb->ab", seen, z, driven) + z_fault
+    terms = np.einsum("sia,sij,sjb->ab", abs(seen), abs(z), abs(driven)) + abs(z_fault)
     rhs = np.einsum("ipa,ip->a", incidence, v)
 
     lift, constraint, keys, alone = [], [], [], []
@@ -86,12 +91,12 @@ def solve_ports(
             lift.append((free[:, q] * turn[s]) @ seen[s])
             constraint.append((free[:, q] * turn[s].conj()) @ driven[s])
             keys.append((s, name))
-            touched = np.flatnonzero(np.abs(free[:, q]) > 1e-9)
+            touched = np.flatnonzero(np.abs(free[:, q]) > SEEN)
             if len(touched) == 1:
                 alone.append((s, touched[0]))
     width = int(start[-1])
     up = np.array(lift, complex).reshape(len(keys), width).T
-    i, u = _solve(matrix, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
+    i, u = _solve(matrix, terms, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
 
     current = driven @ i
     phases = np.einsum("ipa,a->pi", incidence, i)
@@ -107,19 +112,25 @@ def solve_ports(
     own_z = np.stack([np.diagonal(z[s]) for s in range(3)])
     for s in range(3):
         free, _ = networks[s].slack_at(nodes)
-        own_z[s, (np.abs(free) > 1e-9).any(axis=1)] = np.inf
+        own_z[s, (np.abs(free) > SEEN).any(axis=1)] = np.inf
     return PortSolution(current, phases, own_z, (columns[0], columns[1], columns[2]), slack, unseen)
 
 
-def _solve(z: Complex, v: Complex, lift: Complex, constraint: Complex) -> tuple[Complex, Complex]:
-    """Currents i with ``constraint`` i = 0 exactly, and the free potentials u that go with them."""
+def _solve(
+    z: Complex, terms: Floats, v: Complex, lift: Complex, constraint: Complex
+) -> tuple[Complex, Complex]:
+    """Currents i with ``constraint`` i = 0 exactly, and the free potentials u that go with them.
+
+    ``terms`` (b, b) is the size of what ``z`` is the sum of.
+    """
     free = _null_basis(constraint)
     if free.shape[1]:
         # The lift of a floating part does no work on currents that obey its constraint.
         work = free.conj().T if not len(constraint) else _null_basis(lift.T).T
         small = work @ z @ free
         balance = np.abs(small).max(axis=1, initial=0.0)
-        if (balance == 0).any() or np.linalg.cond(small / balance[:, None]) > 1 / SINGULAR:
+        size = (np.abs(work) @ terms @ np.abs(free)).max(axis=1, initial=0.0)
+        if (balance <= CANCELLED * size).any() or np.linalg.cond(small / balance[:, None]) > 1 / SINGULAR:
             raise NoAnswerError(
                 "the fault current has no limit: the network's impedances to this fault cancel (series"
                 " resonance) or are zero; check reactances of opposite sign"

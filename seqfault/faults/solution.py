@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
-
+import msgspec
 import numpy as np
 
 from seqfault.equations.symmetrical import Complex, to_phases
@@ -12,8 +11,7 @@ from seqfault.model.assumptions import Assumption
 from seqfault.model.elements import Bools, Floats, Ints
 
 
-@dataclass(frozen=True, eq=False)
-class Terminals:
+class Terminals(msgspec.Struct, frozen=True, eq=False):
     """Currents (A) from the bus into each terminal of each element, in the order of the case.
 
     ``sequence`` (3, t) components 0, 1, 2 at the true angle of the bus; ``count`` (t,) identical
@@ -28,6 +26,26 @@ class Terminals:
     count: Ints
     sequence: Complex
 
+    def extended(
+        self,
+        element: tuple[str, ...],
+        kind: str,
+        side: tuple[str, ...],
+        bus: Ints,
+        buses: tuple[str, ...],
+        sequence: Complex,
+    ) -> Terminals:
+        """These terminals and more of one ``kind``, at ``bus`` (m,) of ``buses``; counts are 1."""
+        return Terminals(
+            element=self.element + element,
+            kind=self.kind + (kind,) * len(element),
+            side=self.side + side,
+            bus=self.bus + tuple(buses[k] for k in bus.tolist()),
+            bus_index=np.concatenate([self.bus_index, bus]),
+            count=np.concatenate([self.count, np.ones(len(element), np.int64)]),
+            sequence=np.concatenate([self.sequence, sequence], axis=1),
+        )
+
     @property
     def phases(self) -> Complex:
         """Phase currents a, b, c (3, t) A."""
@@ -39,8 +57,7 @@ class Terminals:
         return np.asarray(3 * self.sequence[0])
 
 
-@dataclass(frozen=True, eq=False)
-class StarPointState:
+class StarPointState(msgspec.Struct, frozen=True, eq=False):
     """One star point: ``current`` (A) from it to earth, ``voltage`` (V) to earth.
 
     ``kind`` is solid, isolated or neutral; ``voltage`` is None where nothing fixes the potential.
@@ -53,8 +70,7 @@ class StarPointState:
     bus: str
 
 
-@dataclass(frozen=True, eq=False)
-class DeltaCurrent:
+class DeltaCurrent(msgspec.Struct, frozen=True, eq=False):
     """Current (A) circulating in a delta, positive a to b to c to a; of all units of the record."""
 
     element: str
@@ -63,16 +79,21 @@ class DeltaCurrent:
     current: complex
 
 
-@dataclass(frozen=True, eq=False)
-class HomePath:
+class EarthedLine(msgspec.Struct, frozen=True, eq=False):
+    """A line out of service and earthed at both ends: its zero-sequence current times three, A."""
+
+    name: str
+    residual: complex
+
+
+class HomePath(msgspec.Struct, frozen=True, eq=False):
     """One way the earth current returns: ``current`` (A) from earth into the network."""
 
     path: str
     current: complex
 
 
-@dataclass(frozen=True, eq=False)
-class FaultSolution:
+class FaultSolution(msgspec.Struct, frozen=True, eq=False):
     """A solved fault. SI throughout; the sequence axis is the first, in the order 0, 1, 2.
 
     Angles are relative to the phase-a-to-earth voltage at the faulted place before the fault.
@@ -103,13 +124,14 @@ class FaultSolution:
     terminals: Terminals
     star_points: tuple[StarPointState, ...]
     deltas: tuple[DeltaCurrent, ...]
+    earthed_lines: tuple[EarthedLine, ...]
     home: tuple[HomePath, ...]
     balance: float
     notes: tuple[str, ...]
     undefined_notes: tuple[str, ...]
     assumptions: tuple[Assumption, ...]
     warnings: tuple[str, ...]
-    index: dict[str, int] = field(repr=False)
+    index: dict[str, int]
 
     @property
     def residual(self) -> complex:

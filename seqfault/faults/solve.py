@@ -6,7 +6,8 @@ import numpy as np
 
 from seqfault.equations.per_unit import base_current, base_impedance
 from seqfault.equations.symmetrical import turn_sequence
-from seqfault.errors import CheckError, quoted
+from seqfault.errors import quoted
+from seqfault.faults.converters import Settled, settle, with_converters
 from seqfault.faults.flows import (
     SequenceFlows,
     TerminalMap,
@@ -15,20 +16,19 @@ from seqfault.faults.flows import (
     star_current_base,
     terminal_map,
 )
+from seqfault.faults.home import check_home, earth_paths
 from seqfault.faults.kinds import Fault
 from seqfault.faults.ports import PortSolution, solve_ports
 from seqfault.faults.solution import (
     DeltaCurrent,
+    EarthedLine,
     FaultSolution,
-    HomePath,
     StarPointState,
     Terminals,
 )
-from seqfault.model.elements import DELTA, Bools, Complex, Model
-from seqfault.networks.factors import SequenceNetworks
-
-SEEN = 1e-9
-"""Share of a free potential below which a node does not take part in it."""
+from seqfault.faults.ties import tie_notes, with_ties
+from seqfault.model.elements import DELTA, Bools, Complex, Ints, Model
+from seqfault.networks.factors import SEEN, SequenceNetworks
 
 
 def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
@@ -38,17 +38,23 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
     """
     model = networks.model
     place = model.index[fault.place]
-    nodes = np.array([place])
+    places = np.array([place])
+    nodes = model.node[places]
     clock = (model.clock - model.clock[place]) % 12
-    ports = solve_ports(networks, nodes, [fault], clock[nodes])
+    ports, fed = _with_converters(networks, places, fault, clock[places])
+    terminals = terminal_map(model)
     flows, potentials, worst = [], [], 0.0
     for s in range(3):
+        drawn, at, columns = ports.current, nodes, ports.columns[s]
+        if s == 1 and len(fed.current):
+            drawn = np.concatenate([drawn, np.stack([0 * fed.current, -fed.current, 0 * fed.current])], 1)
+            at = np.concatenate([nodes, model.converters.node])
+            columns = np.concatenate([columns, networks[1].columns(model.converters.node)], axis=1)
         # The port currents are physical; the place is the reference of angles, so they need no turn.
-        injection = -ports.current[s]
-        w, v = networks[s].respond(ports.columns[s], nodes, injection, ports.slack[s])
+        w, v = networks[s].respond(columns, at, -drawn[s], ports.slack[s])
         flows.append(sequence_flows(model, s, w, v))
-        worst = max(worst, check_balance(model, nodes, ports.current, flows[s], w, v, s))
-        potentials.append(v[: len(model.buses)])
+        worst = max(worst, check_balance(model, terminals, at, drawn, flows[s], w, v, s))
+        potentials.append(v[model.node])
     undefined, stars_undefined = _undefined(networks, ports)
     change = turn_sequence(np.stack(potentials), clock)
     base_v = model.nominal / np.sqrt(3)
@@ -56,10 +62,12 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
     voltage = (change + before) * base_v
     base_i = base_current(model.nominal, model.base_power)
     z_base = base_impedance(model.nominal[place], model.base_power)
-    terminals = terminal_map(model)
     current = ports.current[:, 0] * base_i[place]
-    home = _home(model, place, flows[0], terminals) if fault.kind.earth else ()
-    _check_home(home, complex(3 * current[0]))
+    home = earth_paths(model, place, flows[0], terminals) if fault.kind.earth else ()
+    here = model.galvanic[model.node]
+    check_home(home, complex(3 * current[0]))
+    shown = _terminals(model, terminals, flows, clock, base_i)
+    shown = with_ties(model, place, current, with_converters(model, fed.current, clock, shown))
     return FaultSolution(
         fault=fault,
         state=model.state,
@@ -75,13 +83,19 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
         voltage_sequence=voltage,
         before=before[1] * base_v,
         undefined=undefined,
-        joined=model.galvanic == model.galvanic[place],
-        terminals=_terminals(model, terminals, flows, clock, base_i),
+        joined=here == here[place],
+        terminals=shown,
         star_points=_star_points(model, flows[0], stars_undefined),
         deltas=_deltas(model, flows[0]),
         home=home,
         balance=worst,
-        notes=_notes(networks, model, place, fault, ports),
+        notes=(
+            *_notes(networks, model, place, fault, ports),
+            *_apart(model, place, change),
+            *fed.notes,
+            *tie_notes(model),
+        ),
+        earthed_lines=_earthed_lines(model, flows[0]),
         undefined_notes=tuple(
             f"potential of {quoted(model.buses[k])}: nothing fixes it" for k in np.flatnonzero(undefined)
         ),
@@ -89,6 +103,33 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
         warnings=model.warnings,
         index=model.index,
     )
+
+
+def _with_converters(
+    networks: SequenceNetworks, places: Ints, fault: Fault, clock: Ints
+) -> tuple[PortSolution, Settled]:
+    """The ports solved together with what converters feed at the voltages of this fault."""
+    model, one = networks.model, networks[1]
+    converters, nodes = model.converters, model.node[places]
+    if not converters.names:
+        unlifted = np.zeros(len(places), complex)
+        return solve_ports(networks, places, [fault], clock, unlifted), Settled(unlifted[:0], ())
+    own = one.columns(converters.node)
+
+    def ports(current: Complex) -> PortSolution:
+        lifted = one.respond(own, converters.node, current, {})[1]
+        return solve_ports(networks, places, [fault], clock, lifted[nodes])
+
+    def respond(current: Complex) -> Complex:
+        solved = ports(current)
+        columns = np.concatenate([solved.columns[1], own], axis=1)
+        at = np.concatenate([nodes, converters.node])
+        drawn = np.concatenate([-solved.current[1], current])
+        v = one.respond(columns, at, drawn, solved.slack[1])[1]
+        return np.asarray(model.before[converters.bus] + v[converters.node])
+
+    fed = settle(converters, model.live[converters.bus], respond)
+    return ports(fed.current), fed
 
 
 def _ohms(per_unit: Complex, base: float) -> Complex:
@@ -116,12 +157,12 @@ def _undefined(networks: SequenceNetworks, ports: PortSolution) -> tuple[Bools, 
             inside = part == p
             total[inside] += share * (zero.direction[inside] @ zero.slack[p, :, x])
         floating |= np.abs(total) > SEEN
-    buses = floating[: len(model.buses)] & model.live
+    buses = floating[model.node] & model.live
     stars = np.zeros(len(model.stars.names), bool)
     own = model.stars.node >= 0
     stars[own] = floating[model.stars.node[own]]
-    isolated = np.array([kind == "isolated" for kind in model.stars.kinds], bool)
-    stars[isolated] = floating[model.stars.bus[isolated]]
+    isolated = np.array([kind == "isolated" for kind in model.stars.kinds], bool) & ~own
+    stars[isolated] = floating[model.node[model.stars.bus[isolated]]]
     return buses, stars
 
 
@@ -133,29 +174,19 @@ def _terminals(
     base_i: Complex,
 ) -> Terminals:
     """Each element's terminals side by side; a machine's capacitance flows through its terminal."""
-    current = np.stack([flow.terminal for flow in flows])
-    order: dict[str, int] = {}
-    keep = []
-    for k, name in enumerate(terminals.element):
-        if terminals.kind[k] == "capacitance" and name in order:
-            current[:, order[name]] += current[:, k]
-        else:
-            order.setdefault(name, k)
-            keep.append(k)
-    keep.sort(key=lambda k: order[terminals.element[k]])
-    at = np.array(keep, np.int64)
-    bus = terminals.bus[at]
-    sequence = current[:, at]
-    counts = {name: int(c) for name, c in zip(model.lines.names, model.lines.count, strict=True)}
-    for sets in model.winding_sets:
-        counts |= {name: int(c) for name, c in zip(sets.names, sets.count, strict=True)}
+    at, bus = terminals.shown, terminals.bus[terminals.shown]
+    shown = at.tolist()
+    placed = (terminals.row >= 0) & terminals.closed  # an open end passes nothing, to the last bit
+    sequence = np.zeros((3, len(at)), complex)
+    for s, flow in enumerate(flows):
+        np.add.at(sequence[s], terminals.row[placed], flow.terminal[placed])
     return Terminals(
-        element=tuple(terminals.element[k] for k in keep),
-        kind=tuple(terminals.kind[k] for k in keep),
-        side=tuple(terminals.side[k] for k in keep),
-        bus=tuple(model.buses[k] for k in bus),
+        element=tuple(map(terminals.element.__getitem__, shown)),
+        kind=tuple(map(terminals.kind.__getitem__, shown)),
+        side=tuple(map(terminals.side.__getitem__, shown)),
+        bus=tuple(map(model.buses.__getitem__, bus.tolist())),
         bus_index=bus,
-        count=np.array([counts.get(terminals.element[k], 1) for k in keep], np.int64),
+        count=terminals.count[at],
         sequence=turn_sequence(sequence, clock[bus]) * base_i[bus],
     )
 
@@ -176,48 +207,43 @@ def _star_points(model: Model, flows: SequenceFlows, undefined: Bools) -> tuple[
     )
 
 
+def _earthed_lines(model: Model, flows: SequenceFlows) -> tuple[EarthedLine, ...]:
+    """Zero-sequence current coupled into lines that are out of service and earthed at both ends."""
+    lines = model.lines
+    ampere = np.sqrt(3) * model.base_power / lines.voltage
+    return tuple(
+        EarthedLine(lines.names[k], complex(flows.terminal[k] * ampere[k]))
+        for k in np.flatnonzero(lines.earthed).tolist()
+    )
+
+
 def _deltas(model: Model, flows: SequenceFlows) -> tuple[DeltaCurrent, ...]:
     out = []
     for sets, winding in zip(model.winding_sets, flows.delta, strict=True):
-        for unit, w in zip(*np.nonzero(sets.kind == DELTA), strict=True):
-            ampere = winding[unit, w] * sets.sense[unit, w] * model.base_power / (3 * sets.rated[unit, w])
-            bus = model.buses[sets.bus[unit, w]]
-            out.append(DeltaCurrent(sets.names[unit], sets.sides[w], bus, complex(ampere)))
+        at = np.nonzero(sets.kind == DELTA)
+        ampere = winding[at] * sets.sense[at] * model.base_power / (3 * sets.rated[at])
+        columns = (array.tolist() for array in (*at, sets.bus[at], ampere))
+        for unit, w, bus, current in zip(*columns, strict=True):
+            out.append(DeltaCurrent(sets.names[unit], sets.sides[w], model.buses[bus], current))
     return tuple(out)
 
 
-def _home(model: Model, place: int, flows: SequenceFlows, terminals: TerminalMap) -> tuple[HomePath, ...]:
-    """Every path from earth into the network that is joined by metal to the faulted place."""
-    here = model.galvanic == model.galvanic[place]
-    ampere = star_current_base(model)
-    out = [
-        HomePath(name, complex(-flows.star[k] * ampere[k]))
-        for k, name in enumerate(model.stars.names)
-        if here[model.stars.bus[k]] and model.stars.kinds[k] != "isolated"
-    ]
-    base_i = base_current(model.nominal, model.base_power)[terminals.bus]
-    earth = -3 * flows.to_earth * base_i
-    inside = here[terminals.bus]
-    for k, kind in enumerate(terminals.kind):
-        if kind == "infeed" and inside[k]:
-            out.append(HomePath(terminals.element[k], complex(earth[k])))
-    charging = np.array([kind in ("line", "capacitance") for kind in terminals.kind], bool) & inside
-    for nominal in np.unique(model.nominal[terminals.bus[charging & (flows.to_earth != 0)]]).tolist():
-        at = charging & (model.nominal[terminals.bus] == nominal)
-        out.append(HomePath(f"capacitance {nominal / 1000:g} kV", complex(earth[at].sum())))
-    return tuple(out)
+def _apart(model: Model, place: int, change: Complex) -> tuple[str, ...]:
+    """A sentence on buses of another system that the fault reaches through earth alone.
 
-
-def _check_home(home: tuple[HomePath, ...], residual: complex) -> None:
-    if not home:
-        return
-    total = sum(path.current for path in home)
-    size = max([1e-3, abs(residual)] + [abs(path.current) for path in home])  # from one milliampere
-    if abs(total - residual) > 1e-7 * size:
-        raise CheckError(
-            f"the paths home carry {abs(total):.6g} A, the fault sends {abs(residual):.6g} A into earth;"
-            " the answer is withheld"
-        )
+    Their own phase angle against the faulted system is not in the data, so how the common voltage
+    adds to their phases is not either.
+    """
+    other = model.live & (model.part != model.part[place]) & (np.abs(change[0]) > 1e-6)
+    names = [quoted(model.buses[k]) for k in np.flatnonzero(other)]
+    if not names:
+        return ()
+    shown = ", ".join(names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
+    return (
+        f"{shown}: joined to the fault by a shared star point or coupled lines only; how far this other"
+        " system stands from the faulted one in angle is not in the data, so its phase voltages are"
+        " shown for one angle of many",
+    )
 
 
 def _notes(
@@ -230,7 +256,7 @@ def _notes(
         out.append(f"{name} is dead in this state: no infeed or generator is connected; nothing flows")
     elif fault.kind.earth and not np.isfinite(ports.impedance[0, 0]):
         zero = networks[0]
-        if zero.resonant[zero.free.part[place]]:
+        if zero.resonant[zero.free.part[model.node[place]]]:
             out.append(
                 f"the earthing of {name} is in exact resonance with its capacitance, without loss: no"
                 " residual current flows; a real coil's loss would let a little through"

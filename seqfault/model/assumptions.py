@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
+
+import msgspec
 
 from seqfault.errors import quoted
 
 SHOWN = 6
 
 
-@dataclass(frozen=True)
-class Assumption:
+class Assumption(msgspec.Struct, frozen=True):
     """One assumed value, and every record it was assumed for."""
 
     record: str

@@ -6,317 +6,134 @@ nowhere else.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
-from typing import Any, Literal
+from collections.abc import Mapping
+from typing import Any
 
 import numpy as np
+from msgspec.structs import replace
 
-from seqfault.case.records import Case, Generator, Line, Motor, Record
-from seqfault.equations.earthing import zero_sequence_of_level
-from seqfault.equations.machines import motor_rating, motor_resistance_ratio, pole_pairs
-from seqfault.equations.per_unit import base_impedance, change_base
+from seqfault.case.reader import case_from_tree
+from seqfault.case.records import Case
 from seqfault.errors import CaseError, quoted
-from seqfault.model.assumptions import Ledger
-from seqfault.model.elements import STAR, Ints, Lines, Model, Shunts, WindingSets
-from seqfault.model.stars import StarRegister
+from seqfault.model.coils import ARC_SUPPRESSION, tuned_coils
+from seqfault.model.context import MACHINES, Context, Machine
+from seqfault.model.doubts import doubts
+from seqfault.model.elements import STAR, Ints, Lines, Model, WindingSets
+from seqfault.model.lines import lines
+from seqfault.model.machines import generators, machine_capacitances, motors
+from seqfault.model.shunts import capacitors, converters, infeeds, joined
+from seqfault.model.ties import closed_ties
 from seqfault.model.transformers import transformer_sets
+from seqfault.model.zigzag import zigzag_sets
 from seqfault.model.zones import components, displacements, live_buses
 
-Machine = Literal["subtransient", "transient", "synchronous"]
-MACHINES: tuple[Machine, ...] = ("subtransient", "transient", "synchronous")
-
-
-class Context:
-    """What the builders share: the buses in service, the base, the ledger, the star points."""
-
-    def __init__(self, case: Case, machine: Machine) -> None:
-        self.case = case
-        self.machine = machine
-        self.power = case.base_power
-        self.omega = 2 * np.pi * case.frequency
-        kept = {name: bus for name, bus in case.buses.items() if not bus.out}
-        self.index = {name: k for k, name in enumerate(kept)}
-        self.nominal = np.array([bus.voltage.value.real for bus in kept.values()], float)
-        self.base_z = base_impedance(self.nominal, self.power)
-        self.ledger = Ledger()
-        self.warnings: list[str] = []
-        self.complaints: list[str] = []
-        self.stars = StarRegister(case.neutrals, len(kept))
-
-    def in_service(self, table: str, ends: Callable[[Any], Iterable[str]]) -> dict[str, Any]:
-        """Records of ``table`` that are in, at buses that are in."""
-        records: dict[str, Record] = getattr(self.case, table)
-        return {
-            name: record
-            for name, record in records.items()
-            if not record.out and all(bus in self.index for bus in ends(record))
-        }
+__all__ = ["MACHINES", "Machine", "build_model"]
 
 
 def build_model(case: Case, machine: Machine = "subtransient") -> Model:
     """The per-unit model of ``case`` with its machines behind the reactance named by ``machine``.
 
-    Raises ``CaseError`` where vector groups do not close a loop or a reactance that is needed is not
-    stated.
+    Raises ``CaseError`` where vector groups do not close a loop, a reactance that is needed is not
+    stated, or a coil has nothing to be tuned to.
     """
-    c = Context(case, machine)
-    lines = _lines(c)
-    infeeds = _infeeds(c)
-    generators = _generators(c)
-    motors = _motors(c)
-    transformers, hv_clock = transformer_sets(c)
-    capacitances = _machine_capacitances(c)
+    coils = {n: complex(np.inf) for n, r in case.neutrals.items() if r.kind == ARC_SUPPRESSION}
+    c = Context(case, machine, coils)
+    if coils:
+        base = case if case.state == "base" else case_from_tree(case.tree, case.source)
+        untuned = _assemble(Context(base, machine, coils))
+        tuned, c.complaints[:] = tuned_coils(untuned, case.neutrals, c.ledger)
+        c = _again(c, case, machine, tuned)
+    model = _assemble(c)
+    return replace(model, warnings=(*model.warnings, *doubts(model, case)))
+
+
+def _again(c: Context, case: Case, machine: Machine, coils: Mapping[str, complex]) -> Context:
+    """A fresh context with the coils as tuned, and what was noted on the way."""
+    out = Context(case, machine, coils)
+    out.ledger, out.complaints = c.ledger, c.complaints
+    return out
+
+
+def _assemble(c: Context) -> Model:
+    case = c.case
     n = len(c.index)
-    through = lines.closed.all(axis=0)
-    zone = components(n, lines.ends[0, through], lines.ends[1, through])
-    hv, lv = transformers.bus[:, 0], transformers.bus[:, 1]
-    clock, misfits = displacements(zone, zone[hv], zone[lv], hv_clock, transformers.names)
+    joined_nodes = int(c.node.max()) + 1 if n else 0
+    wires, common = lines(c, joined_nodes)
+    supplies = infeeds(c)
+    machines = generators(c)
+    running = motors(c)
+    units = transformer_sets(c)
+    sets = (machines, *units.sets, *zigzag_sets(c, units.zigzags))
+    through = wires.closed.all(axis=0)
+    zone = components(joined_nodes, wires.nodes[0, through], wires.nodes[1, through])
+    clock, misfits = displacements(zone, zone[units.hv], zone[units.lv], units.clock, units.names)
     if c.complaints or misfits:
         raise CaseError([*c.complaints, *misfits], case.source)
     part = components(
-        n,
-        np.concatenate([lines.ends[0, through], hv]),
-        np.concatenate([lines.ends[1, through], lv]),
+        joined_nodes,
+        np.concatenate([wires.nodes[0, through], units.hv]),
+        np.concatenate([wires.nodes[1, through], units.lv]),
     )
-    live = live_buses(part, np.concatenate([infeeds.bus, generators.bus[:, 0]]))
-    _warn_of_dead(c, live, part)
-    stars = c.stars.columns()
+    live = live_buses(part, np.concatenate([supplies.node, machines.node[:, 0]]))[c.node]
+    _warn_of_dead(c, live, part[c.node])
+    stars = c.stars.columns(common)
     return Model(
         title=case.title,
         state=case.state,
-        machine=machine,
+        machine=c.machine,
         sha256=case.sha256,
         frequency=case.frequency,
         base_power=case.base_power,
         buses=tuple(c.index),
         index=c.index,
         nominal=c.nominal,
-        clock=clock,
+        node=c.node,
+        common=common,
+        clock=clock[c.node],
         live=live,
-        galvanic=_galvanic(zone, (generators, transformers), stars.node, n),
+        part=part[c.node],
+        wired=_joined_by_metal(c, wires, (), stars.node, common),
+        galvanic=_joined_by_metal(c, wires, sets, stars.node, common),
         before=np.where(live, complex(case.prefault.voltage.value), 0j),
-        lines=lines,
-        sources=_joined(infeeds, motors),
-        capacitances=capacitances,
-        winding_sets=(generators, transformers),
+        lines=wires,
+        sources=joined(supplies, running),
+        capacitances=joined(machine_capacitances(c), capacitors(c)),
+        ties=closed_ties(case, c.index),
+        converters=converters(c),
+        winding_sets=sets,
         stars=stars,
         assumptions=c.ledger.entries(),
         warnings=(*case.warnings, *c.warnings),
     )
 
 
-def _lines(c: Context) -> Lines:
-    records: dict[str, Line] = c.in_service("lines", lambda line: (line.from_, line.to))
-    kept = {name: r for name, r in records.items() if not {r.from_, r.to} <= set(r.open)}
-    rows = list(kept.values())
-    length = np.array([r.length.value.real if r.length else 1.0 for r in rows])
-    count = np.array([r.count for r in rows], np.int64)
-    ends = np.array([[c.index[r.from_], c.index[r.to]] for r in rows], np.int64).reshape(-1, 2).T
-    closed = np.array([[r.from_ not in r.open, r.to not in r.open] for r in rows]).reshape(-1, 2).T
-
-    def total(quantities: list[Any]) -> Any:
-        value = np.array([q.value if q else 0 for q in quantities], complex)
-        scaled = [bool(q) and q.dimension.endswith("/length") for q in quantities]
-        return np.where(scaled, value * length, value)
-
-    z_base = c.base_z[ends[0]]
-    z1, z0 = (total([getattr(r, key) for r in rows]) / z_base / count for key in ("z1", "z0"))
-    susceptance = []
-    for farads, siemens in (("c1", "b1"), ("c0", "b0")):
-        b = c.omega * total([getattr(r, farads) for r in rows])
-        susceptance.append((b + total([getattr(r, siemens) for r in rows])) * count * z_base)
-    b1, b0 = susceptance
-    for k, (name, r) in enumerate(kept.items()):
-        stated1, stated0 = r.c1 or r.b1, r.c0 or r.b0
-        if stated0 and not stated1:
-            b1[k] = b0[k]
-            c.ledger.note("line", name, "c1 not stated, taken equal to c0")
-        elif not stated0:
-            c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
-    return Lines(
-        names=tuple(kept),
-        ends=ends,
-        closed=closed.astype(bool),
-        series=np.stack([z0, z1, z1]),
-        shunt=0.5j * np.stack([b0, b1, b1]),
-        count=count,
-    )
-
-
-def _infeeds(c: Context) -> Shunts:
-    records = c.in_service("infeeds", lambda r: (r.bus,))
-    bus = np.array([c.index[r.bus] for r in records.values()], np.int64)
-    y = np.zeros((3, len(records)), complex)
-    for k, (name, r) in enumerate(records.items()):
-        u = c.nominal[bus[k]]
-        if r.z1 is not None:
-            z1 = complex(r.z1.value)
-        else:
-            level = r.three_phase.value.real
-            size = u**2 / level if r.three_phase.dimension == "power" else u / (np.sqrt(3) * level)
-            z1 = size * (1 + 1j * r.x_over_r) / np.hypot(1, r.x_over_r)
-        if r.z2 is None:
-            c.ledger.note("infeed", name, "z2 not stated, taken equal to z1")
-        z2 = z1 if r.z2 is None else complex(r.z2.value)
-        z_base = c.base_z[bus[k]]
-        y[1, k], y[2, k] = z_base / z1, z_base / z2
-        if r.line_ground is not None:
-            try:
-                z0 = zero_sequence_of_level(z1, z2, r.line_ground.value.real, u, r.x0_over_r0)
-            except ValueError as error:
-                c.complaints.append(f"infeed {quoted(name)}, line_ground: {error}")
-                continue
-            y[0, k] = z_base / z0
-        elif r.z0 != "open":
-            y[0, k] = z_base / complex(r.z0.value)
-    return Shunts(tuple(records), ("infeed",) * len(records), bus, y)
-
-
-def _generators(c: Context) -> WindingSets:
-    records: dict[str, Generator] = c.in_service("generators", lambda r: (r.bus,))
-    m = len(records)
-    bus = np.array([c.index[r.bus] for r in records.values()], np.int64).reshape(m, 1)
-    leakage = np.zeros((3, m, 1, 1), complex)
-    kind, star = np.full((m, 1), STAR, np.int64), np.zeros((m, 1), np.int64)
-    star_base = np.ones((m, 1))
-    rated = np.ones((m, 1))
-    for k, (name, r) in enumerate(records.items()):
-        u = c.nominal[bus[k, 0]]
-        rated[k] = r.voltage.value.real if r.voltage else u
-        if r.voltage is None:
-            c.ledger.note("generator", name, "rated voltage not stated, taken as the bus's nominal")
-        neutral = r.neutral or "isolated"
-        if r.neutral is None:
-            c.ledger.note("generator", name, "neutral not stated, taken as isolated")
-        kind[k], star[k] = c.stars.join(f"{name}.neutral", neutral, int(bus[k, 0]), u)
-        star_base[k] = c.stars.base(int(star[k, 0]))
-        own = c.machine
-        main = getattr(r, own)
-        if main is None:
-            c.complaints.append(
-                f"generator {quoted(name)}, {own}: not stated, and the {own} state was asked for"
-            )
-            continue
-        if r.x2 is None:
-            c.ledger.note("generator", name, "x2 not stated, taken equal to the subtransient reactance")
-        if r.resistance is None and not isinstance(main.value, complex):
-            c.ledger.note("generator", name, "resistance not stated, taken as 0")
-        values = (r.x0, main, r.x2 or r.subtransient)
-        for s, value in enumerate(values):
-            if value is not None:
-                z = _machine_impedance(c, r, value, float(rated[k, 0]), float(c.base_z[bus[k, 0]]))
-                leakage[s, k, 0, 0] = 1 / z
-    return WindingSets(
-        kind_of_record="generator",
-        names=tuple(records),
-        sides=("neutral",),
-        leakage=leakage,
-        bus=bus,
-        kind=kind,
-        star=star,
-        ratio=np.ones((m, 1)),
-        star_ratio=star_base / c.nominal[bus],
-        sign=np.ones((m, 1)),
-        sense=np.zeros((m, 1)),
-        rated=rated,
-        count=np.ones(m, np.int64),
-    )
-
-
-def _machine_impedance(c: Context, r: Generator, value: Any, rated: float, base_z: float) -> complex:
-    """Per-unit impedance of one sequence; a real quantity is a reactance behind ``resistance``."""
-
-    def per_unit(q: Any) -> complex:
-        if q.dimension == "impedance":
-            return complex(q.value / base_z)
-        nominal = np.sqrt(base_z * c.power)
-        return complex(change_base(q.value, r.rating.value.real, rated, c.power, nominal))
-
-    if isinstance(value.value, complex):
-        return per_unit(value)
-    return 1j * per_unit(value) + (per_unit(r.resistance) if r.resistance else 0)
-
-
-def _motors(c: Context) -> Shunts:
-    records: dict[str, Motor] = c.in_service("motors", lambda r: (r.bus,))
-    if c.machine != "subtransient":
-        for name in records:
-            c.ledger.note("motor", name, f"left out of the {c.machine} state: its current has decayed")
-        records = {}
-    bus = np.array([c.index[r.bus] for r in records.values()], np.int64)
-    y = np.zeros((3, len(records)), complex)
-    for k, (name, r) in enumerate(records.items()):
-        u = c.nominal[bus[k]]
-        rated = r.voltage.value.real if r.voltage else u
-        if r.voltage is None:
-            c.ledger.note("motor", name, "rated voltage not stated, taken as the bus's nominal")
-        if r.rating is not None:
-            rating, shaft = r.rating.value.real, None
-        else:
-            assert r.shaft_power is not None
-            shaft = r.shaft_power.value.real
-            rating = motor_rating(shaft, _number(r.efficiency), _number(r.power_factor))
-        if r.x_over_r is not None:
-            q = r.x_over_r
-        else:
-            pairs = pole_pairs(c.case.frequency, r.speed.value.real) if r.speed else None
-            r_over_x = motor_resistance_ratio(rated, (shaft or rating) / pairs if pairs else None)
-            q = 1 / r_over_x
-            c.ledger.note(
-                "motor",
-                name,
-                f"x_over_r not stated, R/X = {r_over_x:g} with locked rotor (IEC 60909-0)",
-            )
-        z = (1 + 1j * q) / np.hypot(1, q) / r.locked_rotor
-        y[1:, k] = r.count / change_base(z, rating, rated, c.power, u)
-    return Shunts(tuple(records), ("motor",) * len(records), bus, y)
-
-
-def _number(value: Any) -> float:
-    return float(getattr(value, "value", value))
-
-
-def _machine_capacitances(c: Context) -> Shunts:
-    names, bus, farads = [], [], []
-    for table in ("generators", "motors"):
-        for name, r in c.in_service(table, lambda r: (r.bus,)).items():
-            if r.c0 is not None:
-                names.append(name)
-                bus.append(c.index[r.bus])
-                farads.append(r.c0.value.real * getattr(r, "count", 1))
-    at = np.array(bus, np.int64)
-    y = 1j * c.omega * np.array(farads, float) * c.base_z[at]
-    return Shunts(tuple(names), ("capacitance",) * len(names), at, np.stack([y, y, y]))
-
-
-def _joined(a: Shunts, b: Shunts) -> Shunts:
-    return Shunts(
-        a.names + b.names,
-        a.kinds + b.kinds,
-        np.concatenate([a.bus, b.bus]),
-        np.concatenate([a.admittance, b.admittance], axis=1),
-    )
-
-
-def _galvanic(zone: Ints, sets: tuple[WindingSets, ...], star_node: Ints, n: int) -> Ints:
-    """Labels (n,) of the buses joined by metal: lines, and star points that share a neutral."""
-    first, second = [np.arange(n)], [zone + n]
-    size = 2 * n + int((star_node >= 0).sum())
+def _joined_by_metal(
+    c: Context, wires: Lines, sets: tuple[WindingSets, ...], star_node: Ints, common: int
+) -> Ints:
+    """Labels (common,) of the nodes joined by metal: lines, auto windings, neutrals that ``sets`` share."""
+    standing = (wires.nodes >= 0).all(axis=0)
+    metal = c.node[np.array(c.metal, np.int64).reshape(-1, 2)]
+    first, second = [wires.nodes[0, standing], metal[:, 0]], [wires.nodes[1, standing], metal[:, 1]]
     for each in sets:
-        joined = (each.kind == STAR) & (each.star >= 0)
+        star = (each.kind == STAR) & (each.star >= 0)
         node = np.full_like(each.star, -1)
-        if joined.any():
-            node[joined] = star_node[each.star[joined]]
+        if star.any():
+            node[star] = star_node[each.star[star]]
         unit, winding = np.nonzero(node >= 0)
-        first.append(each.bus[unit, winding])
-        second.append(node[unit, winding] + n)
-    return components(size, np.concatenate(first), np.concatenate(second))[:n]
+        first.append(each.node[unit, winding])
+        second.append(node[unit, winding])
+    size = common + int((star_node >= 0).sum())
+    return components(size, np.concatenate(first), np.concatenate(second))[:common]
 
 
 def _warn_of_dead(c: Context, live: Any, part: Ints) -> None:
-    for label in np.unique(part[~live]):
-        dead = [quoted(name) for name, k in c.index.items() if part[k] == label]
-        shown = ", ".join(dead[:6]) + (f" and {len(dead) - 6} more" if len(dead) > 6 else "")
+    together: dict[int, list[str]] = {}
+    for name, label, alive in zip(c.index, part.tolist(), live.tolist(), strict=True):
+        if not alive:
+            together.setdefault(label, []).append(name)
+    for _, dead in sorted(together.items()):
+        more = f" and {len(dead) - 6} more" if len(dead) > 6 else ""
+        shown = ", ".join(map(quoted, dead[:6])) + more
         c.warnings.append(
             f"bus {shown}: no infeed or generator is connected here in this state;"
             " voltage and currents are 0"

@@ -7,8 +7,7 @@ records, ``w`` the number of windings of one core.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
+import msgspec
 import numpy as np
 import numpy.typing as npt
 
@@ -19,47 +18,71 @@ Floats = npt.NDArray[np.float64]
 Complex = npt.NDArray[np.complex128]
 Bools = npt.NDArray[np.bool_]
 
-STAR, DELTA, ISOLATED = 0, 1, 2
-"""Kinds of winding: star with its star point joined to something, delta, star joined to nothing."""
+STAR, DELTA, ISOLATED, ZIGZAG = 0, 1, 2, 3
+"""Kinds of winding: star with its star point joined to something, delta, star joined to nothing, zigzag
+(its zero sequence stands in a set of its own)."""
 
 
-@dataclass(frozen=True, eq=False)
-class Lines:
-    """Overhead lines and cables, π sections; a record of ``count`` circuits is their parallel sum.
+class CoupledLines(msgspec.Struct, frozen=True, eq=False):
+    """Lines coupled in zero sequence: ``line`` (g,) positions, ``admittance`` (g, g) series block."""
 
-    ``ends`` (2, m) bus indices, ``closed`` (2, m); ``series`` (3, m) impedance; ``shunt`` (3, m)
-    admittance at each end.
+    line: Ints
+    admittance: Complex
+
+
+class Lines(msgspec.Struct, frozen=True, eq=False):
+    """Lines, cables and series reactors, π sections; ``count`` circuits are their parallel sum.
+
+    ``ends`` (2, m) bus indices; ``nodes`` (2, m) network nodes, an open end's its own, −1 where a line
+    out of service is ``earthed`` (m,); ``closed`` (2, m); ``series`` (3, m) impedance; ``shunt`` (3, m)
+    admittance at each end; ``voltage`` (m,) nominal, V; ``coupled`` the groups whose
+    zero-sequence series block replaces ``series``.
     """
 
     names: tuple[str, ...]
+    kinds: tuple[str, ...]
     ends: Ints
+    nodes: Ints
     closed: Bools
+    earthed: Bools
     series: Complex
     shunt: Complex
     count: Ints
+    voltage: Floats
+    coupled: tuple[CoupledLines, ...]
+
+    def series_currents(self, sequence: int, drop: Complex) -> Complex:
+        """Currents (m,) from → to that the voltages ``drop`` (m,) along the lines drive."""
+        current: Complex = drop / self.series[sequence]
+        if sequence == 0:
+            for group in self.coupled:
+                current[group.line] = group.admittance @ drop[group.line]
+        return current
 
 
-@dataclass(frozen=True, eq=False)
-class Shunts:
+class Shunts(msgspec.Struct, frozen=True, eq=False):
     """What joins a bus straight to earth: infeeds, induction motors, capacitances.
 
-    ``admittance`` (3, m), zero where a sequence has no path. ``kinds`` says which table a record is of.
+    ``bus`` and ``node`` (m,); ``admittance`` (3, m), zero where a sequence has no path.
+    ``kinds`` says which table a record is of.
     """
 
     names: tuple[str, ...]
     kinds: tuple[str, ...]
     bus: Ints
+    node: Ints
     admittance: Complex
 
 
-@dataclass(frozen=True, eq=False)
-class WindingSets:
+class WindingSets(msgspec.Struct, frozen=True, eq=False):
     """Windings on common cores: transformers (w = 2) and machines behind a star point (w = 1).
 
-    ``leakage`` (3, m, w, w) short-circuit admittance matrix; ``bus``, ``kind``, ``star`` (m, w), the
-    last an index of ``StarPoints`` or −1 on a delta; ``ratio`` (m, w) bus nominal over rated voltage,
+    ``leakage`` (3, m, w, w) short-circuit admittance matrix; ``bus``, ``node``, ``kind``, ``star``
+    (m, w), the last an index of ``StarPoints`` or −1 on a delta; ``ratio`` (m, w) bus nominal over rated
+    voltage,
     ``star_ratio`` (m, w) the star point's base over rated voltage; ``sign`` (m, w) zero-sequence
-    polarity; ``sense`` (m, w) sense of a delta; ``rated`` (m, w) rated voltage, V.
+    polarity; ``sense`` (m, w) sense of a delta; ``rated`` (m, w) rated voltage, V; ``magnetised`` (m,)
+    whether the zero-sequence matrix holds a magnetising branch.
     """
 
     kind_of_record: str
@@ -67,6 +90,7 @@ class WindingSets:
     sides: tuple[str, ...]
     leakage: Complex
     bus: Ints
+    node: Ints
     kind: Ints
     star: Ints
     ratio: Floats
@@ -75,10 +99,10 @@ class WindingSets:
     sense: Floats
     rated: Floats
     count: Ints
+    magnetised: Bools
 
 
-@dataclass(frozen=True, eq=False)
-class StarPoints:
+class StarPoints(msgspec.Struct, frozen=True, eq=False):
     """Every star point by name, neutrals shared by several windings once.
 
     ``kinds`` holds ``solid``, ``isolated`` or ``neutral``; ``impedance`` (k,) ohm to earth (0 solid,
@@ -94,13 +118,40 @@ class StarPoints:
     bus: Ints
 
 
-@dataclass(frozen=True, eq=False)
-class Model:
+class Converters(msgspec.Struct, frozen=True, eq=False):
+    """Inverter-fed infeeds: ``limit`` (m,) current on the base power at nominal voltage, ``angle`` (m,)
+    rad behind the positive-sequence voltage, ``threshold`` (m,) per unit of nominal voltage.
+    """
+
+    names: tuple[str, ...]
+    bus: Ints
+    node: Ints
+    limit: Floats
+    angle: Floats
+    threshold: Floats
+
+
+class ClosedTies(msgspec.Struct, frozen=True):
+    """Bus couplers that are in and closed: names, and the bus indices ``ends`` (2, m) they join.
+
+    ``side`` gives, for a tie whose current is unique, the buses on its ``from`` side (the current is
+    what they draw); None where ties close a loop.
+    """
+
+    names: tuple[str, ...]
+    ends: Ints
+    side: tuple[Ints | None, ...]
+
+
+class Model(msgspec.Struct, frozen=True, eq=False):
     """One installation in one state, in per unit, with what was assumed on the way.
 
     ``nominal`` (n,) V; ``clock`` (n,) displacement in twelfths of a turn behind its part's first bus;
-    ``live`` (n,) whether a source is connected; ``galvanic`` (n,) label of the metallically joined
-    network; ``before`` (n,) per-unit voltage before the fault, in the frame of the bus.
+    ``node`` (n,) network node of each bus, of ``common`` nodes that all sequences share (buses, then
+    open ends); ``live`` (n,) whether a source is connected; ``part`` (n,) label of the part that lines
+    and transformers join; ``wired`` (common,) label of the network that lines, reactors, ties and auto
+    windings join, ``galvanic`` (common,) the same with shared star points; ``before`` (n,) per-unit
+    voltage before the fault, in the frame of the bus.
     """
 
     title: str
@@ -112,13 +163,19 @@ class Model:
     buses: tuple[str, ...]
     index: dict[str, int]
     nominal: Floats
+    node: Ints
+    common: int
     clock: Ints
     live: Bools
+    part: Ints
+    wired: Ints
     galvanic: Ints
     before: Complex
     lines: Lines
     sources: Shunts
     capacitances: Shunts
+    ties: ClosedTies
+    converters: Converters
     winding_sets: tuple[WindingSets, ...]
     stars: StarPoints
     assumptions: tuple[Assumption, ...]
@@ -126,5 +183,5 @@ class Model:
 
     @property
     def nodes(self) -> int:
-        """Number of zero-sequence nodes: buses, then star points with an impedance to earth."""
-        return len(self.buses) + int(np.count_nonzero(self.stars.node >= 0))
+        """Number of zero-sequence nodes: the common ones, then star points that are nodes."""
+        return self.common + int(np.count_nonzero(self.stars.node >= 0))

@@ -11,18 +11,16 @@ elektrischer Verbundnetze", Springer 1963 (from memory); vector diagrams of IEC 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
+import msgspec
 import numpy as np
 
-from seqfault.model.elements import DELTA, ISOLATED, STAR, Bools, Complex, Floats, Ints, WindingSets
+from seqfault.model.elements import DELTA, ISOLATED, STAR, ZIGZAG, Bools, Complex, Floats, Ints, WindingSets
 
 TOLERANCE = 1e-9
 """Entries below this share of a unit's largest admittance are structurally zero."""
 
 
-@dataclass(frozen=True, eq=False)
-class Incidence:
+class Incidence(msgspec.Struct, frozen=True, eq=False):
     """Winding voltages from node voltages in one sequence.
 
     ``node`` and ``weight`` (m, w, 2): bus and star point of each winding; node −1 is earth.
@@ -50,7 +48,7 @@ def incidence(sets: WindingSets, sequence: int, star_node: Ints) -> Incidence:
 
     ``star_node`` (k,) gives the network node of each star point, −1 where it is earth itself.
     """
-    bus = np.stack([sets.bus, np.full_like(sets.bus, -1)], axis=2)
+    bus = np.stack([sets.node, np.full_like(sets.node, -1)], axis=2)
     if sequence:
         return Incidence(
             bus, np.stack([sets.ratio, np.zeros_like(sets.ratio)], axis=2), sets.leakage[sequence]
@@ -68,7 +66,12 @@ def incidence(sets: WindingSets, sequence: int, star_node: Ints) -> Incidence:
         ],
         axis=2,
     )
-    return Incidence(bus, weight, without_current(sets.leakage[0], sets.kind == ISOLATED))
+    return Incidence(bus, weight, without_current(sets.leakage[0], _idle(sets)))
+
+
+def _idle(sets: WindingSets) -> Bools:
+    """Windings (m, w) that carry no zero-sequence current: star joined to nothing, zigzag."""
+    return np.asarray((sets.kind == ISOLATED) | (sets.kind == ZIGZAG))
 
 
 def without_current(y: Complex, gone: Bools) -> Complex:
@@ -103,7 +106,7 @@ def induced(sets: WindingSets, winding_voltage: Complex) -> Complex:
     A winding without current takes the voltage its core induces, v_e = −y_ee⁺ y_ek v_k; where no
     winding of the unit carries flux it is zero.
     """
-    gone = sets.kind == ISOLATED
+    gone = _idle(sets)
     out = np.where(gone, 0, winding_voltage)
     for pattern in np.unique(gone, axis=0):
         e, k = np.flatnonzero(pattern), np.flatnonzero(~pattern)
@@ -118,13 +121,20 @@ def induced(sets: WindingSets, winding_voltage: Complex) -> Complex:
 
 
 def zero_sequence_effect(sets: WindingSets, unit: int, winding: int) -> str:
-    """``path``, ``through``, ``circulates`` or ``open``: what a winding does to zero sequence."""
+    """What a winding does to zero sequence.
+
+    ``path`` to earth or to its star point, ``through`` to another winding, ``circulates`` in a delta,
+    ``open``, or ``apart`` for a zigzag winding, whose own set of one winding tells.
+    """
     kinds = sets.kind[unit]
+    if kinds[winding] == ZIGZAG:
+        return "apart"
     carries = (kinds == STAR) | (kinds == DELTA)
-    if kinds[winding] == ISOLATED or carries.sum() < min(2, len(kinds)):
+    if kinds[winding] == ISOLATED:
+        return "open"
+    held = len(kinds) == 1 or bool(sets.magnetised[unit])
+    if not held and carries.sum() < 2:
         return "open"
     if kinds[winding] == DELTA:
         return "circulates" if (kinds == STAR).any() else "open"
-    if len(kinds) == 1 or (kinds == DELTA).any():
-        return "path"
-    return "through"
+    return "path" if held or (kinds == DELTA).any() else "through"

@@ -25,16 +25,16 @@ def components(n: int, first: Ints, second: Ints) -> Ints:
 
         edges = coo_array((np.ones(len(first), np.int8), (first, second)), shape=(n, n))
         label = np.asarray(connected_components(edges, directed=False)[1], np.int64)
-    else:
-        graph = nx.empty_graph(n)
-        graph.add_edges_from(zip(first.tolist(), second.tolist(), strict=True))
-        label = np.empty(n, np.int64)
-        for number, nodes in enumerate(nx.connected_components(graph)):
-            label[list(nodes)] = number
-    found, start = np.unique(label, return_index=True)
-    rank = np.empty(len(found), np.int64)
-    rank[np.argsort(start)] = np.arange(len(found))
-    return rank[label] if n else label
+        found, start = np.unique(label, return_index=True)
+        rank = np.empty(len(found), np.int64)
+        rank[np.argsort(start)] = np.arange(len(found))
+        return rank[label]
+    graph = nx.empty_graph(n)
+    graph.add_edges_from(zip(first.tolist(), second.tolist(), strict=True))
+    label = np.empty(n, np.int64)
+    for number, nodes in enumerate(nx.connected_components(graph)):  # in the order of the nodes
+        label[list(nodes)] = number
+    return label
 
 
 def displacements(

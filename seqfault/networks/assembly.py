@@ -6,17 +6,15 @@ earth. The two are kept apart, since weak branches can be smaller than the round
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
+import msgspec
 import numpy as np
 
 from seqfault.equations.per_unit import base_impedance
-from seqfault.model.elements import Complex, Ints, Lines, Model
+from seqfault.model.elements import Complex, CoupledLines, Ints, Model
 from seqfault.model.windings import Incidence, incidence
 
 
-@dataclass(frozen=True, eq=False)
-class Stamps:
+class Stamps(msgspec.Struct, frozen=True, eq=False):
     """One sequence: strong triplets ``row``, ``column``, ``value``, and ``weak`` (n,) to earth."""
 
     size: int
@@ -38,45 +36,33 @@ def star_admittances(model: Model) -> Complex:
     return y
 
 
-def open_ended(lines: Lines, sequence: int) -> tuple[Complex, Complex]:
-    """Admittance (m,) a line shows at its closed end, and the voltage at its open end over that.
-
-    The far half of the π hangs behind the series impedance: y/2 + y/2/(1 + z y/2).
-    """
-    y = lines.shunt[sequence]
-    share = 1 / (1 + lines.series[sequence] * y)
-    return y + y * share, share
-
-
 def assemble(model: Model, sequence: int) -> Stamps:
     """The stamps of sequence 0, 1 or 2 of ``model``."""
-    n = model.nodes if sequence == 0 else len(model.buses)
-    lines = model.lines
-    whole = lines.closed.all(axis=0)
-    i, j = lines.ends[:, whole]
-    y = 1 / lines.series[sequence, whole]
-    rows, columns, values = [i, j, i, j], [i, j, j, i], [y, y, -y, -y]
-    rows.append(model.sources.bus)
-    columns.append(model.sources.bus)
-    values.append(model.sources.admittance[sequence])
-    for sets in model.winding_sets:
-        for part, into in zip(
-            _triplets(incidence(sets, sequence, model.stars.node)),
-            (rows, columns, values),
-            strict=True,
-        ):
-            into.append(part)
+    n = model.nodes if sequence == 0 else model.common
+    lines, sources = model.lines, model.sources
     weak = np.zeros(n, complex)
-    for end in (i, j):
-        np.add.at(weak, end, lines.shunt[sequence, whole])
-    partly, _ = open_ended(lines, sequence)
-    for end in (0, 1):
-        alone = lines.closed[end] & ~lines.closed[1 - end]
-        np.add.at(weak, lines.ends[end, alone], partly[alone])
-    np.add.at(weak, model.capacitances.bus, model.capacitances.admittance[sequence])
+    single = np.ones(len(lines.names), bool)
+    rows, columns, values = [sources.node], [sources.node], [sources.admittance[sequence]]
+    triplets = [_triplets(incidence(sets, sequence, model.stars.node)) for sets in model.winding_sets]
     if sequence == 0:
+        for group in lines.coupled:
+            single[group.line] = False
+            triplets.append(_coupled(group, lines.nodes))
         star = model.stars.node
         np.add.at(weak, star[star >= 0], star_admittances(model)[star >= 0])
+    single &= (lines.nodes >= 0).all(axis=0)
+    i, j = lines.nodes[:, single]
+    y = 1 / lines.series[sequence, single]
+    rows += [i, j, i, j]
+    columns += [i, j, j, i]
+    values += [y, y, -y, -y]
+    for row, column, value in triplets:
+        rows.append(row)
+        columns.append(column)
+        values.append(value)
+    for end in lines.nodes:
+        np.add.at(weak, end[end >= 0], lines.shunt[sequence, end >= 0])
+    np.add.at(weak, model.capacitances.node, model.capacitances.admittance[sequence])
     value = np.concatenate(values)
     there = value != 0
     return Stamps(n, np.concatenate(rows)[there], np.concatenate(columns)[there], value[there], weak)
@@ -92,3 +78,13 @@ def _triplets(part: Incidence) -> tuple[Ints, Ints, Complex]:
     column = np.broadcast_to(node[:, None, :], block.shape)
     there = (block != 0) & (row >= 0) & (column >= 0)
     return row[there], column[there], block[there]
+
+
+def _coupled(group: CoupledLines, nodes: Ints) -> tuple[Ints, Ints, Complex]:
+    """Triplets of the series block of coupled lines; an earthed end is the reference."""
+    ends = np.concatenate([nodes[0, group.line], nodes[1, group.line]])
+    y = np.block([[group.admittance, -group.admittance], [-group.admittance, group.admittance]])
+    row = np.broadcast_to(ends[:, None], y.shape)
+    column = np.broadcast_to(ends[None, :], y.shape)
+    there = (row >= 0) & (column >= 0)
+    return row[there], column[there], y[there]

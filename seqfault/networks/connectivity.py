@@ -7,21 +7,19 @@ Each part has one free vector (equal per-unit potential) or several (loops of st
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from itertools import pairwise
-
+import msgspec
 import numpy as np
 
-from seqfault.model.elements import DELTA, STAR, Floats, Ints, Model, WindingSets
+from seqfault.model.elements import DELTA, STAR, Complex, Floats, Ints, Model, WindingSets
 from seqfault.model.windings import incidence
 from seqfault.model.zones import components
+from seqfault.networks.null_space import Conditions, null_space
 
-TOLERANCE = 1e-9
-"""Ratios that differ by less are equal."""
+LEAST = 1e-4
+"""Weight of a node without a weak branch where references are chosen; the heaviest has 1."""
 
 
-@dataclass(frozen=True, eq=False)
-class FreeSpace:
+class FreeSpace(msgspec.Struct, frozen=True, eq=False):
     """Free vectors by part: a part is what strong elements join, so that parts do not see each other.
 
     ``part`` (n,) number of the part a node belongs to, −1 where a part leaves nothing free;
@@ -35,32 +33,21 @@ class FreeSpace:
     reference: Ints
 
 
-@dataclass(frozen=True, eq=False)
-class Ties:
-    """Linear conditions the strong elements set on a potential without current.
+def free_space(model: Model, sequence: int, weak: Complex) -> FreeSpace:
+    """The free space of sequence 0, 1 or 2 of ``model``.
 
-    Row r says Σ weight·v[node] = 0 over its entries (r, node, weight).
+    References go where ``weak`` (n,), what joins each node to earth, is large: a node held at zero
+    takes its weak branch out of the grounded network, where it would drown the others.
     """
-
-    row: Ints
-    node: Ints
-    weight: Floats
-    rows: int
-
-
-def free_space(model: Model, sequence: int) -> FreeSpace:
-    """The free space of sequence 0, 1 or 2 of ``model``."""
-    n = model.nodes if sequence == 0 else len(model.buses)
-    lines = model.lines
-    whole = lines.closed.all(axis=0)
-    group = components(n, lines.ends[0, whole], lines.ends[1, whole])
+    n = model.nodes if sequence == 0 else model.common
+    standing = (model.lines.nodes >= 0).all(axis=0)
+    group = components(n, *model.lines.nodes[:, standing])
     size = int(group.max()) + 1 if n else 0
     tied = np.zeros(size, bool)
     grounded = model.sources.admittance[sequence] != 0
-    tied[group[model.sources.bus[grounded]]] = True
-    ties = _ties(model, sequence, group)
-    vectors, number = _solve(ties, tied, size)
-    return _spread(vectors, number, group, _parts(model, sequence, group, size))
+    tied[group[model.sources.node[grounded]]] = True
+    vectors, alone = null_space(_conditions(model, sequence, group), tied)
+    return _spread(vectors, alone, group, _parts(model, sequence, group, size), np.abs(weak))
 
 
 def _parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
@@ -75,18 +62,26 @@ def _parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
         unit, place = np.nonzero((node >= 0) & (node != head))
         first.append(group[head[unit, 0]])
         second.append(group[node[unit, place]])
+    for coupled in model.lines.coupled if sequence == 0 else ():
+        ends = model.lines.nodes[:, coupled.line].ravel()
+        ends = group[ends[ends >= 0]]
+        first.append(ends[1:])
+        second.append(ends[:-1])
     return components(size, np.concatenate(first), np.concatenate(second))
 
 
-def _ties(model: Model, sequence: int, group: Ints) -> Ties:
-    """One row for each independent condition of each winding set, nodes merged by ``group``."""
+def _conditions(model: Model, sequence: int, group: Ints) -> Conditions:
+    """What strong elements ask of a potential without current, nodes merged by ``group``.
+
+    One row for each independent condition of each winding set.
+    """
     rows, nodes, weights = [], [], []
     start = 0
     for sets in model.winding_sets:
         if not len(sets.names):
             continue
         inc = incidence(sets, sequence, model.stars.node)
-        for unit, first, second in _conditions(sets, sequence):
+        for unit, first, second in _held(sets, sequence):
             number = start + np.arange(len(unit))
             start += len(unit)
             for winding, factor in ((first, 1.0), (second, -1.0)):
@@ -103,15 +98,16 @@ def _ties(model: Model, sequence: int, group: Ints) -> Ties:
                     weights.append(weight[keep])
     if not rows:
         empty = np.zeros(0, np.int64)
-        return Ties(empty, empty, np.zeros(0), 0)
-    return Ties(np.concatenate(rows), np.concatenate(nodes), np.concatenate(weights), start)
+        return Conditions(empty, empty, np.zeros(0), 0)
+    return Conditions(np.concatenate(rows), np.concatenate(nodes), np.concatenate(weights), start)
 
 
-def _conditions(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int | None]]:
+def _held(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int | None]]:
     """(units, winding, other winding): the winding's voltage is zero, or equals the other's.
 
     A leakage matrix leaves exactly equal winding voltages free. A delta holds its winding's
-    zero-sequence voltage at zero, and with it that of every other winding on the core.
+    zero-sequence voltage at zero, and with it that of every other winding on the core; so does a
+    magnetising branch.
     """
     m, w = sets.bus.shape
     out: list[tuple[Ints, int, int | None]] = []
@@ -120,7 +116,7 @@ def _conditions(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int |
         held = np.zeros(m, bool)
     else:
         present = sets.kind == STAR
-        held = (sets.kind == DELTA).any(axis=1)
+        held = (sets.kind == DELTA).any(axis=1) | sets.magnetised
     if w == 1:
         return [(np.flatnonzero(present[:, 0] & (sets.leakage[sequence, :, 0, 0] != 0)), 0, None)]
     for winding in range(w):
@@ -132,50 +128,9 @@ def _conditions(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int |
     return [(unit, first, second) for unit, first, second in out if len(unit)]
 
 
-def _solve(ties: Ties, tied: np.ndarray, size: int) -> tuple[list[tuple[Ints, Floats]], Ints]:
-    """Free vectors of the merged nodes: those over several nodes, and the nodes free on their own."""
-    row, node, weight = ties.row, ties.node, ties.weight
-    tied = tied.copy()
-    while True:  # a condition on one free node alone ties it to earth
-        keep = ~tied[node]
-        row, node, weight = row[keep], node[keep], weight[keep]
-        count = np.bincount(row, minlength=ties.rows)
-        single = count[row] == 1
-        if not single.any():
-            break
-        tied[node[single]] = True
-    label = components(size + ties.rows, node, size + row)[:size]
-    order = np.argsort(label[node], kind="stable")
-    row, node, weight = row[order], node[order], weight[order]
-    touched = np.zeros(size, bool)
-    touched[node] = True
-    vectors: list[tuple[Ints, Floats]] = []
-    bounds = np.flatnonzero(np.diff(label[node], prepend=-1, append=-1)) if len(node) else np.zeros(0, int)
-    for a, b in pairwise(bounds.tolist()):
-        members, column = np.unique(node[a:b], return_inverse=True)
-        conditions, at = np.unique(row[a:b], return_inverse=True)
-        dense = np.zeros((len(conditions), len(members)))
-        np.add.at(dense, (at, column), weight[a:b])
-        free = _null_space(dense)
-        if free.shape[1]:
-            vectors.append((members, free))
-    return vectors, np.flatnonzero(~touched & ~tied)
-
-
-def _null_space(dense: Floats) -> Floats:
-    """Orthonormal null space, a single vector scaled to a largest entry of exactly 1."""
-    scale = np.abs(dense).max(axis=1, keepdims=True)
-    dense = dense[(scale > 0).ravel()] / scale[scale > 0][:, None]
-    _, s, vh = np.linalg.svd(dense)
-    rank = int((s > TOLERANCE * max(s.max(initial=0.0), 1.0)).sum())
-    free: Floats = vh[rank:].T
-    if free.shape[1] == 1:
-        free = free / free[np.abs(free).argmax()]
-    free[np.abs(free) < TOLERANCE] = 0
-    return free
-
-
-def _spread(vectors: list[tuple[Ints, Floats]], alone: Ints, group: Ints, label: Ints) -> FreeSpace:
+def _spread(
+    vectors: list[tuple[Ints, Floats]], alone: Ints, group: Ints, label: Ints, weak: Floats
+) -> FreeSpace:
     """From merged nodes back to all nodes, vectors gathered by part, with their reference nodes."""
     size = len(label)
     filled = np.zeros(size, np.int64)  # free vectors of each part, by its label
@@ -196,17 +151,23 @@ def _spread(vectors: list[tuple[Ints, Floats]], alone: Ints, group: Ints, label:
     rank = np.arange(len(order)) - np.searchsorted(label[order], label[order])
     basis[order, at[label[order]] + rank] = 1.0
     part, full = number[label[group]], basis[group]
-    return FreeSpace(part, full, dimension, _references(part, full, dimension))
+    return FreeSpace(part, full, dimension, _references(part, full, dimension, weak))
 
 
-def _references(part: Ints, basis: Floats, dimension: Ints) -> Ints:
+def _references(part: Ints, basis: Floats, dimension: Ints, weak: Floats) -> Ints:
     """A node for each free vector, such that holding them at zero leaves none."""
     inside = np.flatnonzero(part >= 0)
+    most = np.zeros(len(dimension))
+    np.maximum.at(most, part[inside], weak[inside])
+    weight = np.full(len(part), LEAST)
+    held = inside[weak[inside] > 0]
+    weight[held] = np.maximum(np.sqrt(weak[held] / most[part[held]]), LEAST)
+    basis = basis * weight[:, None]
     order = inside[np.lexsort((-np.abs(basis[inside, 0]), part[inside]))]
-    first = order[np.flatnonzero(np.diff(part[order], prepend=-1))]
-    reference = [first[dimension[part[first]] == 1]]
+    bounds = np.searchsorted(part[order], np.arange(len(dimension) + 1))
+    reference = [order[bounds[:-1][dimension == 1]]]
     for p in np.flatnonzero(dimension > 1).tolist():
-        nodes = np.flatnonzero(part == p)
+        nodes = np.sort(order[bounds[p] : bounds[p + 1]])
         reference.append(nodes[_independent_rows(basis[nodes, : dimension[p]])])
     return np.concatenate(reference).astype(np.int64)
 

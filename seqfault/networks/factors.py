@@ -27,6 +27,8 @@ DENSE = 300
 """Networks of up to this many nodes are inverted densely, without importing scipy."""
 RESONANCE = 1e-12
 """A border that cancels to this share of its terms is at exact resonance."""
+SEEN = 1e-9
+"""Share of a free potential below which a node does not take part in it."""
 CHUNK = 256
 
 
@@ -129,13 +131,15 @@ class SequenceFactor:
         The second item names the slacks as (part, column).
         """
         out, names = [], []
-        for p in np.unique(self.free.part[nodes]).tolist():
+        for p in sorted(set(self.free.part[nodes].tolist())):
             if p < 0:
                 continue
+            inside = self.free.part[nodes] == p
             for x in range(int(self.slacks[p])):
-                inside = self.free.part[nodes] == p
-                out.append(np.where(inside, self.direction[nodes] @ self.slack[p, :, x], 0))
-                names.append((p, x))
+                values = np.where(inside, self.direction[nodes] @ self.slack[p, :, x], 0)
+                if np.abs(values).max() > SEEN:
+                    out.append(values)
+                    names.append((p, x))
         if not out:
             return np.zeros((len(nodes), 0), complex), []
         return np.stack(out, axis=1), names
@@ -173,7 +177,7 @@ class SequenceFactor:
         diagonal[at] += np.einsum("ik,ikl,il->i", d, self.compliance[part[at]], d)
         infinite = np.zeros(self.size, bool)
         seen = np.einsum("ik,ikx->ix", d, self.slack[part[at]])
-        infinite[at] = (np.abs(seen) > 1e-9).any(axis=1)
+        infinite[at] = (np.abs(seen) > SEEN).any(axis=1)
         return diagonal, infinite
 
 
@@ -224,6 +228,8 @@ class _Sparse:
             self._matrix,
             permc_spec="MMD_AT_PLUS_A",
             diag_pivot_thresh=1e-3,
+            relax=1,  # rows here are too short for dense kernels to pay
+            panel_size=1,
             options={"SymmetricMode": True},
         )
 
@@ -251,7 +257,7 @@ class SequenceNetworks:
 
     def __getitem__(self, sequence: int) -> SequenceFactor:
         if sequence not in self._factors:
-            self._factors[sequence] = SequenceFactor(
-                assemble(self.model, sequence), free_space(self.model, sequence)
-            )
+            stamps = assemble(self.model, sequence)
+            free = free_space(self.model, sequence, stamps.weak)
+            self._factors[sequence] = SequenceFactor(stamps, free)
         return self._factors[sequence]

@@ -146,9 +146,7 @@ def _left(comparison: Comparison) -> Block:
     rows.append(
         cells("displacement (3V0)", [3 * abs(complex(s.voltage_sequence[0, k])) for s in solutions])
     )
-    return Block(
-        "Left on the bus: per cent of the phase voltage before the fault", (PERCENT,), tuple(rows)
-    )
+    return Block("Left on the bus: per cent of the phase voltage before the fault", (PERCENT,), tuple(rows))
 
 
 def _ratio(solutions: tuple[FaultSolution, ...]) -> Block:

@@ -70,10 +70,7 @@ def x_over_r(solution: FaultSolution) -> float | str:
 
 def _undefined(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
     names = once(
-        quoted(bus)
-        for s in solutions
-        for bus, loose in zip(s.buses, s.undefined, strict=True)
-        if loose
+        quoted(bus) for s in solutions for bus, loose in zip(s.buses, s.undefined, strict=True) if loose
     )
     if not names:
         return ()

@@ -56,9 +56,7 @@ def carried(s: FaultSolution, every: bool) -> tuple[Block, int]:
         if not every and float(np.abs(phases[:, k]).max()) <= limit:
             left_out += 1
             continue
-        at.setdefault(t.bus[k], []).extend(
-            _with_one(f"  {element}", phases[:, k], int(t.count[k]), top)
-        )
+        at.setdefault(t.bus[k], []).extend(_with_one(f"  {element}", phases[:, k], int(t.count[k]), top))
     rows: list[Row] = []
     for bus in (name for name in s.buses if name in at):
         rows += [Row(f"at {bus}", NOTHING), *at[bus]]

@@ -63,9 +63,7 @@ Texts = list[list[list[str]]]
 
 def _frame(tables: list[tuple[Table, list[Texts]]], width: int, spell: Spell) -> Frame:
     groups = tables[0][0].groups
-    columns = [
-        _column_widths(tables, g, min(WORDY, width - LABEL - GAP)) for g in range(len(groups))
-    ]
+    columns = [_column_widths(tables, g, min(WORDY, width - LABEL - GAP)) for g in range(len(groups))]
     totals = [
         max(_sum(inner), max((cell_len(spell(h)) for h in group.heading), default=0)) + GAP
         for inner, group in zip(columns, groups, strict=True)
@@ -75,9 +73,7 @@ def _frame(tables: list[tuple[Table, list[Texts]]], width: int, spell: Spell) ->
     return Frame(columns, totals, min(natural, max(LABEL, width - sum(totals))), width)
 
 
-def _table(
-    table: Table, texts: list[Texts], frame: Frame, width: int, spell: Spell
-) -> Iterator[Line]:
+def _table(table: Table, texts: list[Texts], frame: Frame, width: int, spell: Spell) -> Iterator[Line]:
     for number, panel in enumerate(_panels(frame.totals, width - frame.label)):
         if number:
             yield []
@@ -102,9 +98,7 @@ def _panels(totals: list[int], room: int) -> list[list[int]]:
     return panels
 
 
-def _headings(
-    groups: tuple[Group, ...], panel: list[int], frame: Frame, spell: Spell
-) -> Iterator[Line]:
+def _headings(groups: tuple[Group, ...], panel: list[int], frame: Frame, spell: Spell) -> Iterator[Line]:
     tall = max((len(groups[g].heading) for g in panel), default=0)
     for k in range(tall):
         line = " " * frame.label
@@ -191,9 +185,7 @@ def _row(
     if cell_len(name) > room:
         yield from ([(" " * INDENT + text, "")] for text in wrap(name, frame.width - INDENT))
         name = ""
-    wrapped = {
-        g: wrap(cells[g][0], frame.columns[g][0]) for g in panel if _is_text(block, cells[g])
-    }
+    wrapped = {g: wrap(cells[g][0], frame.columns[g][0]) for g in panel if _is_text(block, cells[g])}
     for k in range(max((len(texts) for texts in wrapped.values()), default=1)):
         line: Line = [(" " * INDENT + padded("" if k else name, room, left=True), "")]
         for g in panel:

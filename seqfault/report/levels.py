@@ -124,9 +124,7 @@ def _one(levels: Levels) -> Table:
 
 def _ranges(states: Sequence[Levels]) -> tuple[Table, Table]:
     """The greatest currents and the least, each with the number of the state that gives it."""
-    nominal = {
-        bus: float(each.nominal[k]) for each in reversed(states) for k, bus in enumerate(each.buses)
-    }
+    nominal = {bus: float(each.nominal[k]) for each in reversed(states) for k, bus in enumerate(each.buses)}
     buses = list(dict.fromkeys(bus for each in states for bus in each.buses))
     ranges = [(name, level_range(states, current, buses)) for name, _, current in CURRENTS]
     number = {each.state: k for k, each in enumerate(states, 1)}

@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
+import msgspec
 import numpy as np
 
 from seqfault.faults.network import Network
@@ -13,8 +12,7 @@ ORDER = ("three-phase", "line-line", "line-line-ground", "line-ground")
 """Kinds in the order of IEC 60909-0; three-phase to ground has the currents of three-phase."""
 
 
-@dataclass(frozen=True)
-class Extreme:
+class Extreme(msgspec.Struct, frozen=True):
     """A greatest or least value: of which kind of fault, and in which phase."""
 
     value: float
@@ -22,8 +20,7 @@ class Extreme:
     phase: str
 
 
-@dataclass(frozen=True, eq=False)
-class Comparison:
+class Comparison(msgspec.Struct, frozen=True, eq=False):
     """Solutions of several kinds of fault at one place, in the order asked for."""
 
     place: str

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 
+import msgspec
 import numpy as np
 
 from seqfault.equations.iec60909 import bolted_currents
@@ -13,8 +13,7 @@ from seqfault.faults.network import Network
 from seqfault.model.elements import Bools, Complex, Floats
 
 
-@dataclass(frozen=True, eq=False)
-class Levels:
+class Levels(msgspec.Struct, frozen=True, eq=False):
     """Bolted-fault currents (n,) A at every bus of one state, magnitudes, in the order of the case.
 
     ``k2e`` is the larger faulted phase, ``earth`` what a line-line-ground fault sends to earth;
@@ -38,8 +37,7 @@ class Levels:
         return np.asarray(np.divide(self.k1, self.k3, out=np.full(len(self.k3), np.nan), where=self.k3 > 0))
 
 
-@dataclass(frozen=True, eq=False)
-class LevelRange:
+class LevelRange(msgspec.Struct, frozen=True, eq=False):
     """Greatest and least of one current (n,) A over states, with the state that gives each.
 
     States in which a bus is dead or out of service do not count for it.
@@ -60,7 +58,7 @@ def levels(network: Network) -> Levels:
     infinite = np.zeros((3, n), bool)
     for s in range(3):
         diagonal, unbounded = network.sequences[s].driving_point()
-        z[s], infinite[s] = diagonal[:n] * z_base, unbounded[:n]
+        z[s], infinite[s] = diagonal[model.node] * z_base, unbounded[model.node]
     v = np.abs(model.before) * model.nominal / np.sqrt(3)
     closed = ~(infinite[1] | infinite[2]) & model.live
     one = np.where(closed, z[1], 1)

@@ -56,6 +56,59 @@ bus = "pump"
 rating = "300 kVA"
 locked_rotor = 6
 """
+OTHERS = """
+[lines.F2]
+from = "main"
+to = "pump"
+z1 = "0.125+j0.096 ohm/km"
+z0 = "0.6+j0.3 ohm/km"
+length = "2 km"
+
+[mutual_couplings.M1]
+lines = ["F1", "F2"]
+z0 = "0.05+j0.12 ohm/km"
+length = "1 km"
+start = { F1 = "0.5 km", F2 = "0 km" }
+
+[earthing_transformers.E1]
+bus = "pump"
+z0 = "4 %"
+x_over_r = 20
+rating = "200 kVA"
+duration = "10 s"
+neutral = "NER"
+
+[series_reactors.R1]
+from = "main"
+to = "pump"
+impedance = "6 %"
+x_over_r = 40
+rating = "10 MVA"
+
+[capacitors.C1]
+bus = "main"
+power = "2 Mvar"
+connection = "star"
+
+[converters.PV]
+bus = "pump"
+rating = "2 MVA"
+fault_current = 1.1
+angle = "90 deg"
+threshold = "0.9 pu"
+
+[ties.K1]
+from = "main"
+to = "pump"
+closed = false
+"""
+
+
+def third_winding(group: str, more: str = "") -> str:
+    """Return the base text with a third winding on its transformer, and ``more`` of its fields."""
+    pairs = '{ hv_lv = "10 %", hv_tv = "15 %", lv_tv = "6 %" }'
+    third = 'tv = { bus = "pump", voltage = "11 kV" }\n'
+    return spoilt(("Dyn11", group), ('impedance = "10 %"\n', f"{third}impedance = {pairs}\n{more}"))
 
 
 def spoilt(*changes: tuple[str, str], more: str = "") -> str:

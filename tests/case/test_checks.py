@@ -5,7 +5,16 @@ from pathlib import Path
 import pytest
 
 from seqfault.errors import CaseError
-from tests.case.installation import BASE, GENERATOR, MOTOR, entries, read_text, spoilt
+from tests.case.installation import (
+    BASE,
+    GENERATOR,
+    MOTOR,
+    OTHERS,
+    entries,
+    read_text,
+    spoilt,
+    third_winding,
+)
 
 BAD = Path(__file__).parent / "bad"
 
@@ -16,7 +25,10 @@ def page(name: str) -> list[object]:
     return [pytest.param(*rest, id=entry) for entry, *rest in entries(text)]
 
 
-@pytest.mark.parametrize(("text", "messages"), page("rules"))
+RULES = [entry for name in ("rules", "transformers", "earthing", "lines", "shunts") for entry in page(name)]
+
+
+@pytest.mark.parametrize(("text", "messages"), RULES)
 def test_complains(tmp_path: Path, text: str, messages: list[str]) -> None:
     with pytest.raises(CaseError) as caught:
         read_text(tmp_path, text)
@@ -60,7 +72,73 @@ SOUND = {
     "neutral by both, 0.2 % apart": spoilt(
         ('"15.9 ohm"', '"15.9 ohm"\ncurrent = "400 A"\nvoltage = "11 kV"')
     ),
+    "every other table": BASE + OTHERS,
+    "three windings": third_winding("YNyn0d11"),
+    "pairs in ohm and per cent": third_winding("YNyn0d11").replace('"15 %"', '"16.3 ohm"'),
+    "pairs on their own ratings": third_winding(
+        "YNyn0d11", 'impedance_on = { hv_tv = "5 MVA", lv_tv = "5 MVA" }\n'
+    ).replace('"15 %"', '"7.5 %"').replace('"6 %"', '"3 %"'),
+    # at the edge: 9 %, 1 % and just over 4 %, whose square roots are 3, 1 and 2
+    "pairs at the edge": third_winding("YNyn0d11").replace('"10 %"', '"9 %"').replace(
+        '"15 %"', '"1 %"').replace('"6 %"', '"4.001 %"'),
+    "z0 of three pairs": third_winding(
+        "YNd11yn0", 'z0 = { hv_lv = "9 %", hv_tv = "14 %", lv_tv = "6 %" }\n'
+    ).replace(', neutral = "NER"', "").replace('"11 kV" }\nimp', '"11 kV", neutral = "NER" }\nimp'),
+    "auto with a third winding": third_winding("YNa0d11").replace(
+        'voltage = "33 kV"', 'voltage = "33 kV", neutral = "NER"').replace(
+        '"11 kV", neutral = "NER"', '"11 kV"'),
+    "auto without a delta": spoilt(
+        ('"Dyn11"', '"YNa0"\nmagnetic_circuit = "five-limb"'),
+        ('voltage = "33 kV"', 'voltage = "33 kV", neutral = "NER"'),
+        ('"11 kV", neutral = "NER"', '"11 kV"'),
+    ),
+    "zigzag with its z0": spoilt(('"Dyn11"', '"Dzn0"\nz0 = "0.1+j0.4 ohm"')),
+    "third winding a zigzag": third_winding(
+        "YNyn0zn11", 'magnetic_circuit = "three-limb"\nz0 = "2 %"\n'),
+    "tested in zero sequence": spoilt(
+        ('"Dyn11"', '"YNyn0"\nmagnetic_circuit = "three-limb"\n'
+         'zero_tests = { from_hv = "80 %", from_lv = "75 %", from_hv_lv_shorted = "9 %" }'),
+    ),
+    "magnetising impedance": spoilt(
+        ('"Dyn11"', '"YNyn0"\nmagnetic_circuit = "three-limb"\nz0_magnetising = "65 %"')
+    ),
+    "15.9 ohm through a ratio": spoilt(('"15.9 ohm"', '"0.159 ohm"\nratio = 10')),
+    "tuned coil": spoilt(
+        ('resistance = "15.9 ohm"', 'kind = "arc-suppression"\ndetuning = "+5 %"\nloss = "3 %"')
+    ),
+    "line earthed at both ends": spoilt(
+        ('length = "1.8 km"', 'length = "1.8 km"\nout = true\nearthed = true')
+    ),
 }  # fmt: skip
+PARALLEL = """
+[transformers.T2]
+vector_group = "Dyn11"
+rating = "5 MVA"
+hv = { bus = "grid", voltage = "33 kV" }
+lv = { bus = "main", voltage = "11 kV", neutral = "NER" }
+impedance = "9.06 %"
+x_over_r = 20
+tap = "0.5 %"
+"""
+SOUND["parallel units within the limits"] = BASE + PARALLEL
+SOUND["a parallel unit out of service"] = BASE + PARALLEL.replace("9.06 %", "5 %") + "out = true\n"
+SOUND["three coupled lines in two records"] = (
+    BASE
+    + OTHERS.replace("M1", "M2")
+    .replace('"F1", "F2"', '"F2", "F3"')
+    .replace('start = { F1 = "0.5 km", F2 = "0 km" }', "")
+    + """
+[mutual_couplings.M1]
+lines = ["F1", "F2"]
+z0 = "0.05+j0.12 ohm/km"
+[lines.F3]
+from = "main"
+to = "pump"
+z1 = "0.125+j0.096 ohm/km"
+z0 = "0.6+j0.3 ohm/km"
+length = "3 km"
+"""
+)
 
 
 @pytest.mark.parametrize("name", SOUND)
@@ -73,6 +151,30 @@ def test_limit_of_the_earth_fault_level(tmp_path: Path) -> None:
     read_text(tmp_path, spoilt(('"4 kA"', '"11.999 kA"')))
     with pytest.raises(CaseError, match="the largest earth-fault current is 12 kA"):
         read_text(tmp_path, spoilt(('"4 kA"', '"12.001 kA"')))
+
+
+@pytest.mark.parametrize(("third", "sound"), [("4.001 %", True), ("3.999 %", False), ("15.99 %", True),
+                                              ("16.01 %", False)])  # fmt: skip
+def test_limits_of_the_pairs(tmp_path: Path, third: str, sound: bool) -> None:
+    """With 9 % and 1 % the third lies between (3 - 1)² and (3 + 1)²: there the determinant is 0."""
+    text = third_winding("YNyn0d11").replace('"10 %"', '"9 %"').replace('"15 %"', '"1 %"')
+    text = text.replace('"6 %"', f'"{third}"')
+    assert _reads(tmp_path, text) == sound
+
+
+@pytest.mark.parametrize(("mutual", "sound"), [("j0.2999", True), ("j0.3001", False), ("-j0.2999", True),
+                                               ("-j0.3001", False)])  # fmt: skip
+def test_limit_of_a_coupling(tmp_path: Path, mutual: str, sound: bool) -> None:
+    text = BASE + OTHERS.replace("0.05+j0.12 ohm/km", f"{mutual} ohm/km")
+    assert _reads(tmp_path, text) == sound
+
+
+def _reads(folder: Path, text: str) -> bool:
+    try:
+        read_text(folder, text)
+    except CaseError:
+        return False
+    return True
 
 
 def test_a_broken_record_brings_no_second_complaint(tmp_path: Path) -> None:

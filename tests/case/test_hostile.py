@@ -1,6 +1,7 @@
 """Spoilt files of every kind end in a case or in complaints, never in another exception."""
 
 import json
+import re
 import tomllib
 from collections.abc import Callable
 
@@ -12,10 +13,26 @@ from seqfault.case.records import Case
 from seqfault.case.scenarios import in_state
 from seqfault.case.text import parse_text
 from seqfault.errors import CaseError, InputError
-from tests.case.installation import BASE, GENERATOR, MOTOR
+from tests.case.installation import GENERATOR, MOTOR, OTHERS, third_winding
 from tests.case.test_scenarios import STATES
 
-TEXT = BASE + STATES + GENERATOR + MOTOR
+TESTED = """
+[transformers.T3]
+vector_group = "YNyn0"
+rating = "5 MVA"
+hv = { bus = "grid", voltage = "33 kV" }
+lv = { bus = "pump", voltage = "11 kV" }
+impedance = "7 %"
+x_over_r = 15
+magnetic_circuit = "three-limb"
+zero_tests = { from_hv = "80 %", from_lv = "75 %", from_hv_lv_shorted = "9 %" }
+
+[neutrals.coil]
+kind = "arc-suppression"
+detuning = "+5 %"
+"""
+THIRD = third_winding("Dyn11d0", 'impedance_on = { hv_lv = "10 MVA" }\n')
+TEXT = THIRD + STATES + GENERATOR + MOTOR + OTHERS + TESTED
 TREE = tomllib.loads(TEXT)
 LINES = TEXT.splitlines()
 SCRAPS = st.sampled_from(
@@ -28,7 +45,7 @@ VALUES = st.recursive(
     | st.just(10**400)
     | st.floats()
     | st.text(max_size=10)
-    | st.sampled_from(["11 kV", "0.1+j0.4 ohm/km", "5 %", "solid", "main", "T1", "F1@main"]),
+    | st.sampled_from(["11 kV", "0.1+j0.4 ohm/km", "5 %", "solid", "main", "T1", "F1@main", "K1"]),
     lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.text(max_size=5), inner),
     max_leaves=5,
 )
@@ -95,10 +112,58 @@ def test_any_value_anywhere(data: st.DataObject) -> None:
     else:
         table, key = parent if steps > 1 else tree, key
     if data.draw(st.booleans()):
-        key = data.draw(st.text(max_size=8) | st.sampled_from(["z1", "2", "frequency", "tv", "in"]))
+        key = data.draw(
+            st.text(max_size=8)
+            | st.sampled_from(["z1", "2", "frequency", "tv", "in", "start", "z0", "loads"])
+        )
     table[key] = data.draw(VALUES)
     read_or_complain(case_from_tree, tree)
     read_or_complain(read_bytes, json.dumps(tree).encode(), "case.json")
+
+
+EXTREME = st.sampled_from(
+    [
+        "0",
+        "-1",
+        "1e-300",
+        "5e-324",
+        "1e150",
+        "1e300",
+        "1e308+j1e308",
+        "j1e33",
+        "1e-39",
+        "1e-30-j1e-30",
+        "1e30",
+        "-j1",
+    ]
+)
+
+
+def _respell(tree: dict[str, object], data: st.DataObject, changes: int) -> None:
+    """Give quantities and numbers, at any depth, values at the ends of what a float holds."""
+    found: list[tuple[dict[str, object], str, str]] = []
+
+    def walk(table: dict[str, object]) -> None:
+        for key, value in table.items():
+            if isinstance(value, dict):
+                walk(value)
+            elif isinstance(value, str) and (unit := re.fullmatch(r"[-+]?[0-9][^ ]* (.+)", value)):
+                found.append((table, key, unit[1]))
+            elif isinstance(value, float | int) and not isinstance(value, bool):
+                found.append((table, key, ""))
+
+    walk(tree)
+    for table, key, unit in data.draw(st.lists(st.sampled_from(found), min_size=1, max_size=changes)):
+        number = data.draw(EXTREME)
+        table[key] = f"{number} {unit}" if unit else float(number) if "j" not in number else 1e300
+
+
+@given(st.data())
+@settings(max_examples=300)
+def test_numbers_of_any_size(data: st.DataObject) -> None:
+    tree = json.loads(json.dumps(TREE))
+    _respell(tree, data, 4)
+    read_or_complain(case_from_tree, tree)
 
 
 @given(VALUES)

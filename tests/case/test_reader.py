@@ -3,6 +3,8 @@
 import hashlib
 import io
 import json
+import math
+import re
 import sys
 import time
 import tomllib
@@ -11,9 +13,19 @@ from pathlib import Path
 import pytest
 
 from seqfault.case.reader import case_from_tree, read_case
+from seqfault.case.records import Pairs
 from seqfault.case.schema import case_schema
 from seqfault.errors import CaseError, RequestError
-from tests.case.installation import BASE, GENERATOR, MOTOR, entries, read_text, spoilt
+from tests.case.installation import (
+    BASE,
+    GENERATOR,
+    MOTOR,
+    OTHERS,
+    entries,
+    read_text,
+    spoilt,
+    third_winding,
+)
 
 PAGE = (Path(__file__).parent / "bad" / "reading.txt").read_text(encoding="utf-8")
 
@@ -149,6 +161,7 @@ def test_all_complaints_at_once_in_the_order_of_the_file(tmp_path: Path) -> None
         'infeed "utility", x_over_r: -10: this cannot be negative',
         'transformer "T1", vector_group: "Dyn13": the clock number is 0 to 11',
         'line "F1", length: "1.8": the unit is missing; write "1.8 km" or "1.8 m"',
+        'line "F1", to: there is no bus "pmup"; did you mean "pump"?',
         'neutral "NER", resistance: "15.9": the unit is missing; write "15.9 ohm"',
     ]
 
@@ -224,4 +237,40 @@ def test_schema_knows_every_table_and_field() -> None:
     assert line["properties"]["out"] == {"type": "boolean"}
     assert schema["$defs"]["transformer"]["properties"]["hv"]["required"] == ["bus", "voltage"]
     assert schema["$defs"]["infeed"]["properties"]["z0"]["anyOf"][1] == {"enum": ["open"]}
-    assert set(tomllib.loads(BASE)) <= set(schema["properties"])
+    assert set(tomllib.loads(BASE + OTHERS)) <= set(schema["properties"])
+    assert schema["$defs"]["earthing_transformer"]["required"] == ["bus", "z0"]
+    assert schema["properties"]["ties"]["additionalProperties"] == {"$ref": "#/$defs/tie"}
+    alone, pairs = schema["$defs"]["transformer"]["properties"]["impedance"]["anyOf"]
+    assert alone["type"] == "string"
+    assert pairs["required"] == ["hv_lv", "hv_tv", "lv_tv"]
+    start = schema["$defs"]["mutual_coupling"]["properties"]["start"]
+    assert re.search(start["additionalProperties"]["pattern"], "0.5 km")
+
+
+def test_schema_leads_to_its_definitions_alone() -> None:
+    schema = case_schema()
+    found = set(re.findall(r'"#/\$defs/(\w+)"', json.dumps(schema)))
+    assert found == set(schema["$defs"])
+
+
+def test_every_other_table_reads(tmp_path: Path) -> None:
+    case = read_text(tmp_path, BASE + OTHERS)
+    assert case.warnings == ()
+    coupling = case.mutual_couplings["M1"]
+    assert (coupling.lines, coupling.z0.value) == (("F1", "F2"), 0.05e-3 + 0.12e-3j)
+    assert coupling.start is not None
+    assert {name: place.value for name, place in coupling.start.items()} == {"F1": 500.0, "F2": 0.0}
+    assert case.earthing_transformers["E1"].z0.value == 0.04
+    assert case.series_reactors["R1"].to == "pump"
+    assert case.capacitors["C1"].power.value == 2e6
+    assert case.converters["PV"].angle.value == pytest.approx(math.pi / 2)
+    assert not case.ties["K1"].closed
+    tables = {table for table, _, _ in case.records()}
+    assert {"mutual_couplings", "earthing_transformers", "ties"} <= tables
+
+
+def test_three_windings_read(tmp_path: Path) -> None:
+    unit = read_text(tmp_path, third_winding("YNyn0d11")).transformers["T1"]
+    assert unit.tv.bus == "pump"
+    assert isinstance(unit.impedance, Pairs)
+    assert (unit.impedance.hv_lv.value, unit.impedance.lv_tv.value) == (0.1, 0.06)

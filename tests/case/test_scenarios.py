@@ -9,7 +9,7 @@ import pytest
 from seqfault.case.records import Case
 from seqfault.case.scenarios import in_state
 from seqfault.errors import CaseError, RequestError
-from tests.case.installation import BASE, entries, read_text
+from tests.case.installation import BASE, OTHERS, entries, read_text
 
 PAGE = (Path(__file__).parent / "bad" / "scenarios.txt").read_text(encoding="utf-8")
 STATES = """
@@ -101,6 +101,34 @@ def test_changes_on_top_of_a_scenario(case: Case) -> None:
     assert state.neutrals["NER"].out
     assert state.lines["F1"].open == ("main",)
     assert in_state(case, without=["F1"]).state == "base, without F1"
+
+
+def test_ties_are_opened_and_closed(tmp_path: Path) -> None:
+    text = BASE + OTHERS + '[scenarios.coupled]\nclose = ["K1"]\n'
+    case = read_text(tmp_path, text)
+    assert in_state(case, "coupled").ties["K1"].closed
+    state = in_state(case, "coupled", open=["K1", "F1@main"], without=["M1", "E1", "PV"])
+    assert state.state == "coupled, without M1, E1 and PV, open K1 and F1@main"
+    assert not state.ties["K1"].closed
+    assert state.lines["F1"].open == ("main",)
+    assert state.mutual_couplings["M1"].out
+    assert state.earthing_transformers["E1"].out
+    assert state.converters["PV"].out
+    assert not case.ties["K1"].closed
+
+
+def test_a_scenario_changes_fields_of_other_tables(tmp_path: Path) -> None:
+    text = BASE + OTHERS + '[scenarios.weak.mutual_couplings.M1.start]\nF1 = "0.7 km"\n'
+    coupling = in_state(read_text(tmp_path, text), "weak").mutual_couplings["M1"]
+    assert coupling.start is not None
+    assert {name: place.value for name, place in coupling.start.items()} == {"F1": 700.0, "F2": 0.0}
+
+
+def test_parallel_units_are_doubted_in_the_state_that_has_them(tmp_path: Path) -> None:
+    case = read_text(tmp_path, BASE + STATES.replace('out = ["T1", "pump"]', 'out = ["pump"]'))
+    assert case.warnings == ()
+    (doubt,) = in_state(case, "night").warnings
+    assert doubt.startswith('transformer "T2", impedance: its 7 % and the 10 % of "T1"')
 
 
 def test_opening_twice_is_opening_once(case: Case) -> None:

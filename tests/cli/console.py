@@ -50,9 +50,7 @@ def unearthed(**more: Any) -> dict[str, Any]:
         "title": "Lowther Edge booster, unearthed 11 kV",
         "frequency": "50 Hz",
         "buses": {"intake": "33 kV", "main": "11 kV", "spare": "11 kV"},
-        "infeeds": {
-            "utility": {"bus": "intake", "three_phase": "500 MVA", "x_over_r": 10, "z0": "open"}
-        },
+        "infeeds": {"utility": {"bus": "intake", "three_phase": "500 MVA", "x_over_r": 10, "z0": "open"}},
         "transformers": {
             "T1": {
                 "vector_group": "Dd0",

@@ -43,9 +43,7 @@ def test_voltages_are_per_cent_of_the_phase_voltage(run: Run, plant: Network) ->
     phase_voltage = 11e3 / np.sqrt(3)
     for k, phase in enumerate("abc"):
         cell = page.row(f"phase {phase} to earth")[-1].lstrip(">")
-        assert float(cell) == pytest.approx(
-            100 * abs(ground.at("main")[k]) / phase_voltage, abs=0.6
-        )
+        assert float(cell) == pytest.approx(100 * abs(ground.at("main")[k]) / phase_voltage, abs=0.6)
 
 
 def test_closing_lines_name_kind_and_value(run: Run, plant: Network) -> None:
@@ -102,9 +100,7 @@ def test_fault_impedance_is_used_and_said(run: Run, plant: Network) -> None:
 def test_json_holds_four_faults_and_the_extremes(run: Run, plant: Network) -> None:
     tree = run("compare", PLANT, "main", "--format", "json").tree
     answer = compare(plant, "main")
-    assert [f["fault"]["kind"] for f in tree["faults"]] == [
-        s.fault.kind.name for s in answer.solutions
-    ]
+    assert [f["fault"]["kind"] for f in tree["faults"]] == [s.fault.kind.name for s in answer.solutions]
     assert tree["greatest"]["value"] == answer.greatest.value
     assert tree["scenario"] == "base"
     assert tree["format"] == 1

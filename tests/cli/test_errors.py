@@ -35,9 +35,7 @@ WRONG: list[tuple[list[Any], str]] = [
 ]
 
 
-@pytest.mark.parametrize(
-    ("arguments", "words"), WRONG, ids=[" ".join(map(str, a)) for a, _ in WRONG]
-)
+@pytest.mark.parametrize(("arguments", "words"), WRONG, ids=[" ".join(map(str, a)) for a, _ in WRONG])
 def test_wrong_commands(run: Run, arguments: list[str], words: str) -> None:
     result = run(*arguments)
     assert result.code == 2
@@ -64,9 +62,7 @@ def test_every_complaint_about_a_case_names_the_file(run: Run, write: Write) -> 
     ("error", "code"),
     [(NoAnswerError("resonance at main"), 3), (KeyboardInterrupt(), 130), (MemoryError(), 70)],
 )
-def test_exit_codes(
-    run: Run, monkeypatch: pytest.MonkeyPatch, error: BaseException, code: int
-) -> None:
+def test_exit_codes(run: Run, monkeypatch: pytest.MonkeyPatch, error: BaseException, code: int) -> None:
     def fail(*_: object, **__: object) -> None:
         raise error
 

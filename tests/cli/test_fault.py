@@ -116,15 +116,11 @@ def test_star_points_and_deltas(run: Run, plant: Network) -> None:
 
 
 def test_phases_and_synonyms(run: Run, plant: Network) -> None:
-    tree = run(
-        "fault", PLANT, "main", "--kind", "line-earth", "--phases", "c", "--format", "json"
-    ).tree
+    tree = run("fault", PLANT, "main", "--kind", "line-earth", "--phases", "c", "--format", "json").tree
     assert tree["fault"]["kind"] == "line-ground"
     assert tree["current"]["a"] == [0, 0]
     assert tree["current"]["c"][0] == pytest.approx(abs(plant.fault("main").current[0]))
-    tree = run(
-        "fault", PLANT, "main", "--kind", "line-line", "--phases", "ca", "--format", "json"
-    ).tree
+    tree = run("fault", PLANT, "main", "--kind", "line-line", "--phases", "ca", "--format", "json").tree
     assert tree["current"]["b"] == [0, 0]
 
 
@@ -154,9 +150,7 @@ def test_machine_state_is_used_and_said(run: Run) -> None:
 
 def test_ad_hoc_states(run: Run) -> None:
     plain = run("fault", PLANT, "main", "--kind", "three-phase", "--format", "json").tree
-    less = run(
-        "fault", PLANT, "main", "--kind", "three-phase", "--without", "T2", "--format", "json"
-    ).tree
+    less = run("fault", PLANT, "main", "--kind", "three-phase", "--without", "T2", "--format", "json").tree
     named = run(
         "fault", PLANT, "main", "--kind", "three-phase", "--scenario", "one-transformer",
         "--format", "json",
@@ -164,9 +158,7 @@ def test_ad_hoc_states(run: Run) -> None:
     assert less["current"]["a"][0] < plain["current"]["a"][0]
     assert less["current"]["a"][0] == pytest.approx(named["current"]["a"][0])
     assert "T2" in less["scenario"]
-    cut = run(
-        "fault", PLANT, "main", "--kind", "three-phase", "--open", "F1@main", "--format", "json"
-    ).tree
+    cut = run("fault", PLANT, "main", "--kind", "three-phase", "--open", "F1@main", "--format", "json").tree
     assert cut["current"]["a"][0] < plain["current"]["a"][0]
 
 

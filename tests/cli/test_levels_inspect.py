@@ -25,9 +25,7 @@ def test_range_over_states_names_the_state(run: Run) -> None:
     page = run("levels", PLANT, "--scenario", "all")
     greatest, _, least = page.out.partition("The least")
     case = read_case(PLANT)
-    values = [
-        float(levels(Network(case, name)).k3[1]) for name in ("base", "one-transformer", "island")
-    ]
+    values = [float(levels(Network(case, name)).k3[1]) for name in ("base", "one-transformer", "island")]
     assert f"main        {figures(max(values))} ({values.index(max(values)) + 1})" in greatest
     assert f"{figures(min(values))} ({values.index(min(values)) + 1})" in least
     assert "(3) island" in page.out

@@ -37,9 +37,7 @@ def tree(bus: str) -> dict[str, Any]:
         "title": f"[red]{bus}",
         "frequency": "50 Hz",
         "buses": {"intake": "33 kV", bus: "11 kV"},
-        "infeeds": {
-            "[dim]u": {"bus": "intake", "three_phase": "500 MVA", "x_over_r": 10, "z0": "open"}
-        },
+        "infeeds": {"[dim]u": {"bus": "intake", "three_phase": "500 MVA", "x_over_r": 10, "z0": "open"}},
         "neutrals": {bus + " R": {"resistance": "16 ohm"}},
         "transformers": {
             bus + " T": {

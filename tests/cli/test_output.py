@@ -74,9 +74,7 @@ def test_a_failed_answer_writes_nothing(run: Run, tmp_path: Path) -> None:
     ("color", "no_color", "colored"),
     [("auto", "", False), ("always", "1", True), ("never", "", False)],
 )
-def test_color(
-    run: Run, monkeypatch: pytest.MonkeyPatch, color: str, no_color: str, colored: bool
-) -> None:
+def test_color(run: Run, monkeypatch: pytest.MonkeyPatch, color: str, no_color: str, colored: bool) -> None:
     monkeypatch.setenv("NO_COLOR", no_color)
     page = run("compare", PLANT, "main", "--color", color)
     assert ("\x1b[" in page.out) == colored

@@ -25,9 +25,7 @@ def loaded(code: str) -> set[str]:
     return {name.partition(".")[0] for name in done.stdout.splitlines()[-1].split()}
 
 
-@pytest.mark.parametrize(
-    "arguments", ["['--help']", "['fault', '--help']", "['completion', 'bash']"]
-)
+@pytest.mark.parametrize("arguments", ["['--help']", "['fault', '--help']", "['completion', 'bash']"])
 def test_help_imports_nothing_heavy(arguments: str) -> None:
     assert not HEAVY & loaded(f"from seqfault.cli import main\nmain({arguments})")
 
@@ -97,7 +95,5 @@ def test_bash_completes(run: Run, typed: str, offered: list[str]) -> None:
         f"COMP_WORDS=({quoted}); COMP_CWORD={len(words) - 1}; _seqfault 2>/dev/null\n"
         'printf "%s\\n" "${COMPREPLY[@]}"\n'
     )
-    done = subprocess.run(
-        ["bash", "-c", script], capture_output=True, text=True, cwd=ROOT, check=True
-    )
+    done = subprocess.run(["bash", "-c", script], capture_output=True, text=True, cwd=ROOT, check=True)
     assert done.stdout.split() == offered

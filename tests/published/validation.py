@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from tests.published import closed_forms, low_voltage, patterns, three_bus_loop, two_machine
+from tests.published import closed_forms, low_voltage, patterns, three_bus_loop, two_machine, windings
 from tests.published.figures import Example
 
 EXAMPLES: tuple[Example, ...] = (
@@ -16,6 +16,7 @@ EXAMPLES: tuple[Example, ...] = (
     *low_voltage.EXAMPLES,
     *patterns.EXAMPLES,
     *closed_forms.EXAMPLES,
+    *windings.EXAMPLES,
 )
 PAGE = Path(__file__).parents[2] / "docs" / "validation.md"
 

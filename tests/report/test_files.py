@@ -54,9 +54,7 @@ def test_csv_leaves_what_is_undefined_empty() -> None:
     assert row["value"] == ""
 
 
-def test_a_write_that_fails_leaves_the_old_file(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_write_that_fails_leaves_the_old_file(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     target = tmp_path / "answer.json"
     target.write_bytes(b"old")
 

@@ -1,0 +1,193 @@
+"""Warnings of the trade: data that are possible, yet more often a slip, each with its numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+import numpy as np
+
+from seqfault.case.records import Case
+from seqfault.equations.per_unit import base_current
+from seqfault.errors import quoted
+from seqfault.model.coils import ARC_SUPPRESSION, earth_susceptance
+from seqfault.model.elements import DELTA, STAR, Model, WindingSets
+
+RULE = "common practice"
+
+
+def doubts(model: Model, case: Case) -> tuple[str, ...]:
+    """What a colleague would ask about ``model``, built from ``case``."""
+    earthed = _earthing(model)
+    charging = earth_susceptance(model, model.galvanic)
+    return (
+        *_small_resistors(model, case, charging),
+        *_parallel_neutrals(model, earthed),
+        *_unearthed(model, earthed, charging),
+        *_strong_earth_faults(model),
+        *_assumed_zero_sequence(model),
+        *_missing_capacitance(model, case, earthed),
+    )
+
+
+def _round(value: float) -> str:
+    """Three significant digits without an exponent."""
+    return f"{float(f'{value:.3g}'):g}"
+
+
+def _network_of(model: Model, star: int) -> int:
+    return int(model.galvanic[model.node[model.stars.bus[star]]])
+
+
+def _carrying(sets: WindingSets, unit: int) -> bool:
+    """Whether an earthed winding of a unit really is a way to earth for zero sequence."""
+    kinds = sets.kind[unit]
+    others = int(((kinds == STAR) | (kinds == DELTA)).sum()) - 1
+    return len(kinds) == 1 or others > 0 or bool(sets.magnetised[unit])
+
+
+def _earthing(model: Model) -> Mapping[int, list[tuple[str, complex]]]:
+    """Ways to earth of each metallically joined network: name and ohm; infeeds count as solid."""
+    out: dict[int, list[tuple[str, complex]]] = {}
+    stars = model.stars
+    used: set[int] = set()
+    for sets in model.winding_sets:
+        for unit, winding in zip(*np.nonzero((sets.kind == STAR) & (sets.star >= 0)), strict=True):
+            if _carrying(sets, int(unit)):
+                used.add(int(sets.star[unit, winding]))
+    for k in sorted(used):
+        if np.isfinite(stars.impedance[k]):
+            way = (stars.names[k], complex(stars.impedance[k]))
+            out.setdefault(_network_of(model, k), []).append(way)
+    sources = model.sources
+    for k in np.flatnonzero(sources.admittance[0] != 0).tolist():
+        label = int(model.galvanic[sources.node[k]])
+        out.setdefault(label, []).append((sources.names[k], 0j))
+    return out
+
+
+def _phase_voltage(model: Model, label: int) -> float:
+    buses = np.flatnonzero(model.galvanic[model.node] == label)
+    return float(model.nominal[buses].max() / np.sqrt(3))
+
+
+def _small_resistors(model: Model, case: Case, charging: Mapping[int, float]) -> Iterator[str]:
+    stars = model.stars
+    for k, name in enumerate(stars.names):
+        z = complex(stars.impedance[k])
+        if stars.kinds[k] != "neutral" or not np.isfinite(z) or z.real <= abs(z.imag):
+            continue
+        if case.neutrals[name].kind == ARC_SUPPRESSION:
+            continue
+        v = float(stars.base[k] / np.sqrt(3))
+        through, capacitive = v / abs(z), 3 * charging[_network_of(model, k)] * v
+        if through < 0.999 * capacitive:
+            yield (
+                f"neutral {quoted(name)}: it lets {_round(through)} A through, less than the"
+                f" {_round(capacitive)} A that the network's capacitance draws in an earth fault; arcing"
+                f" faults may swing the voltage up: choose at least {_round(capacitive)} A ({RULE})"
+            )
+
+
+def _parallel_neutrals(model: Model, earthed: Mapping[int, list[tuple[str, complex]]]) -> Iterator[str]:
+    for label, ways in earthed.items():
+        impeded = [(name, z) for name, z in ways if z != 0]
+        if len(impeded) < 2:
+            continue
+        v = _phase_voltage(model, label)
+        names = ", ".join(quoted(name) for name, _ in impeded)
+        total = abs(sum(v / z for _, z in impeded))
+        alone = ", ".join(f"{_round(v / abs(z))} A" for _, z in impeded)
+        yield (
+            f"neutrals {names} earth the same network in this state: {alone} each alone,"
+            f" {_round(total)} A together"
+        )
+
+
+def _unearthed(
+    model: Model,
+    earthed: Mapping[int, list[tuple[str, complex]]],
+    charging: Mapping[int, float],
+) -> Iterator[str]:
+    """A live network of deltas only; bare transformer terminals and infeeds stated open are meant."""
+    sources = model.sources
+    motors = [kind == "motor" for kind in sources.kinds]
+    wired = {int(model.galvanic[k]) for k in model.lines.nodes[model.lines.nodes >= 0].tolist()}
+    wired |= {int(model.galvanic[k]) for k in sources.node[np.array(motors, bool)].tolist()}
+    fed = {int(model.galvanic[k]) for k in sources.node[~np.array(motors, bool)].tolist()}
+    for label in dict.fromkeys(model.galvanic[model.node][model.live].tolist()):
+        if earthed.get(label) or charging.get(label, 0.0) > 0 or label not in wired - fed:
+            continue
+        names = [model.buses[k] for k in np.flatnonzero(model.galvanic[model.node] == label)]
+        shown = ", ".join(quoted(name) for name in names[:6])
+        more = f" and {len(names) - 6} more" if len(names) > 6 else ""
+        yield (
+            f"bus {shown}{more}: nothing joins this network to earth, and no capacitance is stated;"
+            " earth faults there carry nothing, and the voltage to earth is undefined otherwise"
+        )
+
+
+def _strong_earth_faults(model: Model) -> Iterator[str]:
+    machines = next(s for s in model.winding_sets if s.kind_of_record == "generator")
+    for k, name in enumerate(machines.names):
+        star = int(machines.star[k, 0])
+        if machines.kind[k, 0] != STAR or model.stars.impedance[star] != 0:
+            continue
+        y0, y1, y2 = machines.leakage[:, k, 0, 0]
+        ampere = base_current(model.nominal[machines.bus[k, 0]], model.base_power)
+        three, one = abs(y1) * ampere, abs(3 / (1 / y0 + 1 / y1 + 1 / y2)) * ampere
+        if one > 1.001 * three:
+            yield (
+                f"generator {quoted(name)}: solidly earthed, its earth fault of {_round(one)} A exceeds its"
+                f" three-phase fault of {_round(three)} A, which is what its windings are braced for"
+                f" ({RULE}); a reactor or resistor in the neutral cures it"
+            )
+
+
+def _assumed_zero_sequence(model: Model) -> Iterator[str]:
+    for entry in model.assumptions:
+        if entry.record != "transformer" or not entry.text.startswith("z0 not stated"):
+            continue
+        names = set(entry.names) & _matters(model)
+        kept = [quoted(name) for name in entry.names if name in names]
+        if kept:
+            shown = ", ".join(kept[:6]) + (f" and {len(kept) - 6} more" if len(kept) > 6 else "")
+            yield (
+                f"transformer {shown}: earth-fault currents rest on an assumed zero-sequence"
+                " impedance (z0_over_z1 = 1); ask the maker for the test report"
+            )
+
+
+def _matters(model: Model) -> set[str]:
+    """Transformers whose zero-sequence impedance carries current."""
+    out = set()
+    for sets in model.winding_sets:
+        if sets.kind_of_record == "transformer" and len(sets.sides) > 1:
+            for unit, name in enumerate(sets.names):
+                kinds = sets.kind[unit]
+                stars = int((kinds == STAR).sum())
+                if stars > 1 or (stars == 1 and (kinds == DELTA).any()):
+                    out.add(name)
+    return out
+
+
+def _missing_capacitance(
+    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
+) -> Iterator[str]:
+    lines = model.lines
+    bare: dict[int, list[str]] = {}
+    for k, name in enumerate(lines.names):
+        record = case.lines.get(name)
+        if record is None or lines.earthed[k] or lines.shunt[0, k] != 0:
+            continue
+        at = int(lines.nodes[0, k])
+        label = int(model.galvanic[at])
+        if not any(z == 0 for _, z in earthed.get(label, [])):
+            bare.setdefault(label, []).append(name)
+    for label, names in bare.items():
+        v = _phase_voltage(model, label) * np.sqrt(3) / 1000
+        shown = ", ".join(quoted(name) for name in names[:6])
+        more = f" and {len(names) - 6} more" if len(names) > 6 else ""
+        yield (
+            f"line {shown}{more}: no c0 stated, and this {v:.3g} kV network is not solidly earthed:"
+            " the charging current, and what healthy feeders show their relays, is too small"
+        )

@@ -1,0 +1,168 @@
+"""Overhead lines, cables and series reactors, and the coupling of lines in zero sequence."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import networkx as nx
+import numpy as np
+
+from seqfault.case.records import Line, MutualCoupling, SeriesReactor
+from seqfault.equations.transformers import split_by_ratio
+from seqfault.errors import quoted
+from seqfault.model.context import Context
+from seqfault.model.elements import Complex, CoupledLines, Floats, Lines
+
+
+def lines(c: Context, common: int) -> tuple[Lines, int]:
+    """All lines and series reactors in service, and the number of nodes with their open ends.
+
+    An open end is a node of its own, numbered from ``common`` on: its capacitance stays on the line.
+    A line out of service and earthed at both ends stands between earth and earth.
+    """
+    at = c.case.buses
+    every: Mapping[str, Line] = {
+        name: r
+        for name, r in c.case.lines.items()
+        if r.earthed or (not r.out and r.from_ in c.index and r.to in c.index)
+    }
+    kept = {name: r for name, r in every.items() if r.earthed or not {r.from_, r.to} <= set(r.open)}
+    rows = list(kept.values())
+    length = np.array([r.length.value.real if r.length else 1.0 for r in rows])
+    count = np.array([r.count for r in rows], np.int64)
+    earthed = np.array([r.earthed for r in rows], bool)
+    ends = np.array([[c.index.get(r.from_, -1), c.index.get(r.to, -1)] for r in rows], np.int64)
+    ends = ends.reshape(-1, 2).T
+    closed = np.array([[r.from_ not in r.open, r.to not in r.open] for r in rows], bool)
+    closed = closed.reshape(-1, 2).T & ~earthed
+
+    def total(quantities: list[Any]) -> Complex:
+        value = np.array([q.value if q else 0 for q in quantities], complex)
+        scaled = [bool(q) and q.dimension.endswith("/length") for q in quantities]
+        return np.where(scaled, value * length, value)
+
+    z_base = np.array([at[r.from_].voltage.value.real ** 2 / c.power for r in rows], float)
+    z1 = total([r.z1 for r in rows]) / z_base / count
+    z0 = total([r.z0 for r in rows]) / z_base / count
+    b1 = (c.omega * total([r.c1 for r in rows]) + total([r.b1 for r in rows])) * count * z_base
+    b0 = (c.omega * total([r.c0 for r in rows]) + total([r.b0 for r in rows])) * count * z_base
+    for k, (name, r) in enumerate(kept.items()):
+        if r.earthed:
+            continue
+        stated1, stated0 = r.c1 or r.b1, r.c0 or r.b0
+        if stated0 and not stated1:
+            b1[k] = b0[k]
+            c.ledger.note("line", name, "c1 not stated, taken equal to c0")
+        elif not stated0:
+            c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
+    nodes = np.where(ends >= 0, c.node[ends], -1)
+    open_ends = ~closed & ~earthed
+    nodes[open_ends] = common + np.arange(int(open_ends.sum()))
+    nodes[:, earthed] = -1
+    reactors = _reactors(c)
+    m = len(reactors.names)
+    whole = Lines(
+        names=tuple(kept) + reactors.names,
+        kinds=("line",) * len(kept) + reactors.kinds,
+        ends=np.concatenate([ends, reactors.ends], axis=1),
+        nodes=np.concatenate([nodes, reactors.nodes], axis=1),
+        closed=np.concatenate([closed, reactors.closed], axis=1),
+        earthed=np.concatenate([earthed, np.zeros(m, bool)]),
+        series=np.concatenate([np.stack([z0, z1, z1]), reactors.series], axis=1),
+        shunt=np.concatenate([0.5j * np.stack([b0, b1, b1]), reactors.shunt], axis=1),
+        count=np.concatenate([count, reactors.count]),
+        voltage=np.concatenate([np.sqrt(z_base * c.power), reactors.voltage]),
+        coupled=_coupled(c, kept, z0, z_base, length),
+    )
+    return whole, common + int(open_ends.sum())
+
+
+def _reactors(c: Context) -> Lines:
+    records: Mapping[str, SeriesReactor] = c.in_service("series_reactors", lambda r: (r.from_, r.to))
+    m = len(records)
+    ends = np.array([[c.index[r.from_], c.index[r.to]] for r in records.values()], np.int64)
+    ends = ends.reshape(-1, 2).T
+    series = np.zeros((3, m), complex)
+    for k, (name, r) in enumerate(records.items()):
+        base = float(c.base_z[ends[0, k]])
+
+        def per_unit(q: Any, r: SeriesReactor = r, base: float = base) -> complex:
+            value = q.value
+            if q.dimension == "ratio":
+                assert r.rating is not None
+                value = value * c.power / r.rating.value.real
+            else:
+                value = value / base
+            if isinstance(value, complex):
+                return value
+            return complex(1j * value if r.x_over_r is None else split_by_ratio(value, r.x_over_r))
+
+        if r.x_over_r is None and not isinstance(r.impedance.value, complex):
+            c.ledger.note("series reactor", name, "x_over_r not stated, resistance taken as 0")
+        if r.z0 is None:
+            c.ledger.note("series reactor", name, "z0 not stated, taken equal to its impedance")
+        series[1:, k] = per_unit(r.impedance)
+        series[0, k] = per_unit(r.z0 or r.impedance)
+    return Lines(
+        names=tuple(records),
+        kinds=("series reactor",) * m,
+        ends=ends,
+        nodes=c.node[ends],
+        closed=np.ones((2, m), bool),
+        earthed=np.zeros(m, bool),
+        series=series,
+        shunt=np.zeros((3, m), complex),
+        count=np.ones(m, np.int64),
+        voltage=c.nominal[ends[0]],
+        coupled=(),
+    )
+
+
+def _coupled(
+    c: Context, kept: Mapping[str, Line], z0: Complex, z_base: Floats, length: Floats
+) -> tuple[CoupledLines, ...]:
+    """Groups of lines that couplings join, the series block of each inverted once.
+
+    Between lines of different voltages the base impedance is U_a U_b/S. Source: P. M. Anderson,
+    "Analysis of Faulted Power Systems", ch. 5 (mutual impedance of parallel lines).
+    """
+    position = {name: k for k, name in enumerate(kept)}
+    pairs: list[tuple[int, int, complex]] = []
+    for coupling in c.case.mutual_couplings.values():
+        if not coupling.out:
+            pairs += _pairs(coupling, position, z_base, length)
+    graph = nx.Graph((a, b) for a, b, _ in pairs)
+    groups = []
+    for members in nx.connected_components(graph):
+        at = np.array(sorted(members), np.int64)
+        place = {int(k): row for row, k in enumerate(at)}
+        block = np.diag(z0[at])
+        for a, b, z in pairs:
+            if a in place:
+                block[place[a], place[b]] += z
+                block[place[b], place[a]] += z
+        if np.linalg.eigvalsh(block.imag).min() <= 0:
+            names = ", ".join(quoted(name) for name, k in position.items() if k in place)
+            c.complaints.append(
+                f"lines {names}: their mutual couplings are too strong to be possible: the reactances of"
+                " the group are not positive definite; check z0 of the couplings against z0 of the lines"
+            )
+            continue
+        groups.append(CoupledLines(at, np.asarray(np.linalg.inv(block), complex)))
+    return tuple(groups)
+
+
+def _pairs(
+    coupling: MutualCoupling, position: Mapping[str, int], z_base: Floats, length: Floats
+) -> list[tuple[int, int, complex]]:
+    at = [position[name] for name in coupling.lines if name in position]
+    out = []
+    for row, a in enumerate(at):
+        for b in at[:row]:
+            z = complex(coupling.z0.value)
+            if coupling.z0.dimension.endswith("/length"):
+                along = coupling.length.value.real if coupling.length else min(length[a], length[b])
+                z *= float(along)
+            out.append((a, b, z / float(np.sqrt(z_base[a] * z_base[b]))))
+    return out
