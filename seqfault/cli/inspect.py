@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+from typing import TYPE_CHECKING
 
 from seqfault.cli.options import (
     Commands,
@@ -12,6 +13,9 @@ from seqfault.cli.options import (
     read_networks,
     read_states,
 )
+
+if TYPE_CHECKING:
+    from seqfault.faults.network import Network
 
 
 def add(commands: Commands) -> None:
@@ -25,6 +29,11 @@ def add(commands: Commands) -> None:
     )
     add_case(parser)
     parser.add_argument("--places", action="store_true", help="print one place a line, nothing else")
+    parser.add_argument(
+        "--sequence",
+        metavar="PLACE",
+        help="draw the three sequence networks a fault at this bus sees, branch by branch",
+    )
     add_output(parser)
     parser.set_defaults(run=run)
 
@@ -39,6 +48,8 @@ def run(options: argparse.Namespace) -> int:
 
     form = form_wanted(options)
     networks = read_networks(options)
+    if options.sequence is not None:
+        return _sequence(options, networks)
     from seqfault.report.inspect import inspect_page, inspect_rows, inspect_tree
     from seqfault.studies.inspect import inspect_network
 
@@ -54,6 +65,29 @@ def run(options: argparse.Namespace) -> int:
             )
         )
     return deliver(options, form, answers)
+
+
+def _sequence(options: argparse.Namespace, networks: list[Network]) -> int:
+    """The networks drawn, one answer a state."""
+    from functools import partial
+
+    from seqfault.cli.delivery import Answer, deliver, form_wanted
+    from seqfault.report.sequence import sequence_page, sequence_rows, sequence_tree
+    from seqfault.studies.sequence_view import sequence_views
+
+    answers = []
+    for network in networks:
+        views = sequence_views(network, options.sequence)
+        model = network.model
+        answers.append(
+            Answer(
+                partial(sequence_page, views, model.title),
+                partial(sequence_tree, views, model.title, model.sha256),
+                partial(sequence_rows, views),
+                model.warnings,
+            )
+        )
+    return deliver(options, form_wanted(options), answers)
 
 
 def _places(options: argparse.Namespace) -> int:

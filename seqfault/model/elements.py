@@ -82,7 +82,7 @@ class WindingSets(msgspec.Struct, frozen=True, eq=False):
     voltage,
     ``star_ratio`` (m, w) the star point's base over rated voltage; ``sign`` (m, w) zero-sequence
     polarity; ``sense`` (m, w) sense of a delta; ``rated`` (m, w) rated voltage, V; ``magnetised`` (m,)
-    whether the zero-sequence matrix holds a magnetising branch.
+    whether the zero-sequence matrix holds a magnetising branch; ``autos`` names auto-transformers.
     """
 
     kind_of_record: str
@@ -100,6 +100,7 @@ class WindingSets(msgspec.Struct, frozen=True, eq=False):
     rated: Floats
     count: Ints
     magnetised: Bools
+    autos: frozenset[str] = frozenset()
 
 
 class StarPoints(msgspec.Struct, frozen=True, eq=False):

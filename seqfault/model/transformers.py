@@ -126,6 +126,9 @@ def _set(
         rated=rated,
         count=np.array([r.count for r in records.values()], np.int64),
         magnetised=magnetised,
+        autos=frozenset(
+            name for name, r in records.items() if parse_vector_group(r.vector_group).lv == "auto"
+        ),
     )
 
 

@@ -99,6 +99,9 @@ def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
             {"element": d.element, "side": d.side, "bus": d.bus, "current": polar(d.current)}
             for d in s.deltas
         ],
+        "earthed_lines": [
+            {"element": line.name, "residual": polar(line.residual)} for line in s.earthed_lines
+        ],
         "home": [{"path": path.path, "current": polar(path.current)} for path in s.home],
         "notes": list(s.notes),
         "assumptions": [text for a in s.assumptions for text in a.sentences()],
@@ -176,6 +179,8 @@ def fault_rows(solution: FaultSolution) -> Iterator[Quantity]:
         yield row("neutral voltage", "", star.voltage, "V", star.name)
     for delta in s.deltas:
         yield row("current round the delta", "", delta.current, "A", f"{delta.element}@{delta.bus}")
+    for line in s.earthed_lines:
+        yield row("current of an earthed line", "", line.residual, "A", line.name)
     for path in s.home:
         yield row("earth current home", "", path.current, "A", path.path)
 

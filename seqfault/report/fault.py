@@ -58,6 +58,7 @@ def fault_page(
     parts.append(Sentences("", leftover(left_out)))
     parts += _star_points(network, s)
     parts += _deltas(s)
+    parts += _earthed_lines(s)
     if sequence:
         parts.append(components(s))
     parts += [impedances(s), Facts(tuple(_facts(s))), *after([s])]
@@ -166,6 +167,19 @@ def _deltas(s: FaultSolution) -> list[Part]:
             (Group(("ampere",)), Group(("at bus",), left=True)),
             (Block("", (AMPERE, ANGLE), tuple(rows)),),
             heading="Current round the deltas, in the windings",
+        )
+    ]
+
+
+def _earthed_lines(s: FaultSolution) -> list[Part]:
+    rows = tuple(Row(line.name, ((abs(line.residual), angle(line.residual)),)) for line in s.earthed_lines)
+    if not rows:
+        return []
+    return [
+        Table(
+            (Group(("3I0, ampere",)),),
+            (Block("", (AMPERE, ANGLE), rows),),
+            heading="Coupled into lines that are out of service and earthed at both ends",
         )
     ]
 

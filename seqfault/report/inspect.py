@@ -25,19 +25,29 @@ from seqfault.report.tables import (
 from seqfault.studies.inspect import Element, Inspection, Winding
 
 EFFECTS = {
-    ("star", "path"): "a path to earth",
-    ("star", "through"): "hands it on to the other winding",
+    ("star", "path"): "a path to earth through its star point",
     ("star", "open"): "earthed, but nothing balances it: no path",
+    ("auto", "path"): "a path to earth through the common star point",
+    ("zigzag", "path"): "a path to earth that the other windings do not see",
+    ("zigzag", "open"): "open: its star point is joined to nothing",
     ("delta", "circulates"): "circulates inside, none leaves",
     ("delta", "open"): "none flows",
-    ("isolated star", "open"): "none flows",
+    ("isolated star", "open"): "open: its star point is joined to nothing",
 }
 PLURALS = {
     "infeed": "Infeeds",
     "generator": "Generators",
     "motor": "Motors",
     "transformer": "Transformers",
+    "earthing transformer": "Earthing transformers",
     "line": "Lines",
+    "series reactor": "Series reactors",
+}
+DEVICES = {
+    "tie": "Ties",
+    "capacitor": "Capacitor banks",
+    "converter": "Converters",
+    "line": "Lines out of service, earthed",
 }
 
 
@@ -55,6 +65,18 @@ def inspect_page(inspection: Inspection) -> Page:
     parts: list[Part] = [title, _zones(i), Sentences("Buses", _buses(i))]
     if i.elements:
         parts.append(_impedances(i))
+    negative = [e.name for e in i.elements if " of star" in e.name and e.impedance[1].imag < 0]
+    parts.append(
+        Sentences(
+            "Negative branches of a star equivalent (no winding has one; their pairs do not)",
+            tuple(negative),
+        )
+    )
+    if i.couplings:
+        parts.append(_couplings(i))
+    for kind, heading in DEVICES.items():
+        items = tuple(f"{d.name}: {d.text}" for d in i.devices if d.kind == kind)
+        parts.append(Sentences(heading, items))
     if i.windings:
         parts.append(_windings(i.windings))
     if i.stars:
@@ -129,10 +151,23 @@ def _windings(windings: tuple[Winding, ...]) -> Table:
     rows = []
     for w in windings:
         text = EFFECTS.get((w.connection, w.effect), w.effect)
+        if w.effect == "through":
+            text = f"passes zero sequence on to {' and '.join(w.others)}"
         rows.append(Row(f"{w.element} {w.side}".rstrip(), ((w.connection,), (w.bus,), (text,))))
     groups = tuple(Group((name,), left=True) for name in ("winding", "at bus", "zero sequence"))
     block = Block("", (TEXT,), tuple(rows))
     return Table(groups, (block,), heading="What each winding does to zero sequence")
+
+
+def _couplings(i: Inspection) -> Table:
+    rows = tuple(
+        Row(" with ".join(c.lines), (((c.impedance.real, c.impedance.imag)),)) for c in i.couplings
+    )
+    return Table(
+        (Group(("zero sequence", "R, X")),),
+        (Block("", (PER_UNIT, PER_UNIT), rows),),
+        heading="Mutual impedances of coupled lines, per unit",
+    )
 
 
 def _stars(i: Inspection) -> Table:
@@ -140,7 +175,11 @@ def _stars(i: Inspection) -> Table:
     for star in i.stars:
         how = star.kind
         if star.kind == "neutral":
-            how = ohms(star.impedance, 4) if cmath.isfinite(star.impedance) else "out of service"
+            how = "out of service"
+            if cmath.isfinite(star.impedance):
+                ampere = star.voltage / abs(star.impedance) if star.impedance else 0.0
+                passes = f", passes {figures(ampere)} A" if ampere else ""
+                how = f"{ohms(star.impedance, 4)}{passes}"
         rows.append(Row(star.name, ((how,), (", ".join(star.windings),))))
     groups = (Group(("to earth",), left=True), Group(("star point of",), left=True))
     return Table(groups, (Block("", (TEXT,), tuple(rows)),), heading="Star points")
@@ -204,6 +243,8 @@ def inspect_tree(inspection: Inspection) -> dict[str, Any]:
             }
             for s in i.stars
         ],
+        "couplings": [{"lines": list(c.lines), "per_unit": cartesian(c.impedance)} for c in i.couplings],
+        "devices": [{"name": d.name, "kind": d.kind, "text": d.text} for d in i.devices],
         "out": list(i.out),
         "scenarios": [{"name": name, "note": note} for name, note in i.scenarios],
         "assumptions": [text for a in i.assumptions for text in a.sentences()],

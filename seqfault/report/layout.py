@@ -183,7 +183,8 @@ def _row(
 ) -> Iterator[Line]:
     name, room = spell(row.label), frame.label - INDENT
     if cell_len(name) > room:
-        yield from ([(" " * INDENT + text, "")] for text in wrap(name, frame.width - INDENT))
+        lead = INDENT + len(name) - len(name.lstrip())  # a label of a tree keeps its place
+        yield from ([(" " * lead + text, "")] for text in wrap(name.lstrip(), frame.width - lead))
         name = ""
     wrapped = {g: wrap(cells[g][0], frame.columns[g][0]) for g in panel if _is_text(block, cells[g])}
     for k in range(max((len(texts) for texts in wrapped.values()), default=1)):

@@ -10,12 +10,13 @@ import numpy as np
 
 from seqfault.case.records import Case
 from seqfault.equations.per_unit import base_current, base_impedance
+from seqfault.equations.transformers import star_branches
 from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
-from seqfault.model.elements import DELTA, ISOLATED, Complex, Model, WindingSets
+from seqfault.model.elements import DELTA, ISOLATED, STAR, ZIGZAG, Complex, Model, WindingSets
 from seqfault.model.windings import zero_sequence_effect
 
-Connection = Literal["star", "delta", "isolated star"]
+Connection = Literal["star", "delta", "isolated star", "zigzag", "auto"]
 
 
 @dataclass(frozen=True)
@@ -52,24 +53,50 @@ class Element:
 
 @dataclass(frozen=True)
 class Winding:
-    """What one winding does to zero sequence: path, through, circulates or open."""
+    """What one winding does to zero sequence: path, through, circulates or open.
+
+    ``others`` names the sides it hands zero sequence on to.
+    """
 
     element: str
     side: str
     bus: str
     connection: Connection
     effect: str
+    others: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
 class StarPoint:
-    """A star point, the ohms between it and earth (infinite isolated), and who shares it."""
+    """A star point, the ohms between it and earth (infinite isolated), and who shares it.
+
+    ``voltage`` (V) is the phase voltage that stands on it in a bolted earth fault of an otherwise
+    unearthed network.
+    """
 
     name: str
     kind: str
     impedance: complex
     bus: str
     windings: tuple[str, ...]
+    voltage: float
+
+
+@dataclass(frozen=True)
+class Device:
+    """A record that is no impedance of the sequence networks: ``text`` says what it is."""
+
+    name: str
+    kind: str
+    text: str
+
+
+@dataclass(frozen=True)
+class Coupling:
+    """Mutual zero-sequence impedance of two lines, per unit on the common base."""
+
+    lines: tuple[str, str]
+    impedance: complex
 
 
 @dataclass(frozen=True, eq=False)
@@ -86,6 +113,8 @@ class Inspection:
     elements: tuple[Element, ...]
     windings: tuple[Winding, ...]
     stars: tuple[StarPoint, ...]
+    couplings: tuple[Coupling, ...]
+    devices: tuple[Device, ...]
     out: tuple[str, ...]
     scenarios: tuple[tuple[str, str], ...]
     assumptions: tuple[Assumption, ...]
@@ -106,6 +135,8 @@ def inspect_network(network: Network) -> Inspection:
         elements=tuple(_elements(model)),
         windings=tuple(_windings(model)),
         stars=_stars(model),
+        couplings=tuple(_couplings(model)),
+        devices=tuple(_devices(case, model)),
         out=tuple(name for _, name, record in case.records() if record.out),
         scenarios=tuple(_scenarios(case)),
         assumptions=model.assumptions,
@@ -135,13 +166,27 @@ def _zones(model: Model) -> Iterator[Zone]:
 def _elements(model: Model) -> Iterator[Element]:
     lines, buses = model.lines, model.buses
     for k, name in enumerate(lines.names):
+        if lines.earthed[k]:
+            continue
         ends = (buses[lines.ends[0, k]], buses[lines.ends[1, k]])
-        yield Element(name, "line", ends, lines.series[:, k], int(lines.count[k]), 1.0)
+        yield Element(name, lines.kinds[k], ends, lines.series[:, k], int(lines.count[k]), 1.0)
+    zigzag = {
+        name: complex(1 / sets.leakage[0, k, 0, 0])
+        for sets in model.winding_sets
+        if _apart(sets)
+        for k, name in enumerate(sets.names)
+    }
     for sets in reversed(model.winding_sets):
         for k, name in enumerate(sets.names):
+            if _apart(sets):
+                continue
             at = tuple(buses[b] for b in sets.bus[k])
+            if len(at) == 3:
+                yield from _three_windings(sets, k, at)
+                continue
             ratio = float(sets.ratio[k, -1] / sets.ratio[k, 0])
             z = _inverse(sets.leakage[:, k, 0, 0])
+            z[0] = zigzag.get(name, z[0])
             yield Element(name, sets.kind_of_record, at, z, int(sets.count[k]), ratio)
     sources = model.sources
     for k, name in enumerate(sources.names):
@@ -149,26 +194,110 @@ def _elements(model: Model) -> Iterator[Element]:
         yield Element(name, sources.kinds[k], (buses[sources.bus[k]],), z, 1, 1.0)
 
 
+def _apart(sets: WindingSets) -> bool:
+    """Whether ``sets`` is the zero sequence of zigzag windings that stand in another set."""
+    return sets.kind_of_record == "transformer" and len(sets.sides) == 1
+
+
+def _three_windings(sets: WindingSets, k: int, at: tuple[str, ...]) -> Iterator[Element]:
+    """The pairs of windings as short-circuit tests give them, then the branches of their star."""
+    name, count = sets.names[k], int(sets.count[k])
+    pairs = np.full((3, 3), np.inf, complex)
+    stars = np.full((3, 3), np.inf, complex)
+    for s in range(3):
+        if s == 0 and (sets.magnetised[k] or (sets.kind[k] == ZIGZAG).any()):
+            continue
+        z = np.linalg.inv(sets.leakage[s, k, 1:, 1:])
+        pairs[s] = z[0, 0], z[1, 1], z[0, 0] + z[1, 1] - 2 * z[0, 1]
+        stars[s] = star_branches(*(complex(each) for each in pairs[s]))
+    for p, (a, b) in enumerate(((0, 1), (0, 2), (1, 2))):
+        ratio = float(sets.ratio[k, b] / sets.ratio[k, a])
+        label = f"{name} {sets.sides[a]}-{sets.sides[b]}"
+        yield Element(label, "transformer", (at[a], at[b]), pairs[:, p], count, ratio)
+    for w, side in enumerate(sets.sides):
+        yield Element(f"{name} {side} of star", "transformer", (at[w],), stars[:, w], count, 1.0)
+
+
+def _couplings(model: Model) -> Iterator[Coupling]:
+    for group in model.lines.coupled:
+        z = np.linalg.inv(group.admittance)
+        names = [model.lines.names[k] for k in group.line.tolist()]
+        for a in range(len(names)):
+            for b in range(a + 1, len(names)):
+                if abs(z[a, b]) > 1e-12 * abs(z).max():
+                    yield Coupling((names[a], names[b]), complex(z[a, b]))
+
+
+def _devices(case: Case, model: Model) -> Iterator[Device]:
+    for name, tie in case.ties.items():
+        state = "out" if tie.out else "closed: one node" if tie.closed else "open"
+        yield Device(name, "tie", f"{tie.from_} to {tie.to}, {state}")
+    for name, bank in case.capacitors.items():
+        size = bank.power or bank.capacitance
+        if not bank.out and size is not None:
+            yield Device(name, "capacitor", f"at {bank.bus}, {size.text}, {bank.connection}")
+    converters = model.converters
+    for k, name in enumerate(converters.names):
+        bus = int(converters.bus[k])
+        ampere = float(converters.limit[k] * base_current(model.nominal[bus], model.base_power))
+        yield Device(
+            name,
+            "converter",
+            f"at {model.buses[bus]}, feeds {ampere:.3g} A, {np.degrees(converters.angle[k]):.0f} degrees"
+            f" behind its voltage, below {converters.threshold[k]:.2f} of nominal",
+        )
+    for k in np.flatnonzero(model.lines.earthed).tolist():
+        yield Device(model.lines.names[k], "line", "out of service, earthed at both ends")
+
+
 def _inverse(y: Complex) -> Complex:
     return np.asarray(np.divide(1, y, out=np.full(y.shape, np.inf, complex), where=y != 0))
 
 
 def _windings(model: Model) -> Iterator[Winding]:
-    names: dict[int, Connection] = {int(DELTA): "delta", int(ISOLATED): "isolated star"}
+    names: dict[int, Connection] = {
+        int(DELTA): "delta",
+        int(ISOLATED): "isolated star",
+        int(ZIGZAG): "zigzag",
+    }
+    zigzags = {
+        (name, sets.sides[0]): zero_sequence_effect(sets, k, 0)
+        for sets in model.winding_sets
+        if _apart(sets)
+        for k, name in enumerate(sets.names)
+    }
     for sets in reversed(model.winding_sets):
+        if _apart(sets):
+            continue
         for k, name in enumerate(sets.names):
             for w in range(sets.kind.shape[1]):
+                effect = zero_sequence_effect(sets, k, w)
+                connection = names.get(int(sets.kind[k, w]), "star")
+                if effect == "apart":
+                    effect = zigzags[name, sets.sides[w]]
+                elif _auto(sets, k, w):
+                    connection = "auto"
+                carrying = (sets.kind[k] == STAR) & (np.arange(sets.kind.shape[1]) != w)
+                others = [sets.sides[v] for v in np.flatnonzero(carrying).tolist()]
                 yield Winding(
                     name,
                     _side(sets, w),
                     model.buses[sets.bus[k, w]],
-                    names.get(int(sets.kind[k, w]), "star"),
-                    zero_sequence_effect(sets, k, w),
+                    connection,
+                    effect,
+                    tuple(others) if connection in ("star", "auto") else (),
                 )
 
 
+def _auto(sets: WindingSets, k: int, w: int) -> bool:
+    """Whether a winding shares its own unit's star point, as those of an auto-transformer do."""
+    star = int(sets.star[k, w])
+    joint = len(sets.sides) > 1 and w < 2 and star >= 0 and int(sets.star[k, 1 - w]) == star
+    return joint and sets.names[k] in sets.autos
+
+
 def _side(sets: WindingSets, w: int) -> str:
-    return sets.sides[w] if len(sets.sides) > 1 else ""
+    return sets.sides[w]
 
 
 def _stars(model: Model) -> tuple[StarPoint, ...]:
@@ -186,6 +315,7 @@ def _stars(model: Model) -> tuple[StarPoint, ...]:
             complex(stars.impedance[k]),
             model.buses[stars.bus[k]],
             tuple(shared.get(k, ())),
+            float(stars.base[k] / np.sqrt(3)),
         )
         for k, name in enumerate(stars.names)
     )
