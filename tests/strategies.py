@@ -1122,7 +1122,7 @@ class _Sketch:
         even = clock % 2 == 0
         ends = {"hv": (hv, 0), "lv": (lv, clock)}
         choices = ["plain", "zigzag", "three", "three"] + ["limbs"] * even
-        choices += ["auto", "auto", "auto"] * (clock == 0 and buses[hv] > 2 * buses[lv])
+        choices += ["auto", "auto", "auto"] * (clock == 0 and 2 * buses[lv] < buses[hv] <= 12 * buses[lv])
         choice = draw(st.sampled_from(choices))
         if choice == "three" or (choice == "auto" and draw(st.booleans())):
             if third is None:

@@ -53,7 +53,7 @@ def differences(net: PlainNetwork, ours: FaultSolution, theirs: Result) -> list[
             (float(np.abs(i).max()) * net.buses[bus] for (_, bus), i in theirs.flows.items()),
             default=0.0,
         ),
-        1e-2 * ours.nominal,  # ten milliampere
+        1e-2 * max(net.buses.values()),  # ten milliampere at the highest voltage
     )
 
     def current(label: str, a, b, nominal: float) -> None:

@@ -30,13 +30,13 @@ def run(options: argparse.Namespace) -> int:
     form = form_wanted(options)
     networks = read_networks(options)
     from seqfault.report.levels import levels_page, levels_rows, levels_tree
-    from seqfault.studies.levels import levels
+    from seqfault.studies.levels import levels, silent
 
     states = [levels(network) for network in networks]
     answer = Answer(
         partial(levels_page, networks, states),
         partial(levels_tree, networks, states),
         partial(levels_rows, states),
-        [text for network in networks for text in network.model.warnings],
+        [text for network in networks for text in (*network.model.warnings, *silent(network))],
     )
     return deliver(options, form, [answer])

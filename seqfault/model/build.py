@@ -17,7 +17,7 @@ from seqfault.case.records import Case
 from seqfault.errors import CaseError, quoted
 from seqfault.model.coils import ARC_SUPPRESSION, tuned_coils
 from seqfault.model.context import MACHINES, Context, Machine
-from seqfault.model.doubts import doubts
+from seqfault.model.doubts import doubts, lost_earth, unearthed_buses
 from seqfault.model.elements import STAR, Ints, Lines, Model, WindingSets
 from seqfault.model.lines import lines
 from seqfault.model.machines import generators, machine_capacitances, motors
@@ -44,7 +44,12 @@ def build_model(case: Case, machine: Machine = "subtransient") -> Model:
         tuned, c.complaints[:] = tuned_coils(untuned, case.neutrals, c.ledger)
         c = _again(c, case, machine, tuned)
     model = _assemble(c)
-    return replace(model, warnings=(*model.warnings, *doubts(model, case)))
+    found = doubts(model, case)
+    bare = unearthed_buses(model)
+    if bare and case.state != "base":
+        before = _assemble(Context(case_from_tree(case.tree, case.source), machine, coils))
+        found += lost_earth(model, bare, before)
+    return replace(model, warnings=(*model.warnings, *found))
 
 
 def _again(c: Context, case: Case, machine: Machine, coils: Mapping[str, complex]) -> Context:

@@ -126,6 +126,39 @@ def _unearthed(
         )
 
 
+def unearthed_buses(model: Model) -> tuple[str, ...]:
+    """Live buses whose network no star point, earthing transformer or infeed joins to earth."""
+    earthed = _earthing(model)
+    label = model.galvanic[model.node]
+    return tuple(
+        name for k, name in enumerate(model.buses) if model.live[k] and not earthed.get(int(label[k]))
+    )
+
+
+def lost_earth(model: Model, bare: tuple[str, ...], base: Model) -> tuple[str, ...]:
+    """Networks of the ``bare`` buses that are earthed in the ``base`` case and not in this state."""
+    earthed = _earthing(base)
+    charging = earth_susceptance(model, model.galvanic)
+    lost: dict[int, list[str]] = {}
+    for name in bare:
+        k = base.index.get(name)
+        if k is not None and base.live[k] and earthed.get(int(base.galvanic[base.node[k]])):
+            label = int(model.galvanic[model.node[model.index[name]]])
+            lost.setdefault(label, []).append(name)
+    out = []
+    for label, names in lost.items():
+        if charging[label] <= 0:  # bare terminals; wired networks have a warning of their own
+            continue
+        shown = ", ".join(quoted(name) for name in names[:6])
+        more = f" and {len(names) - 6} more" if len(names) > 6 else ""
+        ampere = 3 * charging[label] * _phase_voltage(model, label)
+        out.append(
+            f"bus {shown}{more}: this state takes away what earths the network in the base case; only its"
+            f" capacitance is left ({_round(ampere)} A in an earth fault)"
+        )
+    return tuple(out)
+
+
 def _strong_earth_faults(model: Model) -> Iterator[str]:
     machines = next(s for s in model.winding_sets if s.kind_of_record == "generator")
     for k, name in enumerate(machines.names):

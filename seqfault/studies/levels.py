@@ -9,6 +9,7 @@ import numpy as np
 
 from seqfault.equations.iec60909 import bolted_currents
 from seqfault.equations.per_unit import base_impedance
+from seqfault.errors import quoted
 from seqfault.faults.network import Network
 from seqfault.model.elements import Bools, Complex, Floats
 
@@ -79,6 +80,17 @@ def levels(network: Network) -> Levels:
         k2e=np.maximum(np.abs(currents.k2e_b), np.abs(currents.k2e_c)),
         k2e_earth=np.abs(currents.k2e_earth),
         k1=np.abs(currents.k1),
+    )
+
+
+def silent(network: Network) -> tuple[str, ...]:
+    """A sentence on what a survey of bolted faults leaves out."""
+    names = network.model.converters.names
+    if not names:
+        return ()
+    return (
+        f"converters {', '.join(map(quoted, names))} are left out of this survey; `fault` and `compare`"
+        " settle their current for each fault",
     )
 
 

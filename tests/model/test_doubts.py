@@ -7,6 +7,7 @@ from typing import Any
 import pytest
 
 from seqfault.case.reader import case_from_tree
+from seqfault.case.scenarios import in_state
 from seqfault.errors import CaseError
 from seqfault.model.build import build_model
 from tests.faults.small import PLANT, changed
@@ -101,6 +102,16 @@ SHOWN: list[tuple[str, dict[str, Any], list[str]]] = [
 @pytest.mark.parametrize(("label", "tree", "expected"), SHOWN, ids=[row[0] for row in SHOWN])
 def test_warnings_of_the_trade(label: str, tree: dict[str, Any], expected: list[str]) -> None:
     assert list(build_model(case_from_tree(tree)).warnings) == expected
+
+
+def test_a_state_that_loses_its_earth_says_so() -> None:
+    tree = changed(GOOD, ("scenarios.bare", {"out": ["NER"]}), ("scenarios.same", {"note": "as is"}))
+    case = case_from_tree(tree)
+    assert build_model(in_state(case, "bare")).warnings == (
+        'bus "main", "far": this state takes away what earths the network in the base case; only its'
+        " capacitance is left (7.54 A in an earth fault)",
+    )
+    assert build_model(in_state(case, "same")).warnings == ()
 
 
 COIL = {"kind": "arc-suppression", "detuning": "+5 %", "loss": "2 %"}
