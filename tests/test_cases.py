@@ -205,3 +205,95 @@ def test_ridge_high_resistance_and_no_earth() -> None:
     assert abs(home(fault("ridge", "tollmere-gen"))["NR-T"]) == pytest.approx(driven, rel=5e-3)
     assert size("ridge", "eskerby-20") == 0
     assert factor("ridge", "eskerby-20") == pytest.approx(sqrt(3))
+
+
+def flows(solution: FaultSolution) -> dict[tuple[str, str], complex]:
+    """Earth current (3I0) into each terminal by element and bus, A."""
+    ends = zip(solution.terminals.element, solution.terminals.bus, strict=True)
+    return dict(zip(ends, solution.terminals.residual.tolist(), strict=True))
+
+
+def test_moor_coil_leaves_its_loss_and_its_detuning() -> None:
+    overhead, cables, town = (14 + 12 + 9 + 7) * 4.9e-9, 2 * 6.5 * 0.24e-6, (3.2 + 5.4) * 0.24e-6
+    ampere_a_farad = sqrt(3) * 20e3 * 2 * pi * 50
+    capacitive = ampere_a_farad * (overhead + cables)
+    assert capacitive == pytest.approx(36.2, abs=0.05)
+    left = capacitive * float(np.hypot(0.05, 1.05 * 0.025))
+    for bus in ("moor-a", "tarn", "hollin", "hamlet", "cairn"):
+        solution = fault("moor", bus)
+        assert abs(charging(solution)) == pytest.approx(capacitive, rel=5e-3)
+        coil = 1.05 * capacitive * float(np.hypot(1, 0.025))
+        assert abs(home(solution)["PC"]) == pytest.approx(coil, rel=5e-3)
+        assert abs(solution.residual) == pytest.approx(left, rel=0.02)
+        assert abs(solution.residual) == pytest.approx(2.0, abs=0.05)
+        assert factor("moor", bus) == pytest.approx(sqrt(3), rel=2e-3)
+    # The scenario does not retune: what the town's cables draw is not compensated.
+    tied = capacitive * (1 - 1.05) + ampere_a_farad * town
+    assert size("moor", "tarn", "line-ground", "tied") == pytest.approx(21, abs=0.2)
+    assert size("moor", "moor-b", "line-ground", "tied") == pytest.approx(tied, rel=0.02)
+    # 20 kV across 190 ohm at phase voltage, beside the loss of the coil itself.
+    resistive = 20e3 / sqrt(3) / 190 + 1.05 * 0.025 * capacitive
+    assert size("moor", "moor-a", "line-ground", "resistor") == pytest.approx(resistive, rel=0.01)
+    assert 58 < size("moor", "tarn", "line-ground", "resistor") < 62
+    assert size("moor", "moor-a", "line-ground", "coil-out") == pytest.approx(capacitive, rel=5e-3)
+
+
+def test_moor_tie_and_open_end() -> None:
+    tied = fault("moor", "tarn", "line-ground", "tied")
+    through = flows(tied)
+    town = sqrt(3) * 20e3 * 2 * pi * 50 * (3.2 + 5.4) * 0.24e-6
+    assert abs(through[("coupler", "moor-a")]) == pytest.approx(town, rel=0.05)
+    assert through[("coupler", "moor-b")] == pytest.approx(-through[("coupler", "moor-a")], rel=1e-9)
+    ring = flows(fault("moor", "moor-a"))
+    assert ring[("hollin-tarn", "tarn")] == 0
+    open_line = sqrt(3) * 20e3 * 2 * pi * 50 * 9 * 4.9e-9
+    assert abs(ring[("hollin-tarn", "hollin")]) == pytest.approx(open_line, rel=0.01)
+
+
+def test_moor_zigzag_windings() -> None:
+    board = fault("moor", "moor-b")
+    assert abs(board.residual) == pytest.approx(330, abs=1)
+    assert abs(flows(board)[("ET", "moor-b")]) == pytest.approx(abs(home(board)["NR-B"]), rel=1e-9)
+    assert flows(board)[("T2", "moor-b")] == pytest.approx(0, abs=1e-6)
+    hamlet = fault("moor", "hamlet-lv")
+    assert size("moor", "hamlet-lv") > 1.3 * size("moor", "hamlet-lv", "three-phase")
+    # 0.5+j0.4 % of 160 kVA at 0.4 kV, whose base is 1 ohm.
+    assert hamlet.impedance[0] == pytest.approx(0.005 + 0.004j, rel=1e-9)
+    assert abs(flows(hamlet)[("T-hamlet", "hamlet")]) < 1e-6
+
+
+def test_moor_coupled_lines() -> None:
+    own, mutual = 22 * (0.30 + 1.24j), 18 * (0.17 + 0.74j)
+    earthed = fault("moor", "moor-110", "line-ground", "tower-2-earthed")
+    opened = fault("moor", "moor-110", "line-ground", "tower-2-open")
+    assert abs(earthed.residual) == pytest.approx(2970, abs=5)
+    assert abs(opened.residual) == pytest.approx(2745, abs=5)
+    (induced,) = (line.residual for line in earthed.earthed_lines if line.name == "tower-2")
+    # The currents of tower-1 at its two ends differ by its charging alone.
+    through = flows(earthed)[("tower-1", "gate-110")]
+    assert induced / through == pytest.approx(-mutual / own, rel=2e-3)
+    assert 0.45 < abs(induced / through) < 0.5
+    assert flows(opened)[("tower-2", "moor-110")] == 0
+    # Of the loop over tower-1 the earthed circuit takes off Zm²/Z0; T2 and the station lie beside it.
+    less = (opened.impedance[0] - earthed.impedance[0]).imag
+    assert 0.7 * (mutual**2 / own).imag < less < (mutual**2 / own).imag
+
+
+def test_moor_star_points_at_110_kv() -> None:
+    paths = home(fault("moor", "moor-110"))
+    assert abs(paths["T2.hv"]) == pytest.approx(328, abs=1)
+    assert abs(paths["AT.hv"]) > abs(paths["grid"]) > abs(paths["T2.hv"])
+    assert "T1.hv" not in paths
+
+
+def test_moor_turbines_feed_their_limit_nearby_only() -> None:
+    limit = 1.1 * 9.2e6 / (sqrt(3) * 20e3)
+    assert limit == pytest.approx(292, abs=0.5)
+    near, far = fault("moor", "cairn", "three-phase"), fault("moor", "hamlet", "three-phase")
+    at = near.terminals.element.index("turbines")
+    assert abs(near.terminals.sequence[1, at]) == pytest.approx(limit, rel=1e-9)
+    assert far.terminals.sequence[1, far.terminals.element.index("turbines")] == 0
+    more = size("moor", "cairn", "three-phase") - size("moor", "cairn", "three-phase", "calm")
+    assert 0.9 * limit < more < limit
+    assert any('"turbines" feeds its limit' in note for note in near.notes)
+    assert any('"turbines" stays silent' in note for note in far.notes)

@@ -37,7 +37,9 @@ class Ledger:
 
     def note(self, record: str, name: str, text: str) -> None:
         """``record`` in the singular, ``text`` the value and why."""
-        self._names.setdefault((record, text), []).append(name)
+        names = self._names.setdefault((record, text), [])
+        if name not in names[-1:]:  # one record is read in one go
+            names.append(name)
 
     def entries(self) -> tuple[Assumption, ...]:
         """All of them."""

@@ -68,6 +68,17 @@ def x_over_r(solution: FaultSolution) -> float | str:
     return ratio if ratio >= 0 else "capacitive"
 
 
+def _notes(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
+    """Notes once each; one that not every kind of fault has says which it is of."""
+    kinds: dict[str, list[str]] = {}
+    for s in solutions:
+        for text in s.notes:
+            kinds.setdefault(text, []).append(s.fault.kind.name)
+    return tuple(
+        text if len(of) == len(solutions) else f"{', '.join(of)}: {text}" for text, of in kinds.items()
+    )
+
+
 def _undefined(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
     names = once(
         quoted(bus) for s in solutions for bus, loose in zip(s.buses, s.undefined, strict=True) if loose
@@ -83,7 +94,7 @@ def _undefined(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
 
 def after(solutions: Sequence[FaultSolution]) -> tuple[Sentences, ...]:
     """Notes, undefined potentials, assumptions and the caution, each once."""
-    notes = once(text for s in solutions for text in s.notes) + _undefined(solutions)
+    notes = _notes(solutions) + _undefined(solutions)
     assumed = once(str(a) for s in solutions for a in s.assumptions)
     return (
         Sentences("Note", notes),
