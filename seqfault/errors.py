@@ -60,7 +60,21 @@ class CheckError(SeqfaultError):
     """A computed answer did not pass its own check and is withheld."""
 
 
-def quoted(name: str) -> str:
-    """``name`` in double quotes on one line, control characters and quotes escaped."""
-    body = name.replace("\\", "\\\\").replace('"', '\\"')
-    return '"' + "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in body) + '"'
+_ESCAPES = {'"': '\\"', "\\": "\\\\", "\n": "\\n", "\r": "\\r", "\t": "\\t"}
+
+
+def quoted(text: str, limit: int = 250) -> str:
+    """Return ``text`` in double quotes, on one line, unprintable characters escaped."""
+    if len(text) > limit:
+        text = text[: limit - 1] + "…"
+    if text.isprintable() and '"' not in text and "\\" not in text:
+        return f'"{text}"'
+    return '"' + "".join(map(_escaped, text)) + '"'
+
+
+def _escaped(char: str) -> str:
+    if char in _ESCAPES:
+        return _ESCAPES[char]
+    if char.isprintable():
+        return char
+    return f"\\u{ord(char):04x}" if ord(char) < 0x10000 else f"\\U{ord(char):08x}"

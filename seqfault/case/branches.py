@@ -8,7 +8,8 @@ from seqfault.case.quantities import Quantity
 from seqfault.case.records import Bus, Line, SeriesReactor, Tie
 from seqfault.case.subject import Subject, real, said
 from seqfault.case.units import normalised
-from seqfault.case.wording import amount, digits, quoted
+from seqfault.case.wording import amount, digits
+from seqfault.errors import quoted
 
 # Common practice, overhead lines and cables of all voltages.
 _OHM_PER_KM = (0.005, 5.0)

@@ -23,8 +23,7 @@ from seqfault.case.sources import check_generator, check_infeed, check_motor
 from seqfault.case.subject import Site, Subject, real
 from seqfault.case.transformers import check_parallel, check_transformer
 from seqfault.case.units import normalised
-from seqfault.case.wording import quoted
-from seqfault.errors import QuantityError
+from seqfault.errors import QuantityError, quoted
 
 RESERVED = ("base", "all")
 _PREFAULT = (0.8, 1.2)

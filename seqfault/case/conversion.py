@@ -9,8 +9,8 @@ import msgspec
 
 from seqfault.case.fields import Field, fields_of, needed, wanted_by
 from seqfault.case.synonyms import field_for, is_later_field, unknown_field
-from seqfault.case.wording import keyed, quoted, shown
-from seqfault.errors import FieldError
+from seqfault.case.wording import keyed, shown
+from seqfault.errors import FieldError, quoted
 
 Complain = Callable[[str, str], None]  # field, problem
 AnyStruct = TypeVar("AnyStruct", bound=msgspec.Struct)

@@ -7,7 +7,8 @@ from itertools import combinations
 
 from seqfault.case.records import Line, MutualCoupling
 from seqfault.case.subject import Site, Subject, real, said
-from seqfault.case.wording import amount, digits, keyed, quoted
+from seqfault.case.wording import amount, digits, keyed
+from seqfault.errors import quoted
 
 _ROUNDING = 1 + 1e-9
 

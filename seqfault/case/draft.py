@@ -13,8 +13,8 @@ from seqfault.case.quantities import Dimensions, missing_unit, read_quantity, wa
 from seqfault.case.records import TABLES, Bus, Case, Prefault, Record
 from seqfault.case.synonyms import LATER_TABLES, table_for
 from seqfault.case.values import proper_text
-from seqfault.case.wording import quoted, shown
-from seqfault.errors import FieldError
+from seqfault.case.wording import shown
+from seqfault.errors import FieldError, quoted
 
 _BASE_POWER = 100e6  # VA, where the file states none
 _KEYS = (*TOP_LEVEL, "prefault", *TABLES, "scenarios")

@@ -5,7 +5,8 @@ from __future__ import annotations
 from seqfault.case.records import Case, EarthingTransformer, Neutral
 from seqfault.case.subject import ROOT3, Subject, real, said, voltage_cure
 from seqfault.case.transformers import windings
-from seqfault.case.wording import amount, quoted
+from seqfault.case.wording import amount
+from seqfault.errors import quoted
 
 _LET_THROUGH = (0.05, 20e3)  # A, common practice
 

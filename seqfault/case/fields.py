@@ -13,8 +13,8 @@ import msgspec
 from seqfault.case.quantities import Dimensions, Refers, wanted
 from seqfault.case.units import EXAMPLES
 from seqfault.case.values import Convert, converter, either, proper_text
-from seqfault.case.wording import listed, quoted
-from seqfault.errors import FieldError
+from seqfault.case.wording import listed
+from seqfault.errors import FieldError, quoted
 
 
 @dataclass(frozen=True, slots=True)

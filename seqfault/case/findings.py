@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from typing import Any
 
-from seqfault.case.wording import quoted
+from seqfault.errors import quoted
 
 SINGULAR = {
     "buses": "bus",

@@ -16,8 +16,8 @@ from typing import NoReturn
 import msgspec
 
 from seqfault.case.units import COMMON, EXAMPLES, KINDS, UNITS, normalised, respelt
-from seqfault.case.wording import listed, quoted
-from seqfault.errors import QuantityError
+from seqfault.case.wording import listed
+from seqfault.errors import QuantityError, quoted
 
 # Far beyond any quantity of the trade; squares and products of a few of them stay finite and not 0.
 LARGEST = 1e40

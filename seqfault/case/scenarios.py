@@ -16,8 +16,8 @@ from seqfault.case.draft import Draft, draft
 from seqfault.case.findings import Findings, one_of
 from seqfault.case.records import TABLES, Case
 from seqfault.case.synonyms import LATER_TABLES
-from seqfault.case.wording import Spelling, listed, quoted, shown
-from seqfault.errors import CaseError, RequestError
+from seqfault.case.wording import Spelling, listed, shown
+from seqfault.errors import CaseError, RequestError, quoted
 
 _SWITCHING = ("in", "out", "open", "close")
 _KEYS = ("note", *_SWITCHING, "title", "frequency", "base_power", "prefault", *TABLES)

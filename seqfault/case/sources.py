@@ -5,7 +5,8 @@ from __future__ import annotations
 from seqfault.case.quantities import Quantity
 from seqfault.case.records import Generator, Infeed, Motor
 from seqfault.case.subject import ROOT3, Subject, real, said
-from seqfault.case.wording import amount, digits, quoted
+from seqfault.case.wording import amount, digits
+from seqfault.errors import quoted
 
 _FAULT_CURRENT = (10.0, 100e3)  # A, common practice
 _SUBTRANSIENT = (0.03, 0.80)

@@ -10,7 +10,8 @@ from seqfault.case.findings import SINGULAR, Findings, one_of
 from seqfault.case.quantities import Quantity, Refers
 from seqfault.case.records import Bus, Line
 from seqfault.case.units import normalised
-from seqfault.case.wording import Spelling, quoted
+from seqfault.case.wording import Spelling
+from seqfault.errors import quoted
 
 ROOT3 = math.sqrt(3)
 _LARGEST_X_OVER_R = 200

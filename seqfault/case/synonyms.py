@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Collection
 
-from seqfault.case.wording import Spelling, quoted
+from seqfault.case.wording import Spelling
+from seqfault.errors import quoted
 
 _TABLES = {
     "buses": "bus busbar busbars node nodes switchboard switchboards board boards",

@@ -10,8 +10,8 @@ import tomllib
 from collections.abc import Mapping
 from typing import Any
 
-from seqfault.case.wording import Spelling, quoted
-from seqfault.errors import CaseError, RequestError
+from seqfault.case.wording import Spelling
+from seqfault.errors import CaseError, RequestError, quoted
 
 _AT = re.compile(r" \(at (?:line (\d+), column (\d+)|end of document)\)$")
 _UTF16 = (b"\xff\xfe", b"\xfe\xff")

@@ -7,9 +7,9 @@ from seqfault.case.quantities import Quantity
 from seqfault.case.records import Pairs, Transformer, Winding
 from seqfault.case.subject import Site, Subject, real, said
 from seqfault.case.vector_group import Connection, VectorGroup, parse_vector_group
-from seqfault.case.wording import digits, quoted
+from seqfault.case.wording import digits
 from seqfault.case.zero_sequence import check_zero_sequence
-from seqfault.errors import FieldError
+from seqfault.errors import FieldError, quoted
 
 # Common practice for units that share a load by their ratings.
 _RATIOS, _IMPEDANCES = 0.005, 0.10

@@ -14,8 +14,8 @@ from seqfault.case.quantities import (
     read_quantity,
     wanted,
 )
-from seqfault.case.wording import listed, quoted, shown
-from seqfault.errors import FieldError
+from seqfault.case.wording import listed, shown
+from seqfault.errors import FieldError, quoted
 
 Convert = Callable[[object], object]
 

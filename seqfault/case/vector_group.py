@@ -8,8 +8,7 @@ from typing import Literal, NoReturn
 
 import msgspec
 
-from seqfault.case.wording import quoted
-from seqfault.errors import FieldError
+from seqfault.errors import FieldError, quoted
 
 Connection = Literal["star", "delta", "zigzag", "auto"]
 

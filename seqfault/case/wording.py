@@ -6,27 +6,11 @@ import difflib
 import re
 from collections.abc import Collection, Iterable
 
-_ESCAPES = {'"': '\\"', "\\": "\\\\", "\n": "\\n", "\r": "\\r", "\t": "\\t"}
+from seqfault.errors import quoted
+
 # Comparing letter by letter is slow: beyond these counts only case is forgiven.
 _MOST_CHOICES, _MOST_GUESSES = 2000, 50
 _FEW = 6
-
-
-def quoted(text: str, limit: int = 250) -> str:
-    """Return ``text`` in double quotes, on one line, unprintable characters escaped."""
-    if len(text) > limit:
-        text = text[: limit - 1] + "…"
-    if text.isprintable() and '"' not in text and "\\" not in text:
-        return f'"{text}"'
-    return '"' + "".join(map(_escaped, text)) + '"'
-
-
-def _escaped(char: str) -> str:
-    if char in _ESCAPES:
-        return _ESCAPES[char]
-    if char.isprintable():
-        return char
-    return f"\\u{ord(char):04x}" if ord(char) < 0x10000 else f"\\U{ord(char):08x}"
 
 
 def keyed(name: str) -> str:

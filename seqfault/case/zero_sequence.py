@@ -7,7 +7,8 @@ from seqfault.case.quantities import Quantity
 from seqfault.case.records import Pairs, Transformer, ZeroTests
 from seqfault.case.subject import Subject, said
 from seqfault.case.vector_group import VectorGroup
-from seqfault.case.wording import digits, quoted
+from seqfault.case.wording import digits
+from seqfault.errors import quoted
 
 
 def check_zero_sequence(subject: Subject, unit: Transformer, group: VectorGroup | None) -> None:
