@@ -67,6 +67,10 @@ def _unit(sets: WindingSets, inc: Incidence, unit: int, sequence: int, stars: _S
     own = (sets.names[unit],)
     if (apart & ~series)[active].any() and len(active) > 1:
         out.mesh(*_nodal(matrix, node[active], inc.weight[unit][active]), own, "mesh")
+        for w in np.flatnonzero(series).tolist():  # in a mesh its star point is a node like the others
+            if stars.device[star[w]] != 0:
+                z = 1 / stars.device[star[w]]
+                out.add((int(node[w, 1]), 1.0), EARTH, z, (stars.names[star[w]],), "3Zn")
         return
     ends = [(int(node[w, 0]), float(inc.weight[unit, w, 0])) for w in active]
     if len(active) == 1:

@@ -70,4 +70,5 @@ def test_drawn_networks_reduce_to_what_was_solved(net: PlainNetwork, data: st.Da
     for view in sequence_views(network, place):
         if not np.isfinite(view.thevenin) or not network.model.live[network.model.index[place]]:
             continue
-        assert reduced(view) == pytest.approx(view.thevenin, rel=1e-7)
+        # a charging impedance of gigaohms behind ohms keeps seven digits in this elimination
+        assert reduced(view) == pytest.approx(view.thevenin, rel=1e-5)
