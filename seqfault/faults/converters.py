@@ -4,6 +4,9 @@ A converter that sees its positive-sequence voltage fall below its threshold fee
 a set angle behind that voltage (common practice of grid codes: reactive current in a voltage dip; IEC
 60909-0:2016 clause 6.9 has the same source of constant current). Above the threshold it is silent: what
 it fed before the fault is no part of a flat profile.
+
+Where nothing but its own current makes its voltage, as at a bolted fault between it and all other sources,
+no current stands at that angle: the phase it follows is then held as it was before the fault.
 """
 
 from __future__ import annotations
@@ -41,13 +44,14 @@ def settle(converters: Converters, live: Bools, respond: Callable[[Complex], Com
     seen: list[tuple[bool, ...]] = []
     current = np.zeros(m, complex)
     hunting = np.zeros(m, bool)
+    held = np.zeros(m, bool)
     while True:
-        current = _iterate(converters, acting, current, respond)
+        current, held = _iterate(converters, acting, current, held, respond)
         voltage = np.abs(respond(current))
         wanted = (voltage < converters.threshold) & live
         wanted |= hunting & acting
         if (wanted == acting).all():
-            return Settled(current, _notes(converters, live, acting, hunting, voltage))
+            return Settled(current, _notes(converters, live, acting, hunting, held, voltage))
         seen.append(tuple(acting.tolist()))
         if tuple(wanted.tolist()) in seen:  # on it rises above its threshold, off it falls below
             hunting |= wanted != acting
@@ -67,24 +71,39 @@ def with_converters(model: Model, current: Complex, clock: Ints, terminals: Term
 
 
 def _iterate(
-    converters: Converters, acting: Bools, start: Complex, respond: Callable[[Complex], Complex]
-) -> Complex:
+    converters: Converters,
+    acting: Bools,
+    start: Complex,
+    held: Bools,
+    respond: Callable[[Complex], Complex],
+) -> tuple[Complex, Bools]:
+    """Currents (m,) of the ``acting`` converters, and which of them have their phase ``held``.
+
+    Steps that do not settle hold the phase of those that still move, and begin again.
+    """
     size = np.where(acting, converters.limit, 0.0)
     turn = np.exp(-1j * converters.angle)
-    current = np.where(acting, start, 0)
-    step, last = 1.0, np.inf
-    for _ in range(LIMIT):
-        voltage = respond(current)
-        magnitude = np.abs(voltage)
-        direction = np.where(magnitude > 1e-9, voltage / np.where(magnitude > 1e-9, magnitude, 1), 1)
-        target = size * turn * direction
-        miss = float(np.abs(target - current).max(initial=0.0))
-        if miss <= SETTLED * max(float(size.max(initial=0.0)), 1e-300) or not size.any():
-            return np.asarray(target)
-        if miss > 0.9 * last:
-            step = max(step / 2, 0.05)
-        last = miss
-        current = current + step * (target - current)
+    while True:
+        current = np.where(acting, start, 0)
+        step, last = 1.0, np.inf
+        for _ in range(LIMIT):
+            voltage = respond(current)
+            magnitude = np.abs(voltage)
+            follows = (magnitude > 1e-9) & ~held
+            direction = np.where(follows, voltage / np.where(follows, magnitude, 1), 1)
+            target = size * turn * direction
+            misses = np.abs(target - current)
+            miss = float(misses.max(initial=0.0))
+            if miss <= SETTLED * max(float(size.max(initial=0.0)), 1e-300) or not size.any():
+                return np.asarray(target), held
+            if miss > 0.9 * last:
+                step = max(step / 2, 0.05)
+            last = miss
+            current = current + step * (target - current)
+        moving = (misses > 1e-6 * size) & acting & ~held
+        if not moving.any():
+            break
+        held = held | moving
     raise NoAnswerError(
         f"the converters {', '.join(map(quoted, converters.names))} find no steady state in this fault"
         f" ({LIMIT} steps, {miss:.2g} per unit left): the network is too weak for their current at this"
@@ -93,7 +112,7 @@ def _iterate(
 
 
 def _notes(
-    converters: Converters, live: Bools, acting: Bools, hunting: Bools, voltage: Complex
+    converters: Converters, live: Bools, acting: Bools, hunting: Bools, held: Bools, voltage: Complex
 ) -> tuple[str, ...]:
     out = []
     for k, name in enumerate(converters.names):
@@ -103,6 +122,11 @@ def _notes(
             out.append(
                 f"converter {quoted(name)} stands at its threshold ({converters.threshold[k]:.2f} of"
                 " nominal): silent it sees less, feeding it sees more; taken as feeding its limit"
+            )
+        elif acting[k] and held[k]:
+            out.append(
+                f"converter {quoted(name)} feeds its limit at {voltage[k]:.2f} of nominal"
+                " positive-sequence voltage, which is its own alone: its phase is held as before the fault"
             )
         elif acting[k]:
             out.append(

@@ -6,7 +6,6 @@ nowhere else.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -36,27 +35,40 @@ def build_model(case: Case, machine: Machine = "subtransient") -> Model:
     Raises ``CaseError`` where vector groups do not close a loop, a reactance that is needed is not
     stated, or a coil has nothing to be tuned to.
     """
-    coils = {n: complex(np.inf) for n, r in case.neutrals.items() if r.kind == ARC_SUPPRESSION}
+    base = case if case.state == "base" else case_from_tree(case.tree, case.source)
+    coils, noted, complaints = _coils(base, case, machine)
     c = Context(case, machine, coils)
-    if coils:
-        base = case if case.state == "base" else case_from_tree(case.tree, case.source)
-        untuned = _assemble(Context(base, machine, coils))
-        tuned, c.complaints[:] = tuned_coils(untuned, case.neutrals, c.ledger)
-        c = _again(c, case, machine, tuned)
+    c.complaints += complaints
+    for name, text in noted:
+        c.ledger.note("neutral", name, text)
     model = _assemble(c)
     found = doubts(model, case)
-    bare = unearthed_buses(model)
-    if bare and case.state != "base":
-        before = _assemble(Context(case_from_tree(case.tree, case.source), machine, coils))
-        found += lost_earth(model, bare, before)
+    bare = unearthed_buses(model) if base is not case else ()
+    if bare:
+        whole = _assemble(Context(base, machine, _coils(base, base, machine)[0]))
+        found += lost_earth(model, bare, whole)
     return replace(model, warnings=(*model.warnings, *found))
 
 
-def _again(c: Context, case: Case, machine: Machine, coils: Mapping[str, complex]) -> Context:
-    """A fresh context with the coils as tuned, and what was noted on the way."""
-    out = Context(case, machine, coils)
-    out.ledger, out.complaints = c.ledger, c.complaints
-    return out
+def _coils(
+    base: Case, case: Case, machine: Machine
+) -> tuple[dict[str, complex], list[tuple[str, str]], list[str]]:
+    """Ohm of the arc-suppression coils of ``case``, tuned in ``base``; what was assumed; complaints."""
+    named = {n: r for n, r in base.neutrals.items() if r.kind == ARC_SUPPRESSION}
+    here = {n for n, r in case.neutrals.items() if r.kind == ARC_SUPPRESSION}
+    if not named and not here:
+        return {}, [], []
+    untuned = _assemble(Context(base, machine, dict.fromkeys(named, complex(np.inf))))
+    states = {n: case.neutrals[n] for n in named if n in here}
+    coils, noted, complaints = tuned_coils(untuned, named, states)
+    for name in here:
+        if name not in named:
+            complaints.append(
+                f"neutral {quoted(name)}, kind: this coil is not in the base case, which coils are tuned to"
+            )
+        if name not in named or case.neutrals[name].out:
+            coils[name] = complex(np.inf)
+    return coils, noted, complaints
 
 
 def _assemble(c: Context) -> Model:

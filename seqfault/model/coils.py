@@ -9,7 +9,6 @@ import numpy as np
 from seqfault.case.records import Neutral
 from seqfault.equations.earthing import parallel, resistor_of_current
 from seqfault.errors import quoted
-from seqfault.model.assumptions import Ledger
 from seqfault.model.elements import Ints, Model
 
 ARC_SUPPRESSION = "arc-suppression"
@@ -45,19 +44,21 @@ def fixed_impedances(neutrals: Mapping[str, Neutral]) -> dict[str, complex]:
 
 
 def tuned_coils(
-    base: Model, neutrals: Mapping[str, Neutral], ledger: Ledger
-) -> tuple[dict[str, complex], list[str]]:
-    """Ohm of the arc-suppression coils, and complaints.
+    base: Model, coils: Mapping[str, Neutral], states: Mapping[str, Neutral]
+) -> tuple[dict[str, complex], list[tuple[str, str]], list[str]]:
+    """Ohm of the arc-suppression ``coils``, what was assumed of each, and complaints.
+
+    ``coils`` as in the base case, ``states`` as the state asked for has them (loss, resistance).
 
     ``base`` is the base case with these coils open: a coil passes (1 + detuning) times the capacitive
     earth-fault current of the network its star points belong to, X = 1/(3 ω C0 (1 + d)), beside a
     resistance of X over its ``loss``. Source: IEC 60909-3 and IEC 60076-6 (earthing reactors),
     formulas from memory. Several coils of one network share its current equally.
     """
-    coils = {name: r for name, r in neutrals.items() if r.kind == ARC_SUPPRESSION}
     susceptance = earth_susceptance(base, base.wired)
     home = {name: _networks(base, name) for name in coils if name in base.stars.names}
     out = {name: complex(np.inf) for name in coils}
+    noted: list[tuple[str, str]] = []
     complaints = []
     for name, record in coils.items():
         if record.out:
@@ -80,17 +81,18 @@ def tuned_coils(
             )
             continue
         if most > 1:
-            ledger.note("neutral", name, f"shares the charging current equally with {most - 1} more")
+            noted.append((name, f"shares the charging current equally with {most - 1} more"))
+        record = states.get(name, record)
         assert record.detuning is not None
         y = b * (1 + record.detuning.value.real)
         loss = record.loss.value.real if record.loss else 0.0
         if record.loss is None:
-            ledger.note("neutral", name, "loss not stated, taken as 0")
+            noted.append((name, "loss not stated, taken as 0"))
         admittance = y * (loss - 1j)
         if record.parallel_resistance is not None:
             admittance += 1 / record.parallel_resistance.value.real
         out[name] = complex(1 / admittance)
-    return out, complaints
+    return out, noted, complaints
 
 
 def _networks(model: Model, neutral: str) -> set[int]:

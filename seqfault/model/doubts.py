@@ -21,7 +21,7 @@ def doubts(model: Model, case: Case) -> tuple[str, ...]:
     charging = earth_susceptance(model, model.galvanic)
     return (
         *_small_resistors(model, case, charging),
-        *_parallel_neutrals(model, earthed),
+        *_parallel_neutrals(model, case, earthed),
         *_unearthed(model, earthed, charging),
         *_strong_earth_faults(model),
         *_assumed_zero_sequence(model),
@@ -88,9 +88,11 @@ def _small_resistors(model: Model, case: Case, charging: Mapping[int, float]) ->
             )
 
 
-def _parallel_neutrals(model: Model, earthed: Mapping[int, list[tuple[str, complex]]]) -> Iterator[str]:
+def _parallel_neutrals(
+    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
+) -> Iterator[str]:
     for label, ways in earthed.items():
-        impeded = [(name, z) for name, z in ways if z != 0]
+        impeded = [(n, z) for n, z in ways if z != 0 and case.neutrals[n].kind != ARC_SUPPRESSION]
         if len(impeded) < 2:
             continue
         v = _phase_voltage(model, label)

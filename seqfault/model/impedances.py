@@ -73,6 +73,17 @@ def zero_leakage(c: Context, name: str, r: Transformer, sides: tuple[Side, ...])
 
     A zigzag winding's own ``z0`` is not of this matrix (see ``zigzag_impedance``).
     """
+    if len(sides) == 3 and r.z0_magnetising is not None:
+        c.complaints.append(
+            f"transformer {quoted(name)}, z0_magnetising: it goes with two windings; of three state z0 of"
+            " the pairs, or zero_tests with a delta tv"
+        )
+    if r.zero_tests is not None and len(sides) == 3 and sides[2].connection != "delta":
+        c.complaints.append(
+            f"transformer {quoted(name)}, zero_tests: with three windings they need a delta tv, which is"
+            " closed in the tests; state z0 of the pairs"
+        )
+        return np.eye(3, dtype=complex), False
     if r.zero_tests is not None:
         return _from_tests(c, name, r, r.zero_tests, len(sides)), True
     zigzag = any(side.connection == "zigzag" for side in sides)

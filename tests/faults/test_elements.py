@@ -274,3 +274,36 @@ def test_a_converter_does_not_keep_a_part_alive():
     solution = network(tree).fault("C", "line-ground")
     assert np.all(solution.current == 0)
     assert 'converter "PV" stays silent: its bus has no other source' in solution.notes
+
+
+TWO_COILS = changed(
+    COIL,
+    ("earthing_transformers.ET2", {"bus": "A", "z0": "j2 ohm", "neutral": "second"}),
+    ("neutrals.second", {"kind": "arc-suppression", "detuning": "+5 %", "loss": "2 %"}),
+)
+
+
+def test_taking_one_of_two_coils_out_leaves_the_other_as_it_was_tuned():
+    from seqfault.case.reader import case_from_tree
+    from seqfault.faults.network import Network
+
+    case = case_from_tree(changed(TWO_COILS, ("scenarios.one", {"out": ["second"]})))
+    base, one = Network(case).model.stars, Network(case, "one").model.stars
+    at = base.names.index("coil")
+    assert one.impedance[at] == base.impedance[at]
+    assert np.isinf(one.impedance[one.names.index("second")])
+    alone = network(COIL).model.stars.impedance[0]
+    assert base.impedance[at] == pytest.approx(2 * alone, rel=1e-12)  # each takes half the current
+
+
+def test_a_converter_cut_off_by_a_bolted_fault_holds_its_phase():
+    """Radial behind j1 ohm and some resistance: nothing but its own current makes its voltage."""
+    tree = changed(CONVERTER, ("infeeds.QB", None), ("lines.L.z1", "0.2+j1 ohm"), ("lines.L.z0", "j2 ohm"),
+                   ("lines.K", {"from": "A", "to": "B", "z1": "j1 ohm", "z0": "j2 ohm"}))  # fmt: skip
+    solution = network(tree).fault("B", "three-phase")
+    limit = 1.2 * 4e6 / (np.sqrt(3) * 11e3)
+    terminals = solution.terminals
+    fed = -terminals.sequence[1, terminals.element.index("PV")]
+    assert abs(fed) == pytest.approx(limit, rel=1e-9)
+    assert np.degrees(np.angle(fed)) == pytest.approx(-90, abs=1e-6)
+    assert "its phase is held as before the fault" in solution.notes[0]

@@ -12,7 +12,7 @@ from seqfault.faults.kinds import KINDS
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from seqfault.studies.levels import levels
-from tests.strategies import FaultRequest, PlainNetwork, fault_requests, networks, to_case_tree
+from tests.strategies import FaultRequest, PlainNetwork, PlainUnit, fault_requests, networks, to_case_tree
 
 SETTINGS = settings(
     max_examples=80, suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large]
@@ -82,10 +82,13 @@ def test_currents_add_to_zero_at_every_bus_star_point_and_path_home(
         if star.kind != "solid":
             continue
         element, side = star.name.rsplit(".", 1)
+        unit = net.transformers.get(element)
+        shared = isinstance(unit, PlainUnit) and unit.auto()  # hv and lv end in one star point
+        sides = ("hv", "lv") if shared else (side, "")
         at = [
             k
             for k, name in enumerate(solution.terminals.element)
-            if name == element and solution.terminals.side[k] in (side, "")
+            if name == element and solution.terminals.side[k] in sides
         ]
         if net.generators.get(element) and net.generators[element].c0:
             continue  # its terminal carries the machine's own capacitance too
