@@ -76,6 +76,7 @@ def _pages(options: argparse.Namespace, pages: list[Page]) -> None:
         if number:
             sys.stdout.write("\n\n")
         show(page, sys.stdout, options.width, options.color)
+    sys.stdout.flush()  # before the warnings: an answer that cannot be written has none
 
 
 def _write(options: argparse.Namespace, content: bytes) -> None:
