@@ -18,7 +18,7 @@ sum of both states, currents those of the fault alone.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import accumulate
 from math import pi
 
@@ -45,7 +45,17 @@ from tests.referee_windings import Core, Pairs, Winding, star_pairs
 Phasors = NDArray[np.complex128]
 
 __all__ = ["Referee", "Result", "Winding", "star_pairs"]
-FAULT = ""  # no element bears this name
+
+
+@dataclass(frozen=True)
+class Short:
+    """A shunt fault: ``phases`` of ``bus``, ohms as the kinds define (see ``Referee.solve``)."""
+
+    bus: str
+    kind: str
+    phases: str
+    zf: complex = 0j
+    zg: complex = 0j
 
 
 @dataclass(frozen=True)
@@ -57,7 +67,8 @@ class Result:
     ``line_undetermined`` does so for a-b, b-c, c-a: only a bus with next to nothing on it has any.
     """
 
-    fault_current: Phasors  # network -> fault
+    fault_current: Phasors  # network -> the first fault
+    fault_currents: tuple[Phasors, ...]  # network -> each fault
     prefault: dict[str, Phasors]  # before the fault, by bus
     voltages: dict[str, Phasors]  # during the fault, by bus
     undetermined: dict[str, NDArray[np.bool_]]
@@ -97,6 +108,8 @@ class Referee:
         self._terminals: dict[tuple[str, str], None] = {}
         self._links: list[tuple[str, str, int]] = []  # bus, bus, hours the second lags
         self._sources: list[str] = []
+        self._machines: dict[int, str] = {}  # group -> infeed, generator or motor
+        self._parted: set[tuple[str, str]] = set()  # of one clock, but nothing joins them
 
     def bus(self, name: str, nominal: float) -> None:
         """``nominal`` is line to line."""
@@ -160,6 +173,23 @@ class Referee:
         if closed:
             self._groups += [ohmic(name, p, q, 0) for p, q in pairs]
             self._links.append((bus_i, bus_j, 0))
+
+    def poles(self, name: str, bus_i: str, bus_j: str, closed: str) -> None:
+        """A switch of three poles of which those in ``closed`` join its buses with 0 ohm.
+
+        Both buses stood at one voltage before the others opened.
+        """
+        pairs = list(zip(self._phase_nodes(name, bus_i), self._phase_nodes(name, bus_j), strict=True))
+        self._groups += [ohmic(name, *pairs["abc".index(phase)], 0) for phase in closed]
+        self._links.append((bus_i, bus_j, 0))
+        if not closed:
+            self._parted.add((bus_i, bus_j))
+
+    def load(self, name: str, bus: str, z: complex, connection: str) -> None:
+        """Three of ``z`` ohm: "star-earthed", or "star" to a point that is not."""
+        star = EARTH if connection == "star-earthed" else self._node(self._nominal[bus])
+        for node in self._phase_nodes(name, bus):
+            self._groups.append(ohmic(name, node, star, z))
 
     def capacitance(self, name: str, bus: str, c: float) -> None:
         """``c`` farad from each phase to earth."""
@@ -235,6 +265,14 @@ class Referee:
         ``three-phase-ground``: zf from each to a common point, zg from it to earth;
         ``three-phase``: no path to earth. Bus ``clocks`` are walked if not given.
         """
+        return self.solve_many([Short(bus, kind, phases, zf, zg)], prefault, clocks)
+
+    def solve_many(
+        self, faults: Sequence[Short], prefault: float = 1.0, clocks: Mapping[str, int] | None = None,
+        reference: str = "",
+    ) -> Result:  # fmt: skip
+        """Faults that stand at once, as ``solve``; angles refer to ``reference`` or the first bus."""
+        bus = reference or faults[0].bus
         walked = self._walk(bus)
         hours = {name: h for name, (_, h, _) in walked.items()} if clocks is None else clocks
         before = {}
@@ -242,22 +280,47 @@ class Referee:
             turned = np.exp(-LONG(1j) * pi / 6 * ((hours[name] - hours[bus]) % 12))
             size = prefault * nominal / np.sqrt(np.longdouble(3)) * walked[name][2]
             before[name] = size * turned * np.array([1, TURN * TURN, TURN])
-        faulted = [(self._bus[bus][k], before[bus][k]) for k in map("abc".index, phases)]
-        (first, stood), *others = faulted
-        bases = [*self._bases, self._nominal[bus]]
-        common = len(self._bases)  # where the faulted phases meet
-        if kind == "line-ground":
-            fault = [ohmic(FAULT, first, EARTH, complex(zf) + complex(zg), -stood)]
-        elif kind == "line-line":
-            fault = [ohmic(FAULT, first, others[0][0], zf, others[0][1] - stood)]
-        elif kind in ("line-line-ground", "three-phase-ground", "three-phase"):
-            fault = [ohmic(FAULT, node, common, zf, -volts) for node, volts in faulted]
-            if kind != "three-phase":
-                fault.append(ohmic(FAULT, common, EARTH, zg))
-        else:
-            raise ValueError(f"no such kind of fault: {kind}")
-        groups = [*self._groups, *self._lines(), *fault]
-        return self._collect(bus, before, kirchhoff(bases, groups))
+        return self._faulted(faults, before, self._groups, bus)
+
+    def solve_driven(
+        self, faults: Sequence[Short], sources: Mapping[str, Matrix], reference: str = ""
+    ) -> Result:
+        """As ``solve_many``, with the voltages (3,) behind the impedances of ``sources`` driving all.
+
+        Nothing is superposed: voltages and flows are those of the faulted network.
+        """
+        at = reference or faults[0].bus
+        still = {name: np.zeros(3, dtype=LONG) for name in self._nominal}
+        groups = [
+            replace(group, drive=sources[self._machines[k]]) if self._machines.get(k) in sources else group
+            for k, group in enumerate(self._groups)
+        ]
+        return self._faulted(faults, still, groups, at)
+
+    def _faulted(
+        self, faults: Sequence[Short], before: dict[str, Matrix], own: list[Group], at: str
+    ) -> Result:
+        bases, groups = list(self._bases), [*own, *self._lines()]
+        for number, fault in enumerate(faults):
+            faulted = [
+                (self._bus[fault.bus][k], before[fault.bus][k]) for k in map("abc".index, fault.phases)
+            ]
+            (first, stood), *others = faulted
+            common, name = len(bases), _fault_name(number)  # where the faulted phases meet
+            bases.append(self._nominal[fault.bus])
+            zf, zg = complex(fault.zf), complex(fault.zg)
+            if fault.kind == "line-ground":
+                groups.append(ohmic(name, first, EARTH, zf + zg, -stood))
+            elif fault.kind == "line-line":
+                groups.append(ohmic(name, first, others[0][0], zf, others[0][1] - stood))
+            elif fault.kind in ("line-line-ground", "three-phase-ground", "three-phase"):
+                groups += [ohmic(name, node, common, zf, -volts) for node, volts in faulted]
+                if fault.kind != "three-phase":
+                    groups.append(ohmic(name, common, EARTH, zg))
+            else:
+                raise ValueError(f"no such kind of fault: {fault.kind}")
+        places = [fault.bus for fault in faults]
+        return self._collect(at, places, before, kirchhoff(bases, groups))
 
     def _lines(self) -> list[Group]:
         """Series branches of all lines under one law, Ohm's with the coupling: v = Z i."""
@@ -275,7 +338,9 @@ class Referee:
         names = [name for name in at for _ in range(3)]
         return [Group(names, ends, np.eye(len(ends), dtype=LONG), -ohms)]
 
-    def _collect(self, bus: str, before: Mapping[str, Matrix], solution: Solution) -> Result:
+    def _collect(
+        self, bus: str, places: Sequence[str], before: Mapping[str, Matrix], solution: Solution
+    ) -> Result:
         """Put the solution in the words of the network."""
         potential, groups, free = solution
 
@@ -305,8 +370,10 @@ class Referee:
         walked = self._walk(bus).items()
         series = groups[len(self._groups)][1] if self._series else np.zeros(0)
         through = dict(zip(self._series, series.reshape(-1, 3).astype(complex), strict=True))
+        currents = tuple(entering(_fault_name(k), self._bus[places[k]]) for k in range(len(places)))
         return Result(
-            fault_current=entering(FAULT, self._bus[bus]),
+            fault_current=currents[0] if currents else np.zeros(3, complex),
+            fault_currents=currents,
             prefault={n: v.astype(complex) for n, v in before.items()},
             voltages={n: (v + potential[list(self._bus[n])]).astype(complex) for n, v in before.items()},
             undetermined={n: moves(m) for n, m in moved.items()},
@@ -335,8 +402,13 @@ class Referee:
                         if here == name and there not in reached:
                             reached[there] = (root, (reached[name][1] + step) % 12)
                             fresh.append(there)
-        fed = {reached[name][0] for name in self._sources}
-        return {name: (root, clock, root in fed) for name, (root, clock) in reached.items()}
+        fed, grew = set(self._sources), True
+        while grew:
+            ends = [set(link[:2]) for link in self._links if link[:2] not in self._parted]
+            more = {bus for pair in ends if pair & fed for bus in pair}
+            grew = not more <= fed
+            fed |= more
+        return {name: (root, clock, name in fed) for name, (root, clock) in reached.items()}
 
     def _nodes(self, base: float) -> tuple[int, int, int]:
         return self._node(base), self._node(base), self._node(base)
@@ -360,6 +432,7 @@ class Referee:
 
     def _machine(self, name: str, bus: str, impedance: Matrix, star: int) -> None:
         ends = [(node, star) for node in self._phase_nodes(name, bus)]
+        self._machines[len(self._groups)] = name
         self._groups.append(Group([name] * 3, ends, ONE, -impedance))  # Ohm, source shorted: v = Z i
 
     def _capacitors(
@@ -368,3 +441,7 @@ class Referee:
         admittance = LONG(1j) * self.omega * farads
         ends = list(zip(nodes, to, strict=True))
         self._groups.append(Group([name] * 3, ends, -admittance, ONE))  # charging: i = jwC v
+
+
+def _fault_name(number: int) -> str:
+    return f"\0{number}"  # no element bears such a name

@@ -18,6 +18,7 @@ from hypothesis import strategies as st
 from hypothesis.strategies import DrawFn, SearchStrategy
 
 from tests.referee import Referee, Winding, star_pairs
+from tests.spots import Spot, Trouble
 
 LEVELS = (110e3, 33e3, 11e3, 0.4e3)
 POWERS = {"": 0, "u": -6, "m": -3, "k": 3, "M": 6}
@@ -278,7 +279,8 @@ class PlainCoupling:
     lines: tuple[str, ...]
     z0: complex
     length: float | None  # km over which it is per km
-    by_default: bool  # the length is that of the shorter line, and not stated
+    by_default: bool  # the length is that of the shorter line of each two, and not stated
+    lengths: tuple[float, ...] = ()  # km of the lines, where it matters
 
     def entry(self) -> dict[str, Any]:
         per = "" if self.length is None else "/km"
@@ -291,7 +293,14 @@ class PlainCoupling:
 
     def put(self, name: str, referee: Referee) -> None:
         for first, second in combinations(self.lines, 2):
-            referee.couple(first, second, self.z0 * (1.0 if self.length is None else self.length))
+            referee.couple(first, second, self.ohms(first, second))
+
+    def ohms(self, first: str, second: str) -> complex:
+        """The whole coupling of two of its lines."""
+        if self.by_default:
+            km = dict(zip(self.lines, self.lengths, strict=True))
+            return self.z0 * min(km[first], km[second])
+        return self.z0 * (1.0 if self.length is None else self.length)
 
 
 @dataclass(frozen=True)
@@ -567,6 +576,23 @@ class PlainCapacitor:
 
 
 @dataclass(frozen=True)
+class PlainLoad:
+    """Power drawn before a fault, VA; an impedance during it."""
+
+    bus: str
+    power: complex
+    connection: str
+
+    def entry(self) -> dict[str, Any]:
+        return stated(bus=self.bus, power=quantity(self.power, "VA"), connection=self.connection)
+
+    def put(self, name: str, referee: Referee, volts: float) -> None:
+        """``volts`` line to earth before the fault."""
+        z = 3 * volts**2 / self.power.conjugate()
+        referee.load(name, self.bus, z, self.connection)
+
+
+@dataclass(frozen=True)
 class PlainTie:
     """A bus coupler."""
 
@@ -643,6 +669,7 @@ class PlainNetwork:
     series_reactors: dict[str, PlainReactor] = field(default_factory=dict)
     capacitors: dict[str, PlainCapacitor] = field(default_factory=dict)
     ties: dict[str, PlainTie] = field(default_factory=dict)
+    loads: dict[str, PlainLoad] = field(default_factory=dict)
 
     def star_points(self, neutral: str) -> list[str]:
         """Buses of the windings and machines that name ``neutral``, one entry each."""
@@ -722,20 +749,20 @@ def to_case_tree(
     tree["buses"] = {name: quantity(v, "V", "k") for name, v in net.buses.items()}
     for table in (
         "infeeds", "generators", "motors", "transformers", "neutrals", "mutual_couplings",
-        "earthing_transformers", "series_reactors", "capacitors", "ties",
+        "earthing_transformers", "series_reactors", "capacitors", "ties", "loads",
     ):  # fmt: skip
         tree[table] = {name: item.entry() for name, item in getattr(net, table).items()}
     tree["lines"] = {name: line.entry(net.frequency) for name, line in net.lines.items()}
     return {key: value for key, value in tree.items() if value}
 
 
-def to_referee(net: PlainNetwork) -> Referee:
-    """The network of the independent judge."""
+def to_referee(net: PlainNetwork, tuned_in: PlainNetwork | None = None) -> Referee:
+    """The network of the independent judge; coils tuned as in ``tuned_in``, else in ``net``."""
     referee = Referee(net.frequency)
     for name, nominal in net.buses.items():
         referee.bus(name, nominal)
     for name, neutral in net.neutrals.items():
-        neutral.put(name, referee, net.tuned_to(name))
+        neutral.put(name, referee, (tuned_in or net).tuned_to(name))
     for table in (
         "infeeds", "generators", "motors", "lines", "mutual_couplings", "transformers",
         "earthing_transformers", "series_reactors", "ties",
@@ -1033,6 +1060,7 @@ class _Sketch:
                 z0=z / length if per_km and length else z,
                 length=length if per_km else None,
                 by_default=form == "default",
+                lengths=tuple(v or 0.0 for v in lengths) if form == "default" else (),
             )
 
     def star_equivalent(self, count: int, resistive: bool) -> list[complex]:
@@ -1257,3 +1285,49 @@ def fault_requests(draw: DrawFn, net: PlainNetwork) -> FaultRequest:
         zg=ohms() if kind.endswith("ground") else 0j,
         prefault=draw(st.one_of(st.just(1.0), fractions(0.9, 1.1))),
     )
+
+
+def spots(net: PlainNetwork) -> SearchStrategy[Spot]:
+    """A bus, a terminal or a point along a line that is in service."""
+    terminals: list[Spot] = []
+    for table in ("infeeds", "generators", "motors", "earthing_transformers", "capacitors", "loads"):
+        terminals += [Spot(item.bus, name) for name, item in getattr(net, table).items()]
+    lines = {name: line for name, line in net.lines.items() if not line.earthed}
+    for name, item in [*lines.items(), *net.series_reactors.items()]:
+        terminals += [Spot(bus, name) for bus in (item.bus_i, item.bus_j)]
+    for name, unit in net.transformers.items():
+        if isinstance(unit, PlainUnit):
+            terminals += [Spot(w.bus, name) for w in unit.sides.values()]
+        else:
+            terminals += [Spot(unit.hv_bus, name), Spot(unit.lv_bus, name)]
+    choices = [st.sampled_from(sorted(net.buses)).map(Spot), st.sampled_from(terminals)]
+    if lines:
+        along = st.tuples(st.sampled_from(sorted(lines)), fractions(0.01, 0.99))
+        choices += [along.map(lambda at: Spot("", *at))] * 2
+    return st.one_of(choices)
+
+
+@st.composite
+def troubles(draw: DrawFn, net: PlainNetwork) -> list[Trouble]:
+    """One to three faults at once, shunt and series mixed, at different spots."""
+    found: list[Trouble] = []
+    broken: set[str] = set()  # a stub between two breaks floats on picofarads, beyond what is judged
+    for spot in draw(st.lists(spots(net), min_size=1, max_size=3, unique=True)):
+        opened_already = spot.element in net.lines and net.lines[spot.element].open_end == spot.bus
+        whole = spot.element not in broken and not (opened_already and spot.fraction is None)
+        if spot.element and whole and draw(chance(40)):
+            broken.add(spot.element)
+            size = draw(st.integers(1, 3))
+            phases = draw(st.sampled_from({1: ("a", "b", "c"), 2: ("ab", "bc", "ac"), 3: ("abc",)}[size]))
+            kind = ("open-one", "open-two", "open-three")[size - 1]
+            fallen = draw(st.sampled_from((None, 0, 1)))
+        else:
+            kind = draw(st.sampled_from(sorted(FAULT_PHASES)))
+            phases, fallen = draw(st.sampled_from(FAULT_PHASES[kind])), None
+        earthed = kind.endswith("ground") or fallen is not None
+        zf = zg = 0j
+        if not kind.startswith("open") or fallen is not None:
+            zf = complex(draw(spread(1e-3, 100))) if draw(st.booleans()) else 0j
+            zg = complex(draw(spread(1e-3, 100))) if earthed and draw(st.booleans()) else 0j
+        found.append(Trouble(spot, kind, phases, zf, zg, fallen))
+    return found

@@ -90,7 +90,7 @@ def test_every_fault_at_every_bus_solves(name: str, state: str | None) -> None:
     for bus in here.buses:
         three_phase = abs(here.fault(bus, "three-phase").current[0])
         assert three_phase > 500
-        for kind in KINDS:
+        for kind in (name for name, kind in KINDS.items() if not kind.series):
             solution = here.fault(bus, kind)
             assert np.isfinite(solution.current).all()
             sound = ["abc".index(phase) for phase in "abc" if phase not in solution.fault.phases]

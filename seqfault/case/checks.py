@@ -18,7 +18,7 @@ from seqfault.case.fields import references
 from seqfault.case.findings import Findings, one_of
 from seqfault.case.quantities import parse_quantity
 from seqfault.case.records import TABLES
-from seqfault.case.shunts import check_capacitor, check_converter
+from seqfault.case.shunts import check_capacitor, check_converter, check_load
 from seqfault.case.sources import check_generator, check_infeed, check_motor
 from seqfault.case.subject import Site, Subject, real
 from seqfault.case.transformers import check_parallel, check_transformer
@@ -37,6 +37,7 @@ _RULES: dict[str, Callable[[Subject, Any], None]] = {
     "earthing_transformers": check_earthing_transformer,
     "series_reactors": check_series_reactor,
     "capacitors": check_capacitor,
+    "loads": check_load,
     "converters": check_converter,
     "ties": check_tie,
 }

@@ -8,7 +8,7 @@ from typing import TypeVar
 import msgspec
 
 from seqfault.case.fields import Field, fields_of, needed, wanted_by
-from seqfault.case.synonyms import field_for, is_later_field, unknown_field
+from seqfault.case.synonyms import field_for, unknown_field
 from seqfault.case.wording import keyed, shown
 from seqfault.errors import FieldError, quoted
 
@@ -48,11 +48,11 @@ def convert_record(
             if path == "" and key in TOP_LEVEL:
                 complain(key, STRAY)
                 continue
-            if path == "" and _split_at_dot(value, table, meant, key):
+            if path == "" and _split_at_dot(value, table, meant):
                 complain("", _dotted(table, f"{name}.{key}", value))
                 return None
             forgiven.add(meant or "")
-            complain(path.rstrip("."), unknown_field(table, key, meant, fields))
+            complain(path.rstrip("."), unknown_field(key, meant, fields))
         elif field.struct is not None and (isinstance(value, Mapping) or not field.plain):
             nested = convert_record(field.struct, value, complain, table, name, f"{path}{key}.")
             sound = sound and nested is not None
@@ -93,9 +93,9 @@ def _entries(field: Field, value: object, complain: Complain, path: str) -> dict
     return entries if sound else None
 
 
-def _split_at_dot(value: object, table: str, meant: str | None, key: str) -> bool:
+def _split_at_dot(value: object, table: str, meant: str | None) -> bool:
     """Tell whether a field is there only because TOML parts a bare name at its dots."""
-    if meant is not None or is_later_field(table, key):
+    if meant is not None:
         return False
     return isinstance(value, Mapping) or (table == "buses" and isinstance(value, str))
 

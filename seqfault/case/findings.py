@@ -19,6 +19,7 @@ SINGULAR = {
     "neutrals": "neutral",
     "series_reactors": "series reactor",
     "capacitors": "capacitor",
+    "loads": "load",
     "converters": "converter",
     "ties": "tie",
 }

@@ -16,6 +16,7 @@ from seqfault.case.quantities import Dimensions, Quantity, Refers
 
 Voltage = Annotated[Quantity, Dimensions("voltage")]
 Power = Annotated[Quantity, Dimensions("power")]
+ComplexPower = Annotated[Quantity, Dimensions("power", complex=True)]
 Current = Annotated[Quantity, Dimensions("current")]
 CurrentOrPower = Annotated[Quantity, Dimensions("current", "power")]
 Ratio = Annotated[Quantity, Dimensions("ratio")]
@@ -62,6 +63,7 @@ class Infeed(Record, frozen=True, kw_only=True):
     line_ground: Current | None = None
     x0_over_r0: float | None = None
     z0: Ohms | Literal["open"] | None = None
+    voltage: Ratio | None = None  # held in the loaded state
 
 
 class Generator(Record, frozen=True, kw_only=True):
@@ -78,6 +80,8 @@ class Generator(Record, frozen=True, kw_only=True):
     resistance: RealOhmsOrRatio | None = None
     neutral: StarPoint | None = None
     c0: Farads | None = None
+    power: Power | None = None  # fed in the loaded state
+    holds: Ratio | None = None  # voltage held in the loaded state
 
 
 class Motor(Record, frozen=True, kw_only=True):
@@ -206,6 +210,15 @@ class Capacitor(Record, frozen=True, kw_only=True):
     connection: Literal["star-earthed", "star", "delta"]
 
 
+class Load(Record, frozen=True, kw_only=True):
+    """A load, in the loaded state alone: constant power before a fault, constant impedance during it."""
+
+    bus: BusName
+    power: ComplexPower
+    power_factor: float | Ratio | None = None  # lagging
+    connection: Literal["star-earthed", "star", "delta"] | None = None
+
+
 class Converter(Record, frozen=True, kw_only=True):
     """An inverter-fed infeed: a current-limited source of positive sequence during the fault."""
 
@@ -246,10 +259,14 @@ class Neutral(Record, frozen=True, kw_only=True):
 
 
 class Prefault(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """The state before the fault; flat: every live bus at ``voltage`` of its nominal voltage."""
+    """The state before the fault.
+
+    flat: every live bus at ``voltage`` of its nominal voltage; loaded: what infeeds and generators hold
+    and loads draw.
+    """
 
     voltage: Ratio = Quantity(1.0, "ratio", "1.0 pu")
-    state: Literal["flat"] = "flat"
+    state: Literal["flat", "loaded"] = "flat"
 
 
 TABLES: dict[str, type[Record]] = {
@@ -264,6 +281,7 @@ TABLES: dict[str, type[Record]] = {
     "neutrals": Neutral,
     "series_reactors": SeriesReactor,
     "capacitors": Capacitor,
+    "loads": Load,
     "converters": Converter,
     "ties": Tie,
 }
@@ -294,6 +312,7 @@ class Case(msgspec.Struct, frozen=True, kw_only=True):
     neutrals: Mapping[str, Neutral]
     series_reactors: Mapping[str, SeriesReactor]
     capacitors: Mapping[str, Capacitor]
+    loads: Mapping[str, Load]
     converters: Mapping[str, Converter]
     ties: Mapping[str, Tie]
     scenarios: tuple[str, ...] = ()

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import math
 
-from seqfault.case.records import Capacitor, Converter
+from seqfault.case.quantities import Quantity
+from seqfault.case.records import Capacitor, Converter, Load
 from seqfault.case.subject import Subject, real, said
 from seqfault.case.units import normalised
 
@@ -23,6 +24,26 @@ def check_capacitor(subject: Subject, bank: Capacitor) -> None:
     if bank.power is not None and not normalised(bank.power.text).endswith("var"):
         text = f"{said(bank.power)}: the power of a capacitor is in var; this counts as so many var"
         subject.warn("power", text)
+
+
+def check_load(subject: Subject, load: Load) -> None:
+    """Tell what is wrong or doubtful about a load."""
+    subject.bus("bus", load.bus)
+    power, factor = load.power.value, load.power_factor
+    if isinstance(power, complex):
+        if power.real < 0:
+            subject.error("power", f"{said(load.power)}: its active part cannot be negative")
+        if factor is not None:
+            subject.error("power_factor", "power is written with both parts, P+jQ; leave power_factor out")
+    else:
+        subject.positive({"power": load.power})
+        if factor is None:
+            subject.error(
+                "power_factor", "this is missing; give it, as in 0.9, or power with both parts, P+jQ"
+            )
+    value = factor.value if isinstance(factor, Quantity) else factor
+    if value is not None and not isinstance(value, complex) and not 0 < value <= 1:
+        subject.error("power_factor", f"{value:g}: this is above 0 and up to 1, lagging")
 
 
 def check_converter(subject: Subject, converter: Converter) -> None:

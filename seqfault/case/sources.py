@@ -22,6 +22,7 @@ def check_infeed(subject: Subject, infeed: Infeed) -> None:
     subject.x_over_r("x0_over_r0", infeed.x0_over_r0)
     subject.resistive("z1", infeed.z1)
     subject.resistive("z2", infeed.z2)
+    _held(subject, "voltage", infeed.voltage)
     _fault_level(subject, infeed)
     _zero_sequence(subject, infeed)
     if sound and bus is not None and (nominal := real(bus.voltage)) and nominal > 0:
@@ -31,6 +32,13 @@ def check_infeed(subject: Subject, infeed: Infeed) -> None:
             text = f"the three-phase fault level is {amount(level, 'A')}, outside the usual 10 A to 100 kA"
             subject.usual("three_phase" if infeed.three_phase else "z1", level, _FAULT_CURRENT, text, 1e3)
             _earth_fault_level(subject, infeed, z1, nominal)
+
+
+def _held(subject: Subject, field: str, voltage: Quantity | None) -> None:
+    """Complain of a voltage that nothing holds, of nominal voltage."""
+    value = real(voltage)
+    if voltage is not None and value is not None and not 0.5 <= value <= 1.5:
+        subject.error(field, f"{said(voltage)}: a voltage held lies between 0.5 and 1.5 pu of nominal")
 
 
 def _fault_level(subject: Subject, infeed: Infeed) -> None:
@@ -99,6 +107,7 @@ def check_generator(subject: Subject, generator: Generator) -> None:
         subject.impedance(field, getattr(generator, field))
     subject.rated_voltage("voltage", generator.voltage, generator.bus)
     subject.star_point("neutral", generator.neutral)
+    _held(subject, "holds", generator.holds)
     if generator.neutral not in (None, "isolated") and generator.x0 is None:
         subject.error("x0", f"this is missing; neutral = {quoted(generator.neutral or '')} needs it")
     voltage = real(generator.voltage) or (real(bus.voltage) if bus else None)

@@ -21,6 +21,7 @@ _TABLES = {
     "neutral_earthing_resistors neutral_grounding_resistors earthing_resistors star_points",
     "series_reactors": "series_reactor reactor reactors current_limiting_reactors",
     "capacitors": "capacitor capacitor_banks shunt_capacitors banks shunts",
+    "loads": "load consumers consumer demand",
     "converters": "converter inverter inverters pv solar wind batteries battery",
     "ties": "tie coupler couplers bus_couplers bus_ties switches section_switches",
     "scenarios": "scenario states cases",
@@ -85,11 +86,7 @@ _FIELDS = {
     "state": "loading profile",
 }
 # Named on the page of the case format and not read by this version.
-LATER_TABLES = ("loads", "relays", "breakers", "current_transformers", "demands")
-_LATER_FIELDS = {
-    "infeeds": ("voltage",),
-    "generators": ("power", "holds"),
-}
+LATER_TABLES = ("relays", "breakers", "current_transformers", "demands")
 _PARTS = ("r", "x", "r1", "x1", "r0", "x0")
 
 
@@ -103,15 +100,8 @@ def field_for(word: str, known: Collection[str]) -> str | None:
     return _meant(word, _FIELDS, known)
 
 
-def is_later_field(table: str, word: str) -> bool:
-    """Tell whether the case format has a field that this version does not read."""
-    return word in _LATER_FIELDS.get(table, ())
-
-
-def unknown_field(table: str, word: str, meant: str | None, known: Collection[str]) -> str:
+def unknown_field(word: str, meant: str | None, known: Collection[str]) -> str:
     """Return what to say of a field that is none; ``meant`` is what it seems to stand for."""
-    if is_later_field(table, word):
-        return f"the field {quoted(word)} is not read by this version"
     problem = f"there is no field {quoted(word)}"
     if meant in ("z1", "z0") and word.lower() in _PARTS:
         return f'{problem}; write {meant} with both parts, as in "0.125+j0.096 ohm/km"'

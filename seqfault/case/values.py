@@ -122,8 +122,7 @@ def _choice(words: tuple[str, ...]) -> Convert:
         if isinstance(value, str) and value in words:
             return value
         known = listed(map(quoted, words))
-        only = f"{known} is wanted" if words[1:] else f"this version reads only {known}"
-        raise FieldError(f"{shown(value)}: {only}")
+        raise FieldError(f"{shown(value)}: {known} is wanted")
 
     return convert
 

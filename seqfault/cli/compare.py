@@ -32,7 +32,14 @@ def add(commands: Commands) -> None:
         " currents, voltages left, and how earth current gets home.",
     )
     add_case(parser)
-    parser.add_argument("place", metavar="PLACE", help="a bus; inspect CASE --places lists them")
+    parser.add_argument(
+        "place", metavar="PLACE", help="a bus (inspect CASE --places lists them), ELEMENT@BUS or LINE@37%%"
+    )
+    parser.add_argument(
+        "--at",
+        metavar="ELEMENT@BUS",
+        help="show what each kind of fault looks like from this terminal, wherever it is",
+    )
     add_impedances(parser)
     add_output(parser)
     parser.set_defaults(run=run)
@@ -48,7 +55,7 @@ def run(options: argparse.Namespace) -> int:
     from seqfault.studies.compare import compare
 
     def answer(network: Network) -> Answer:
-        comparison = compare(network, options.place, zf=zf, zg=zg)
+        comparison = compare(network, options.place, zf=zf, zg=zg, at=options.at)
 
         def page() -> Page:
             from seqfault.report.compare import compare_page

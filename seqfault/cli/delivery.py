@@ -38,6 +38,27 @@ def form_wanted(options: argparse.Namespace) -> str:
     return str(form)
 
 
+def plot_wanted(options: argparse.Namespace) -> str:
+    """The format of the chart wanted, or nothing; what can be wrong with it is told before the work."""
+    if options.plot is None:
+        return ""
+    from seqfault.report.files import check_target
+    from seqfault.report.plotting import chart_form, load_plotting
+
+    form = chart_form(options.plot)
+    check_target(options.plot, options.overwrite, options.case, "--plot")
+    load_plotting()
+    return form
+
+
+def deliver_plot(options: argparse.Namespace, content: bytes) -> None:
+    """Write a chart to the file of ``--plot``."""
+    from seqfault.report.files import write_whole
+
+    write_whole(options.plot, content, options.overwrite, "--plot")
+    say(f"wrote {options.plot}")
+
+
 def deliver(options: argparse.Namespace, form: str, answers: Sequence[Answer]) -> int:
     """Write ``answers`` in ``form``; warnings go to standard error, and into JSON as well."""
     if form == "table":

@@ -1,4 +1,4 @@
-"""``seqfault fault CASE PLACE``: one fault in full."""
+"""``seqfault fault CASE PLACE``: one fault in full, or several at once."""
 
 from __future__ import annotations
 
@@ -15,13 +15,17 @@ from seqfault.cli.options import (
     read_networks,
     read_ohms,
 )
+from seqfault.cli.shells import KINDS
+from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
+    from seqfault.faults.kinds import Fault
     from seqfault.faults.network import Network
     from seqfault.report.data import Quantity
     from seqfault.report.tables import Page
 
-KINDS = ("three-phase", "three-phase-ground", "line-line", "line-line-ground", "line-ground")
+OWN = ("kind", "phases", "zf", "zg", "fallen")
+"""Options of one fault: those behind ``--and PLACE`` are that fault's."""
 
 
 def add(commands: Commands) -> None:
@@ -29,23 +33,49 @@ def add(commands: Commands) -> None:
     parser = add_command(
         commands,
         "fault",
-        "one fault in full",
-        "One fault at one bus in full: the current, how it gets home, the voltages at every bus,"
-        " who feeds it, what flows elsewhere, and what each star point sees.",
+        "one fault in full, or several at once",
+        "One fault in full, or several at once: the currents, how they get home, the voltages at every"
+        " bus, who feeds them, what flows elsewhere, and what each star point sees. A place is a bus,"
+        " ELEMENT@BUS for a terminal, or LINE@37% for a point along a line.",
     )
     add_case(parser)
-    parser.add_argument("place", metavar="PLACE", help="a bus; inspect CASE --places lists them")
+    parser.add_argument(
+        "place",
+        metavar="PLACE",
+        nargs="?",
+        help="a bus (inspect CASE --places lists them), ELEMENT@BUS, LINE@37%% or LINE@4.2km",
+    )
     group = parser.add_argument_group("fault")
     group.add_argument(
         "--kind",
         metavar="KIND",
         default="line-ground",
+        action=OfLast,
         help=f"{', '.join(KINDS)} (default: line-ground)",
     )
     group.add_argument(
-        "--phases", metavar="PHASES", help="faulted phases, as in b or ca (default: a, or bc)"
+        "--phases",
+        metavar="PHASES",
+        action=OfLast,
+        help="faulted or open phases, as in b or ca (default: a, or bc)",
     )
-    add_impedances(parser)
+    group.add_argument(
+        "--fallen",
+        metavar="SIDE",
+        action=OfLast,
+        help="an open conductor lies on earth on this side: source, load, or the bus or element there",
+    )
+    group.add_argument(
+        "--and",
+        metavar="PLACE",
+        dest="also",
+        action=Also,
+        help="another fault at the same time; its own --kind, --phases, --zf, --zg and --fallen follow",
+    )
+    add_impedances(parser, OfLast)
+    group.add_argument(
+        "--steps", metavar="FILE", help="faults and open poles step by step, in TOML, instead of PLACE"
+    )
     shown = parser.add_argument_group("what is shown")
     shown.add_argument("--flows", action="store_true", help="every element, small flows included")
     shown.add_argument("--components", action="store_true", help="zero, positive, negative sequence")
@@ -53,16 +83,46 @@ def add(commands: Commands) -> None:
     parser.set_defaults(run=run)
 
 
+class OfLast(argparse.Action):
+    """An option of the fault named last."""
+
+    def __call__(
+        self, parser: object, namespace: argparse.Namespace, values: object, option_string: object = None
+    ) -> None:
+        """Keep the value with its fault."""
+        if namespace.also:
+            namespace.also[-1][self.dest] = values
+        else:
+            setattr(namespace, self.dest, values)
+
+
+class Also(argparse.Action):
+    """``--and PLACE``: a further fault."""
+
+    def __call__(
+        self, parser: object, namespace: argparse.Namespace, values: object, option_string: object = None
+    ) -> None:
+        """Begin its options."""
+        namespace.also = [*(namespace.also or []), {"place": values}]
+
+
 def run(options: argparse.Namespace) -> int:
     """Answer the command."""
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
+    if options.steps is not None:
+        from seqfault.cli.steps import run_steps
+
+        return run_steps(options)
+    if options.place is None:
+        raise RequestError("a place is wanted: a bus, ELEMENT@BUS or LINE@37%; or --steps FILE")
     form = form_wanted(options)
-    zf, zg = read_ohms(options.zf, "--zf"), read_ohms(options.zg, "--zg")
+    first = {name: getattr(options, name) for name in ("place", *OWN)}
+    faults = [read_fault(own) for own in (first, *(options.also or []))]
     networks = read_networks(options, options.place)
 
     def answer(network: Network) -> Answer:
-        solution = network.fault(options.place, options.kind, phases=options.phases, zf=zf, zg=zg)
+        solution = network.solve(faults)
 
         def page() -> Page:
             from seqfault.report.fault import fault_page
@@ -82,3 +142,12 @@ def run(options: argparse.Namespace) -> int:
         return Answer(page, tree, rows, network.model.warnings)
 
     return deliver(options, form, [answer(network) for network in networks])
+
+
+def read_fault(own: dict[str, Any]) -> Fault:
+    """The fault that the options of one fault state. Raises ``RequestError``."""
+    from seqfault.faults.kinds import fault_at
+
+    zf, zg = read_ohms(own.get("zf"), "--zf"), read_ohms(own.get("zg"), "--zg")
+    kind, phases = own.get("kind") or "line-ground", own.get("phases")
+    return fault_at(own["place"], kind, phases, zf, zg, own.get("fallen") or "")

@@ -51,9 +51,14 @@ def add_case(parser: argparse.ArgumentParser) -> None:
         "--close", metavar="LINE@BUS", action="append", default=[], help="switch a line end on"
     )
     state.add_argument(
+        "--loaded",
+        action="store_true",
+        help="let loads, infeeds and generators make the state before the fault",
+    )
+    state.add_argument(
         "--prefault",
         metavar="VOLTAGE",
-        help='voltage before the fault, as in "1.05 pu" or "105 %%"',
+        help='voltage before the fault, as in "1.05 pu" or "105 %%"; loaded: held where none is stated',
     )
     state.add_argument(
         "--machine",
@@ -63,16 +68,19 @@ def add_case(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def add_impedances(parser: argparse.ArgumentParser) -> None:
+def add_impedances(parser: argparse.ArgumentParser, action: type[argparse.Action] | str = "store") -> None:
     """--zf and --zg."""
     group = parser.add_argument_group("fault impedance, bolted unless stated")
     group.add_argument(
         "--zf",
         metavar="OHM",
+        action=action,
         help="of the fault itself: phase to earth (line-ground), between the phases (line-line), in"
         ' each faulted phase (the others), as in "0.5 ohm" or --zf=-j0.1ohm',
     )
-    group.add_argument("--zg", metavar="OHM", help="from the common point of the fault to earth")
+    group.add_argument(
+        "--zg", metavar="OHM", action=action, help="from the common point of the fault to earth"
+    )
 
 
 def add_output(parser: argparse.ArgumentParser) -> None:
@@ -124,15 +132,20 @@ def read_states(options: argparse.Namespace) -> list[Case]:
         _with_prefault(
             case if name == "base" and not any(changes) else in_state(case, name, *changes),
             options.prefault,
+            options.loaded,
         )
         for name in names
     ]
 
 
-def _with_prefault(case: Case, text: str | None) -> Case:
+def _with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
+    import msgspec
+
+    if loaded:
+        prefault = msgspec.structs.replace(case.prefault, state="loaded")
+        case = msgspec.structs.replace(case, prefault=prefault)
     if text is None:
         return case
-    import msgspec
 
     from seqfault.case.quantities import Dimensions, read_quantity
 
@@ -156,7 +169,7 @@ def read_networks(options: argparse.Namespace, place: str | None = None) -> list
     if len(networks) == 1:
         networks[0].check_place(place)
         return networks
-    having = [network for network in networks if place in network.buses]
+    having = [network for network in networks if _has(network, place)]
     if not having:
         networks[0].check_place(place)
     from seqfault.cli.run import say
@@ -165,3 +178,11 @@ def read_networks(options: argparse.Namespace, place: str | None = None) -> list
         if network not in having:
             say(f"state {network.model.state}: the place is out of service there; no answer for it")
     return having
+
+
+def _has(network: Network, place: str) -> bool:
+    try:
+        network.check_place(place)
+    except RequestError:
+        return False
+    return True

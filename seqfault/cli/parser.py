@@ -9,7 +9,7 @@ from typing import NoReturn
 
 from seqfault import __version__
 
-COMMANDS = ("inspect", "fault", "compare", "levels", "completion")
+COMMANDS = ("inspect", "fault", "compare", "levels", "along", "completion")
 EPILOG = """\
 examples:
   seqfault inspect plant.toml

@@ -9,7 +9,16 @@ from __future__ import annotations
 import argparse
 from dataclasses import dataclass
 
-KINDS = ("three-phase", "three-phase-ground", "line-line", "line-line-ground", "line-ground")
+KINDS = (
+    "three-phase",
+    "three-phase-ground",
+    "line-line",
+    "line-line-ground",
+    "line-ground",
+    "open-one",
+    "open-two",
+    "open-three",
+)
 WORDS = {"kind": KINDS, "phases": ("a", "b", "c", "ab", "bc", "ca"), "scenario": ("base", "all")}
 
 
@@ -64,5 +73,5 @@ def _option(action: argparse.Action) -> Option:
     if action.nargs == 0:
         return Option(names, text, "none")
     words = tuple(action.choices) if action.choices else WORDS.get(action.dest, ())
-    value = "words" if words else "file" if action.dest == "output" else "text"
+    value = "words" if words else "file" if action.dest in ("output", "plot", "steps") else "text"
     return Option(names, text, value, words)

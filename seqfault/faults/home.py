@@ -12,14 +12,14 @@ from seqfault.model.elements import Bools, Model
 
 
 def earth_paths(
-    model: Model, place: int, flows: SequenceFlows, terminals: TerminalMap
+    model: Model, group: int, flows: SequenceFlows, terminals: TerminalMap
 ) -> tuple[HomePath, ...]:
-    """Every path from earth into the network that is joined by metal to the faulted place.
+    """Every path from earth into a network joined by metal, that of label ``group`` in ``galvanic``.
 
     Transformers join nothing by metal, so by Kirchhoff's current law these alone add to 3I0. Star
     points, infeeds and earthed capacitor banks by name, charging currents by nominal voltage.
     """
-    here = model.galvanic == model.galvanic[model.node[place]]
+    here = model.galvanic == group
     ampere = star_current_base(model)
     out = [
         HomePath(name, complex(-flows.star[k] * ampere[k]))
@@ -30,7 +30,7 @@ def earth_paths(
     earth = -3 * flows.to_earth * base_current(nominal, model.base_power)
     inside = (terminals.node >= 0) & here[terminals.node] & _to_earth(model)
     for k, kind in enumerate(terminals.kind):
-        if inside[k] and kind in ("infeed", "capacitor"):
+        if inside[k] and kind in ("infeed", "capacitor", "load"):
             out.append(HomePath(terminals.element[k], complex(earth[k])))
     charging = np.array([kind in ("line", "capacitance") for kind in terminals.kind], bool) & inside
     for voltage in sorted(set(nominal[charging].tolist())):

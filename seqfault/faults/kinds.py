@@ -1,4 +1,4 @@
-"""Kinds of fault: the branches each puts on the phases of its place."""
+"""Kinds of fault: the loops each puts on the phases of its place, or through a broken conductor."""
 
 from __future__ import annotations
 
@@ -12,12 +12,16 @@ from seqfault.errors import RequestError, quoted
 
 
 class Kind(msgspec.Struct, frozen=True):
-    """A kind of fault; ``symbol`` is the subscript of IEC 60909-0, ``phases`` what it takes unasked."""
+    """A kind of fault; ``symbol`` is the subscript of IEC 60909-0, ``phases`` what it takes unasked.
+
+    ``series`` kinds open the phases they name.
+    """
 
     name: str
     symbol: str
     phases: str
     earth: bool
+    series: bool = False
 
 
 KINDS: dict[str, Kind] = {
@@ -28,6 +32,9 @@ KINDS: dict[str, Kind] = {
         Kind("line-line", "k2", "bc", False),
         Kind("line-line-ground", "k2E", "bc", True),
         Kind("line-ground", "k1", "a", True),
+        Kind("open-one", "", "a", False, series=True),
+        Kind("open-two", "", "bc", False, series=True),
+        Kind("open-three", "", "abc", False, series=True),
     )
 }
 SAME = {
@@ -41,7 +48,9 @@ class Fault(msgspec.Struct, frozen=True):
     """A fault asked for: ``zf`` and ``zg`` in ohm.
 
     ``zf`` lies in each faulted phase up to the common point (line-line: once, between the phases),
-    ``zg`` from the common point to earth (line-ground: in series with ``zf``).
+    ``zg`` from the common point to earth (line-ground: in series with ``zf``). An open conductor whose
+    end has ``fallen`` lies on earth through them on that side: the name of a bus or element, ``source``
+    or ``load``; empty where it hangs clear.
     """
 
     place: str
@@ -49,6 +58,12 @@ class Fault(msgspec.Struct, frozen=True):
     phases: str
     zf: complex = 0j
     zg: complex = 0j
+    fallen: str = ""
+
+    @property
+    def earth(self) -> bool:
+        """Whether it touches earth."""
+        return self.kind.earth or bool(self.fallen)
 
 
 def fault_kind(name: str) -> Kind:
@@ -61,7 +76,14 @@ def fault_kind(name: str) -> Kind:
     return found
 
 
-def fault_at(place: str, kind: str, phases: str | None = None, zf: complex = 0, zg: complex = 0) -> Fault:
+def fault_at(
+    place: str,
+    kind: str = "line-ground",
+    phases: str | None = None,
+    zf: complex = 0,
+    zg: complex = 0,
+    fallen: str = "",
+) -> Fault:
     """A checked ``Fault``. Raises ``RequestError`` for phases or impedances the kind cannot have."""
     found = fault_kind(kind)
     chosen = "".join(sorted(phases)) if phases is not None else found.phases
@@ -71,7 +93,15 @@ def fault_at(place: str, kind: str, phases: str | None = None, zf: complex = 0, 
         raise RequestError(
             f"phases {quoted(str(phases))}: a {found.name} fault takes {options}, written without a comma"
         )
-    if zg != 0 and not found.earth:
+    if fallen and not found.series:
+        raise RequestError(
+            f"fallen: a {found.name} fault breaks no conductor; ask for open-one, open-two or open-three"
+        )
+    if found.series and not fallen and (zf != 0 or zg != 0):
+        raise RequestError(
+            f"zf, zg: an {found.name} conductor touches nothing; say on which side it has fallen to earth"
+        )
+    if zg != 0 and not (found.earth or fallen):
         raise RequestError(
             f"zg: a {found.name} fault does not touch earth; give its impedance as zf,"
             " or ask for a kind to ground"
@@ -83,7 +113,7 @@ def fault_at(place: str, kind: str, phases: str | None = None, zf: complex = 0, 
             raise RequestError(
                 f"{label}: its resistance is {complex(value).real:g} ohm; it cannot be negative"
             )
-    return Fault(place, found, chosen, complex(zf), complex(zg))
+    return Fault(place, found, chosen, complex(zf), complex(zg), fallen)
 
 
 def branches(fault: Fault) -> tuple[Complex, Complex]:
@@ -99,9 +129,24 @@ def branches(fault: Fault) -> tuple[Complex, Complex]:
     if fault.kind.name == "line-line":
         to_loops, z = np.array([[1], [-1]], complex), np.array([[zf, 0], [0, 0]])
     else:
-        width = size if fault.kind.earth else size - 1
+        width = size if fault.earth else size - 1
         to_loops = (np.eye(size) - np.eye(size, k=-1))[:, :width].astype(complex)
-        z = zf * np.eye(size) + (zg if fault.kind.earth else 0) * np.ones((size, size))
+        z = zf * np.eye(size) + (zg if fault.earth else 0) * np.ones((size, size))
     incidence = np.zeros((3, to_loops.shape[1]), complex)
     incidence[at] = to_loops
     return incidence, to_loops.T @ z @ to_loops
+
+
+def sound_poles(fault: Fault) -> Complex:
+    """Incidence (3, b) of the loops through the poles that an open conductor leaves closed.
+
+    The first of two runs out through one pole and back through the other: it sees nothing of zero
+    sequence.
+    """
+    left = ["abc".index(phase) for phase in "abc" if phase not in fault.phases]
+    loops = np.zeros((3, len(left)), complex)
+    if len(left) == 2:
+        loops[left] = [[1, 1], [-1, 1]]
+    elif left:
+        loops[left[0], 0] = 1
+    return loops

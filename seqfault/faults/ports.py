@@ -1,9 +1,13 @@
-"""Faults as branches on the phases of ports.
+"""Faults as loops on the phases of ports: shunt and series faults, any number at once.
 
-With E the incidence of the fault branches, Z the port impedances in phase coordinates, v the voltages
-before the fault and B what a unit of each free potential of a floating part puts on the phases:
+With E the incidence of the loops, Z the port impedances in phase coordinates, v the voltages before the
+fault, h the currents that flowed out of the ports before it (through poles that open) and B what a unit
+of each free potential of a floating part puts on the phases:
 
-    (Eᵀ Z E + Z_f) i − Eᵀ B u = Eᵀ v,        Σ d i0 = 0 over the ports of each floating part
+    Eᵀ (v − Z (E i − h) + B u) = Z_f i,        d · (E i − h) = 0 for each free potential
+
+so that a pole that opens is a port of the network opened in all three, its sound poles closed loops of
+no impedance, and the voltage that drives them Z h: on a flat profile nothing.
 
 Source: fault impedance matrices in phase coordinates, as in M. Laughton, "Analysis of unbalanced
 polyphase networks by the method of phase co-ordinates", Proc. IEE 115 (1968) (from memory). Positive
@@ -19,7 +23,6 @@ import numpy as np
 
 from seqfault.equations.symmetrical import TO_PHASES, TO_SEQUENCE, Complex, clock_turn
 from seqfault.errors import NoAnswerError
-from seqfault.faults.kinds import Fault, branches
 from seqfault.model.elements import Floats, Ints
 from seqfault.networks.factors import SEEN, SequenceNetworks
 
@@ -29,104 +32,139 @@ CANCELLED = 1e-12
 """A loop whose impedances cancel to this share of their sizes is in series resonance."""
 
 
-class PortSolution(msgspec.Struct, frozen=True, eq=False):
-    """Currents of the faults, in per unit of each place.
+class Loops(msgspec.Struct, frozen=True, eq=False):
+    """Loops of one fault: ``ports`` (k,) bus indices, ``incidence`` (k, 3, b), ``impedance`` (b, b) pu."""
 
-    ``current`` (3, r) sequence and ``phases`` (3, r) phase currents from the network into each fault, at
-    their true angles, sound phases exactly zero;
-    ``impedance`` (3, r) driving-point impedances, infinite where there is no path; ``columns`` of each
-    sequence for the ports; ``slack`` the free potentials of each sequence, and ``unseen`` the mixtures
-    of zero-sequence ones that no fault branch sees.
+    ports: Ints
+    incidence: Complex
+    impedance: Complex
+
+
+class PortSolution(msgspec.Struct, frozen=True, eq=False):
+    """What a set of loops does, in per unit of each port.
+
+    ``loops`` one array of loop currents a fault; ``ports`` (r,) bus indices of all ports; ``drawn``
+    (3, r) by sequence what leaves the network at each port beyond what left before, in the frame of the
+    port; ``impedance`` (3, r, r) between ports at their true angles, ``bounded`` (3, r) False where a
+    port has no path; ``columns`` of each sequence for the ports; ``slack`` the free potentials of each
+    sequence, and ``unseen`` the mixtures of them that no loop sees, keyed by sequence first.
     """
 
-    current: Complex
-    phases: Complex
+    loops: tuple[Complex, ...]
+    ports: Ints
+    drawn: Complex
     impedance: Complex
+    free: tuple[Complex, Complex, Complex]
     columns: tuple[Complex, Complex, Complex]
     slack: tuple[Slack, Slack, Slack]
-    unseen: tuple[Slack, ...]
+    unseen: tuple[dict[tuple[int, tuple[int, int]], complex], ...]
 
 
 def solve_ports(
-    networks: SequenceNetworks, places: Ints, faults: Sequence[Fault], clocks: Ints, lifted: Complex
+    networks: SequenceNetworks,
+    faults: Sequence[Loops],
+    clock: Ints,
+    before: Complex,
+    flowing: Complex,
 ) -> PortSolution:
-    """Solve ``faults`` at the buses ``places`` (r,), all at once.
+    """Solve ``faults``, all at once.
 
-    ``clocks`` (r,) are the displacements of the places behind the reference of angles; ``lifted`` (r,)
-    what other sources add to the positive-sequence voltage before the fault, in the frame of each
-    place. Raises
-    ``NoAnswerError`` where the equations have no unique solution.
+    ``clock`` (n,) is the displacement of every bus behind the reference of angles; ``before`` (n,)
+    the positive-sequence voltage before the fault, in the frame of each bus; ``flowing`` (r,) the
+    positive-sequence current that left the network at each port before it. Raises ``NoAnswerError``
+    where the equations have no unique solution.
     """
     model = networks.model
-    nodes = model.node[places]
-    r = len(nodes)
-    turn = np.stack([np.ones(r), clock_turn(clocks), clock_turn(clocks).conj()])
+    places = np.concatenate([fault.ports for fault in faults])
+    nodes, r = model.node[places], len(places)
+    turn = np.stack([np.ones(r), clock_turn(clock[places]), clock_turn(clock[places]).conj()])
     columns = tuple(networks[s].columns(nodes) for s in range(3))
     z = np.stack([networks[s].port_impedance(nodes, columns[s]) for s in range(3)])
     z = z * turn[:, :, None] * turn[:, None, :].conj()
-    before = (model.before[places] + lifted) * turn[1]
-    v = before[:, None] * TO_PHASES[:, 1]
+    v = (before[places] * turn[1])[:, None] * TO_PHASES[:, 1]
+    flowed = np.stack([0 * flowing, flowing * turn[1], 0 * flowing])
 
-    shapes = [branches(fault) for fault in faults]
-    widths = [e.shape[1] for e, _ in shapes]
+    widths = [fault.incidence.shape[2] for fault in faults]
     start = np.concatenate([[0], np.cumsum(widths)])
-    incidence = np.zeros((r, 3, start[-1]), complex)
-    z_fault = np.zeros((start[-1], start[-1]), complex)
-    for k, (e, zf) in enumerate(shapes):
+    width = int(start[-1])
+    incidence = np.zeros((r, 3, width), complex)
+    z_fault = np.zeros((width, width), complex)
+    row = 0
+    for k, fault in enumerate(faults):
         own = slice(start[k], start[k + 1])
-        incidence[k, :, own] = e
-        z_fault[own, own] = zf * (model.base_power / model.nominal[places[k]] ** 2)
+        incidence[row : row + len(fault.ports), :, own] = fault.incidence
+        z_fault[own, own] = fault.impedance
+        row += len(fault.ports)
     # Components of each loop first: one clear of earth has exactly no zero sequence, whose impedance
     # may drown the others in phase coordinates.
     seen = np.einsum("ps,ipa->sia", TO_PHASES, incidence)
     driven = np.einsum("sp,ipa->sia", TO_SEQUENCE, incidence)
     matrix = np.einsum("sia,sij,sjb->ab", seen, z, driven) + z_fault
     terms = np.einsum("sia,sij,sjb->ab", abs(seen), abs(z), abs(driven)) + abs(z_fault)
-    rhs = np.einsum("ipa,ip->a", incidence, v)
+    rhs = np.einsum("ipa,ip->a", incidence, v) + np.einsum("sia,sij,sj->a", seen, z, flowed)
 
-    lift, constraint, keys, alone = [], [], [], []
+    lift, constraint, target, keys, alone = [], [], [], [], []
+    free = []
     for s in range(3):
-        free, names = networks[s].slack_at(nodes)
+        potential, names = networks[s].slack_at(nodes)
+        free.append(potential)
         for q, name in enumerate(names):
-            lift.append((free[:, q] * turn[s]) @ seen[s])
-            constraint.append((free[:, q] * turn[s].conj()) @ driven[s])
+            share = potential[:, q] * turn[s].conj()
+            lift.append((potential[:, q] * turn[s]) @ seen[s])
+            constraint.append(share @ driven[s])
+            target.append(share @ flowed[s])
             keys.append((s, name))
-            touched = np.flatnonzero(np.abs(free[:, q]) > SEEN)
+            touched = np.flatnonzero(np.abs(potential[:, q]) > SEEN)
             if len(touched) == 1:
                 alone.append((s, touched[0]))
-    width = int(start[-1])
     up = np.array(lift, complex).reshape(len(keys), width).T
-    i, u = _solve(matrix, terms, rhs, up, np.array(constraint, complex).reshape(len(keys), width))
+    held = np.array(constraint, complex).reshape(len(keys), width)
+    i, u = _solve(matrix, terms, rhs, up, held, np.array(target, complex))
 
-    current = driven @ i
-    phases = np.einsum("ipa,a->pi", incidence, i)
-    for s, held in alone:
-        current[s, held] = 0  # to the last bit, where elimination leaves a rounding
+    drawn = (driven @ i - flowed) * turn.conj()
+    for s, port in alone:
+        drawn[s, port] = 0  # to the last bit, where elimination leaves a rounding
     slack: tuple[Slack, Slack, Slack] = ({}, {}, {})
     for q, (s, name) in enumerate(keys):
         slack[s][name] = complex(u[q])
     unseen = tuple(
-        {name: complex(share) for (s, name), share in zip(keys, column, strict=True) if s == 0}
-        for column in _null_basis(up).T
+        {key: complex(part) for key, part in zip(keys, column, strict=True)} for column in null_basis(up).T
     )
-    own_z = np.stack([np.diagonal(z[s]) for s in range(3)])
+    return PortSolution(
+        loops=tuple(i[start[k] : start[k + 1]] for k in range(len(faults))),
+        ports=places,
+        drawn=drawn,
+        impedance=z,
+        free=(free[0], free[1], free[2]),
+        columns=(columns[0], columns[1], columns[2]),
+        slack=slack,
+        unseen=unseen,
+    )
+
+
+def driving_point(solution: PortSolution, shares: Floats) -> Complex:
+    """Impedance (3,) per unit between the ports weighted by ``shares`` (r,), infinite without a path."""
+    out: Complex = np.einsum("i,sij,j->s", shares, solution.impedance, shares)
     for s in range(3):
-        free, _ = networks[s].slack_at(nodes)
-        own_z[s, (np.abs(free) > SEEN).any(axis=1)] = np.inf
-    return PortSolution(current, phases, own_z, (columns[0], columns[1], columns[2]), slack, unseen)
+        if solution.free[s].shape[1] and np.abs(shares @ solution.free[s]).max() > SEEN:
+            out[s] = np.inf
+    return out
 
 
 def _solve(
-    z: Complex, terms: Floats, v: Complex, lift: Complex, constraint: Complex
+    z: Complex, terms: Floats, v: Complex, lift: Complex, constraint: Complex, target: Complex
 ) -> tuple[Complex, Complex]:
-    """Currents i with ``constraint`` i = 0 exactly, and the free potentials u that go with them.
+    """Currents i with ``constraint`` i = ``target``, and the free potentials u that go with them.
 
     ``terms`` (b, b) is the size of what ``z`` is the sum of.
     """
-    free = _null_basis(constraint)
+    free = null_basis(constraint)
+    first = np.zeros(len(v), complex)
+    if target.any():
+        first = np.linalg.lstsq(constraint, target, rcond=None)[0]
     if free.shape[1]:
         # The lift of a floating part does no work on currents that obey its constraint.
-        work = free.conj().T if not len(constraint) else _null_basis(lift.T).T
+        work = free.conj().T if not len(constraint) else null_basis(lift.T).T
         small = work @ z @ free
         balance = np.abs(small).max(axis=1, initial=0.0)
         size = (np.abs(work) @ terms @ np.abs(free)).max(axis=1, initial=0.0)
@@ -135,15 +173,15 @@ def _solve(
                 "the fault current has no limit: the network's impedances to this fault cancel (series"
                 " resonance) or are zero; check reactances of opposite sign"
             )
-        i: Complex = free @ np.linalg.solve(small, work @ v)
+        i: Complex = first + free @ np.linalg.solve(small, work @ (v - z @ first))
     else:
-        i = np.zeros(len(v), complex)
-    if not lift.shape[1]:
-        return i, np.zeros(0, complex)
+        i = first
+    if not lift.size:
+        return i, np.zeros(lift.shape[1], complex)
     return i, np.asarray(np.linalg.lstsq(lift, z @ i - v, rcond=None)[0], complex)
 
 
-def _null_basis(rows: Complex) -> Complex:
+def null_basis(rows: Complex) -> Complex:
     """Basis (b, q) of the vectors that ``rows`` (k, b) map to zero, by elimination with pivots.
 
     Entries come out exact where the rows hold ones only, so that currents cancel to the last bit.

@@ -93,28 +93,52 @@ class HomePath(msgspec.Struct, frozen=True, eq=False):
     current: complex
 
 
-class FaultSolution(msgspec.Struct, frozen=True, eq=False):
-    """A solved fault. SI throughout; the sequence axis is the first, in the order 0, 1, 2.
+class FaultState(msgspec.Struct, frozen=True, eq=False):
+    """One of the faults that stand at once, at true angles.
 
-    Angles are relative to the phase-a-to-earth voltage at the faulted place before the fault.
-
-    ``impedance`` (3,) ohm, driving-point impedances, infinite where the place has no such path;
-    ``current`` (3,) phases and ``current_sequence`` (3,) A from the network into the fault;
-    ``voltage_sequence`` (3, n) V to earth at every bus of ``buses``; ``before`` (n,) V, phase a before
-    the fault; ``undefined`` (n,) buses whose potential to earth nothing fixes; ``joined`` (n,) buses
-    joined by metal to the place; ``balance`` the largest imbalance of any node over what the check
-    allows.
+    ``nominal`` V and ``prefault`` per unit of it at its place; ``impedance`` (3,) ohm, driving-point
+    impedances at the place, or between both sides of a break, infinite without a path; ``current`` (3,)
+    phases and ``current_sequence`` (3,) A from the network into the fault, to earth where a conductor has
+    fallen. Of a break alone: ``through`` (3,) A that flows on through the poles, ``through_before`` (3,)
+    A before it, ``across`` (3,) V of the phases from its first side to its second, ``sides`` their buses.
     """
 
     fault: Fault
-    state: str
-    machine: str
     nominal: float
-    base_power: float
     prefault: float
     impedance: Complex
     current: Complex
     current_sequence: Complex
+    bus: str
+    through: Complex | None = None
+    through_before: Complex | None = None
+    across: Complex | None = None
+    sides: tuple[str, str] | None = None
+
+    @property
+    def residual(self) -> complex:
+        """Three times the zero-sequence current, A: what the fault sends into earth."""
+        return complex(3 * self.current_sequence[0])
+
+
+class FaultSolution(msgspec.Struct, frozen=True, eq=False):
+    """Solved faults. SI throughout; the sequence axis is the first, in the order 0, 1, 2.
+
+    Angles are relative to the phase-a-to-earth voltage at the first faulted place before the fault.
+
+    ``faults`` the faults that stand at once; the properties ``fault``, ``nominal``, ``prefault``,
+    ``impedance``, ``current`` and ``current_sequence`` are of the first. ``voltage_sequence`` (3, n) V to
+    earth at every bus of ``buses``; ``before`` (n,) V, phase a before the fault; ``undefined`` (n,)
+    buses whose potential to earth nothing fixes; ``joined`` (n,) buses joined by metal to a faulted
+    place; ``terminals`` the currents during the fault and ``terminals_before`` those before it, None on
+    a flat profile; ``balance`` the largest imbalance of any node over what the check allows.
+    """
+
+    faults: tuple[FaultState, ...]
+    state: str
+    machine: str
+    base_power: float
+    loaded: bool
     buses: tuple[str, ...]
     bus_nominal: Floats
     voltage_sequence: Complex
@@ -122,6 +146,7 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
     undefined: Bools
     joined: Bools
     terminals: Terminals
+    terminals_before: Terminals | None
     star_points: tuple[StarPointState, ...]
     deltas: tuple[DeltaCurrent, ...]
     earthed_lines: tuple[EarthedLine, ...]
@@ -134,9 +159,46 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
     index: dict[str, int]
 
     @property
+    def fault(self) -> Fault:
+        """The first fault."""
+        return self.faults[0].fault
+
+    @property
+    def nominal(self) -> float:
+        """Nominal voltage (V) at the first fault."""
+        return self.faults[0].nominal
+
+    @property
+    def prefault(self) -> float:
+        """Voltage at the first fault before it, per unit of nominal."""
+        return self.faults[0].prefault
+
+    @property
+    def impedance(self) -> Complex:
+        """Driving-point impedances (3,) ohm of the first fault."""
+        return self.faults[0].impedance
+
+    @property
+    def current(self) -> Complex:
+        """Phase currents (3,) A from the network into the first fault."""
+        return self.faults[0].current
+
+    @property
+    def current_sequence(self) -> Complex:
+        """Components (3,) A of ``current``."""
+        return self.faults[0].current_sequence
+
+    @property
+    def largest(self) -> float:
+        """The largest phase current (A) of any fault or through any break."""
+        sizes = [np.abs(f.current).max() for f in self.faults]
+        sizes += [np.abs(f.through).max() for f in self.faults if f.through is not None]
+        return float(max(sizes))
+
+    @property
     def residual(self) -> complex:
-        """Three times the zero-sequence current, A: what the fault sends into earth."""
-        return complex(3 * self.current_sequence[0])
+        """What the first fault sends into earth, A: three times its zero-sequence current."""
+        return self.faults[0].residual
 
     @property
     def voltage(self) -> Complex:
@@ -159,8 +221,11 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
         """The impedance (ohm) that limits the current, fault impedance included, for X/R.
 
         Z1 three-phase; Z1 + Z2 line-line; Z1 + Z2 + Z0 line-ground; Z1 + Z2 Z0/(Z2 + Z0) with two
-        phases to ground: IEC 60909-0 clause 4.2.
+        phases to ground: IEC 60909-0 clause 4.2. Not a number for open conductors and for several
+        faults at once.
         """
+        if len(self.faults) > 1 or self.fault.kind.series:
+            return complex(np.nan)
         z0, z1, z2 = (complex(z) for z in self.impedance)
         zf, zg = self.fault.zf, self.fault.zg
         match self.fault.kind.name:
@@ -189,13 +254,14 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
         """Earth-fault factor (n,) of every bus, None for a fault clear of earth.
 
         IEC 60071-1 clause 3: the highest voltage to earth of a sound phase over the phase voltage
-        there without the fault. Where the bus is not joined by metal to the faulted place no phase is
+        there without the fault. Where the bus is not joined by metal to a faulted place no phase is
         faulted, and the highest of all three counts; nan at dead buses and where ``undefined``.
         """
-        if not self.fault.kind.earth:
+        if not any(state.fault.earth for state in self.faults):
             return None
         size = np.abs(self.voltage)
-        faulted = [p in self.fault.phases for p in "abc"]
+        shorted = "".join(s.fault.phases for s in self.faults if not s.fault.kind.series or s.fault.fallen)
+        faulted = [p in shorted for p in "abc"]
         size = np.where(np.array(faulted)[:, None] & self.joined[None, :], -1.0, size).max(axis=0)
         reference = np.abs(self.before)
         known = (reference > 0) & ~self.undefined & (size >= 0)

@@ -1,56 +1,70 @@
-"""A fault on factorised networks -> its solution in SI."""
+"""Faults on factorised networks -> their solution in SI."""
 
 from __future__ import annotations
 
-import numpy as np
+from collections.abc import Mapping, Sequence
+from types import MappingProxyType
 
-from seqfault.equations.per_unit import base_current, base_impedance
-from seqfault.equations.symmetrical import turn_sequence
+import numpy as np
+from msgspec.structs import replace
+
+from seqfault.case.arrangement import Label
+from seqfault.equations.per_unit import base_current
+from seqfault.equations.symmetrical import clock_turn, turn_sequence
 from seqfault.errors import quoted
+from seqfault.faults.breaks import lost_buses, relabelled, with_breaks
 from seqfault.faults.converters import Settled, settle, with_converters
-from seqfault.faults.flows import (
-    SequenceFlows,
-    TerminalMap,
-    check_balance,
-    sequence_flows,
-    star_current_base,
-    terminal_map,
-)
+from seqfault.faults.flows import SequenceFlows, TerminalMap, check_balance, sequence_flows, terminal_map
 from seqfault.faults.home import check_home, earth_paths
-from seqfault.faults.kinds import Fault
-from seqfault.faults.ports import PortSolution, solve_ports
-from seqfault.faults.solution import (
-    DeltaCurrent,
-    EarthedLine,
-    FaultSolution,
-    StarPointState,
-    Terminals,
-)
+from seqfault.faults.notes import apart, notes
+from seqfault.faults.ports import Loops, PortSolution, solve_ports
+from seqfault.faults.shown import delta_currents, earthed_lines, shown_terminals, star_point_states
+from seqfault.faults.solution import FaultSolution, FaultState, HomePath, Terminals
+from seqfault.faults.standing import Loading, Standing, leaving, loops_of, states, through_breaks, turned
 from seqfault.faults.ties import tie_notes, with_ties
-from seqfault.model.elements import DELTA, Bools, Complex, Ints, Model
+from seqfault.model.elements import Bools, Complex, Ints, Model
 from seqfault.networks.factors import SEEN, SequenceNetworks
 
 
-def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
-    """Solve one fault at a bus.
+def solve_faults(
+    networks: SequenceNetworks,
+    standing: Sequence[Standing],
+    loading: Loading | None = None,
+    labels: Mapping[tuple[str, str], Label | None] = MappingProxyType({}),
+) -> FaultSolution:
+    """Solve faults that stand at once.
 
-    Raises ``NoAnswerError`` at resonance, ``CheckError`` where the result fails its balance check.
+    ``labels`` say how terminals are named in the answer, where not as in the model. Raises
+    ``NoAnswerError`` at resonance, ``CheckError`` where the result fails its balance check.
     """
     model = networks.model
-    place = model.index[fault.place]
-    places = np.array([place])
-    nodes = model.node[places]
-    clock = (model.clock - model.clock[place]) % 12
-    ports, fed = _with_converters(networks, places, fault, clock[places])
+    where = [np.array([model.index[bus] for bus in each.buses], np.int64) for each in standing]
+    first = int(where[0][0])
+    # Of a part that nothing but earth joins to the first place, its own first bus is the reference.
+    clock = np.where(model.part == model.part[first], model.clock - model.clock[first], model.clock) % 12
     terminals = terminal_map(model)
+    before = model.before if loading is None else loading.voltage
+    if loading is not None and before[first]:
+        loading = turned(loading, before[first])
+        before = loading.voltage
+    lost = lost_buses(model, standing, where)
+    driving = before
+    if lost.any():  # a dead part: loads let its voltage fall by themselves, where there are any
+        one = networks[1]
+        part = one.free.part[model.node]
+        loose = (part >= 0) & (one.slacks[part] > 0) if len(one.slacks) else part >= 0
+        driving = np.where(lost & (loose if loading is not None else True), 0, before)
+    flowing = through_breaks(model, terminals, where, loading)
+    shapes = [loops_of(model, each, at) for each, at in zip(standing, where, strict=True)]
+    ports, fed = _with_converters(networks, shapes, clock, driving, np.concatenate(flowing))
+    nodes = model.node[ports.ports]
     flows, potentials, worst = [], [], 0.0
     for s in range(3):
-        drawn, at, columns = ports.current, nodes, ports.columns[s]
+        drawn, at, columns = ports.drawn, nodes, ports.columns[s]
         if s == 1 and len(fed.current):
             drawn = np.concatenate([drawn, np.stack([0 * fed.current, -fed.current, 0 * fed.current])], 1)
             at = np.concatenate([nodes, model.converters.node])
             columns = np.concatenate([columns, networks[1].columns(model.converters.node)], axis=1)
-        # The port currents are physical; the place is the reference of angles, so they need no turn.
         w, v = networks[s].respond(columns, at, -drawn[s], ports.slack[s])
         flows.append(sequence_flows(model, s, w, v))
         worst = max(worst, check_balance(model, terminals, at, drawn, flows[s], w, v, s))
@@ -58,46 +72,58 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
     undefined, stars_undefined = _undefined(networks, ports)
     change = turn_sequence(np.stack(potentials), clock)
     base_v = model.nominal / np.sqrt(3)
-    before = turn_sequence(np.stack([0 * model.before, model.before, 0 * model.before]), clock)
-    voltage = (change + before) * base_v
     base_i = base_current(model.nominal, model.base_power)
-    z_base = base_impedance(model.nominal[place], model.base_power)
-    current = ports.current[:, 0] * base_i[place]
-    home = earth_paths(model, place, flows[0], terminals) if fault.kind.earth else ()
+    stood = turn_sequence(np.stack([0 * driving, driving, 0 * driving]), clock)
+    voltage = (change + stood) * base_v
+    faults = states(model, standing, where, ports, shapes, flowing, clock, before, voltage)
+    home = _home(model, where, faults, flows[0], terminals)
     here = model.galvanic[model.node]
-    check_home(home, complex(3 * current[0]))
-    shown = _terminals(model, terminals, flows, clock, base_i)
-    shown = with_ties(model, place, current, with_converters(model, fed.current, clock, shown))
+    shown = shown_terminals(model, terminals, [flow.terminal for flow in flows], clock, base_i)
+    shown = with_converters(model, fed.current, clock, shown)
+
+    def named(rows: Terminals, told: tuple[FaultState, ...]) -> Terminals:
+        rows = with_ties(model, leaving(where, standing, told), rows)
+        return relabelled(with_breaks(rows, standing, told, model), labels)
+
+    earlier = None
+    if loading is not None:
+        none = 0 * loading.terminal
+        stood_by = [none, loading.terminal, none]
+        earlier = shown_terminals(model, terminals, stood_by, clock, base_i)
+        earlier = with_converters(model, 0 * fed.current, clock, earlier)
+        shown = replace(shown, sequence=shown.sequence + earlier.sequence)
+        calm = tuple(replace(f, current=0 * f.current, through=f.through_before) for f in faults)
+        earlier = named(earlier, calm)
+    shown = named(shown, faults)
     return FaultSolution(
-        fault=fault,
+        faults=faults,
         state=model.state,
         machine=model.machine,
-        nominal=float(model.nominal[place]),
         base_power=model.base_power,
-        prefault=float(np.abs(model.before[place])),
-        impedance=_ohms(ports.impedance[:, 0], float(z_base)),
-        current=ports.phases[:, 0] * base_i[place],
-        current_sequence=current,
+        loaded=loading is not None,
         buses=model.buses,
         bus_nominal=model.nominal,
         voltage_sequence=voltage,
-        before=before[1] * base_v,
-        undefined=undefined,
-        joined=here == here[place],
+        before=before * clock_turn(clock) * base_v,
+        undefined=undefined & ~lost,
+        joined=np.isin(here, here[[int(at[0]) for at in where]]),
         terminals=shown,
-        star_points=_star_points(model, flows[0], stars_undefined),
-        deltas=_deltas(model, flows[0]),
+        terminals_before=earlier,
+        star_points=star_point_states(model, flows[0], stars_undefined),
+        deltas=delta_currents(model, flows[0]),
         home=home,
         balance=worst,
         notes=(
-            *_notes(networks, model, place, fault, ports),
-            *_apart(model, place, change),
+            *notes(networks, faults, lost, voltage, before * base_v, loading is not None),
+            *apart(model, first, change),
             *fed.notes,
             *tie_notes(model),
+            *(loading.notes if loading is not None else ()),
         ),
-        earthed_lines=_earthed_lines(model, flows[0]),
+        earthed_lines=earthed_lines(model, flows[0]),
         undefined_notes=tuple(
-            f"potential of {quoted(model.buses[k])}: nothing fixes it" for k in np.flatnonzero(undefined)
+            f"potential of {quoted(model.buses[k])}: nothing fixes it"
+            for k in np.flatnonzero(undefined & ~lost)
         ),
         assumptions=model.assumptions,
         warnings=model.warnings,
@@ -105,39 +131,53 @@ def solve_fault(networks: SequenceNetworks, fault: Fault) -> FaultSolution:
     )
 
 
+def _home(
+    model: Model,
+    where: Sequence[Ints],
+    faults: Sequence[FaultState],
+    flows: SequenceFlows,
+    terminals: TerminalMap,
+) -> tuple[HomePath, ...]:
+    """The paths home of every network that has a fault to earth, each checked against what it sends."""
+    here = model.galvanic[model.node]
+    sent: dict[int, complex] = {}
+    for at, state in zip(where, faults, strict=True):
+        if state.fault.earth:
+            group = int(here[at[0]])
+            sent[group] = sent.get(group, 0j) + state.residual
+    out: list[HomePath] = []
+    for group, residual in sent.items():
+        paths = earth_paths(model, group, flows, terminals)
+        check_home(paths, residual)
+        out += paths
+    return tuple(out)
+
+
 def _with_converters(
-    networks: SequenceNetworks, places: Ints, fault: Fault, clock: Ints
+    networks: SequenceNetworks, shapes: Sequence[Loops], clock: Ints, before: Complex, flowing: Complex
 ) -> tuple[PortSolution, Settled]:
-    """The ports solved together with what converters feed at the voltages of this fault."""
+    """The ports solved together with what converters feed at the voltages of these faults."""
     model, one = networks.model, networks[1]
-    converters, nodes = model.converters, model.node[places]
+    converters = model.converters
     if not converters.names:
-        unlifted = np.zeros(len(places), complex)
-        return solve_ports(networks, places, [fault], clock, unlifted), Settled(unlifted[:0], ())
+        nothing = np.zeros(0, complex)
+        return solve_ports(networks, shapes, clock, before, flowing), Settled(nothing, ())
     own = one.columns(converters.node)
 
     def ports(current: Complex) -> PortSolution:
-        lifted = one.respond(own, converters.node, current, {})[1]
-        return solve_ports(networks, places, [fault], clock, lifted[nodes])
+        lifted = one.respond(own, converters.node, current, {})[1][model.node]
+        return solve_ports(networks, shapes, clock, before + lifted, flowing)
 
     def respond(current: Complex) -> Complex:
         solved = ports(current)
         columns = np.concatenate([solved.columns[1], own], axis=1)
-        at = np.concatenate([nodes, converters.node])
-        drawn = np.concatenate([-solved.current[1], current])
+        at = np.concatenate([model.node[solved.ports], converters.node])
+        drawn = np.concatenate([-solved.drawn[1], current])
         v = one.respond(columns, at, drawn, solved.slack[1])[1]
-        return np.asarray(model.before[converters.bus] + v[converters.node])
+        return np.asarray(before[converters.bus] + v[converters.node])
 
     fed = settle(converters, model.live[converters.bus], respond)
     return ports(fed.current), fed
-
-
-def _ohms(per_unit: Complex, base: float) -> Complex:
-    """Impedances in ohm, infinite ones left as they are."""
-    out = np.full(per_unit.shape, np.inf, complex)
-    known = np.isfinite(per_unit)
-    out[known] = per_unit[known] * base
-    return out
 
 
 def _undefined(networks: SequenceNetworks, ports: PortSolution) -> tuple[Bools, Bools]:
@@ -151,119 +191,19 @@ def _undefined(networks: SequenceNetworks, ports: PortSolution) -> tuple[Bools, 
     floating = np.zeros(zero.size, bool)
     reach = np.einsum("ik,ikx->ix", zero.direction[at], untouched[part[at]])
     floating[at] = (np.abs(reach) > SEEN).any(axis=1)
+    beside = np.zeros(model.common, bool)  # behind open poles, by the sequences that turn
     for mixture in ports.unseen:
-        total = np.zeros(zero.size, complex)
-        for (p, x), share in mixture.items():
-            inside = part == p
-            total[inside] += share * (zero.direction[inside] @ zero.slack[p, :, x])
-        floating |= np.abs(total) > SEEN
-    buses = floating[model.node] & model.live
+        moved = [np.zeros(networks[s].size, complex) for s in range(3)]
+        for (s, (p, x)), share in mixture.items():
+            factor = networks[s]
+            inside = factor.free.part == p
+            moved[s][inside] += share * (factor.direction[inside] @ factor.slack[p, :, x])
+        floating |= np.abs(moved[0]) > SEEN
+        beside |= (np.abs(moved[1]) > SEEN) | (np.abs(moved[2]) > SEEN)
+    buses = (floating[: model.common] | beside)[model.node] & model.live
     stars = np.zeros(len(model.stars.names), bool)
     own = model.stars.node >= 0
     stars[own] = floating[model.stars.node[own]]
     isolated = np.array([kind == "isolated" for kind in model.stars.kinds], bool) & ~own
     stars[isolated] = floating[model.node[model.stars.bus[isolated]]]
     return buses, stars
-
-
-def _terminals(
-    model: Model,
-    terminals: TerminalMap,
-    flows: list[SequenceFlows],
-    clock: Complex,
-    base_i: Complex,
-) -> Terminals:
-    """Each element's terminals side by side; a machine's capacitance flows through its terminal."""
-    at, bus = terminals.shown, terminals.bus[terminals.shown]
-    shown = at.tolist()
-    placed = (terminals.row >= 0) & terminals.closed  # an open end passes nothing, to the last bit
-    sequence = np.zeros((3, len(at)), complex)
-    for s, flow in enumerate(flows):
-        np.add.at(sequence[s], terminals.row[placed], flow.terminal[placed])
-    return Terminals(
-        element=tuple(map(terminals.element.__getitem__, shown)),
-        kind=tuple(map(terminals.kind.__getitem__, shown)),
-        side=tuple(map(terminals.side.__getitem__, shown)),
-        bus=tuple(map(model.buses.__getitem__, bus.tolist())),
-        bus_index=bus,
-        count=terminals.count[at],
-        sequence=turn_sequence(sequence, clock[bus]) * base_i[bus],
-    )
-
-
-def _star_points(model: Model, flows: SequenceFlows, undefined: Bools) -> tuple[StarPointState, ...]:
-    stars = model.stars
-    current = flows.star * star_current_base(model)
-    voltage = flows.star_voltage * stars.base / np.sqrt(3)
-    return tuple(
-        StarPointState(
-            name,
-            stars.kinds[k],
-            complex(current[k]),
-            None if undefined[k] else complex(voltage[k]),
-            model.buses[stars.bus[k]],
-        )
-        for k, name in enumerate(stars.names)
-    )
-
-
-def _earthed_lines(model: Model, flows: SequenceFlows) -> tuple[EarthedLine, ...]:
-    """Zero-sequence current coupled into lines that are out of service and earthed at both ends."""
-    lines = model.lines
-    ampere = np.sqrt(3) * model.base_power / lines.voltage
-    return tuple(
-        EarthedLine(lines.names[k], complex(flows.terminal[k] * ampere[k]))
-        for k in np.flatnonzero(lines.earthed).tolist()
-    )
-
-
-def _deltas(model: Model, flows: SequenceFlows) -> tuple[DeltaCurrent, ...]:
-    out = []
-    for sets, winding in zip(model.winding_sets, flows.delta, strict=True):
-        at = np.nonzero(sets.kind == DELTA)
-        ampere = winding[at] * sets.sense[at] * model.base_power / (3 * sets.rated[at])
-        columns = (array.tolist() for array in (*at, sets.bus[at], ampere))
-        for unit, w, bus, current in zip(*columns, strict=True):
-            out.append(DeltaCurrent(sets.names[unit], sets.sides[w], model.buses[bus], current))
-    return tuple(out)
-
-
-def _apart(model: Model, place: int, change: Complex) -> tuple[str, ...]:
-    """A sentence on buses of another system that the fault reaches through earth alone.
-
-    Their own phase angle against the faulted system is not in the data, so how the common voltage
-    adds to their phases is not either.
-    """
-    other = model.live & (model.part != model.part[place]) & (np.abs(change[0]) > 1e-6)
-    names = [quoted(model.buses[k]) for k in np.flatnonzero(other)]
-    if not names:
-        return ()
-    shown = ", ".join(names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
-    return (
-        f"{shown}: joined to the fault by a shared star point or coupled lines only; how far this other"
-        " system stands from the faulted one in angle is not in the data, so its phase voltages are"
-        " shown for one angle of many",
-    )
-
-
-def _notes(
-    networks: SequenceNetworks, model: Model, place: int, fault: Fault, ports: PortSolution
-) -> tuple[str, ...]:
-    """Sentences on what is special about this answer."""
-    out = []
-    name = quoted(model.buses[place])
-    if not model.live[place]:
-        out.append(f"{name} is dead in this state: no infeed or generator is connected; nothing flows")
-    elif fault.kind.earth and not np.isfinite(ports.impedance[0, 0]):
-        zero = networks[0]
-        if zero.resonant[zero.free.part[model.node[place]]]:
-            out.append(
-                f"the earthing of {name} is in exact resonance with its capacitance, without loss: no"
-                " residual current flows; a real coil's loss would let a little through"
-            )
-        else:
-            out.append(
-                f"nothing joins the network of {name} to earth, not even a capacitance: no earth current"
-                " flows; in a real network the charging current of its cables and machines does"
-            )
-    return tuple(out)

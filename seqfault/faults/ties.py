@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
+from seqfault.equations.symmetrical import to_sequence
 from seqfault.errors import quoted
 from seqfault.faults.solution import Terminals
 from seqfault.model.elements import Complex, Model
 
 
-def with_ties(model: Model, place: int, fault: Complex, terminals: Terminals) -> Terminals:
-    """``terminals`` and those of the closed ties; ``fault`` (3,) A leaves at bus ``place``.
+def with_ties(model: Model, leaving: Sequence[tuple[int, Complex]], terminals: Terminals) -> Terminals:
+    """``terminals`` and those of the closed ties; ``leaving`` gives buses and what leaves there, (3,) A.
 
     A tie has no impedance; what it carries is what the buses on its far side of the cut draw.
     """
@@ -18,7 +21,8 @@ def with_ties(model: Model, place: int, fault: Complex, terminals: Terminals) ->
         return terminals
     drawn = np.zeros((3, len(model.buses)), complex)
     np.add.at(drawn.T, terminals.bus_index, terminals.sequence.T)
-    drawn[:, place] += fault
+    for place, phases in leaving:
+        drawn[:, place] += to_sequence(phases)
     element, side, bus, current = [], [], [], []
     for k, name in enumerate(model.ties.names):
         near = model.ties.side[k]

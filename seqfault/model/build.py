@@ -6,6 +6,7 @@ nowhere else.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -20,6 +21,7 @@ from seqfault.model.doubts import doubts, lost_earth, unearthed_buses
 from seqfault.model.elements import STAR, Ints, Lines, Model, WindingSets
 from seqfault.model.lines import lines
 from seqfault.model.machines import generators, machine_capacitances, motors
+from seqfault.model.operating import loads, operating
 from seqfault.model.shunts import capacitors, converters, infeeds, joined
 from seqfault.model.ties import closed_ties
 from seqfault.model.transformers import transformer_sets
@@ -48,6 +50,18 @@ def build_model(case: Case, machine: Machine = "subtransient") -> Model:
         whole = _assemble(Context(base, machine, _coils(base, base, machine)[0]))
         found += lost_earth(model, bare, whole)
     return replace(model, warnings=(*model.warnings, *found))
+
+
+def build_arranged(
+    case: Case, within: Case, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
+) -> Model:
+    """The model of ``case``, which is ``within`` with lines and terminals rewritten.
+
+    ``links`` are pairs of its buses that breaks stand between. Coils are tuned as in ``within``, and
+    what was assumed and warned of there is not said again.
+    """
+    base = within if within.state == "base" else case_from_tree(within.tree, within.source)
+    return _assemble(Context(case, machine, _coils(base, within, machine)[0], links))
 
 
 def _coils(
@@ -79,21 +93,29 @@ def _assemble(c: Context) -> Model:
     supplies = infeeds(c)
     machines = generators(c)
     running = motors(c)
+    consumers, drawn = loads(c)
+    sources = joined(joined(supplies, running), consumers)
     units = transformer_sets(c)
     sets = (machines, *units.sets, *zigzag_sets(c, units.zigzags))
     through = wires.closed.all(axis=0)
-    zone = components(joined_nodes, wires.nodes[0, through], wires.nodes[1, through])
+    near, far = c.links
+    zone = components(
+        joined_nodes,
+        np.concatenate([wires.nodes[0, through], near]),
+        np.concatenate([wires.nodes[1, through], far]),
+    )
     clock, misfits = displacements(zone, zone[units.hv], zone[units.lv], units.clock, units.names)
     if c.complaints or misfits:
         raise CaseError([*c.complaints, *misfits], case.source)
     part = components(
         joined_nodes,
-        np.concatenate([wires.nodes[0, through], units.hv]),
-        np.concatenate([wires.nodes[1, through], units.lv]),
+        np.concatenate([wires.nodes[0, through], near, units.hv]),
+        np.concatenate([wires.nodes[1, through], far, units.lv]),
     )
     live = live_buses(part, np.concatenate([supplies.node, machines.node[:, 0]]))[c.node]
     _warn_of_dead(c, live, part[c.node])
     stars = c.stars.columns(common)
+    state = operating(c, sources, drawn)
     return Model(
         title=case.title,
         state=case.state,
@@ -113,7 +135,7 @@ def _assemble(c: Context) -> Model:
         galvanic=_joined_by_metal(c, wires, sets, stars.node, common),
         before=np.where(live, complex(case.prefault.voltage.value), 0j),
         lines=wires,
-        sources=joined(supplies, running),
+        sources=sources,
         capacitances=joined(machine_capacitances(c), capacitors(c)),
         ties=closed_ties(case, c.index),
         converters=converters(c),
@@ -121,6 +143,7 @@ def _assemble(c: Context) -> Model:
         stars=stars,
         assumptions=c.ledger.entries(),
         warnings=(*case.warnings, *c.warnings),
+        operating=state,
     )
 
 
@@ -130,7 +153,9 @@ def _joined_by_metal(
     """Labels (common,) of the nodes joined by metal: lines, auto windings, neutrals that ``sets`` share."""
     standing = (wires.nodes >= 0).all(axis=0)
     metal = c.node[np.array(c.metal, np.int64).reshape(-1, 2)]
-    first, second = [wires.nodes[0, standing], metal[:, 0]], [wires.nodes[1, standing], metal[:, 1]]
+    near, far = c.links
+    first = [wires.nodes[0, standing], metal[:, 0], near]
+    second = [wires.nodes[1, standing], metal[:, 1], far]
     for each in sets:
         star = (each.kind == STAR) & (each.star >= 0)
         node = np.full_like(each.star, -1)

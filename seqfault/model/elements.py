@@ -61,7 +61,7 @@ class Lines(msgspec.Struct, frozen=True, eq=False):
 
 
 class Shunts(msgspec.Struct, frozen=True, eq=False):
-    """What joins a bus straight to earth: infeeds, induction motors, capacitances.
+    """What joins a bus straight to earth: infeeds, induction motors, loads, capacitances.
 
     ``bus`` and ``node`` (m,); ``admittance`` (3, m), zero where a sequence has no path.
     ``kinds`` says which table a record is of.
@@ -132,6 +132,22 @@ class Converters(msgspec.Struct, frozen=True, eq=False):
     threshold: Floats
 
 
+class Operating(msgspec.Struct, frozen=True, eq=False):
+    """The loaded state, beside ``Model.sources`` (m) and the generators (g), per unit.
+
+    ``held`` (m,) voltage that infeeds hold, nan for others; ``drawn`` (m,) power that motors and loads
+    draw; ``earthed`` (m,) loads whose star point is earthed; ``fed`` (g,) active power of generators, nan
+    where not stated; ``holds`` (g,) the voltage they hold; ``rating`` (g,) VA.
+    """
+
+    held: Floats
+    drawn: Complex
+    earthed: Bools
+    fed: Floats
+    holds: Floats
+    rating: Floats
+
+
 class ClosedTies(msgspec.Struct, frozen=True):
     """Bus couplers that are in and closed: names, and the bus indices ``ends`` (2, m) they join.
 
@@ -181,6 +197,7 @@ class Model(msgspec.Struct, frozen=True, eq=False):
     stars: StarPoints
     assumptions: tuple[Assumption, ...]
     warnings: tuple[str, ...]
+    operating: Operating | None = None
 
     @property
     def nodes(self) -> int:

@@ -87,7 +87,10 @@ def motors(c: Context) -> Shunts:
     records: dict[str, Motor] = c.in_service("motors", lambda r: (r.bus,))
     if c.machine != "subtransient":
         for name in records:
-            c.ledger.note("motor", name, f"left out of the {c.machine} state: its current has decayed")
+            text = f"left out of the {c.machine} state: its current has decayed"
+            if c.loaded:
+                text = f"no source in the {c.machine} state, and drew nothing before the fault"
+            c.ledger.note("motor", name, text)
         records = {}
     bus = np.array([c.index[r.bus] for r in records.values()], np.int64)
     y = np.zeros((3, len(records)), complex)
@@ -101,7 +104,7 @@ def motors(c: Context) -> Shunts:
         else:
             assert r.shaft_power is not None
             shaft = r.shaft_power.value.real
-            rating = motor_rating(shaft, _number(r.efficiency), _number(r.power_factor))
+            rating = motor_rating(shaft, as_number(r.efficiency), as_number(r.power_factor))
         if r.x_over_r is not None:
             q = r.x_over_r
         else:
@@ -118,7 +121,23 @@ def motors(c: Context) -> Shunts:
     return Shunts(tuple(records), ("motor",) * len(records), bus, c.node[bus], y)
 
 
-def _number(value: Any) -> float:
+def drawn_power(motor: Motor, power_factor: float) -> tuple[complex, bool]:
+    """P + jQ (VA) that all motors of a record draw at rated load, and whether it states a power factor.
+
+    ``power_factor`` serves where it states none.
+    """
+    stated = motor.power_factor is not None
+    cosine = as_number(motor.power_factor) if stated else power_factor
+    if motor.rating is not None:
+        rating = motor.rating.value.real
+    else:
+        assert motor.shaft_power is not None
+        rating = motor_rating(motor.shaft_power.value.real, as_number(motor.efficiency), cosine)
+    return motor.count * rating * complex(cosine, np.sqrt(1 - cosine**2)), stated
+
+
+def as_number(value: Any) -> float:
+    """A plain number, or the fraction that a per cent quantity states."""
     return float(getattr(value, "value", value))
 
 

@@ -41,7 +41,7 @@ def compare_page(network: Network, comparison: Comparison) -> Page:
     blocks = [_symbols(solutions), _into(comparison)]
     if any(s.home for s in solutions):
         blocks.append(_home(solutions))
-    blocks += [_left(comparison), _ratio(solutions)]
+    blocks += [_left(comparison), *_seen(comparison), _ratio(solutions)]
     title = Title(
         network.model.title, f"{comparison.place}  {kilovolt(first.nominal)}", conditions(solutions)
     )
@@ -122,8 +122,8 @@ def _home(solutions: tuple[FaultSolution, ...]) -> Block:
 
 
 def _left(comparison: Comparison) -> Block:
-    solutions, place = comparison.solutions, comparison.place
-    k = solutions[0].index[place]
+    solutions = comparison.solutions
+    k = solutions[0].index[solutions[0].faults[0].bus]
     before = [abs(complex(s.before[k])) for s in solutions]
 
     def cells(label: str, volts: list[float]) -> Row:
@@ -147,6 +147,25 @@ def _left(comparison: Comparison) -> Block:
         cells("displacement (3V0)", [3 * abs(complex(s.voltage_sequence[0, k])) for s in solutions])
     )
     return Block("Left on the bus: per cent of the phase voltage before the fault", (PERCENT,), tuple(rows))
+
+
+def _seen(comparison: Comparison) -> Iterator[Block]:
+    """What the terminal asked for carries in each kind: phases, residual, components."""
+    if not comparison.seen:
+        return
+    tops = [
+        max(s.largest, float(np.abs(s.terminals.phases).max(initial=0.0))) for s in comparison.solutions
+    ]
+
+    def row(label: str, values: list[complex]) -> Row:
+        sizes = [abs(quiet(v, top)) for v, top in zip(values, tops, strict=True)]
+        return Row(label, tuple((size,) for size in sizes), greatest(sizes))
+
+    rows = [row(f"phase {p}", [complex(x.phases[k]) for x in comparison.seen]) for k, p in enumerate("abc")]
+    rows.append(row("residual (3I0)", [complex(3 * x.sequence[0]) for x in comparison.seen]))
+    rows.append(row("positive sequence", [complex(x.sequence[1]) for x in comparison.seen]))
+    rows.append(row("negative sequence", [complex(x.sequence[2]) for x in comparison.seen]))
+    yield Block(f"Seen at {comparison.at}: ampere from the bus into the element", (AMPERE,), tuple(rows))
 
 
 def _ratio(solutions: tuple[FaultSolution, ...]) -> Block:

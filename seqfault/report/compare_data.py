@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from typing import Any
 
 from seqfault.faults.network import Network
-from seqfault.report.data import Quantity, fault_rows, fault_tree, header
+from seqfault.report.data import Quantity, fault_rows, fault_tree, header, polar
 from seqfault.studies.compare import Comparison, Extreme
 
 
@@ -24,6 +24,11 @@ def compare_tree(network: Network, comparison: Comparison) -> dict[str, Any]:
         for shared in ("format", "case", "scenario", "assumptions", "warnings"):
             del tree[shared]
         faults.append(tree)
+    seen = [
+        {p: polar(complex(x.phases[k])) for k, p in enumerate("abc")}
+        | {f"i{k}": polar(complex(x.sequence[k])) for k in range(3)}
+        for x in comparison.seen
+    ]
     first = comparison.solutions[0]
     return {
         **header(network),
@@ -36,6 +41,7 @@ def compare_tree(network: Network, comparison: Comparison) -> dict[str, Any]:
         "least_clear_of_earth": extreme(comparison.least_clear_of_earth),
         "earth_fault_factor": extreme(comparison.earth_fault_factor),
         "faults": faults,
+        **({"seen_at": comparison.at, "seen": seen} if seen else {}),
         "assumptions": [text for a in first.assumptions for text in a.sentences()],
         "warnings": list(first.warnings),
     }

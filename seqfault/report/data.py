@@ -15,7 +15,8 @@ import msgspec
 import numpy as np
 
 from seqfault.faults.network import Network
-from seqfault.faults.solution import FaultSolution, Terminals
+from seqfault.faults.solution import FaultSolution, FaultState, Terminals
+from seqfault.model.elements import Complex
 from seqfault.report.numbers import quiet
 
 FORMAT = 1
@@ -67,25 +68,15 @@ def header(network: Network) -> dict[str, Any]:
 def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
     """``solution`` as plain values."""
     s = solution
-    top = float(np.abs(s.current).max())
-    current = {p: polar(quiet(s.current[k], top)) for k, p in enumerate("abc")}
-    current |= {f"i{k}": polar(quiet(s.current_sequence[k], top)) for k in range(3)}
+    first, *others = [_state(state, s.largest) for state in s.faults]
     return {
         **header(network),
-        "fault": {
-            "place": s.fault.place,
-            "kind": s.fault.kind.name,
-            "phases": s.fault.phases,
-            "zf": cartesian(s.fault.zf),
-            "zg": cartesian(s.fault.zg),
-            "nominal": s.nominal,
-            "prefault": s.prefault,
-        },
-        "impedance": {f"z{k}": cartesian(s.impedance[k]) for k in (1, 2, 0)},
+        "loaded": s.loaded,
+        **first,
+        **({"also": others} if others else {}),
         "x_over_r": s.x_over_r if math.isfinite(s.x_over_r) else None,
-        "current": current | {"residual": polar(quiet(s.residual, top))},
         "voltages": _voltages(s),
-        "flows": _flows(s.terminals),
+        "flows": _flows(s.terminals, s.terminals_before),
         "neutrals": {
             star.name: {
                 "current": polar(star.current),
@@ -110,6 +101,39 @@ def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
     }
 
 
+def _state(state: FaultState, top: float) -> dict[str, Any]:
+    """One fault: what was asked, the impedances, the currents; of a break what passes and stands across."""
+    fault = state.fault
+    current = {p: polar(quiet(state.current[k], top)) for k, p in enumerate("abc")}
+    current |= {f"i{k}": polar(quiet(state.current_sequence[k], top)) for k in range(3)}
+    out: dict[str, Any] = {
+        "fault": {
+            "place": fault.place,
+            "kind": fault.kind.name,
+            "phases": fault.phases,
+            "zf": cartesian(fault.zf),
+            "zg": cartesian(fault.zg),
+            **({"fallen": fault.fallen} if fault.fallen else {}),
+            "nominal": state.nominal,
+            "prefault": state.prefault,
+        },
+        "impedance": {f"z{k}": cartesian(state.impedance[k]) for k in (1, 2, 0)},
+        "current": current | {"residual": polar(quiet(state.residual, top))},
+    }
+    if state.through is not None and state.across is not None and state.through_before is not None:
+        out["break"] = {
+            "sides": list(state.sides or ()),
+            "through": _phases(state.through, top),
+            "through_before": _phases(state.through_before, top),
+            "across": _phases(state.across, state.nominal),
+        }
+    return out
+
+
+def _phases(values: Complex, top: float) -> dict[str, list[float]]:
+    return {p: polar(quiet(complex(values[k]), top)) for k, p in enumerate("abc")}
+
+
 def _voltages(s: FaultSolution) -> dict[str, Any]:
     phases, sequence, before = s.voltage, s.voltage_sequence, np.abs(s.before)
     out: dict[str, Any] = {}
@@ -119,11 +143,13 @@ def _voltages(s: FaultSolution) -> dict[str, Any]:
         row |= {f"v{j}": polar(quiet(sequence[j, k], top)) for j in range(3)}
         if s.undefined[k]:
             row |= dict.fromkeys(("a", "b", "c", "v0"))
+        if s.loaded:
+            row["before"] = polar(complex(s.before[k]))
         out[bus] = row
     return out
 
 
-def _flows(t: Terminals) -> list[dict[str, Any]]:
+def _flows(t: Terminals, earlier: Terminals | None) -> list[dict[str, Any]]:
     phases, sequence = t.phases, t.sequence
     top = float(np.abs(phases).max(initial=0.0))
     out = []
@@ -137,13 +163,19 @@ def _flows(t: Terminals) -> list[dict[str, Any]]:
         }
         row |= {p: polar(quiet(phases[j, k], top)) for j, p in enumerate("abc")}
         row |= {f"i{j}": polar(quiet(sequence[j, k], top)) for j in range(3)}
-        out.append(row | {"residual": polar(quiet(3 * sequence[0, k], top))})
+        row["residual"] = polar(quiet(3 * sequence[0, k], top))
+        if earlier is not None:
+            row["before"] = _phases(earlier.phases[:, k], top)
+            row["by_the_fault"] = _phases(phases[:, k] - earlier.phases[:, k], top)
+        out.append(row)
     return out
 
 
 def fault_rows(solution: FaultSolution) -> Iterator[Quantity]:
     """``solution`` in long form."""
-    s, place = solution, solution.fault.place
+    s = solution
+    place = " and ".join(state.fault.place for state in s.faults)
+    kind = " and ".join(state.fault.kind.name for state in s.faults)
 
     def row(
         quantity: str, phase: str, value: complex | None, unit: str, where: str, real: bool = False
@@ -151,29 +183,42 @@ def fault_rows(solution: FaultSolution) -> Iterator[Quantity]:
         size, turn = (None, None) if value is None else polar(value)
         if real and value is not None:
             size, turn = complex(value).real, None
-        kind = s.fault.kind.name
         return Quantity(place, kind, quantity, phase, size, unit, turn, where, s.state)
 
-    top = float(np.abs(s.current).max())
-    for k, phase in enumerate("abc"):
-        yield row("fault current", phase, quiet(s.current[k], top), "A", place)
-    for k in range(3):
-        yield row("fault current", str(k), quiet(s.current_sequence[k], top), "A", place)
-    yield row("fault current", "residual", quiet(s.residual, top), "A", place)
-    for k in range(3):
-        z = complex(s.impedance[k])
-        yield row("impedance", str(k), z if cmath.isfinite(z) else None, "ohm", place)
+    top = s.largest
+    for state in s.faults:
+        at = state.fault.place
+        for k, phase in enumerate("abc"):
+            yield row("fault current", phase, quiet(state.current[k], top), "A", at)
+        for k in range(3):
+            yield row("fault current", str(k), quiet(state.current_sequence[k], top), "A", at)
+        yield row("fault current", "residual", quiet(state.residual, top), "A", at)
+        for k in range(3):
+            z = complex(state.impedance[k])
+            yield row("impedance", str(k), z if cmath.isfinite(z) else None, "ohm", at)
+        if state.through is None or state.across is None or state.through_before is None:
+            continue
+        for k, phase in enumerate("abc"):
+            yield row("current through the break", phase, quiet(state.through[k], top), "A", at)
+            yield row("the same before", phase, quiet(state.through_before[k], top), "A", at)
+            yield row("voltage across the break", phase, quiet(state.across[k], state.nominal), "V", at)
     if math.isfinite(s.x_over_r):
         yield row("X/R", "", s.x_over_r, "", place, real=True)
     voltages = _voltages(s)
     for bus, values in voltages.items():
         for key, pair in values.items():
             phase = key.removeprefix("v")
+            if key == "before":
+                yield row("voltage before the fault", "a", _phasor(pair), "V", bus)
+                continue
             yield row("voltage to earth", phase, _phasor(pair), "V", bus)
-    for flow in _flows(s.terminals):
-        where = f"{flow['element']}@{flow['bus']}"
+    for flow in _flows(s.terminals, s.terminals_before):
+        inner = f" {flow['side']}" if flow["side"].startswith("from ") else ""
+        where = f"{flow['element']}{inner}@{flow['bus']}"
         for key in ("a", "b", "c", "i0", "i1", "i2", "residual"):
             yield row("current into element", key.removeprefix("i"), _phasor(flow[key]), "A", where)
+        for phase, pair in flow.get("before", {}).items():
+            yield row("current into element before", phase, _phasor(pair), "A", where)
     for star in s.star_points:
         yield row("neutral current", "", star.current, "A", star.name)
         yield row("neutral voltage", "", star.voltage, "V", star.name)

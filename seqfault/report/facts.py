@@ -7,6 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from seqfault.errors import quoted
+from seqfault.faults.kinds import Fault
 from seqfault.faults.solution import FaultSolution
 from seqfault.report.numbers import kilovolt, ohms
 from seqfault.report.tables import (
@@ -28,15 +29,27 @@ def conditions(solutions: Sequence[FaultSolution]) -> str:
     """``bolted, before the fault 1.00 of nominal, state: base``."""
     first = solutions[0]
     zg = next((s.fault.zg for s in solutions if s.fault.zg), 0j)
-    parts = []
-    if first.fault.zf:
-        parts.append(f"zf {ohms(first.fault.zf)}")
+    how = impedance_words(first.fault, zg)
+    return f"{how}, {circumstances(first)}" if how else circumstances(first)
+
+
+def impedance_words(fault: Fault, zg: complex | None = None) -> str:
+    """``bolted``, or the impedances of a fault; nothing for a conductor that hangs clear."""
+    if fault.kind.series and not fault.fallen:
+        return ""
+    zg = fault.zg if zg is None else zg
+    parts = [f"zf {ohms(fault.zf)}"] if fault.zf else []
     if zg:
         parts.append(f"zg {ohms(zg)} to earth")
-    how = ", ".join(parts) or "bolted"
-    before = f"before the fault {first.prefault:.2f} of nominal" if first.prefault else "dead"
-    text = f"{how}, {before}, state: {first.state}"
-    return text if first.machine == "subtransient" else f"{text}, {first.machine} reactances"
+    return ", ".join(parts) or "bolted"
+
+
+def circumstances(s: FaultSolution) -> str:
+    """``before the fault 1.00 of nominal, state: base``."""
+    before = f"before the fault {s.prefault:.2f} of nominal" if s.prefault else "dead"
+    loaded = ", loaded" if s.loaded else ""
+    text = f"{before}{loaded}, state: {s.state}"
+    return text if s.machine == "subtransient" else f"{text}, {s.machine} reactances"
 
 
 def impedances(solution: FaultSolution) -> Table:
@@ -50,11 +63,18 @@ def impedances(solution: FaultSolution) -> Table:
         z, pu = complex(ohm[k]), complex(per_unit[k])
         rows.append(Row(f"Z{k}", tuple((v,) for v in (z.real, z.imag, abs(z), pu.real, pu.imag))))
     headings = (("R", "ohm"), ("X", "ohm"), ("size", "ohm"), ("R", "per unit"), ("X", "per unit"))
+    where = "from the bus"
+    if solution.faults[0].through is not None:
+        where = "across the break"
+    if len(solution.faults) > 1:
+        where += f" {solution.fault.place}"
+    elif solution.faults[0].bus != solution.fault.place:
+        where = "from the place" if solution.faults[0].through is None else where
     base = f"{solution.base_power / 1e6:g} MVA and {kilovolt(solution.nominal)}"
     return Table(
         tuple(Group(heading) for heading in headings),
         (Block("", (OHM,), tuple(rows)),),
-        heading=f"The network seen from the bus (per unit on {base})",
+        heading=f"The network seen {where} (per unit on {base})",
     )
 
 
@@ -68,12 +88,12 @@ def x_over_r(solution: FaultSolution) -> float | str:
     return ratio if ratio >= 0 else "capacitive"
 
 
-def _notes(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
-    """Notes once each; one that not every kind of fault has says which it is of."""
+def _notes(solutions: Sequence[FaultSolution], names: Sequence[str]) -> tuple[str, ...]:
+    """Notes once each; one that not every solution has says which it is of, by ``names``."""
     kinds: dict[str, list[str]] = {}
-    for s in solutions:
+    for s, name in zip(solutions, names, strict=True):
         for text in s.notes:
-            kinds.setdefault(text, []).append(s.fault.kind.name)
+            kinds.setdefault(text, []).append(name)
     return tuple(
         text if len(of) == len(solutions) else f"{', '.join(of)}: {text}" for text, of in kinds.items()
     )
@@ -92,9 +112,13 @@ def _undefined(solutions: Sequence[FaultSolution]) -> tuple[str, ...]:
     return (f"potentials of {shown}{end} to earth: nothing fixes them",)
 
 
-def after(solutions: Sequence[FaultSolution]) -> tuple[Sentences, ...]:
-    """Notes, undefined potentials, assumptions and the caution, each once."""
-    notes = _notes(solutions) + _undefined(solutions)
+def after(solutions: Sequence[FaultSolution], names: Sequence[str] | None = None) -> tuple[Sentences, ...]:
+    """Notes, undefined potentials, assumptions and the caution, each once.
+
+    ``names`` are what notes call the solutions, by default the kinds of fault.
+    """
+    called = [s.fault.kind.name for s in solutions] if names is None else names
+    notes = _notes(solutions, called) + _undefined(solutions)
     assumed = once(str(a) for s in solutions for a in s.assumptions)
     return (
         Sentences("Note", notes),

@@ -6,10 +6,11 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
+from seqfault.faults.kinds import Fault
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from seqfault.model.elements import Complex
-from seqfault.report.facts import after, conditions, impedances, x_over_r
+from seqfault.report.facts import after, circumstances, conditions, impedance_words, impedances, x_over_r
 from seqfault.report.flows import carried, components, feeding, leftover
 from seqfault.report.numbers import angle, figures, fixed, kilovolt, ohms, quiet
 from seqfault.report.tables import (
@@ -41,18 +42,13 @@ def fault_page(
     ``every_flow`` lists elements that carry next to nothing too, ``sequence`` adds components.
     """
     s = solution
-    phases = f"phase{'s' if len(s.fault.phases) > 1 else ''} {' '.join(s.fault.phases)}"
-    title = Title(
-        network.model.title,
-        f"{s.fault.place}  {kilovolt(s.nominal)}",
-        f"{s.fault.kind.name} ({s.fault.kind.symbol}), {phases}, {conditions([s])}",
-    )
-    parts: list[Part] = [title, Table(PHASES, (_into(s),))]
+    parts: list[Part] = [_title(network, s), Table(PHASES, tuple(_into(s)))]
     if s.home:
         parts.append(_home(s))
     parts.append(Table(PHASES, _voltages(s)))
     flows, left_out = carried(s, every_flow)
-    blocks = [block for block in (feeding(s), flows) if block.rows]
+    fed = [feeding(s, state) for state in s.faults if state.fault.earth or state.through is None]
+    blocks = [block for block in (*fed, flows) if block.rows]
     if blocks:
         parts.append(Table(PHASES, tuple(blocks)))
     parts.append(Sentences("", leftover(left_out)))
@@ -65,28 +61,72 @@ def fault_page(
     return Page(tuple(parts))
 
 
+def _title(network: Network, s: FaultSolution) -> Title:
+    if len(s.faults) == 1:
+        name = f"{s.fault.place}  {kilovolt(s.nominal)}"
+        return Title(network.model.title, name, f"{described(s.fault)}, {conditions([s])}")
+    names = " and ".join(f"{f.fault.place}  {kilovolt(f.nominal)}" for f in s.faults)
+    told = "; ".join(f"{f.fault.place}: {described(f.fault)}, {impedance_words(f.fault)}" for f in s.faults)
+    return Title(network.model.title, names, f"at once: {told}; {circumstances(s)}")
+
+
+def described(fault: Fault) -> str:
+    """``line-ground (k1), phase a``: the kind and its phases, and where a conductor lies."""
+    symbol = f" ({fault.kind.symbol})" if fault.kind.symbol else ""
+    phases = f"phase{'s' if len(fault.phases) > 1 else ''} {' '.join(fault.phases)}"
+    lying = f", fallen to earth on the side of {fault.fallen}" if fault.fallen else ""
+    return f"{fault.kind.name}{symbol}, {phases}{lying}"
+
+
 def phasors(values: Sequence[complex] | Complex, top: float) -> tuple[tuple[Cell, ...], ...]:
     """Size and angle of each of ``values``, rounding beside ``top`` as 0."""
     return tuple((abs(v), angle(v)) for v in (quiet(complex(x), top) for x in values))
 
 
-def _into(s: FaultSolution) -> Block:
-    top = float(np.abs(s.current).max())
-    values = np.append(s.current, s.residual)
-    row = Row("fault current", phasors(values, top))
-    return Block("Into the fault: ampere, degrees", (AMPERE, ANGLE), (row,))
+def _into(s: FaultSolution) -> Iterator[Block]:
+    top = s.largest
+    shorted = [f for f in s.faults if f.through is None or f.fault.fallen]
+    rows = tuple(
+        Row(
+            "fault current" if len(shorted) == 1 else f.fault.place,
+            phasors(np.append(f.current, f.residual), top),
+        )
+        for f in shorted
+    )
+    if len(shorted) > 1:
+        whole = sum(f.residual for f in shorted)
+        rows += (Row("together to earth", ((), (), (), phasors([whole], top)[0])),)
+    if rows:
+        where = "the fault" if len(shorted) == 1 else "each fault"
+        yield Block(f"Into {where}: ampere, degrees", (AMPERE, ANGLE), rows)
+    for f in s.faults:
+        if f.through is None or f.across is None or f.through_before is None:
+            continue
+        at = f" {f.fault.place}" if len(s.faults) > 1 else ""
+        passing = [Row("through the poles", phasors(np.append(f.through, f.through.sum()), top))]
+        if s.loaded:
+            stood = np.append(f.through_before, f.through_before.sum())
+            passing.append(Row("before the fault", phasors(stood, top)))
+        yield Block(f"Through the break{at}: ampere, degrees", (AMPERE, ANGLE), tuple(passing))
+        across = (*f.across.tolist(), complex(f.across.sum()))
+        gap = Row("between its sides", phasors([v / 1000 for v in across], f.nominal / 1000))
+        yield Block(f"Across the break{at}: kilovolt, degrees", (KILOVOLT, ANGLE), (gap,))
 
 
 def _home(s: FaultSolution) -> Table:
-    total = abs(s.residual)
-    top = max([total, *(abs(path.current) for path in s.home)])
+    earthed = [f.residual for f in s.faults if f.fault.earth]
+    sent = sum(earthed, 0j)
+    total = abs(sent)
+    if total < 1e-9 * max(map(abs, earthed)):  # out at one fault, back at the other
+        sent, total = 0j, 0.0
+    top = max([total, 1e-9 * s.largest, *(abs(path.current) for path in s.home)])
     rows = []
     for path in s.home:
         current = quiet(path.current, top)
         share = fixed(abs(current) / total, 3) if total and current else "-"
         rows.append(Row(path.path, ((abs(current), angle(current)), (share,))))
     whole = "1.000" if total else "-"
-    rows.append(Row("together (3I0)", (*phasors([s.residual], top), (whole,))))
+    rows.append(Row("together (3I0)", (*phasors([sent], top), (whole,))))
     return Table(
         (Group(("from earth",)), Group(("share of", "3I0"))),
         (Block("", (AMPERE, ANGLE), tuple(rows)),),
@@ -117,14 +157,25 @@ def _voltages(s: FaultSolution) -> tuple[Block, ...]:
             (PERCENT,),
             tuple(percent),
         ),
+        *(_before(s) if s.loaded else ()),
         Block("The same in kilovolt, degrees", (KILOVOLT, ANGLE), tuple(kilovolts)),
     )
+
+
+def _before(s: FaultSolution) -> tuple[Block]:
+    """Phase a of every bus before the fault, in the loaded state."""
+    rows = []
+    for bus, volt, nominal in zip(s.buses, s.before.tolist(), s.bus_nominal.tolist(), strict=True):
+        share = f"{abs(volt) / nominal * np.sqrt(3):.3f} pu"
+        rows.append(Row(bus, (*phasors([volt / 1000], nominal), (share,), (), ())))
+    heading = "Before the fault: phase a to earth in kilovolt, degrees, and of nominal"
+    return (Block(heading, (KILOVOLT, ANGLE), tuple(rows)),)
 
 
 def _star_points(network: Network, s: FaultSolution) -> list[Part]:
     if not s.star_points:
         return []
-    top = max([float(np.abs(s.current).max()), *(abs(p.current) for p in s.star_points)])
+    top = max([s.largest, *(abs(p.current) for p in s.star_points)])
     rows = []
     stars = network.model.stars
     impedance = dict(zip(stars.names, stars.impedance.tolist(), strict=True))
@@ -154,7 +205,7 @@ def earthed(kind: str, impedance: complex) -> str:
 
 
 def _deltas(s: FaultSolution) -> list[Part]:
-    top = max([float(np.abs(s.current).max()), *(abs(d.current) for d in s.deltas)])
+    top = max([s.largest, *(abs(d.current) for d in s.deltas)])
     rows = [
         Row(f"{d.element} {d.side}", ((abs(current), angle(current)), (d.bus,)))
         for d in s.deltas
@@ -185,10 +236,14 @@ def _earthed_lines(s: FaultSolution) -> list[Part]:
 
 
 def _facts(s: FaultSolution) -> Iterator[Fact]:
-    top = float(np.abs(s.current).max())
-    phase = "abc"[int(np.abs(s.current).argmax())]
-    of = "" if len(s.fault.phases) == 3 else f"phase {phase}"
-    yield Fact("Fault current", f"{figures(top)} A", of)
+    for f in s.faults:
+        if f.through is not None and not f.fault.fallen:
+            continue
+        top = float(np.abs(f.current).max())
+        phase = "abc"[int(np.abs(f.current).argmax())]
+        of = [] if len(f.fault.phases) == 3 else [f"phase {phase}"]
+        of += [f"at {f.fault.place}"] if len(s.faults) > 1 else []
+        yield Fact("Fault current", f"{figures(top)} A", ", ".join(of))
     ratio = x_over_r(s)
     if ratio != "-":
         text = ratio if isinstance(ratio, str) else figures(float(ratio or 0), 3, 3)
@@ -196,9 +251,10 @@ def _facts(s: FaultSolution) -> Iterator[Fact]:
     factors = s.earth_fault_factor
     if factors is None:
         return
-    here = float(factors[s.index[s.fault.place]])
+    here = float(factors[s.index[s.faults[0].bus]])
     if np.isfinite(here):
-        yield Fact("Earth-fault factor", f"{here:.2f}", "at the faulted bus")
+        where = "the faulted bus" if s.faults[0].bus == s.fault.place else s.faults[0].bus
+        yield Fact("Earth-fault factor", f"{here:.2f}", f"at {where}")
     elsewhere = np.where(s.joined & np.isfinite(factors), factors, -1)
     k = int(elsewhere.argmax())
     if elsewhere[k] > here * (1 + 1e-9):

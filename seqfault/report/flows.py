@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from seqfault.faults.solution import FaultSolution
+from seqfault.faults.solution import FaultSolution, FaultState
 from seqfault.model.elements import Complex
 from seqfault.report.numbers import angle, counted, quiet
 from seqfault.report.tables import AMPERE, ANGLE, KILOVOLT, Block, Cell, Group, Row, Table
@@ -23,40 +23,52 @@ def _with_residual(phases: Complex) -> Complex:
 
 
 def _top(s: FaultSolution) -> float:
-    return max(float(np.abs(s.current).max()), float(np.abs(s.terminals.phases).max(initial=0.0)))
+    return max(s.largest, float(np.abs(s.terminals.phases).max(initial=0.0)))
 
 
-def feeding(s: FaultSolution) -> Block:
-    """Currents towards the fault of all that is connected to its bus, greatest first."""
+def feeding(s: FaultSolution, state: FaultState) -> Block:
+    """Currents towards one of the faults of all that is connected to its bus, greatest first."""
     t, top = s.terminals, _top(s)
     phases = -t.phases
-    here = [k for k, bus in enumerate(t.bus) if bus == s.fault.place]
+    here = [k for k, bus in enumerate(t.bus) if bus == state.bus]
     here.sort(key=lambda k: -float(np.abs(phases[:, k]).max()))
     twice = {t.element[k] for k in here if sum(t.element[j] == t.element[k] for j in here) > 1}
     rows: list[Row] = []
     for k in here:
-        name = f"{t.element[k]} {t.side[k]}" if t.element[k] in twice else t.element[k]
+        told = t.element[k] in twice or t.side[k].startswith("from ")
+        name = f"{t.element[k]} {t.side[k]}" if told else t.element[k]
         rows += _with_one(name, phases[:, k], int(t.count[k]), top)
-    rest = s.current - phases[:, here].sum(axis=1)
+    rest = sum(f.current for f in s.faults if f.bus == state.bus) - phases[:, here].sum(axis=1)
+    if state.through is not None:
+        rest = 0 * rest  # what comes through the poles of a break
     if float(np.abs(rest).max()) > 1e-6 * top:
         rows.append(Row("capacitances here", _cells(_with_residual(rest), top)))
-    return Block("Who feeds it: ampere towards the fault, degrees", (AMPERE, ANGLE), tuple(rows))
+    what = "it" if len(s.faults) == 1 else state.fault.place
+    return Block(f"Who feeds {what}: ampere towards the fault, degrees", (AMPERE, ANGLE), tuple(rows))
 
 
 def carried(s: FaultSolution, every: bool) -> tuple[Block, int]:
     """Currents from the bus into each element, and how many small ones are left out."""
     t, top = s.terminals, _top(s)
     phases = t.phases
-    limit = SMALL * float(np.abs(s.current).max())
+    limit = SMALL * s.largest
+    faulted = {state.bus for state in s.faults if state.through is None}
+    earlier = s.terminals_before
     at: dict[str, list[Row]] = {}
     left_out = 0
     for k, element in enumerate(t.element):
-        if t.bus[k] == s.fault.place and not every:
+        if t.bus[k] in faulted and not every:
             continue
         if not every and float(np.abs(phases[:, k]).max()) <= limit:
             left_out += 1
             continue
-        at.setdefault(t.bus[k], []).extend(_with_one(f"  {element}", phases[:, k], int(t.count[k]), top))
+        own = at.setdefault(t.bus[k], [])
+        name = f"{element} {t.side[k]}" if t.side[k].startswith("from ") else element
+        own.extend(_with_one(f"  {name}", phases[:, k], int(t.count[k]), top))
+        if earlier is not None:
+            stood = earlier.phases[:, k]
+            own.append(Row("  - before", _cells(_with_residual(stood), top)))
+            own.append(Row("  - by the fault", _cells(_with_residual(phases[:, k] - stood), top)))
     rows: list[Row] = []
     for bus in (name for name in s.buses if name in at):
         rows += [Row(f"at {bus}", NOTHING), *at[bus]]
@@ -84,7 +96,10 @@ def _with_one(label: str, phases: Complex, count: int, top: float) -> list[Row]:
 def components(s: FaultSolution) -> Table:
     """Components 0, 1, 2 of the fault, of every bus and of every terminal."""
     t, top = s.terminals, _top(s)
-    current = Row("fault", _cells(s.current_sequence, top))
+    current = tuple(
+        Row("fault" if len(s.faults) == 1 else f.fault.place, _cells(f.current_sequence, top))
+        for f in s.faults
+    )
     volts = []
     for k, bus in enumerate(s.buses):
         values = s.voltage_sequence[:, k] / 1000
@@ -97,7 +112,7 @@ def components(s: FaultSolution) -> Table:
     return Table(
         tuple(Group((f"{name} sequence",)) for name in ("zero", "positive", "negative")),
         (
-            Block("Components into the fault: ampere, degrees", (AMPERE, ANGLE), (current,)),
+            Block("Components into the fault: ampere, degrees", (AMPERE, ANGLE), current),
             Block("Components of the voltages: kilovolt, degrees", (KILOVOLT, ANGLE), tuple(volts)),
             Block("Components into each element: ampere, degrees", (AMPERE, ANGLE), tuple(flows)),
         ),

@@ -5,8 +5,12 @@ from __future__ import annotations
 import msgspec
 import numpy as np
 
+from seqfault.case.places import Place
+from seqfault.errors import RequestError, quoted
+from seqfault.faults.kinds import fault_kind
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
+from seqfault.model.elements import Complex
 
 ORDER = ("three-phase", "line-line", "line-line-ground", "line-ground")
 """Kinds in the order of IEC 60909-0; three-phase to ground has the currents of three-phase."""
@@ -20,11 +24,26 @@ class Extreme(msgspec.Struct, frozen=True):
     phase: str
 
 
+class Seen(msgspec.Struct, frozen=True, eq=False):
+    """What one terminal carries, A from the bus into the element, at true angles.
+
+    ``phases`` (3,) a b c and ``sequence`` (3,) components 0 1 2.
+    """
+
+    phases: Complex
+    sequence: Complex
+
+
 class Comparison(msgspec.Struct, frozen=True, eq=False):
-    """Solutions of several kinds of fault at one place, in the order asked for."""
+    """Solutions of several kinds of fault at one place, in the order asked for.
+
+    ``seen`` is what the terminal ``at`` carries in each, where one was asked for.
+    """
 
     place: str
     solutions: tuple[FaultSolution, ...]
+    at: str = ""
+    seen: tuple[Seen, ...] = ()
 
     def _currents(self) -> list[tuple[float, FaultSolution, str]]:
         """The largest faulted-phase current of each kind, A."""
@@ -67,10 +86,10 @@ class Comparison(msgspec.Struct, frozen=True, eq=False):
             factors = solution.earth_fault_factor
             if factors is None:
                 continue
-            k = solution.index[self.place]
+            k = solution.index[solution.faults[0].bus]
             factor = float(factors[k])
             if np.isfinite(factor) and (best is None or factor > best.value):
-                size = np.abs(solution.at(self.place))
+                size = np.abs(solution.at(solution.faults[0].bus))
                 for phase in solution.fault.phases:
                     size["abc".index(phase)] = -1
                 best = Extreme(factor, solution.fault.kind.name, "abc"[int(size.argmax())])
@@ -88,14 +107,31 @@ def compare(
     *,
     zf: complex = 0,
     zg: complex = 0,
+    at: str | None = None,
 ) -> Comparison:
-    """Solve ``kinds`` at the bus ``place``; ``zf`` and ``zg`` in ohm.
+    """Solve ``kinds`` at ``place``, a bus, a terminal or a point along a line; ``zf`` and ``zg`` in ohm.
 
-    ``zg`` enters the kinds that touch earth. Raises what ``Network.fault`` raises.
+    ``zg`` enters the kinds that touch earth; ``at`` is a terminal to look from, ``ELEMENT@BUS``. Raises
+    what ``Network.fault`` raises.
     """
-    from seqfault.faults.kinds import fault_kind
-
-    return Comparison(
-        place,
-        tuple(network.fault(place, kind, zf=zf, zg=zg if fault_kind(kind).earth else 0) for kind in kinds),
+    here = network.located([place])
+    terminal = None if at is None else network.place(at)
+    if terminal is not None and (not terminal.element or terminal.fraction is not None):
+        raise RequestError(f"at {quoted(str(at))}: a terminal is wanted, ELEMENT@BUS")
+    solutions = tuple(
+        here.fault(place, kind, zf=zf, zg=zg if fault_kind(kind).earth else 0) for kind in kinds
     )
+    if terminal is None:
+        return Comparison(place, solutions)
+    return Comparison(place, solutions, terminal.name, tuple(_seen(s, terminal) for s in solutions))
+
+
+def _seen(solution: FaultSolution, terminal: Place) -> Seen:
+    t = solution.terminals
+    rows = zip(t.element, t.bus, t.side, strict=True)
+    k = next(
+        k
+        for k, (element, bus, side) in enumerate(rows)
+        if element == terminal.element and bus == terminal.bus and not side.startswith("from ")
+    )
+    return Seen(t.phases[:, k], t.sequence[:, k])

@@ -66,7 +66,7 @@ def test_exit_codes(run: Run, monkeypatch: pytest.MonkeyPatch, error: BaseExcept
     def fail(*_: object, **__: object) -> None:
         raise error
 
-    monkeypatch.setattr(Network, "fault", fail)
+    monkeypatch.setattr(Network, "solve", fail)
     result = run("fault", PLANT, "main")
     assert result.code == code
     assert result.out == ""
@@ -80,7 +80,7 @@ def test_internal_errors_say_how_to_report(
     def fail(*_: object, **__: object) -> None:
         raise error
 
-    monkeypatch.setattr(Network, "fault", fail)
+    monkeypatch.setattr(Network, "solve", fail)
     short = run("fault", PLANT, "main")
     assert short.code == 70
     assert str(error) in short.err
