@@ -21,6 +21,8 @@ SINGULAR = {
     "capacitors": "capacitor",
     "converters": "converter",
     "ties": "tie",
+    "relays": "relay",
+    "current_transformers": "current transformer",
 }
 
 

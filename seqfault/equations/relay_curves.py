@@ -125,8 +125,8 @@ def in_effective_range(multiple: npt.ArrayLike) -> npt.NDArray[np.bool_]:
 def error_factor(multiple: npt.ArrayLike) -> Reals:
     """How many times the assigned error an inverse time may be off: 2.5 from 2, 1.5 from 5, 1 from 10.
 
-    At those multiples of the pickup. IEC 60255-151:2009, limiting error as a multiple of the assigned one (from memory). NaN below the
-    effective range, where nothing is declared.
+    At those multiples of the pickup: IEC 60255-151:2009, limiting error as a multiple of the assigned
+    one (from memory). NaN below the effective range, where nothing is declared.
     """
     m = np.asarray(multiple, float)
     factor = np.full(m.shape, np.nan)
