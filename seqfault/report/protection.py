@@ -11,7 +11,8 @@ from seqfault.report.data import Quantity
 from seqfault.report.tables import TEXT, Block, Group, Part, Row, Sentences, Table
 from seqfault.studies.current_transformers import CurrentTransformer
 from seqfault.studies.protection import Protection
-from seqfault.studies.relays import Relay, Stage
+from seqfault.studies.relay_settings import Stage
+from seqfault.studies.relays import Relay
 
 OPEN = "to be set"
 
@@ -80,6 +81,10 @@ def _duty(protection: Protection, relay: Relay) -> str:
         angle = relay.characteristic_angle_deg
         said.append(f"{relay.direction} at {angle:.4g}°, polarised by {relay.polarisation}")
     said.append(_fast(relay))
+    units = {"pickup": f" {relay.unit}", "multiplier": "", "delay": " s"}
+    steps = [f"{_setting(scale.step)}{units[of]} of {of}" for of, scale in relay.scales.items()]
+    if steps:
+        said.append(f"in steps of {', '.join(steps)}")
     if relay.protects:
         said.append(f"protects {', '.join(relay.protects)}")
     if relay.backs_up:

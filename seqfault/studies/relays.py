@@ -5,25 +5,22 @@ from __future__ import annotations
 import math
 
 import msgspec
+import numpy as np
+import numpy.typing as npt
 
 from seqfault.case.places import Places, terminals
 from seqfault.case.protection import Relay as Record
 from seqfault.case.quantities import Quantity
 from seqfault.case.records import Case, Line, Tie
 from seqfault.equations.device_numbers import device_number
+from seqfault.equations.relay_curves import Reals, operate_time
 from seqfault.errors import quoted
 from seqfault.model.assumptions import Ledger
 from seqfault.studies.current_transformers import CurrentTransformer
 from seqfault.studies.demands import Demanded
+from seqfault.studies.relay_settings import Scale, Stage, scales_of, stage_of
 
 _POLARISED_BY = {"negative-sequence": "negative-sequence-voltage", "phase": "phase-voltage"}
-
-
-class Stage(msgspec.Struct, frozen=True):
-    """A pickup: ``primary`` and ``secondary`` in A, of neutral-voltage V of V0; None where not known."""
-
-    primary: float | None
-    secondary: float | None
 
 
 class Relay(msgspec.Struct, frozen=True):
@@ -32,7 +29,8 @@ class Relay(msgspec.Struct, frozen=True):
     ``element`` and ``bus`` of its terminal, or ``star`` the name of its star point; ``device`` its
     numbers in IEEE C37.2; ``unit`` of its pickups, A or V; ``multiplier`` a number, ``delay`` the time (s)
     of a definite one, ``minimum_time``, ``fast_delay`` and ``breaker_time`` in s, the last the one of the
-    demands where not stated. ``blind`` says why it sees nothing in this state, and is empty where it does.
+    demands where not stated; ``scales`` those stated of ``pickup``, ``multiplier`` and ``delay``. ``blind``
+    says why it sees nothing in this state, and is empty where it does.
     """
 
     name: str
@@ -58,11 +56,12 @@ class Relay(msgspec.Struct, frozen=True):
     protects: tuple[str, ...]
     backs_up: tuple[str, ...]
     breaker_time: float
+    scales: dict[str, Scale]
     out: bool
     blind: str
 
     @property
-    def set(self) -> bool:
+    def complete(self) -> bool:
         """Whether no setting of its main stage is open."""
         time = self.delay if self.curve == "definite" else self.multiplier
         return self.pickup.primary is not None and time is not None
@@ -113,18 +112,39 @@ def relay_of(
         characteristic_angle_deg=None if angle is None else math.degrees(angle.value.real),
         polarisation=_polarisation(name, record, ledger),
         unit="V" if record.measures == "neutral-voltage" else "A",
-        pickup=_stage(record.pickup, record, case, places, ct),
+        pickup=stage_of(record.pickup, record, case, places, ct),
         curve=record.curve,
         multiplier=record.multiplier,
         delay=delay,
         minimum_time=_seconds(record.minimum_time),
-        fast=None if instant is None else _stage(instant.pickup, record, case, places, ct),
+        fast=None if instant is None else stage_of(instant.pickup, record, case, places, ct),
         fast_delay=fast_delay,
         protects=record.protects,
         backs_up=record.backs_up,
         breaker_time=breaker_time,
+        scales=dict(scales_of(name, record, case, places, ct, ledger)),
         out=record.out,
         blind="" if record.out else _blind(record, case, places, ct),
+    )
+
+
+def operate_times(relay: Relay, measured: npt.ArrayLike) -> Reals:
+    """Operate time (s) of each value (A or V, primary) that ``relay`` measures; infinite where it rests.
+
+    A direction is not looked at. Raises ValueError where a setting of the main stage is open.
+    """
+    time = relay.delay if relay.curve == "definite" else relay.multiplier
+    pickup = relay.pickup.primary
+    if pickup is None or time is None:
+        raise ValueError(f"a setting of relay {quoted(relay.name)} is open")
+    fast = math.inf if relay.fast is None or relay.fast.primary is None else relay.fast.primary
+    return operate_time(
+        relay.curve,
+        np.asarray(measured, float) / pickup,
+        time,
+        least=relay.minimum_time or 0.0,
+        instant=fast / pickup,
+        instant_delay=relay.fast_delay or 0.0,
     )
 
 
@@ -138,36 +158,6 @@ def _polarisation(name: str, record: Record, ledger: Ledger) -> str:
     by = _POLARISED_BY.get(record.measures, "residual-voltage")
     ledger.note("relay", name, f"polarisation not stated, taken as {by}")
     return by
-
-
-def _stage(
-    pickup: Quantity | None, record: Record, case: Case, places: Places, ct: CurrentTransformer | None
-) -> Stage:
-    """A pickup on both sides of its transformer."""
-    if pickup is None:
-        return Stage(None, None)
-    value = float(pickup.value.real)
-    if record.measures == "neutral-voltage":
-        return _displacement(pickup, record, case, places)
-    if ct is None:
-        return Stage(value, None)
-    primary = value * ct.primary if pickup.dimension == "rated current" else value
-    return Stage(primary, primary * ct.secondary / ct.primary)
-
-
-def _displacement(pickup: Quantity, record: Record, case: Case, places: Places) -> Stage:
-    """A pickup of V0: 100 % is the phase voltage, which an open delta shows as its whole secondary."""
-    at_star = "@" not in record.at
-    users = places.stars.get(record.at, ())
-    bus = users[0].bus if users else record.at.partition("@")[2]
-    primary: float | None = float(pickup.value.real)
-    if pickup.dimension == "ratio":
-        nominal = case.buses[bus].voltage.value.real if bus in case.buses else None
-        primary = None if nominal is None or primary is None else primary * nominal / math.sqrt(3)
-    if record.vt is None or primary is None:
-        return Stage(primary, None)
-    full = record.vt.primary if at_star else record.vt.primary / math.sqrt(3)
-    return Stage(primary, primary / full * record.vt.secondary)
 
 
 def _blind(record: Record, case: Case, places: Places, ct: CurrentTransformer | None) -> str:

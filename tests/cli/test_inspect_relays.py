@@ -33,6 +33,7 @@ def test_page_shows_relays_transformers_and_demands(run: Run, guarded: Path) -> 
     assert " ".join(page.row("CN")) == "300/1 A neutral PX not known 200 V"
     assert "F1-core: measures core-balance behind 50/1 A; protects F1, pump; breaker 0.07 s" in page.flat
     assert "forward at -15°, polarised by residual-voltage; fast stage above 1600 A primary" in page.flat
+    assert "in steps of 20 A of pickup, 0.01 of multiplier; protects F1;" in page.flat
     assert "backs up F1-core, F1-residual" in page.flat
     assert "to see 2 times the pickup through 0, 10 ohm in the states base" in page.flat
     assert "0.23 s behind 0.5 s" in page.flat  # (2 x 5 % + 10 %) 0.5 s + 0.08 s + 0.02 s + 0.03 s

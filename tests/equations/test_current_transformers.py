@@ -40,7 +40,7 @@ def test_accuracy_limit_with_the_burden_connected() -> None:
 
 
 def test_limiting_emf_and_knee_point() -> None:
-    # 10P10, 7.5 VA at 5 A (0.3 ohm), 0.2 ohm of winding: 10 x 5 A x 0.5 ohm
+    # 10P10, 7.5 VA at 5 A, 0.2 ohm of winding. Handbooks write 10 x 7.5 VA/5 A + 10 x 5 A x 0.2 ohm
     assert limiting_emf(10, 5, 0.2, 0.3) == pytest.approx(25)
     assert knee_point_voltage(10, 5, 0.2, 0.3) == pytest.approx(20)
     # the knee of 200 V carries 1 A x 10 ohm twenty times over

@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 from seqfault.equations.device_numbers import device_number
 from seqfault.equations.grading import grading_margin
+from seqfault.equations.setting_scales import setting_at_least, setting_at_most
 from seqfault.equations.winding_cover import resistor_for_share, uncovered_share
 
 
@@ -83,3 +84,25 @@ def test_the_resistor_of_a_share_gives_that_share() -> None:
         assert uncovered_share(150, resistor, 6350, winding) == pytest.approx(0.1)
     with pytest.raises(ValueError, match="own impedance"):
         resistor_for_share(2000, 0.1, 6350, 4j)
+
+
+@given(st.floats(0, 1e3), st.integers(1, 10_000), st.integers(0, 100), st.integers(0, 1000))
+def test_settings_next_to_a_value(value: float, step: int, first: int, count: int) -> None:
+    """Counted out in thousandths, where whole numbers are exact."""
+    size, least, greatest = step / 1000, first * step / 1000, (first + count) * step / 1000
+    settings = [least + k * size for k in range(count + 1)]
+    above = [one for one in settings if one >= value - 1e-6 * size]
+    below = [one for one in settings if one <= value + 1e-6 * size]
+    up = setting_at_least(value, size, least, greatest)
+    down = setting_at_most(value, size, least, greatest)
+    assert up == pytest.approx(above[0], abs=1e-5 * size) if above else np.isnan(up)
+    assert down == pytest.approx(below[-1], abs=1e-5 * size) if below else np.isnan(down)
+
+
+def test_rounding_moves_no_setting() -> None:
+    assert setting_at_least(0.15, 0.05) == pytest.approx(0.15)
+    assert setting_at_most(0.3, 0.1) == pytest.approx(0.3)
+    assert setting_at_least(0.31, 0.1) == pytest.approx(0.4)
+    assert np.isnan(setting_at_least(21, 1, 0, 20))
+    assert setting_at_most(21, 1, 0, 20) == 20
+    assert setting_at_least(0.01, 0.01, 0.05, 1) == 0.05

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import sqrt
+from math import inf, isnan, sqrt
 from pathlib import Path
 
 import pytest
@@ -11,6 +11,7 @@ from seqfault.case.protection import Demands, MarginTerms
 from seqfault.case.scenarios import in_state
 from seqfault.equations.grading import grading_margin
 from seqfault.studies.protection import Protection, protection
+from seqfault.studies.relays import operate_times
 from tests.case.installation import BASE, OTHERS, PROTECTION, read_text
 
 
@@ -71,7 +72,55 @@ curve = "definite"
 def test_open_settings_are_left_open(tmp_path: Path) -> None:
     relays = made(tmp_path).relays
     assert relays["main-voltage"].delay is None
-    assert [relay.set for relay in relays.values()] == [True, True, True, False]
+    assert [relay.complete for relay in relays.values()] == [True, True, True, False]
+
+
+def test_operate_times_of_all_stages(tmp_path: Path) -> None:
+    relays = made(tmp_path).relays
+    # standard inverse at 2 and 10 times 40 A with 0.1: handbook 1.003 s and 0.297 s; fast above 1600 A
+    times = operate_times(relays["F1-residual"], [39, 40, 80, 400, 1600, 1700])
+    assert times[:2].tolist() == [inf, inf]
+    assert times[2:4] == pytest.approx([1.003, 0.297], rel=2e-3)
+    assert times[4:] == pytest.approx([0.1 * 0.14 / (40**0.02 - 1), 0.1])
+    # long-time inverse, 12/(m - 1) s, and never below 0.6 s
+    assert operate_times(relays["T1-neutral"], [90, 45 * 41]) == pytest.approx([12, 0.6])
+    assert operate_times(relays["F1-core"], [10, 11]).tolist() == [inf, 0.1]
+    with pytest.raises(ValueError, match='a setting of relay "main-voltage" is open'):
+        operate_times(relays["main-voltage"], 1000)
+
+
+def test_scales_of_a_relay(tmp_path: Path) -> None:
+    more = """
+[relays.S1]
+at = "T1@main"
+measures = "neutral-voltage"
+pickup = "10 %"
+curve = "definite"
+steps = { pickup = { step = "1 %", greatest = "60 %" }, delay = "10 ms" }
+"""
+    answer = made(tmp_path, more)
+    scales = answer.relays["F1-residual"].scales
+    assert set(scales) == {"pickup", "multiplier"}
+    # 0.05 In behind 400/1 A is 20 A
+    assert (scales["pickup"].step, scales["pickup"].least) == pytest.approx((20, 20))
+    assert scales["pickup"].at_least(41) == pytest.approx(60)
+    assert scales["pickup"].at_most(41) == pytest.approx(40)
+    assert isnan(scales["pickup"].at_most(19))
+    assert scales["multiplier"].at_least(0.01) == pytest.approx(0.05)
+    assert scales["multiplier"].at_least(0.123) == pytest.approx(0.13)
+    assert isnan(scales["multiplier"].at_least(1.001))
+    volts = answer.relays["S1"].scales
+    assert volts["pickup"].step == pytest.approx(63.51, rel=1e-4)
+    assert volts["pickup"].greatest == pytest.approx(0.6 * 6351, rel=1e-4)
+    assert (volts["delay"].least, volts["delay"].greatest) == (0, None)
+    said = [text for text in sentences(answer) if "setting of its" in text]
+    assert sorted(said) == [
+        'relay "F1-residual": greatest setting of its pickup not stated, taken as without limit',
+        'relay "F1-residual": least setting of its pickup not stated, taken as one step',
+        'relay "S1": greatest setting of its delay not stated, taken as without limit',
+        'relay "S1": least setting of its delay not stated, taken as 0 s',
+        'relay "S1": least setting of its pickup not stated, taken as one step',
+    ]
 
 
 def test_accuracy_limit_with_what_is_connected(tmp_path: Path) -> None:
