@@ -2,8 +2,8 @@
 
 t = M (k/(m^α − 1) + c), with m the multiple of the pickup and M the multiplier (time multiplier, time
 dial): IEC 60255-151:2009, curves A to F, and IEEE C37.112-1996, whose A, B and p are k, c and α here. All
-constants from memory. The long-time inverse curve is in neither; it is common practice (BS 142). A short-time inverse
-curve is left out: no published standard of it is known to us.
+constants from memory. The long-time inverse curve is in neither; it is common practice (BS 142). A
+short-time inverse curve is left out: no published standard of it is known to us.
 
 IEC 60255-151 declares accuracy over its effective range alone, ``EFFECTIVE_RANGE``: 2 to 20 times the
 pickup (from memory). Just above the pickup, up to the threshold that the maker declares (G_T), a relay need
@@ -75,7 +75,9 @@ def operate_time(
     Raises KeyError for a curve that is not in ``CURVES``.
     """
     m = np.asarray(multiple, float)
-    time = np.maximum(_base_time(curve, m, saturation) * np.asarray(multiplier, float), least)
+    with np.errstate(invalid="ignore"):  # a delay of 0 s below the pickup
+        curved = np.where(m > 1, _base_time(curve, m, saturation) * np.asarray(multiplier, float), inf)
+    time = np.maximum(curved, least)
     fast = np.where(m > np.asarray(instant, float), instant_delay, inf)
     return np.asarray(np.where(np.isnan(m), np.nan, np.minimum(time, fast)))
 

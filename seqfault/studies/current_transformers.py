@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import msgspec
 
 from seqfault.case.ct_class import parse_ct_class
@@ -63,12 +65,14 @@ def transformer_of(name: str, record: Record, ledger: Ledger) -> CurrentTransfor
         connected = burden
     if plate is not None and burden is not None and winding is not None and connected is not None:
         actual = limit_factor_with(plate, winding, burden, connected)
-        if knee is None:
+        if knee is None and winding + burden > 0:
             knee, estimated = knee_point_voltage(plate, secondary, winding, burden), True
             text = f"knee_point not stated, taken as {KNEE_SHARE:g} of the limiting e.m.f. of its class"
             ledger.note("current transformer", name, f"{text} (common practice)")
     elif kind is not None and kind.kind == "PX" and knee is not None and winding is not None:
         actual = None if connected is None else limit_factor_of_knee(knee, secondary, winding, connected)
+    if actual is not None and not math.isfinite(actual):
+        actual = None  # neither winding nor burden has any ohms, which tells nothing
     return CurrentTransformer(
         name=name,
         ratio=record.ratio.text,

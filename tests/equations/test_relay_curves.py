@@ -80,6 +80,7 @@ def test_nothing_operates_at_or_below_the_pickup(curve: str) -> None:
 
 def test_definite_time_takes_its_delay() -> None:
     assert operate_time("definite", [0.9, 1.1, 30], 0.4).tolist() == [np.inf, 0.4, 0.4]
+    assert operate_time("definite", [0, 0.9, 1, 1.1], 0.0).tolist() == [np.inf, np.inf, np.inf, 0.0]
 
 
 def test_arrays_are_broadcast() -> None:

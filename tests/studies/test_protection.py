@@ -138,6 +138,12 @@ knee_point = "200 V"
 winding_resistance = "2 ohm"
 connected_burden = "2 VA"
 connection = "residual"
+[current_transformers.C8]
+ratio = "300/1 A"
+class = "5P20"
+burden = "0 VA"
+winding_resistance = "0 ohm"
+connection = "residual"
 [current_transformers.C7]
 ratio = "300/1 A"
 connection = "residual"
@@ -155,6 +161,7 @@ connection = "residual"
     # the knee of 200 V over 1 A x 4 ohm; without a burden it cannot be told
     assert (cts["C6"].limit_factor, cts["C6"].limit_factor_connected) == (None, pytest.approx(50))
     assert cts["CN"].limit is None
+    assert (cts["C8"].limit, cts["C8"].knee_point) == (None, None)  # no ohms at all tell nothing
     assert (cts["C7"].ct_class, cts["C7"].limit, cts["C7"].composite_error) == ("", None, None)
     said = sentences(answer)
     rated = "connected_burden not stated, taken as the rated burden"
