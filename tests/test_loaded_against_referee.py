@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
-from hypothesis import HealthCheck, assume, given, settings
+from hypothesis import HealthCheck, assume, given, reject, settings
 from hypothesis import strategies as st
 
 from seqfault.case.reader import case_from_tree
@@ -190,8 +190,9 @@ def test_loaded_states_agree_with_the_referee(
         network = Network(case_from_tree(loaded_tree(net, holding)))
         ours = network.solve([asked(net, trouble) for trouble in wanted])
     except (RequestError, NoAnswerError) as refused:
-        assert "is joined already" in str(refused) or "Newton" in str(refused)
-        assume(False)
+        if "is joined already" not in str(refused) and "Newton" not in str(refused):
+            raise
+        reject()
     made, theirs, _, calm = driven(net, wanted, ours)
     assume({made.bus_of[t.spot][0] for t in wanted} <= theirs.joined)
     wrong = misfits(net, holding, ours, calm) + differences(net, wanted, ours, made, theirs)

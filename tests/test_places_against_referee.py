@@ -8,7 +8,7 @@ from __future__ import annotations
 from itertools import permutations
 
 import numpy as np
-from hypothesis import HealthCheck, assume, given, settings
+from hypothesis import HealthCheck, assume, given, reject, settings
 from hypothesis import strategies as st
 
 from seqfault.case.reader import case_from_tree
@@ -136,8 +136,9 @@ def test_faults_anywhere_agree_with_the_referee(net: PlainNetwork, data: st.Data
     try:
         ours = solve(net, wanted)
     except RequestError as refused:
-        assert "is joined already" in str(refused)
-        assume(False)
+        if "is joined already" not in str(refused):
+            raise
+        reject()
     made, theirs = judge(net, wanted)
     assume({made.bus_of[t.spot][0] for t in wanted} <= theirs.joined)  # else no angle is known between them
     assert not (wrong := differences(net, wanted, ours, made, theirs)), "\n".join(wrong)

@@ -7,6 +7,8 @@ from typing import Any
 
 from seqfault.case.branches import check_line, check_series_reactor, check_tie
 from seqfault.case.couplings import check_coupling, check_couplings
+from seqfault.case.current_transformers import check_current_transformer
+from seqfault.case.demands import check_demands, check_least
 from seqfault.case.draft import Draft
 from seqfault.case.earthing import (
     check_earthing_transformer,
@@ -18,6 +20,7 @@ from seqfault.case.fields import references
 from seqfault.case.findings import Findings, one_of
 from seqfault.case.quantities import parse_quantity
 from seqfault.case.records import TABLES
+from seqfault.case.relays import check_relays
 from seqfault.case.shunts import check_capacitor, check_converter, check_load
 from seqfault.case.sources import check_generator, check_infeed, check_motor
 from seqfault.case.subject import Site, Subject, real
@@ -40,6 +43,7 @@ _RULES: dict[str, Callable[[Subject, Any], None]] = {
     "loads": check_load,
     "converters": check_converter,
     "ties": check_tie,
+    "current_transformers": check_current_transformer,
 }
 
 
@@ -56,9 +60,16 @@ def check(draft: Draft, findings: Findings) -> None:
     _broken_records(draft, site)
     check_couplings(site)
     check_parallel(site)
+    check_relays(site)
+    check_demands(site)
     users = star_points(case)
     for name, neutral in case.neutrals.items():
         check_neutral(Subject(site, "neutrals", name), neutral, users.get(name, ()))
+
+
+def check_file(draft: Draft, findings: Findings) -> None:
+    """Tell ``findings`` what concerns the file with its scenarios, beyond each state of it."""
+    check_least(Site(draft, findings))
 
 
 def _names(draft: Draft, findings: Findings) -> None:

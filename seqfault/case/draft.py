@@ -6,9 +6,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from seqfault.case.conversion import STRAY, TOP_LEVEL, convert_record
+from seqfault.case.conversion import STRAY, TOP_LEVEL, AnyStruct, convert_record
 from seqfault.case.fields import fields_of
 from seqfault.case.findings import Findings
+from seqfault.case.protection import Demands
 from seqfault.case.quantities import Dimensions, missing_unit, read_quantity, wanted
 from seqfault.case.records import TABLES, Bus, Case, Prefault, Record
 from seqfault.case.synonyms import LATER_TABLES, table_for
@@ -17,7 +18,7 @@ from seqfault.case.wording import shown
 from seqfault.errors import FieldError, quoted
 
 _BASE_POWER = 100e6  # VA, where the file states none
-_KEYS = (*TOP_LEVEL, "prefault", *TABLES, "scenarios")
+_KEYS = (*TOP_LEVEL, "prefault", *TABLES, "demands", "scenarios")
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,12 +69,14 @@ def draft(tree: Mapping[str, Any], findings: Findings, source: str, earlier: Dra
                 broken.add(name)
             else:
                 records[name] = record
-    prefault = _prefault(tree, findings, strays)
+    prefault = _single(Prefault, "prefault", tree, findings, strays)
+    demands = _single(Demands, "demands", tree, findings, strays)
     case = Case(
         title=_title(tree, findings),
         frequency=_frequency(tree, findings, strays),
         base_power=_positive(tree, "base_power", "power", findings) or _BASE_POWER,
         prefault=prefault,
+        demands=demands,
         scenarios=tuple(_entries("scenarios", tree.get("scenarios"), findings)),
         tree=tree,
         source=source,
@@ -175,14 +178,17 @@ def _positive(tree: Mapping[str, Any], key: str, dimension: str, findings: Findi
     return None
 
 
-def _prefault(tree: Mapping[str, Any], findings: Findings, strays: set[str]) -> Prefault:
-    raw = tree.get("prefault")
+def _single(
+    kind: type[AnyStruct], key: str, tree: Mapping[str, Any], findings: Findings, strays: set[str]
+) -> AnyStruct:
+    """Return a table that is one record, as it is when not stated where it is not or is broken."""
+    raw = tree.get(key)
     if raw is None:
-        return Prefault()
+        return kind()
 
     def complain(field: str, problem: str) -> None:
         if problem is STRAY:
             strays.add(field)
-        findings.error("prefault", "", field, problem)
+        findings.error(key, "", field, problem)
 
-    return convert_record(Prefault, raw, complain, "prefault") or Prefault()
+    return convert_record(kind, raw, complain, key) or kind()

@@ -11,8 +11,9 @@ from typing import Annotated, Any, Literal, Union, get_args, get_origin, get_typ
 import msgspec
 
 from seqfault.case.quantities import Dimensions, Refers, wanted
+from seqfault.case.ratios import Rated, wanted_ratio
 from seqfault.case.units import EXAMPLES
-from seqfault.case.values import Convert, converter, either, proper_text
+from seqfault.case.values import Convert, converter, either, proper_text, wanted_list
 from seqfault.case.wording import listed
 from seqfault.errors import FieldError, quoted
 
@@ -78,7 +79,7 @@ def wanted_by(hint: Any) -> str:
     if get_origin(hint) is Literal:
         return f"{listed(map(quoted, get_args(hint)))} is wanted"
     if get_origin(hint) is tuple:
-        return 'a list is wanted, as in ["A"]'
+        return wanted_list(hint)
     if get_origin(hint) is Mapping:
         mark = get_args(get_args(hint)[1])[1]
         example = EXAMPLES[mark.names[0]][mark.complex]
@@ -87,6 +88,8 @@ def wanted_by(hint: Any) -> str:
         mark = get_args(hint)[1]
         if isinstance(mark, Dimensions):
             return wanted(mark)
+        if isinstance(mark, Rated):
+            return wanted_ratio(mark.dimension)
         if isinstance(mark, Refers):
             return f"a name of [{mark.words[0]}] is wanted"
     if _is_struct(hint):

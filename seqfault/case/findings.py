@@ -22,6 +22,8 @@ SINGULAR = {
     "loads": "load",
     "converters": "converter",
     "ties": "tie",
+    "relays": "relay",
+    "current_transformers": "current transformer",
 }
 
 

@@ -9,7 +9,7 @@ from typing import Any
 
 import msgspec
 
-from seqfault.case.checks import check
+from seqfault.case.checks import check, check_file
 from seqfault.case.draft import draft
 from seqfault.case.findings import Findings
 from seqfault.case.records import Case
@@ -39,6 +39,7 @@ def case_from_tree(tree: Mapping[str, Any], source: str = "case", sha256: str = 
     try:
         base = draft(tree, findings, source)
         check(base, findings)
+        check_file(base, findings)
         complaints = list(findings.errors(tree))
         complaints += check_scenarios(base, complaints)
     except RecursionError:

@@ -2,7 +2,8 @@
 
 A field holds what stands in the file: a quantity with its unit, a name, a number. Which dimensions
 a quantity may have is part of its type (``Dimensions``), so the reader, the schema and the messages
-all speak from this page. Nothing is converted to per unit here.
+all speak from this page, and from ``protection`` for the tables of relays. Nothing is converted to
+per unit here.
 """
 
 from __future__ import annotations
@@ -12,15 +13,13 @@ from typing import Annotated, Any, ClassVar, Literal
 
 import msgspec
 
+from seqfault.case.protection import CurrentTransformer, Demands, Relay
 from seqfault.case.quantities import Dimensions, Quantity, Refers
+from seqfault.case.record import Angle, Current, Duration, Power, Ratio, Resistance, Voltage
+from seqfault.case.record import Record as Record
 
-Voltage = Annotated[Quantity, Dimensions("voltage")]
-Power = Annotated[Quantity, Dimensions("power")]
 ComplexPower = Annotated[Quantity, Dimensions("power", complex=True)]
-Current = Annotated[Quantity, Dimensions("current")]
 CurrentOrPower = Annotated[Quantity, Dimensions("current", "power")]
-Ratio = Annotated[Quantity, Dimensions("ratio")]
-Resistance = Annotated[Quantity, Dimensions("impedance")]
 Ohms = Annotated[Quantity, Dimensions("impedance", complex=True)]
 OhmsOrRatio = Annotated[Quantity, Dimensions("impedance", "ratio", complex=True)]
 RealOhmsOrRatio = Annotated[Quantity, Dimensions("impedance", "ratio")]
@@ -30,20 +29,12 @@ LineSiemens = Annotated[Quantity, Dimensions("admittance/length", "admittance")]
 Farads = Annotated[Quantity, Dimensions("capacitance")]
 Length = Annotated[Quantity, Dimensions("length")]
 Frequency = Annotated[Quantity, Dimensions("frequency")]
-Duration = Annotated[Quantity, Dimensions("time")]
 Speed = Annotated[Quantity, Dimensions("speed")]
 Temperature = Annotated[Quantity, Dimensions("temperature")]
 BusName = Annotated[str, Refers("buses")]
 LineName = Annotated[str, Refers("lines")]
 StarPoint = Annotated[str, Refers("neutrals", "solid", "isolated")]
 MagneticCircuit = Literal["three-limb", "five-limb", "shell-form", "three-single-phase"]
-
-
-class Record(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """What every record may carry."""
-
-    note: str = ""
-    out: bool = False  # normally out of service
 
 
 class Bus(Record, frozen=True, kw_only=True):
@@ -225,7 +216,7 @@ class Converter(Record, frozen=True, kw_only=True):
     bus: BusName
     rating: Power
     fault_current: float
-    angle: Annotated[Quantity, Dimensions("angle")] | None = None
+    angle: Angle | None = None
     threshold: Ratio | None = None
 
 
@@ -284,6 +275,8 @@ TABLES: dict[str, type[Record]] = {
     "loads": Load,
     "converters": Converter,
     "ties": Tie,
+    "relays": Relay,
+    "current_transformers": CurrentTransformer,
 }
 
 
@@ -301,6 +294,7 @@ class Case(msgspec.Struct, frozen=True, kw_only=True):
     frequency: float
     base_power: float
     prefault: Prefault
+    demands: Demands = Demands()
     buses: Mapping[str, Bus]
     infeeds: Mapping[str, Infeed]
     generators: Mapping[str, Generator]
@@ -315,6 +309,8 @@ class Case(msgspec.Struct, frozen=True, kw_only=True):
     loads: Mapping[str, Load]
     converters: Mapping[str, Converter]
     ties: Mapping[str, Tie]
+    relays: Mapping[str, Relay]
+    current_transformers: Mapping[str, CurrentTransformer]
     scenarios: tuple[str, ...] = ()
     state: str = "base"
     tree: Mapping[str, Any]

@@ -102,6 +102,8 @@ def _overlaid(tree: Mapping[str, Any], change: object) -> tuple[dict[str, Any], 
         elif key == "note":
             if not isinstance(value, str):
                 problems.append(f"note: {shown(value)}: a text in quotes is wanted")
+        elif key == "demands":
+            problems.append("the demands hold for all states; state them in [demands] of the file alone")
         elif key not in _SWITCHING:
             problems.append(_unknown_key(key))
     switching = {}

@@ -15,7 +15,9 @@ import msgspec
 
 from seqfault.case.fields import fields_of
 from seqfault.case.findings import SINGULAR
+from seqfault.case.protection import Demands
 from seqfault.case.quantities import Dimensions, Refers, wanted
+from seqfault.case.ratios import Rated, wanted_ratio
 from seqfault.case.records import TABLES, Prefault
 from seqfault.case.units import UNITS
 
@@ -35,6 +37,7 @@ def case_schema() -> dict[str, Any]:
         "frequency": _quantity(Dimensions("frequency")),
         "base_power": _quantity(Dimensions("power")),
         "prefault": {"$ref": "#/$defs/prefault"},
+        "demands": {"$ref": "#/$defs/demands"},
         **{table: _keyed({"$ref": f"#/$defs/{_definition(table)}"}) for table in TABLES},
     }
     names = {"type": "array", "items": {"type": "string"}}
@@ -58,7 +61,7 @@ def case_schema() -> dict[str, Any]:
         "properties": {**top, "scenarios": _keyed(scenario)},
         "required": ["frequency", "buses"],
         "additionalProperties": False,
-        "$defs": {**definitions, "prefault": _record(Prefault)},
+        "$defs": {**definitions, "prefault": _record(Prefault), "demands": _record(Demands)},
     }
 
 
@@ -89,6 +92,9 @@ def _value(hint: Any) -> dict[str, Any]:
         mark = arguments[1]
         if isinstance(mark, Dimensions):
             return _quantity(mark)
+        if isinstance(mark, Rated):
+            text = wanted_ratio(mark.dimension)
+            return {"type": "string", "pattern": "^[^/]+/[^/]+$", "description": text}
         return _reference(mark)
     if origin in (Union, types.UnionType):
         parts = [_value(part) for part in arguments if part is not types.NoneType]

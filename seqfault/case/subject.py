@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from typing import TypeVar
 
 from seqfault.case.draft import Draft
 from seqfault.case.findings import SINGULAR, Findings, one_of
+from seqfault.case.protection import CurrentTransformer, Relay
 from seqfault.case.quantities import Quantity, Refers
-from seqfault.case.records import Bus, Line
+from seqfault.case.records import Bus, Line, Record
 from seqfault.case.units import normalised
 from seqfault.case.wording import Spelling
 from seqfault.errors import quoted
 
+AnyRecord = TypeVar("AnyRecord", bound=Record)
 ROOT3 = math.sqrt(3)
 _LARGEST_X_OVER_R = 200
 
@@ -27,7 +30,7 @@ class Site:
         self.findings = findings
         self._spelling = {
             table: Spelling([name for name, of in draft.names.items() if of == table])
-            for table in ("buses", "lines", "neutrals")
+            for table in ("buses", "lines", "neutrals", "relays", "current_transformers")
         }
 
     def unknown(self, table: str, name: str) -> str:
@@ -59,16 +62,25 @@ class Subject:
 
     def bus(self, field: str, name: str) -> Bus | None:
         """Return a bus; None, after a complaint, when there is none of this name."""
-        found = self.site.case.buses.get(name)
-        if found is None and not (self.site.names.get(name) == "buses" and name in self.site.broken):
-            self.error(field, self.site.unknown("buses", name))
-        return found
+        return self._of(self.site.case.buses, "buses", field, name)
 
     def line(self, field: str, name: str) -> Line | None:
         """Return a line; None, after a complaint, when there is none of this name."""
-        found = self.site.case.lines.get(name)
-        if found is None and not (self.site.names.get(name) == "lines" and name in self.site.broken):
-            self.error(field, self.site.unknown("lines", name))
+        return self._of(self.site.case.lines, "lines", field, name)
+
+    def relay(self, field: str, name: str) -> Relay | None:
+        """Return a relay; None, after a complaint, when there is none of this name."""
+        return self._of(self.site.case.relays, "relays", field, name)
+
+    def current_transformer(self, field: str, name: str) -> CurrentTransformer | None:
+        """Return a current transformer; None, after a complaint, when there is none of this name."""
+        table = "current_transformers"
+        return self._of(self.site.case.current_transformers, table, field, name)
+
+    def _of(self, records: Mapping[str, AnyRecord], table: str, field: str, name: str) -> AnyRecord | None:
+        found = records.get(name)
+        if found is None and not (self.site.names.get(name) == table and name in self.site.broken):
+            self.error(field, self.site.unknown(table, name))
         return found
 
     def star_point(self, field: str, name: str | None) -> None:
@@ -81,7 +93,13 @@ class Subject:
 
     def refers(self, field: str, mark: Refers, name: str) -> None:
         """Complain when there is no record of this name in the table that a field refers to."""
-        rules = {"buses": self.bus, "lines": self.line, "neutrals": self.star_point}
+        rules: dict[str, Callable[[str, str], object]] = {
+            "buses": self.bus,
+            "lines": self.line,
+            "neutrals": self.star_point,
+            "relays": self.relay,
+            "current_transformers": self.current_transformer,
+        }
         rules[mark.words[0]](field, name)
 
     def positive(self, quantities: Mapping[str, Quantity | None], zero: bool = False) -> bool:

@@ -21,9 +21,12 @@ _TABLES = {
     "neutral_earthing_resistors neutral_grounding_resistors earthing_resistors star_points",
     "series_reactors": "series_reactor reactor reactors current_limiting_reactors",
     "capacitors": "capacitor capacitor_banks shunt_capacitors banks shunts",
-    "loads": "load consumers consumer demand",
+    "loads": "load consumers consumer",
     "converters": "converter inverter inverters pv solar wind batteries battery",
     "ties": "tie coupler couplers bus_couplers bus_ties switches section_switches",
+    "relays": "relay protection protections protective_relays protection_relays devices",
+    "current_transformers": "current_transformer ct cts toroids",
+    "demands": "demand requirements requirement criteria settings",
     "scenarios": "scenario states cases",
     "prefault": "pre_fault",
     "frequency": "f hz nominal_frequency",
@@ -84,9 +87,56 @@ _FIELDS = {
     "out": "out_of_service in_service disabled status off",
     "open": "normally_open open_at open_point",
     "state": "loading profile",
+    "at": "bus place location position terminal element",
+    "measures": "measure measured quantity function kind type",
+    "ct": "current_transformer cts current_transformers ct_ratio",
+    "vt": "voltage_transformer vts pt pts vt_ratio",
+    "direction": "directional",
+    "characteristic_angle": "rca mta maximum_torque_angle relay_characteristic_angle angle",
+    "polarisation": "polarization polarising polarizing polarised_by",
+    "pickup": "pick_up setting plug_setting i> ie> io> i0> threshold start",
+    "curve": "characteristic curve_type",
+    "multiplier": "tms td tds time_dial time_multiplier tm",
+    "delay": "time_delay operate_time definite_time t> time t",
+    "minimum_time": "least_time minimum_operate_time dmt definite_minimum_time",
+    "instant": "instantaneous high_set inst i>> ie>> stage_2 second_stage",
+    "steps": "step scales scale ranges",
+    "protects": "protect protected zone covers",
+    "backs_up": "backup back_up backs backup_of behind",
+    "breaker_time": "cb_time clearing_time breaker_operating_time",
+    "ratio": "ct_ratio turns_ratio rated_ratio",
+    "class": "accuracy accuracy_class ct_class class_",
+    "burden": "rated_burden va rated_output",
+    "connected_burden": "actual_burden burden_connected",
+    "winding_resistance": "rct r_ct secondary_resistance",
+    "knee_point": "vk uk ek knee_point_voltage knee",
+    "fault_resistances": "rf fault_resistance resistances",
+    "see": "sensitivity sensitivity_factor",
+    "keep_still": "stability stability_factor security",
+    "least": "minimum least_states min",
+    "margin": "margins grading_margin",
+    "breaker": "breaker_time circuit_breaker",
+}
+# Words of the trade for words of the file; what two of them share is left to the engineer.
+_WORDS = {
+    "IEC standard inverse": "si ni nsi standard_inverse normal_inverse normally_inverse inverse "
+    "iec_inverse iec_normal_inverse iec_normally_inverse iec_a iec_si standard",
+    "IEC very inverse": "vi very_inverse iec_b iec_vi",
+    "IEC extremely inverse": "ei extremely_inverse iec_c iec_ei",
+    "IEC long-time inverse": "lti long_time_inverse iec_lti long_inverse",
+    "IEEE moderately inverse": "mi moderately_inverse ieee_mi inverse",
+    "IEEE very inverse": "vi very_inverse ieee_vi",
+    "IEEE extremely inverse": "ei extremely_inverse ieee_ei",
+    "definite": "dt dtl definite_time independent independent_time dmt",
+    "residual": "earth ground earth_fault 3i0 residually_connected",
+    "core-balance": "cbct toroid core_balance_ct window zero_sequence_ct",
+    "neutral": "neutral_current standby_earth_fault star_point",
+    "phase": "overcurrent phases line",
+    "negative-sequence": "i2 unbalance",
+    "neutral-voltage": "neutral_displacement displacement residual_voltage 3v0 v0 nvd",
 }
 # Named on the page of the case format and not read by this version.
-LATER_TABLES = ("relays", "breakers", "current_transformers", "demands")
+LATER_TABLES = ("breakers",)
 _PARTS = ("r", "x", "r1", "x1", "r0", "x0")
 
 
@@ -98,6 +148,14 @@ def table_for(word: str, known: Collection[str]) -> str | None:
 def field_for(word: str, known: Collection[str]) -> str | None:
     """Return which of the ``known`` fields ``word`` means, or None."""
     return _meant(word, _FIELDS, known)
+
+
+def words_for(word: str, known: Collection[str]) -> tuple[str, ...]:
+    """Return those of the ``known`` words that ``word`` may mean, none or several."""
+    plain = word.strip().lower().replace("-", "_").replace(" ", "_")
+    meant = tuple(name for name, others in _WORDS.items() if name in known and plain in others.split())
+    nearest = None if meant else Spelling(known).nearest(word)
+    return meant if nearest is None else (nearest,)
 
 
 def unknown_field(word: str, meant: str | None, known: Collection[str]) -> str:

@@ -39,6 +39,7 @@ _OTHERS = {
     "deg": ("angle", 0, pi / 180),
     "°": ("angle", 0, pi / 180),
     "rad": ("angle", 0, 1.0),
+    "In": ("rated current", 0, 1.0),  # of a current transformer
 }
 
 
@@ -80,6 +81,7 @@ KINDS = {
     "temperature": "a temperature rise",
     "inductance": "an inductance",
     "angle": "an angle",
+    "rated current": "a multiple of the rated current",
 }
 # dimension: an example, and one of a complex value
 EXAMPLES = {
@@ -100,6 +102,7 @@ EXAMPLES = {
     "temperature": ("760 K", "760 K"),
     "inductance": ("0.85 H", "0.85 H"),
     "angle": ("30 deg", "30 deg"),
+    "rated current": ("0.1 In", "0.1 In"),
 }
 COMMON = {
     "voltage": ("kV", "V"),
@@ -119,6 +122,7 @@ COMMON = {
     "temperature": ("K",),
     "inductance": ("H", "mH"),
     "angle": ("deg",),
+    "rated current": ("In",),
 }
 
 _SPOKEN = {

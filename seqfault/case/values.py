@@ -14,10 +14,14 @@ from seqfault.case.quantities import (
     read_quantity,
     wanted,
 )
+from seqfault.case.ratios import Rated, RatedRatio, read_ratio, wanted_ratio
+from seqfault.case.synonyms import words_for
+from seqfault.case.units import EXAMPLES
 from seqfault.case.wording import listed, shown
 from seqfault.errors import FieldError, quoted
 
 Convert = Callable[[object], object]
+_FEW_WORDS = 5  # so many are named in full
 
 
 def converter(hint: Any) -> Convert:
@@ -25,11 +29,13 @@ def converter(hint: Any) -> Convert:
     origin, arguments = get_origin(hint), get_args(hint)
     if origin is Annotated:
         mark = arguments[1]
-        return _quantity(mark) if isinstance(mark, Dimensions) else _text
+        if isinstance(mark, Dimensions):
+            return _quantity(mark)
+        return _ratio(mark.dimension) if isinstance(mark, Rated) else _text
     if origin is Literal:
         return _choice(arguments)
     if origin is tuple:
-        return _list(converter(arguments[0]))
+        return _list(hint)
     simple: dict[Any, Convert] = {str: _text, bool: _truth, int: _whole, float: read_number}
     return simple[hint]
 
@@ -63,6 +69,15 @@ def _quantity(dimensions: Dimensions) -> Convert:
         if isinstance(value, (int, float)) and not isinstance(value, bool):
             raise FieldError(f"{shown(value)}: {missing_unit(shown(value), dimensions.names)}")
         raise FieldError(f"{shown(value)}: {wanted(dimensions)}")
+
+    return convert
+
+
+def _ratio(dimension: str) -> Convert:
+    def convert(value: object) -> RatedRatio:
+        if isinstance(value, str):
+            return read_ratio(value, dimension)
+        raise FieldError(f"{shown(value)}: {wanted_ratio(dimension)}")
 
     return convert
 
@@ -121,16 +136,32 @@ def _choice(words: tuple[str, ...]) -> Convert:
     def convert(value: object) -> object:
         if isinstance(value, str) and value in words:
             return value
+        if isinstance(value, str) and len(words) > _FEW_WORDS:
+            meant = words_for(value, words)
+            if meant:
+                raise FieldError(
+                    f"{shown(value)} is not one of its words; write {listed(map(quoted, meant))}"
+                )
         known = listed(map(quoted, words))
         raise FieldError(f"{shown(value)}: {known} is wanted")
 
     return convert
 
 
-def _list(item: Convert) -> Convert:
+def wanted_list(hint: Any) -> str:
+    """Return the clause that says what a list of this type takes."""
+    item = get_args(hint)[0]
+    mark = get_args(item)[1] if get_origin(item) is Annotated else None
+    example = EXAMPLES[mark.names[0]][mark.complex] if isinstance(mark, Dimensions) else "A"
+    return f"a list is wanted, as in [{quoted(example)}]"
+
+
+def _list(hint: Any) -> Convert:
+    item = converter(get_args(hint)[0])
+
     def convert(value: object) -> tuple[object, ...]:
         if not isinstance(value, (list, tuple)):
-            raise FieldError(f'{shown(value)}: a list is wanted, as in ["A"]')
+            raise FieldError(f"{shown(value)}: {wanted_list(hint)}")
         return tuple(map(item, value))
 
     return convert

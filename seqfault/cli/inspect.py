@@ -25,7 +25,7 @@ def add(commands: Commands) -> None:
         "inspect",
         "what was read: zones, per unit, windings, assumptions",
         "What was read of a case: voltage zones and base values, impedances per unit, what each"
-        " winding does to zero sequence, star points, and every assumption.",
+        " winding does to zero sequence, star points, relays with their settings, and every assumption.",
     )
     add_case(parser)
     parser.add_argument("--places", action="store_true", help="print one place a line, nothing else")
@@ -61,7 +61,7 @@ def run(options: argparse.Namespace) -> int:
                 partial(inspect_page, inspection),
                 partial(inspect_tree, inspection),
                 partial(inspect_rows, inspection),
-                network.model.warnings,
+                inspection.warnings,
             )
         )
     return deliver(options, form, answers)

@@ -8,7 +8,9 @@ from typing import Any
 
 from seqfault.report.data import FORMAT, Quantity, cartesian
 from seqfault.report.numbers import counted, figures, kilovolt, ohms
+from seqfault.report.protection import protection_parts, protection_rows, protection_tree
 from seqfault.report.tables import (
+    CAUTION,
     PER_UNIT,
     TEXT,
     Block,
@@ -81,6 +83,8 @@ def inspect_page(inspection: Inspection) -> Page:
         parts.append(_windings(i.windings))
     if i.stars:
         parts.append(_stars(i))
+    if i.protection is not None:
+        parts += protection_parts(i.protection)
     off = [element for element in i.elements if abs(element.ratio - 1) > 1e-9]
     parts += [
         Sentences("Rated voltage ratio, tap included", tuple(map(_ratio, off))),
@@ -88,6 +92,8 @@ def inspect_page(inspection: Inspection) -> Page:
         Sentences("Scenarios", tuple(f"{n}: {note}" if note else n for n, note in i.scenarios)),
         Sentences("Assumed", tuple(text for a in i.assumptions for text in a.sentences())),
     ]
+    if i.protection is not None:
+        parts.append(Sentences("", (CAUTION,), quiet=True))
     return Page(tuple(parts))
 
 
@@ -245,6 +251,7 @@ def inspect_tree(inspection: Inspection) -> dict[str, Any]:
         ],
         "couplings": [{"lines": list(c.lines), "per_unit": cartesian(c.impedance)} for c in i.couplings],
         "devices": [{"name": d.name, "kind": d.kind, "text": d.text} for d in i.devices],
+        **protection_tree(i.protection),
         "out": list(i.out),
         "scenarios": [{"name": name, "note": note} for name, note in i.scenarios],
         "assumptions": [text for a in i.assumptions for text in a.sentences()],
@@ -270,3 +277,5 @@ def inspect_rows(inspection: Inspection) -> Iterator[Quantity]:
                 finite = part if cmath.isfinite(z) else None
                 where = f"{e.name}@{e.buses[0]}"
                 yield Quantity(e.name, e.kind, name, str(k), finite, "pu", None, where, state)
+    if inspection.protection is not None:
+        yield from protection_rows(inspection.protection, state)

@@ -15,6 +15,7 @@ from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
 from seqfault.model.elements import DELTA, ISOLATED, STAR, ZIGZAG, Complex, Model, WindingSets
 from seqfault.model.windings import zero_sequence_effect
+from seqfault.studies.protection import Protection, protection
 
 Connection = Literal["star", "delta", "isolated star", "zigzag", "auto"]
 
@@ -117,6 +118,7 @@ class Inspection:
     devices: tuple[Device, ...]
     out: tuple[str, ...]
     scenarios: tuple[tuple[str, str], ...]
+    protection: Protection | None
     assumptions: tuple[Assumption, ...]
     warnings: tuple[str, ...]
 
@@ -124,6 +126,7 @@ class Inspection:
 def inspect_network(network: Network) -> Inspection:
     """What ``network`` was made of."""
     case, model = network.case, network.model
+    guard = protection(case)
     return Inspection(
         title=model.title,
         sha256=model.sha256,
@@ -139,8 +142,9 @@ def inspect_network(network: Network) -> Inspection:
         devices=tuple(_devices(case, model)),
         out=tuple(name for _, name, record in case.records() if record.out),
         scenarios=tuple(_scenarios(case)),
-        assumptions=model.assumptions,
-        warnings=model.warnings,
+        protection=guard,
+        assumptions=model.assumptions + (guard.assumptions if guard else ()),
+        warnings=model.warnings + (guard.warnings if guard else ()),
     )
 
 

@@ -102,6 +102,76 @@ from = "main"
 to = "pump"
 closed = false
 """
+PROTECTION = """
+[current_transformers.CB]
+ratio = "50/1 A"
+class = "10P10"
+connection = "core-balance"
+
+[current_transformers.C3]
+ratio = "400/1 A"
+class = "5P20"
+connection = "residual"
+burden = "10 VA"
+connected_burden = "2.5 ohm"
+winding_resistance = "2 ohm"
+
+[current_transformers.CN]
+ratio = "300/1 A"
+class = "PX"
+knee_point = "200 V"
+winding_resistance = "2 ohm"
+connection = "neutral"
+
+[relays.F1-core]
+at = "F1@main"
+measures = "core-balance"
+ct = "CB"
+pickup = "0.2 In"
+curve = "definite"
+delay = "0.1 s"
+protects = ["F1", "pump"]
+breaker_time = "70 ms"
+
+[relays.F1-residual]
+at = "F1@main"
+measures = "residual"
+ct = "C3"
+vt = "11 kV/110 V"
+direction = "forward"
+characteristic_angle = "-15 deg"
+pickup = "40 A"
+curve = "IEC standard inverse"
+multiplier = 0.1
+instant = { pickup = "4 In", delay = "0.1 s" }
+steps = { pickup = "0.05 In", multiplier = { step = 0.01, least = 0.05, greatest = 1 } }
+protects = ["F1"]
+
+[relays.T1-neutral]
+at = "NER"
+measures = "neutral"
+ct = "CN"
+pickup = "45 A"
+curve = "IEC long-time inverse"
+multiplier = 0.1
+minimum_time = "0.6 s"
+protects = ["main", "T1.lv"]
+backs_up = ["F1-core", "F1-residual"]
+
+[relays.main-voltage]
+at = "T1@main"
+measures = "neutral-voltage"
+vt = "11 kV/110 V"
+pickup = "10 %"
+curve = "definite"
+backs_up = ["T1-neutral"]
+
+[demands]
+fault_resistances = ["0 ohm", "10 ohm"]
+see = 2
+least = ["base"]
+margin = { relay_error = "5 %", breaker = "80 ms" }
+"""
 
 
 def third_winding(group: str, more: str = "") -> str:

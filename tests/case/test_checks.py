@@ -10,6 +10,7 @@ from tests.case.installation import (
     GENERATOR,
     MOTOR,
     OTHERS,
+    PROTECTION,
     entries,
     read_text,
     spoilt,
@@ -25,7 +26,11 @@ def page(name: str) -> list[object]:
     return [pytest.param(*rest, id=entry) for entry, *rest in entries(text)]
 
 
-RULES = [entry for name in ("rules", "transformers", "earthing", "lines", "shunts") for entry in page(name)]
+RULES = [
+    entry
+    for name in ("rules", "transformers", "earthing", "lines", "shunts", "relays")
+    for entry in page(name)
+]
 
 
 @pytest.mark.parametrize(("text", "messages"), RULES)
@@ -73,6 +78,7 @@ SOUND = {
         ('"15.9 ohm"', '"15.9 ohm"\ncurrent = "400 A"\nvoltage = "11 kV"')
     ),
     "every other table": BASE + OTHERS,
+    "relays": BASE + PROTECTION,
     "three windings": third_winding("YNyn0d11"),
     "pairs in ohm and per cent": third_winding("YNyn0d11").replace('"15 %"', '"16.3 ohm"'),
     "pairs on their own ratings": third_winding(
@@ -122,6 +128,44 @@ tap = "0.5 %"
 """
 SOUND["parallel units within the limits"] = BASE + PARALLEL
 SOUND["a parallel unit out of service"] = BASE + PARALLEL.replace("9.06 %", "5 %") + "out = true\n"
+EARTHING = """
+[earthing_transformers.E1]
+bus = "pump"
+z0 = "j30 ohm"
+neutral = "N2"
+"""
+# a star point that polarises, a scale from its least setting, and a star point without a neutral
+SOUND["a relay polarised by a current"] = (
+    spoilt((', neutral = "NER"', ""), ("[neutrals.NER]", "[neutrals.N2]"))
+    + EARTHING
+    + """
+[relays.R1]
+at = "F1@pump"
+measures = "residual"
+ct = "C1"
+direction = "reverse"
+characteristic_angle = "0 deg"
+polarisation = "T1.lv"
+pickup = "0.13 In"
+curve = "definite"
+steps = { pickup = { step = "0.05 In", least = "0.03 In", greatest = "0.13 In" } }
+[relays.R2]
+at = "T1.lv"
+measures = "neutral-voltage"
+vt = "6.35 kV/110 V"
+pickup = "5 %"
+curve = "IEEE very inverse"
+[relays.R3]
+at = "N2"
+measures = "neutral"
+pickup = "5 A"
+curve = "definite"
+protects = ["E1", "T1.hv"]
+[current_transformers.C1]
+ratio = "0.2 kA/5 A"
+connection = "residual"
+"""
+)
 SOUND["three coupled lines in two records"] = (
     BASE
     + OTHERS.replace("M1", "M2")

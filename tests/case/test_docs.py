@@ -7,16 +7,18 @@ import re
 import tomllib
 from collections.abc import Mapping
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import msgspec
 import pytest
 
 from seqfault.case.conversion import fields_of
+from seqfault.case.protection import CurveName, Demands, Instant, MarginTerms, Measures, Steps
 from seqfault.case.quantities import Dimensions, parse_quantity, read_quantity
 from seqfault.case.reader import case_from_tree
 from seqfault.case.records import TABLES, Case, Prefault, Record, Winding
 from seqfault.case.units import UNITS
+from seqfault.equations.relay_curves import CURVES
 from seqfault.errors import CaseError, QuantityError
 from seqfault.faults.kinds import KINDS
 from seqfault.faults.network import Network
@@ -84,15 +86,29 @@ def test_json_is_the_same_tree() -> None:
     assert case.transformers == case_from_tree(EXAMPLE).transformers
 
 
-@pytest.mark.parametrize("table", [*TABLES, "prefault"])
+@pytest.mark.parametrize("table", [*TABLES, "prefault", "demands"])
 def test_every_field_has_its_row(table: str) -> None:
-    kind = TABLES.get(table, Prefault)
+    kind = TABLES.get(table) or {"prefault": Prefault, "demands": Demands}[table]
     found = rows(section(f"`{table}`"))
     if table == "transformers":
         size = len(fields_of(Winding))
         _same_fields(Winding, found[-size:])
         found = found[:-size]
     _same_fields(kind, found)
+
+
+def test_tables_inside_the_records_of_protection_have_their_fields() -> None:
+    _same_fields(MarginTerms, rows(section("Terms of the margin")))
+    found = dict(rows(section("Fast stage and scales of a relay")))
+    for name, kind in (("instant", Instant), ("steps", Steps)):
+        assert set(fields_of(kind)) == set(re.findall("`([a-z_]+)`", found[f"`{name}`"]))
+
+
+def test_curves_and_what_is_measured_are_listed() -> None:
+    listed = {row[0].strip('`"') for row in rows(section("Curves of a relay"))}
+    assert listed == set(get_args(CurveName)) == set(CURVES)
+    measured = rows(section("What a relay measures"))
+    assert {row[0].strip("`") for row in measured} == set(get_args(Measures))
 
 
 def test_every_record_field_has_its_row() -> None:

@@ -13,7 +13,7 @@ from seqfault.case.records import Case
 from seqfault.case.scenarios import in_state
 from seqfault.case.text import parse_text
 from seqfault.errors import CaseError, InputError
-from tests.case.installation import GENERATOR, MOTOR, OTHERS, third_winding
+from tests.case.installation import GENERATOR, MOTOR, OTHERS, PROTECTION, third_winding
 from tests.case.test_scenarios import STATES
 
 TESTED = """
@@ -32,7 +32,7 @@ kind = "arc-suppression"
 detuning = "+5 %"
 """
 THIRD = third_winding("Dyn11d0", 'impedance_on = { hv_lv = "10 MVA" }\n')
-TEXT = THIRD + STATES + GENERATOR + MOTOR + OTHERS + TESTED
+TEXT = THIRD + STATES + GENERATOR + MOTOR + OTHERS + TESTED + PROTECTION
 TREE = tomllib.loads(TEXT)
 LINES = TEXT.splitlines()
 SCRAPS = st.sampled_from(
@@ -45,7 +45,9 @@ VALUES = st.recursive(
     | st.just(10**400)
     | st.floats()
     | st.text(max_size=10)
-    | st.sampled_from(["11 kV", "0.1+j0.4 ohm/km", "5 %", "solid", "main", "T1", "F1@main", "K1"]),
+    | st.sampled_from(
+        ["11 kV", "0.1+j0.4 ohm/km", "5 %", "solid", "main", "T1", "F1@main", "K1", "0.1 In", "200/1 A"]
+    ),
     lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.text(max_size=5), inner),
     max_leaves=5,
 )

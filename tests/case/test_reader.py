@@ -12,6 +12,9 @@ from pathlib import Path
 
 import pytest
 
+from seqfault.case.ct_class import parse_ct_class
+from seqfault.case.protection import MultiplierScale
+from seqfault.case.ratios import read_ratio
 from seqfault.case.reader import case_from_tree, read_case
 from seqfault.case.records import Pairs
 from seqfault.case.schema import case_schema
@@ -21,6 +24,7 @@ from tests.case.installation import (
     GENERATOR,
     MOTOR,
     OTHERS,
+    PROTECTION,
     entries,
     read_text,
     spoilt,
@@ -237,12 +241,17 @@ def test_schema_knows_every_table_and_field() -> None:
     assert line["properties"]["out"] == {"type": "boolean"}
     assert schema["$defs"]["transformer"]["properties"]["hv"]["required"] == ["bus", "voltage"]
     assert schema["$defs"]["infeed"]["properties"]["z0"]["anyOf"][1] == {"enum": ["open"]}
-    assert set(tomllib.loads(BASE + OTHERS)) <= set(schema["properties"])
+    assert set(tomllib.loads(BASE + OTHERS + PROTECTION)) <= set(schema["properties"])
     assert schema["$defs"]["earthing_transformer"]["required"] == ["bus", "z0"]
     assert schema["properties"]["ties"]["additionalProperties"] == {"$ref": "#/$defs/tie"}
     alone, pairs = schema["$defs"]["transformer"]["properties"]["impedance"]["anyOf"]
     assert alone["type"] == "string"
     assert pairs["required"] == ["hv_lv", "hv_tv", "lv_tv"]
+    relay = schema["$defs"]["relay"]
+    assert relay["required"] == ["at", "measures", "curve"]
+    assert re.search(relay["properties"]["pickup"]["pattern"], "0.1 In")
+    assert re.search(schema["$defs"]["current_transformer"]["properties"]["ratio"]["pattern"], "200/1 A")
+    assert schema["$defs"]["demands"]["properties"]["least"]["items"] == {"type": "string"}
     start = schema["$defs"]["mutual_coupling"]["properties"]["start"]
     assert re.search(start["additionalProperties"]["pattern"], "0.5 km")
 
@@ -267,6 +276,56 @@ def test_every_other_table_reads(tmp_path: Path) -> None:
     assert not case.ties["K1"].closed
     tables = {table for table, _, _ in case.records()}
     assert {"mutual_couplings", "earthing_transformers", "ties"} <= tables
+
+
+def test_protection_reads(tmp_path: Path) -> None:
+    case = read_text(tmp_path, BASE + PROTECTION)
+    assert case.warnings == ()
+    core = case.current_transformers["C3"].ratio
+    assert (core.primary, core.secondary, core.text) == (400, 1, "400/1 A")
+    relay = case.relays["F1-residual"]
+    assert relay.vt is not None
+    assert (relay.vt.primary, relay.vt.secondary) == (11e3, 110)
+    assert relay.instant is not None
+    assert (relay.instant.pickup.value, relay.instant.pickup.dimension) == (4, "rated current")
+    assert relay.steps is not None
+    assert relay.steps.multiplier == MultiplierScale(step=0.01, least=0.05, greatest=1)
+    assert case.relays["T1-neutral"].backs_up == ("F1-core", "F1-residual")
+    assert case.relays["main-voltage"].delay is None
+    demands = case.demands
+    assert [ohms.value for ohms in demands.fault_resistances] == [0, 10]
+    assert (demands.see, demands.keep_still, demands.least) == (2, None, ("base",))
+    assert demands.margin is not None
+    assert demands.margin.breaker is not None
+    assert demands.margin.breaker.value == 0.08
+
+
+@pytest.mark.parametrize(
+    ("text", "primary", "secondary"),
+    [
+        ("200/1 A", 200, 1),
+        ("200 A/1 A", 200, 1),
+        ("200 / 1A", 200, 1),
+        ("1.2 kA/5 A", 1200, 5),
+        ("2 kA / 500 mA", 2000, 0.5),
+        ("2/1 kA", 2000, 1000),
+    ],
+)
+def test_forms_of_a_ratio(text: str, primary: float, secondary: float) -> None:
+    ratio = read_ratio(text, "current")
+    assert (ratio.primary, ratio.secondary) == (primary, secondary)
+
+
+@pytest.mark.parametrize(
+    ("text", "error", "rated", "factor"),
+    [("5P20", 0.05, 0.01, 20), ("10P10", 0.1, 0.03, 10), ("5PR15", 0.05, 0.01, 15)],
+)
+def test_classes_of_iec_61869_2(text: str, error: float, rated: float, factor: float) -> None:
+    """Composite error at the accuracy limit and current error at rated current, from memory."""
+    kind = parse_ct_class(text)
+    assert (kind.kind, kind.composite_error, kind.rated_error) == ("P", error, rated)
+    assert (kind.limit_factor, kind.gapped) == (factor, "R" in text)
+    assert parse_ct_class("PX").kind == "PX"
 
 
 def test_three_windings_read(tmp_path: Path) -> None:

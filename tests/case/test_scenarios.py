@@ -9,7 +9,7 @@ import pytest
 from seqfault.case.records import Case
 from seqfault.case.scenarios import in_state
 from seqfault.errors import CaseError, RequestError
-from tests.case.installation import BASE, OTHERS, entries, read_text
+from tests.case.installation import BASE, OTHERS, PROTECTION, entries, read_text
 
 PAGE = (Path(__file__).parent / "bad" / "scenarios.txt").read_text(encoding="utf-8")
 STATES = """
@@ -122,6 +122,28 @@ def test_a_scenario_changes_fields_of_other_tables(tmp_path: Path) -> None:
     coupling = in_state(read_text(tmp_path, text), "weak").mutual_couplings["M1"]
     assert coupling.start is not None
     assert {name: place.value for name, place in coupling.start.items()} == {"F1": 700.0, "F2": 0.0}
+
+
+def test_relays_have_settings_of_a_state_and_demands_stay(tmp_path: Path) -> None:
+    text = (
+        BASE
+        + PROTECTION
+        + """
+[scenarios.second-group]
+out = ["main-voltage"]
+[scenarios.second-group.relays.F1-residual]
+multiplier = 0.2
+[scenarios.second-group.relays.F1-residual.instant]
+pickup = "6 In"
+"""
+    )
+    case = read_text(tmp_path, text)
+    state = in_state(case, "second-group")
+    relay = state.relays["F1-residual"]
+    assert (relay.multiplier, relay.instant.pickup.value, relay.instant.delay.value) == (0.2, 6, 0.1)
+    assert state.relays["main-voltage"].out
+    assert state.demands == case.demands
+    assert case.relays["F1-residual"].multiplier == 0.1
 
 
 def test_parallel_units_are_doubted_in_the_state_that_has_them(tmp_path: Path) -> None:

@@ -1,0 +1,24 @@
+"""What every record of the case file may carry, and the kinds of value that several tables share."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+import msgspec
+
+from seqfault.case.quantities import Dimensions, Quantity
+
+Voltage = Annotated[Quantity, Dimensions("voltage")]
+Power = Annotated[Quantity, Dimensions("power")]
+Current = Annotated[Quantity, Dimensions("current")]
+Ratio = Annotated[Quantity, Dimensions("ratio")]
+Resistance = Annotated[Quantity, Dimensions("impedance")]
+Angle = Annotated[Quantity, Dimensions("angle")]
+Duration = Annotated[Quantity, Dimensions("time")]
+
+
+class Record(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """What every record may carry."""
+
+    note: str = ""
+    out: bool = False  # normally out of service
