@@ -1331,3 +1331,34 @@ def troubles(draw: DrawFn, net: PlainNetwork) -> list[Trouble]:
             zg = complex(draw(spread(1e-3, 100))) if earthed and draw(st.booleans()) else 0j
         found.append(Trouble(spot, kind, phases, zf, zg, fallen))
     return found
+
+
+@dataclass(frozen=True)
+class Mesh:
+    """An infeed at bus 0; lines (from, to, ohm, S), generators (bus, pu, W), loads (bus, VA)."""
+
+    size: int
+    held: float
+    lines: tuple[tuple[int, int, complex, float], ...]
+    generators: tuple[tuple[int, float, float], ...]
+    loads: tuple[tuple[int, complex], ...]
+
+
+@st.composite
+def loaded_meshes(draw: DrawFn) -> Mesh:
+    """Meshed networks of 110 kV lines under load."""
+    n = draw(st.integers(2, 8))
+    pairs = [(draw(st.integers(0, k - 1)), k) for k in range(1, n)]
+    pairs += [tuple(draw(st.permutations(range(n)))[:2]) for _ in range(draw(st.integers(0, 3)))]
+    lines = []
+    for i, j in pairs:
+        x = draw(fractions(2.0, 15.0))
+        z = complex(round(x * draw(fractions(0.05, 0.6)), 5), x)
+        lines.append((i, j, z, draw(st.sampled_from((0.0, 1e-5, 8e-5)))))
+    others = draw(st.permutations(range(1, n)))[: draw(st.integers(0, min(2, n - 1)))]
+    generators = tuple((b, draw(fractions(0.98, 1.04)), draw(fractions(0.0, 40.0)) * 1e6) for b in others)
+    loads = tuple(
+        (draw(st.integers(1, n - 1)), complex(draw(fractions(0, 40.0)), draw(fractions(-10, 20.0))) * 1e6)
+        for _ in range(draw(st.integers(1, 4)))
+    )
+    return Mesh(n, draw(fractions(0.97, 1.05)), tuple(lines), generators, loads)

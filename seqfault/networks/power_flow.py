@@ -22,7 +22,9 @@ STEPS = 40
 COLLAPSED = 0.2
 """Voltages per unit below which a solution is one that no network stays at."""
 CLOSE = 1e-9
-"""Power lacking at a node, as a share of what it trades and of the largest power there is."""
+"""Power lacking at a node, as a share of the largest power there is."""
+ROUNDING = 1e-13
+"""The same as a share of the largest admittance, where nothing or next to nothing is drawn."""
 
 
 class Conditions(msgspec.Struct, frozen=True, eq=False):
@@ -44,16 +46,19 @@ def power_flow(model: Model, conditions: Conditions, start: Floats) -> Complex:
     y = _admittance(model)
     live, held = conditions.live, conditions.held
     size = np.where(np.isnan(held), start, held) * live
-    scale = max(float(np.abs(conditions.power).max(initial=0.0)), 1e-6)
+    enough = CLOSE * float(np.abs(conditions.power).max(initial=0.0))
+    enough += ROUNDING * float(np.abs(y.diagonal()).max(initial=0.0))
     worst: tuple[Complex, float] | None = None
     for first in (_linear(y, conditions, size), size.astype(complex)):
-        v, miss = _iterate(y, conditions, first, scale)
-        if miss <= CLOSE * scale and np.abs(v[live]).min(initial=1.0) > COLLAPSED:
+        v, miss = _iterate(y, conditions, first, enough)
+        if miss <= enough and np.abs(v[live]).min(initial=1.0) > COLLAPSED:
             return v
         if worst is None or miss < worst[1]:
             worst = v, miss
     assert worst is not None
-    _fail(model, _lacking(y, conditions, worst[0]), worst[0], live)
+    gap = np.where(conditions.reference, 0, _lacking(y, conditions, worst[0]))
+    gap = np.where(np.isnan(held), gap, gap.real)
+    _fail(model, np.asarray(gap, complex), worst[0], live)
 
 
 def _linear(y: Any, conditions: Conditions, size: Floats) -> Complex:
@@ -85,7 +90,7 @@ def _lacking(y: Any, conditions: Conditions, v: Complex) -> Complex:
     return np.asarray((conditions.power - v * (y @ v).conj()) * conditions.live)
 
 
-def _iterate(y: Any, conditions: Conditions, v: Complex, scale: float) -> tuple[Complex, float]:
+def _iterate(y: Any, conditions: Conditions, v: Complex, enough: float) -> tuple[Complex, float]:
     """Newton's steps from ``v`` until they no longer help; the best voltages and what they miss."""
     live, held = conditions.live, conditions.held
     turns = np.flatnonzero(live & ~conditions.reference)
@@ -113,7 +118,7 @@ def _iterate(y: Any, conditions: Conditions, v: Complex, scale: float) -> tuple[
             sized[sizes] += part * step[len(turns) :]
             trial = sized * np.exp(1j * turned)
             gap = _lacking(y, conditions, trial)
-            if miss(gap) < best_miss or miss(gap) < CLOSE * scale:
+            if miss(gap) < best_miss or miss(gap) < enough:
                 break
             part /= 2
         v = trial

@@ -12,6 +12,7 @@ from tests.published import (
     low_voltage,
     patterns,
     protection,
+    simultaneous,
     three_bus_loop,
     two_machine,
     windings,
@@ -26,6 +27,7 @@ EXAMPLES: tuple[Example, ...] = (
     *closed_forms.EXAMPLES,
     *windings.EXAMPLES,
     *protection.EXAMPLES,
+    *simultaneous.EXAMPLES,
 )
 PAGE = Path(__file__).parents[2] / "docs" / "validation.md"
 
