@@ -33,6 +33,7 @@ if TYPE_CHECKING:
     from seqfault.case.reader import case_from_tree, read_case
     from seqfault.case.records import Case
     from seqfault.case.scenarios import in_state
+    from seqfault.case.steps import read_steps
     from seqfault.errors import (
         CaseError,
         CheckError,
@@ -42,19 +43,23 @@ if TYPE_CHECKING:
         RequestError,
         SeqfaultError,
     )
-    from seqfault.faults.kinds import Fault
+    from seqfault.faults.kinds import Fault, fault_at
     from seqfault.faults.network import Network
     from seqfault.faults.solution import FaultSolution
+    from seqfault.studies.along import Along, along
     from seqfault.studies.compare import Comparison, compare
     from seqfault.studies.levels import Levels, levels
+    from seqfault.studies.steps import Evolution, evolve
 
 __version__ = "0.1.0"
 
 __all__ = [
+    "Along",
     "Case",
     "CaseError",
     "CheckError",
     "Comparison",
+    "Evolution",
     "Fault",
     "FaultSolution",
     "InputError",
@@ -65,11 +70,15 @@ __all__ = [
     "RequestError",
     "SeqfaultError",
     "__version__",
+    "along",
     "case_from_tree",
     "compare",
+    "evolve",
+    "fault_at",
     "in_state",
     "levels",
     "read_case",
+    "read_steps",
 ]
 
 _HOMES = {
@@ -85,11 +94,14 @@ _HOMES = {
         "RequestError",
         "SeqfaultError",
     ),
-    "seqfault.faults.kinds": ("Fault",),
+    "seqfault.case.steps": ("read_steps",),
+    "seqfault.faults.kinds": ("Fault", "fault_at"),
     "seqfault.faults.network": ("Network",),
     "seqfault.faults.solution": ("FaultSolution",),
+    "seqfault.studies.along": ("Along", "along"),
     "seqfault.studies.compare": ("Comparison", "compare"),
     "seqfault.studies.levels": ("Levels", "levels"),
+    "seqfault.studies.steps": ("Evolution", "evolve"),
 }
 
 

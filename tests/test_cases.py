@@ -283,6 +283,17 @@ def test_moor_coupled_lines() -> None:
     assert 0.7 * (mutual**2 / own).imag < less < (mutual**2 / own).imag
 
 
+def test_moor_broken_conductor() -> None:
+    here = network("moor", "winter")
+    answers = {side: here.fault("tarn-hamlet@50%", "open-one", fallen=side) for side in ("source", "load")}
+    assert abs(answers["source"].residual) == pytest.approx(1.95, abs=0.02)
+    assert abs(answers["load"].residual) == pytest.approx(0.56, abs=0.01)
+    for solution in answers.values():
+        nominal = 400 / sqrt(3)
+        left = np.sort(np.abs(solution.at("hamlet-lv"))) / nominal
+        assert 0.4 < left[0] < left[1] < 0.6 < 0.95 < left[2]
+
+
 def test_moor_star_points_at_110_kv() -> None:
     paths = home(fault("moor", "moor-110"))
     assert abs(paths["T2.hv"]) == pytest.approx(328, abs=1)

@@ -15,6 +15,8 @@ examples:
   seqfault inspect plant.toml
   seqfault compare plant.toml main
   seqfault fault plant.toml main --kind line-ground --zf "0.5 ohm"
+  seqfault fault plant.toml F1@37% --kind open-one --fallen load --loaded
+  seqfault along plant.toml F1 --far-end-open
   seqfault levels plant.toml --scenario all --output levels.csv
 
 exit codes: 0 done, 2 command or case wrong, 3 no answer exists, 70 internal error, 130 interrupted

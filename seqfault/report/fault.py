@@ -75,6 +75,8 @@ def described(fault: Fault) -> str:
     symbol = f" ({fault.kind.symbol})" if fault.kind.symbol else ""
     phases = f"phase{'s' if len(fault.phases) > 1 else ''} {' '.join(fault.phases)}"
     lying = f", fallen to earth on the side of {fault.fallen}" if fault.fallen else ""
+    if fault.fallen in ("source", "load"):
+        lying = f", fallen to earth on the {fault.fallen} side"
     return f"{fault.kind.name}{symbol}, {phases}{lying}"
 
 

@@ -59,7 +59,8 @@ def carried(s: FaultSolution, every: bool) -> tuple[Block, int]:
     for k, element in enumerate(t.element):
         if t.bus[k] in faulted and not every:
             continue
-        if not every and float(np.abs(phases[:, k]).max()) <= limit:
+        stirred = phases[:, k] if earlier is None else phases[:, k] - earlier.phases[:, k]
+        if not every and float(np.abs(stirred).max()) <= limit:
             left_out += 1
             continue
         own = at.setdefault(t.bus[k], [])

@@ -8,7 +8,7 @@ import math
 import pytest
 
 from seqfault import Network
-from seqfault.cli.fault import KINDS
+from seqfault.cli.shells import KINDS
 from seqfault.report.numbers import figures
 from tests.cli.console import PLANT, Run, Write, unearthed
 
@@ -217,12 +217,11 @@ def test_csv_reads_back(run: Run, plant: Network) -> None:
 
 
 def test_kinds_offered_are_the_kinds_there_are() -> None:
-    from seqfault.cli import options, shells
+    from seqfault.cli import options
     from seqfault.faults import kinds
     from seqfault.model import build
 
     assert set(KINDS) == set(kinds.KINDS)
-    assert shells.KINDS == KINDS
     assert options.MACHINES == build.MACHINES
 
 
