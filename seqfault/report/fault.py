@@ -122,12 +122,13 @@ def _home(s: FaultSolution) -> Table:
     if total < 1e-9 * max(map(abs, earthed)):  # out at one fault, back at the other
         sent, total = 0j, 0.0
     top = max([total, 1e-9 * s.largest, *(abs(path.current) for path in s.home)])
+    worth = total > 0.05 * max(map(abs, earthed))  # else what comes home is all but nothing
     rows = []
     for path in s.home:
         current = quiet(path.current, top)
-        share = fixed(abs(current) / total, 3) if total and current else "-"
+        share = fixed(abs(current) / total, 3) if worth and current else "-"
         rows.append(Row(path.path, ((abs(current), angle(current)), (share,))))
-    whole = "1.000" if total else "-"
+    whole = "1.000" if worth else "-"
     rows.append(Row("together (3I0)", (*phasors([sent], top), (whole,))))
     return Table(
         (Group(("from earth",)), Group(("share of", "3I0"))),

@@ -160,9 +160,10 @@ def _column_widths(tables: list[tuple[Table, list[Texts]]], g: int, wordy: int) 
     spanning = 0
     blocks = [pair for table, texts in tables for pair in zip(table.blocks, texts, strict=True)]
     for block, rows in blocks:
-        for row in rows:
+        for number, row in enumerate(rows):
+            alone = _alone(block, block.rows[number], g)
             for k, text in enumerate(row[g]):
-                if block.columns[k].spans:
+                if block.columns[k].spans or alone:
                     spanning = max(spanning, cell_len(text))
                     continue
                 widths += [0] * (k + 1 - len(widths))
@@ -195,13 +196,19 @@ def _row(
         yield line
 
 
+def _alone(block: Block, row: Row, g: int) -> bool:
+    """Whether a group holds one word in place of numbers, which takes the width of the whole group."""
+    cells = row.cells[g]
+    return len(cells) == 1 and isinstance(cells[0], str) and not block.columns[0].left
+
+
 def _is_text(block: Block, cells: list[str]) -> bool:
     return block.columns[0].left and bool(cells)
 
 
 def _group(block: Block, row: Row, cells: list[str], g: int, frame: Frame) -> Iterator[Piece]:
     size, columns = frame.totals[g] - GAP, frame.columns[g]
-    if block.columns[0].spans:
+    if block.columns[0].spans or _alone(block, row, g):
         yield " " * GAP + padded(cells[0] if cells else "", size), ""
         return
     used = 0 if block.columns[0].left else size - _sum(columns)
