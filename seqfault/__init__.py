@@ -47,6 +47,9 @@ if TYPE_CHECKING:
     from seqfault.faults.solution import FaultSolution
     from seqfault.studies.compare import Comparison, compare
     from seqfault.studies.levels import Levels, levels
+    from seqfault.studies.neutral import NeutralReport, study_neutral
+    from seqfault.studies.neutral_target import Target, find_target
+    from seqfault.studies.winding_cover import WindingCover, winding_cover
 
 __version__ = "0.1.0"
 
@@ -60,16 +63,22 @@ __all__ = [
     "InputError",
     "Levels",
     "Network",
+    "NeutralReport",
     "NoAnswerError",
     "QuantityError",
     "RequestError",
     "SeqfaultError",
+    "Target",
+    "WindingCover",
     "__version__",
     "case_from_tree",
     "compare",
+    "find_target",
     "in_state",
     "levels",
     "read_case",
+    "study_neutral",
+    "winding_cover",
 ]
 
 _HOMES = {
@@ -90,6 +99,9 @@ _HOMES = {
     "seqfault.faults.solution": ("FaultSolution",),
     "seqfault.studies.compare": ("Comparison", "compare"),
     "seqfault.studies.levels": ("Levels", "levels"),
+    "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
+    "seqfault.studies.neutral_target": ("Target", "find_target"),
+    "seqfault.studies.winding_cover": ("WindingCover", "winding_cover"),
 }
 
 

@@ -9,15 +9,17 @@ from typing import NoReturn
 
 from seqfault import __version__
 
-COMMANDS = ("inspect", "fault", "compare", "levels", "completion")
+COMMANDS = ("inspect", "fault", "compare", "levels", "neutral", "completion")
 EPILOG = """\
 examples:
   seqfault inspect plant.toml
   seqfault compare plant.toml main
   seqfault fault plant.toml main --kind line-ground --zf "0.5 ohm"
   seqfault levels plant.toml --scenario all --output levels.csv
+  seqfault neutral plant.toml NER --target "300 A"
 
-exit codes: 0 done, 2 command or case wrong, 3 no answer exists, 70 internal error, 130 interrupted
+exit codes: 0 done, 1 done and a condition is not met, 2 command or case wrong, 3 no answer exists,
+70 internal error, 130 interrupted
 """
 
 

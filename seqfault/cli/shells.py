@@ -54,7 +54,8 @@ def _command(name: str, text: str, parser: argparse.ArgumentParser) -> Command:
         if action.option_strings:
             options.append(_option(action))
         else:
-            words.append(tuple(action.choices) if action.choices else action.dest)
+            known = action.dest if action.dest in ("case", "place") else ()  # other names are typed
+            words.append(tuple(action.choices) if action.choices else known)
     return Command(name, text, tuple(options), tuple(words))
 
 
@@ -64,5 +65,5 @@ def _option(action: argparse.Action) -> Option:
     if action.nargs == 0:
         return Option(names, text, "none")
     words = tuple(action.choices) if action.choices else WORDS.get(action.dest, ())
-    value = "words" if words else "file" if action.dest == "output" else "text"
+    value = "words" if words else "file" if action.dest in ("output", "plot") else "text"
     return Option(names, text, value, words)

@@ -49,7 +49,7 @@ def fault_page(
     )
     parts: list[Part] = [title, Table(PHASES, (_into(s),))]
     if s.home:
-        parts.append(_home(s))
+        parts.append(home_table(s))
     parts.append(Table(PHASES, _voltages(s)))
     flows, left_out = carried(s, every_flow)
     blocks = [block for block in (feeding(s), flows) if block.rows]
@@ -77,7 +77,8 @@ def _into(s: FaultSolution) -> Block:
     return Block("Into the fault: ampere, degrees", (AMPERE, ANGLE), (row,))
 
 
-def _home(s: FaultSolution) -> Table:
+def home_table(s: FaultSolution) -> Table:
+    """How the earth current of one fault gets home: each path, and its share of 3I0."""
     total = abs(s.residual)
     top = max([total, *(abs(path.current) for path in s.home)])
     rows = []

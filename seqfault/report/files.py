@@ -79,25 +79,25 @@ def form_of(path: str) -> str | None:
     return SUFFIXES.get(os.path.splitext(path)[1].lower())
 
 
-def check_target(path: str, overwrite: bool, case: str) -> None:
+def check_target(path: str, overwrite: bool, case: str, option: str = "--output") -> None:
     """Raises ``RequestError`` where ``path`` cannot be written; asked before the work begins."""
     folder = os.path.dirname(os.path.realpath(path))
     name = quoted(path)
     if os.path.isdir(path):
-        raise RequestError(f"--output {name}: this is a folder; give the name of a file in it")
+        raise RequestError(f"{option} {name}: this is a folder; give the name of a file in it")
     if not os.path.isdir(folder):
-        raise RequestError(f"--output {name}: there is no folder {quoted(folder)}")
+        raise RequestError(f"{option} {name}: there is no folder {quoted(folder)}")
     if not os.path.exists(path):
         return
     if not os.path.isfile(path):
-        raise RequestError(f"--output {name}: this is no ordinary file; leave --output out")
+        raise RequestError(f"{option} {name}: this is no ordinary file; leave {option} out")
     if os.path.exists(case) and os.path.samefile(path, case):
-        raise RequestError(f"--output {name}: this is the case file itself; give another name")
+        raise RequestError(f"{option} {name}: this is the case file itself; give another name")
     if not overwrite:
-        raise RequestError(f"--output {name}: the file exists; give another name, or --overwrite")
+        raise RequestError(f"{option} {name}: the file exists; give another name, or --overwrite")
 
 
-def write_whole(path: str, content: bytes, overwrite: bool) -> None:
+def write_whole(path: str, content: bytes, overwrite: bool, option: str = "--output") -> None:
     """Write ``content`` to ``path``, whole or not at all.
 
     Raises ``RequestError`` where that fails, or where ``path`` has come to exist meanwhile.
@@ -122,11 +122,11 @@ def write_whole(path: str, content: bytes, overwrite: bool) -> None:
                 os.unlink(draft)
     except FileExistsError:
         raise RequestError(
-            f"--output {quoted(path)}: the file exists; give another name, or --overwrite"
+            f"{option} {quoted(path)}: the file exists; give another name, or --overwrite"
         ) from None
     except OSError as error:
         reason = error.strerror or str(error)
-        raise RequestError(f"--output {quoted(path)}: cannot be written: {reason}") from None
+        raise RequestError(f"{option} {quoted(path)}: cannot be written: {reason}") from None
 
 
 def _place(draft: str, target: str) -> None:

@@ -7,7 +7,15 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from tests.published import closed_forms, low_voltage, patterns, three_bus_loop, two_machine, windings
+from tests.published import (
+    closed_forms,
+    low_voltage,
+    neutrals,
+    patterns,
+    three_bus_loop,
+    two_machine,
+    windings,
+)
 from tests.published.figures import Example
 
 EXAMPLES: tuple[Example, ...] = (
@@ -17,6 +25,7 @@ EXAMPLES: tuple[Example, ...] = (
     *patterns.EXAMPLES,
     *closed_forms.EXAMPLES,
     *windings.EXAMPLES,
+    *neutrals.EXAMPLES,
 )
 PAGE = Path(__file__).parents[2] / "docs" / "validation.md"
 
