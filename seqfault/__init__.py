@@ -49,7 +49,10 @@ if TYPE_CHECKING:
     from seqfault.studies.along import Along, along
     from seqfault.studies.compare import Comparison, compare
     from seqfault.studies.levels import Levels, levels
+    from seqfault.studies.neutral import NeutralReport, study_neutral
+    from seqfault.studies.neutral_target import Target, find_target
     from seqfault.studies.steps import Evolution, evolve
+    from seqfault.studies.winding_cover import WindingCover, winding_cover
 
 __version__ = "0.1.0"
 
@@ -65,20 +68,26 @@ __all__ = [
     "InputError",
     "Levels",
     "Network",
+    "NeutralReport",
     "NoAnswerError",
     "QuantityError",
     "RequestError",
     "SeqfaultError",
+    "Target",
+    "WindingCover",
     "__version__",
     "along",
     "case_from_tree",
     "compare",
     "evolve",
     "fault_at",
+    "find_target",
     "in_state",
     "levels",
     "read_case",
     "read_steps",
+    "study_neutral",
+    "winding_cover",
 ]
 
 _HOMES = {
@@ -101,6 +110,9 @@ _HOMES = {
     "seqfault.studies.along": ("Along", "along"),
     "seqfault.studies.compare": ("Comparison", "compare"),
     "seqfault.studies.levels": ("Levels", "levels"),
+    "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
+    "seqfault.studies.neutral_target": ("Target", "find_target"),
+    "seqfault.studies.winding_cover": ("WindingCover", "winding_cover"),
     "seqfault.studies.steps": ("Evolution", "evolve"),
 }
 

@@ -9,7 +9,7 @@ from typing import NoReturn
 
 from seqfault import __version__
 
-COMMANDS = ("inspect", "fault", "compare", "levels", "along", "completion")
+COMMANDS = ("inspect", "fault", "compare", "levels", "along", "neutral", "completion")
 EPILOG = """\
 examples:
   seqfault inspect plant.toml
@@ -18,8 +18,10 @@ examples:
   seqfault fault plant.toml F1@37% --kind open-one --fallen load --loaded
   seqfault along plant.toml F1 --far-end-open
   seqfault levels plant.toml --scenario all --output levels.csv
+  seqfault neutral plant.toml NER --target "300 A"
 
-exit codes: 0 done, 2 command or case wrong, 3 no answer exists, 70 internal error, 130 interrupted
+exit codes: 0 done, 1 done and a condition is not met, 2 command or case wrong, 3 no answer exists,
+70 internal error, 130 interrupted
 """
 
 

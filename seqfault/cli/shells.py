@@ -63,7 +63,8 @@ def _command(name: str, text: str, parser: argparse.ArgumentParser) -> Command:
         if action.option_strings:
             options.append(_option(action))
         else:
-            words.append(tuple(action.choices) if action.choices else action.dest)
+            known = action.dest if action.dest in ("case", "place") else ()  # other names are typed
+            words.append(tuple(action.choices) if action.choices else known)
     return Command(name, text, tuple(options), tuple(words))
 
 

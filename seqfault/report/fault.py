@@ -44,7 +44,7 @@ def fault_page(
     s = solution
     parts: list[Part] = [_title(network, s), Table(PHASES, tuple(_into(s)))]
     if s.home:
-        parts.append(_home(s))
+        parts.append(home_table(s))
     parts.append(Table(PHASES, _voltages(s)))
     flows, left_out = carried(s, every_flow)
     fed = [feeding(s, state) for state in s.faults if state.fault.earth or state.through is None]
@@ -115,7 +115,8 @@ def _into(s: FaultSolution) -> Iterator[Block]:
         yield Block(f"Across the break{at}: kilovolt, degrees", (KILOVOLT, ANGLE), (gap,))
 
 
-def _home(s: FaultSolution) -> Table:
+def home_table(s: FaultSolution) -> Table:
+    """How the earth current of the faults gets home: each path, and its share of 3I0."""
     earthed = [f.residual for f in s.faults if f.fault.earth]
     sent = sum(earthed, 0j)
     total = abs(sent)

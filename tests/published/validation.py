@@ -10,6 +10,7 @@ from pathlib import Path
 from tests.published import (
     closed_forms,
     low_voltage,
+    neutrals,
     patterns,
     protection,
     simultaneous,
@@ -27,6 +28,7 @@ EXAMPLES: tuple[Example, ...] = (
     *closed_forms.EXAMPLES,
     *windings.EXAMPLES,
     *protection.EXAMPLES,
+    *neutrals.EXAMPLES,
     *simultaneous.EXAMPLES,
 )
 PAGE = Path(__file__).parents[2] / "docs" / "validation.md"
