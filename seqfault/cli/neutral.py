@@ -51,6 +51,13 @@ def add(commands: Commands) -> None:
         metavar="VOLTAGE",
         help='limit of the sound phases, of the phase voltage before the fault, as in "1.4 pu"',
     )
+    ohms.add_argument(
+        "--see",
+        metavar="RELAY=TIMES",
+        action="append",
+        default=[],
+        help="a relay that must see this many times its pickup, as in R1=2; may be given more than once",
+    )
     winding = parser.add_argument_group("winding of a generator on this neutral")
     winding.add_argument("--winding", metavar="GENERATOR", help="how much of its winding a pickup sees")
     winding.add_argument("--pickup", metavar="CURRENT", help='primary, in the neutral, as in "175 A"')
@@ -66,7 +73,7 @@ def run(options: argparse.Namespace) -> int:
     """Answer the command: 1 where a limit leaves no room for the target."""
     from functools import partial
 
-    from seqfault.cli.delivery import Answer, deliver, form_wanted
+    from seqfault.cli.delivery import Answer, deliver, form_wanted, plot_wanted
 
     form = form_wanted(options)
     between = _range(options.ohms, options.points)
@@ -76,8 +83,12 @@ def run(options: argparse.Namespace) -> int:
     cover = _quantity(options.cover, "--cover", "ratio")
     _check_winding(options, cover)
     coefficient = _coefficient(options.temperature_coefficient)
-    plot = _plot_form(options)
+    plot = plot_wanted(options)
+    see = [_see(text) for text in options.see]
     networks = read_networks(options)
+    from seqfault.studies.neutral_relays import relay_views
+
+    views, more = relay_views(networks[0].case)
     from seqfault.report.neutral import NeutralAnswer, neutral_page
     from seqfault.studies.neutral import study_neutral
     from seqfault.studies.neutral_sweep import spaced, sweep
@@ -85,17 +96,17 @@ def run(options: argparse.Namespace) -> int:
     from seqfault.studies.winding_cover import winding_cover
 
     report = study_neutral(
-        networks, options.name, options.at, device=options.device, coefficient=coefficient
+        networks, options.name, options.at, device=options.device, coefficient=coefficient, relays=views
     )
     neutral = report.neutral
     swept = target = found = None
     if between is not None:
         swept = sweep(neutral, spaced(*between, neutral.direction), report.duty.duration)
-    if current is not None or limit is not None:
-        target = find_target(neutral, current, limit)
+    if current is not None or limit is not None or see:
+        target = find_target(neutral, current, limit, see)
     if pickup is not None:
         found = winding_cover(neutral, options.winding, pickup, cover)
-    answer = NeutralAnswer(report, swept, target, found)
+    answer = NeutralAnswer(report, swept, target, found, more)
 
     def tree() -> dict[str, Any]:
         from seqfault.report.neutral_data import neutral_tree
@@ -107,7 +118,7 @@ def run(options: argparse.Namespace) -> int:
 
         return neutral_rows(answer)
 
-    if plot is not None:
+    if plot:
         _draw(options, answer, plot)
     warnings = [text for s in report.standing for text in s.state.network.model.warnings]
     code = deliver(options, form, [Answer(partial(neutral_page, answer), tree, rows, warnings)])
@@ -127,6 +138,18 @@ def _quantity(text: str | None, option: str, dimension: str) -> float | None:
     if value <= 0:
         raise RequestError(f'{option} "{text}": more than zero is wanted')
     return value
+
+
+def _see(text: str) -> tuple[str, float]:
+    """A relay and how many times its pickup it must see."""
+    name, mark, times = text.rpartition("=")
+    try:
+        wanted = float(times)
+    except ValueError:
+        wanted = math.nan
+    if not (mark and name and 0 < wanted < math.inf):
+        raise RequestError(f'--see "{text}": a relay and how many times its pickup, as in R1=2')
+    return name, wanted
 
 
 def _range(text: str | None, points: str | None) -> tuple[float, float, int] | None:
@@ -190,24 +213,10 @@ def _coefficient(text: str | None) -> float | None:
     return value
 
 
-def _plot_form(options: argparse.Namespace) -> str | None:
-    """The format of the chart wanted; everything that can be wrong with it is told before the work."""
-    if options.plot is None:
-        return None
-    from seqfault.report.charts import chart_form, load_plotting
-    from seqfault.report.files import check_target
-
-    form = chart_form(options.plot)
-    check_target(options.plot, options.overwrite, options.case, "--plot")
-    load_plotting()
-    return form
-
-
 def _draw(options: argparse.Namespace, answer: NeutralAnswer, form: str) -> None:
     """Write the chart, over the ohms asked for or a decade on either side of what stands."""
-    from seqfault.cli.run import say
-    from seqfault.report.charts import neutral_chart
-    from seqfault.report.files import write_whole
+    from seqfault.cli.delivery import deliver_plot
+    from seqfault.report.neutral_chart import neutral_chart
     from seqfault.studies.neutral_sweep import around, sweep
 
     report, target = answer.report, answer.target
@@ -215,5 +224,4 @@ def _draw(options: argparse.Namespace, answer: NeutralAnswer, form: str) -> None
     if swept is None:
         ohms = around(report.neutral, target.ohms if target is not None else None)
         swept = sweep(report.neutral, ohms, report.duty.duration)
-    write_whole(options.plot, neutral_chart(report, swept, target, form), options.overwrite, "--plot")
-    say(f"wrote {options.plot}")
+    deliver_plot(options, neutral_chart(report, swept, target, form))

@@ -84,6 +84,14 @@ def earth_faults(ports: NeutralPorts, ohms: Complex) -> EarthFaults:
     )
 
 
+def driven_voltage(ports: NeutralPorts, device: Complex) -> Complex:
+    """Per-unit voltage (2, n) that drives each kind of fault for ``device`` (2, n).
+
+    Raises ``NoAnswerError`` as ``earth_faults`` does.
+    """
+    return np.stack([_driven(ports, forms, device) for forms in ports.forms])
+
+
 def _driven(ports: NeutralPorts, forms: KindForms, device: Complex) -> Complex:
     """Per-unit voltage (n,) that drives the fault: the one before it, and what converters add."""
     size = forms.size @ np.abs(device)

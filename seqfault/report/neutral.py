@@ -13,6 +13,7 @@ from seqfault.report.neutral_tables import (
     SYMBOLS,
     cover_part,
     failures_table,
+    relays_table,
     standing_by_state,
     sweep_table,
     target_parts,
@@ -46,12 +47,13 @@ from seqfault.studies.winding_cover import WindingCover
 
 
 class NeutralAnswer(msgspec.Struct, frozen=True, eq=False):
-    """What was asked of a neutral: the report, and what else was wanted."""
+    """What was asked of a neutral: the report, what else was wanted, and ``more`` notes."""
 
     report: NeutralReport
     sweep: Sweep | None = None
     target: Target | None = None
     cover: WindingCover | None = None
+    more: tuple[str, ...] = ()
 
 
 def neutral_page(answer: NeutralAnswer) -> Page:
@@ -67,6 +69,7 @@ def neutral_page(answer: NeutralAnswer) -> Page:
         parts += target_parts(report, answer.target)
     if answer.sweep is not None:
         parts.append(sweep_table(report, answer.sweep, answer.target))
+        parts += relays_table(report, answer.sweep, answer.target)
     parts.append(failures_table(report))
     if answer.cover is not None:
         parts.append(cover_part(report, answer.cover))
@@ -240,7 +243,7 @@ def _earthing_duty(d: EarthingDuty) -> Iterator[Fact]:
 def notes(answer: NeutralAnswer) -> tuple[str, ...]:
     """What the reader should know about this answer."""
     report = answer.report
-    out = list(report.neutral.left_out)
+    out = [*report.neutral.left_out, *answer.more]
     for s in report.standing:
         out += _of_faults(s)
         if s.charging.silent:

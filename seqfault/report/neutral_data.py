@@ -14,6 +14,7 @@ from seqfault.report.data import Quantity, cartesian, header, polar
 from seqfault.report.neutral import NeutralAnswer, assumptions, notes
 from seqfault.report.tables import once
 from seqfault.studies.neutral import Standing
+from seqfault.studies.neutral_relays import seen_by
 from seqfault.studies.neutral_sweep import Sweep
 from seqfault.studies.neutral_target import Target
 from seqfault.studies.winding_cover import WindingCover
@@ -146,6 +147,7 @@ def _sweep(answer: NeutralAnswer, swept: Sweep) -> list[dict[str, Any]]:
         "earth_fault_factor": swept.sound,
         "power": swept.power,
     }
+    seen = seen_by(answer.report.neutral, swept.ohms)
     for n in range(len(swept.ohms)):
         row: dict[str, Any] = {"ohms": cartesian(swept.ohms[n])}
         for key, by in columns.items():
@@ -155,6 +157,15 @@ def _sweep(answer: NeutralAnswer, swept: Sweep) -> list[dict[str, Any]]:
                 "scenario": names[int(by.state[n])],
             }
         row["energy"] = float(swept.energy[n])
+        row["relays"] = {
+            one.view.name: {
+                "least_current": float(one.current[n]),
+                "pickup": one.view.pickup,
+                "multiple": float(one.multiple[n]),
+                "scenario": one.state[n],
+            }
+            for one in seen
+        }
         row["states"] = [
             {"scenario": name, **_column(faults, n, swept.duration)}
             for name, faults in zip(names, swept.faults, strict=True)
@@ -176,6 +187,7 @@ def _target(answer: NeutralAnswer) -> dict[str, Any]:
     return {
         "current": target.current,
         "sound_phase_below": target.limit,
+        "see": dict(target.see),
         "ohms": ohms,
         "ohms_to_state": None if ohms is None else [part / ratio for part in ohms],
         "met": target.met,
@@ -248,6 +260,17 @@ def neutral_rows(answer: NeutralAnswer) -> Iterator[Quantity]:
             for n, z in enumerate(swept.ohms):
                 label = "open" if not np.isfinite(z) else f"{abs(z):.12g} ohm"
                 yield from _values(place, label, item.name, faults, n, swept.duration)
+        for one in seen_by(neutral, swept.ohms):
+            for n, z in enumerate(swept.ohms):
+                label = "open" if not np.isfinite(z) else f"{abs(z):.12g} ohm"
+                for quantity, number, unit in (
+                    ("least current seen", one.current[n], "A"),
+                    ("times pickup", one.multiple[n], ""),
+                ):
+                    found = float(number)
+                    yield Quantity(
+                        place, label, quantity, "", found, unit, None, one.view.name, one.state[n]
+                    )
     target = answer.target
     if target is not None:
         name, state = neutral.name, target.state

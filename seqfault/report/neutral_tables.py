@@ -11,6 +11,7 @@ from seqfault.faults.neutral_faults import EarthFaults
 from seqfault.report.numbers import figures, ohms
 from seqfault.report.tables import TEXT, Block, Cell, Column, Fact, Facts, Group, Part, Row, Table
 from seqfault.studies.neutral import NeutralReport
+from seqfault.studies.neutral_relays import seen_by
 from seqfault.studies.neutral_sweep import Sweep, Worst, sweep, worst
 from seqfault.studies.neutral_target import Target
 from seqfault.studies.winding_cover import WindingCover
@@ -159,20 +160,59 @@ def sweep_table(report: NeutralReport, swept: Sweep, target: Target | None) -> T
     return _table(heading, tuple(row for _, row in rows), swept.duration)
 
 
+def relays_table(report: NeutralReport, swept: Sweep, target: Target | None) -> list[Part]:
+    """What each earth-fault relay sees at the least, and how many times its pickup, over the ohms."""
+    neutral = report.neutral
+    ohms = swept.ohms
+    extra = [s.ohms[0] for s in report.standing[:1]]
+    if target is not None and np.isfinite(target.ohms):
+        extra.append(target.ohms * neutral.direction)
+    ohms = np.concatenate([ohms, np.array([z for z in extra if np.isfinite(z)], complex)])
+    seen = seen_by(neutral, ohms)
+    if not seen:
+        return []
+    order = np.argsort(np.abs(ohms), kind="stable")
+    several = len(report.standing) > 1
+    groups = tuple(Group((one.view.name, f"{figures(one.view.pickup)} A")) for one in seen)
+    rows = []
+    for n in order.tolist():
+        cells: list[tuple[Cell, ...]] = []
+        for one in seen:
+            value = float(one.current[n])
+            if value <= 1e-9 * float(one.current.max()):
+                cells.append((0.0, "0x"))
+                continue
+            times = one.multiple[n]
+            cells.append((value, f"{times:.2f}x" if times < 100 else f"{times:.0f}x"))
+        label = ohm_label(complex(ohms[n]))
+        if n >= len(swept.ohms):
+            label = f"{figures(abs(ohms[n]), 4)} {'now' if n == len(swept.ohms) else 'target'}"
+        rows.append(Row(label, tuple(cells)))
+    states = " and states" if several else ""
+    heading = (
+        f"What relays see of faults at {neutral.place}: ampere, the least over both kinds{states}, and"
+        " times pickup"
+    )
+    return [Table(groups, (Block("", (VALUE, TEXT), tuple(rows)),), heading=heading)]
+
+
 def target_parts(report: NeutralReport, target: Target) -> list[Part]:
     """The ohms that a target asks for, what binds, and what they do in every state."""
     neutral, z = report.neutral, target.ohms
     facts = []
     chosen = f"{figures(z, 5)} ohm" if np.isfinite(z) else "any"
     limit = f"{target.limit:g}" if target.limit is not None else ""
+    wishes = _wishes(target)
     wanted = f"{target.current:g} A" if target.current is not None else ""
     several = f", state {target.state}" if len(report.standing) > 1 else ""
     device = neutral.device.capitalize()
     if target.current is None:
-        text = f"the most that keeps the sound phases at {limit} of the phase voltage before{several}"
+        text = f"the most that keeps {wishes}{several}"
         if not np.isfinite(z):
-            text = f"even open the sound phases stay below {limit} of the phase voltage before"
+            text = f"even open it keeps {wishes}"
         facts.append(Fact(device, chosen, text))
+        if len(target.see) + bool(limit) > 1:
+            facts.append(Fact("What binds", "", target.binds))
     elif target.met:
         facts.append(Fact(device, chosen, f"gives {wanted} line-ground (3I0) at {neutral.place}{several}"))
         if limit:
@@ -180,11 +220,17 @@ def target_parts(report: NeutralReport, target: Target) -> list[Part]:
             highest = max(float(f.factor.max()) for f in with_it)
             text = f"the current; the sound phases stand at {highest:.3f}, below {limit}"
             facts.append(Fact("What binds", "", text))
+        for relay, times in target.see:
+            one = next(
+                s for s in seen_by(neutral, np.array([z * neutral.direction])) if s.view.name == relay
+            )
+            text = f"{figures(one.current[0])} A, at least {times:g} times pickup wanted"
+            facts.append(Fact(f"{relay} sees", f"{one.multiple[0]:.2f}x", text))
     else:
         facts.append(
-            Fact(device, chosen, f"keeps {limit} on the sound phases, but not {wanted}: both cannot be had")
+            Fact(device, chosen, f"keeps {wishes}, but does not give {wanted}: both cannot be had")
         )
-        facts.append(Fact("What binds", "", f"the sound phases{several}"))
+        facts.append(Fact("What binds", "", f"{target.binds}{several}"))
         alone = [v for v in target.for_current if v == v]
         facts.append(Fact("For the current alone", f"{figures(max(alone), 5)} ohm", f"gives {wanted}"))
     ratio = neutral.record.ratio
@@ -201,7 +247,7 @@ def target_parts(report: NeutralReport, target: Target) -> list[Part]:
             text += f", state {r.state}"
         facts.append(Fact("Reach", f"{figures(r.least)} to {figures(r.greatest)} A", text))
     parts: list[Part] = [
-        Table((), (), heading=_question(wanted, limit, neutral.place)),
+        Table((), (), heading=_question(wanted, wishes, neutral.place)),
         Facts(tuple(facts)),
     ]
     if np.isfinite(z):
@@ -215,10 +261,17 @@ def target_parts(report: NeutralReport, target: Target) -> list[Part]:
     return parts
 
 
-def _question(wanted: str, limit: str, place: str) -> str:
-    if wanted and limit:
-        return f"What gives {wanted} at {place} and keeps the sound phases below {limit} pu"
-    return f"What gives {wanted} at {place}" if wanted else f"What keeps the sound phases below {limit} pu"
+def _wishes(target: Target) -> str:
+    """``the sound phases below 1.4 pu, R1 at 2 times its pickup or more``."""
+    out = [] if target.limit is None else [f"the sound phases below {target.limit:g} pu"]
+    out += [f"{relay} at {times:g} times its pickup or more" for relay, times in target.see]
+    return ", ".join(out)
+
+
+def _question(wanted: str, wishes: str, place: str) -> str:
+    if wanted and wishes:
+        return f"What gives {wanted} at {place} and keeps {wishes}"
+    return f"What gives {wanted} at {place}" if wanted else f"What keeps {wishes}"
 
 
 def cover_part(report: NeutralReport, cover: WindingCover) -> Table:

@@ -13,6 +13,7 @@ from seqfault.equations.neutrals import warm_ratio
 from seqfault.errors import CheckError
 from seqfault.faults.network import Network
 from seqfault.faults.neutral_faults import EarthFaults
+from seqfault.faults.neutral_relays import RelayView
 from seqfault.faults.solution import FaultSolution
 from seqfault.model.coils import ARC_SUPPRESSION, impedance_of
 from seqfault.studies.charging import Charging, charging_currents
@@ -105,14 +106,15 @@ def study_neutral(
     *,
     device: str | None = None,
     coefficient: float | None = None,
+    relays: Sequence[RelayView] = (),
 ) -> NeutralReport:
     """The neutral ``name`` as it stands in the states of ``networks``, for earth faults at ``place``.
 
     ``place`` is the bus of its star point unless stated, ``coefficient`` (per K) that of its resistance,
-    ``device`` what sweeps and targets try in its place. Raises ``RequestError`` for names that are not
-    there, ``NoAnswerError`` at resonance.
+    ``device`` what sweeps and targets try in its place, ``relays`` those whose currents are told. Raises
+    ``RequestError`` for names that are not there, ``NoAnswerError`` at resonance.
     """
-    neutral = neutral_states(networks, name, place, device)
+    neutral = neutral_states(networks, name, place, device, relays)
     duty = duty_of(neutral.record, coefficient)
     return NeutralReport(
         neutral=neutral,

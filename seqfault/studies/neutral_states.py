@@ -13,7 +13,8 @@ from seqfault.errors import RequestError, quoted
 from seqfault.faults.network import Network
 from seqfault.faults.neutral_faults import EarthFaults, earth_faults
 from seqfault.faults.neutral_ports import NeutralPorts, neutral_ports, open_zero_sequence
-from seqfault.model.elements import Complex, Model
+from seqfault.faults.neutral_relays import RelayForms, RelayView, relay_currents, relay_forms
+from seqfault.model.elements import Complex, Floats, Model
 
 OPEN = complex(np.inf)
 NOT_COUNTED = "; it does not count"
@@ -26,6 +27,7 @@ class NeutralState(msgspec.Struct, frozen=True, eq=False):
     star: int
     ohms: complex
     ports: NeutralPorts
+    relays: tuple[RelayForms, ...] = ()
 
     @property
     def name(self) -> str:
@@ -35,6 +37,13 @@ class NeutralState(msgspec.Struct, frozen=True, eq=False):
     def faults(self, ohms: Complex) -> EarthFaults:
         """Earth faults at the place with ``ohms`` (n,) of the neutral, infinite open."""
         return earth_faults(self.ports, ohms)
+
+    def seen(self, relay: str, ohms: Complex) -> Floats:
+        """Least current (n,) A over both kinds of fault at ``relay``; 0 where it is out of service."""
+        forms = next((r for r in self.relays if r.view.name == relay), None)
+        if forms is None:
+            return np.zeros(len(ohms))
+        return np.asarray(np.abs(relay_currents(self.ports, forms, ohms)).min(axis=0))
 
 
 class NeutralStates(msgspec.Struct, frozen=True, eq=False):
@@ -51,6 +60,7 @@ class NeutralStates(msgspec.Struct, frozen=True, eq=False):
     direction: complex
     states: tuple[NeutralState, ...]
     left_out: tuple[str, ...]
+    relays: tuple[RelayView, ...] = ()
 
     @property
     def device(self) -> str:
@@ -64,12 +74,17 @@ class NeutralStates(msgspec.Struct, frozen=True, eq=False):
 
 
 def neutral_states(
-    networks: Sequence[Network], name: str, place: str | None = None, device: str | None = None
+    networks: Sequence[Network],
+    name: str,
+    place: str | None = None,
+    device: str | None = None,
+    relays: Sequence[RelayView] = (),
 ) -> NeutralStates:
     """The neutral ``name`` in the states of ``networks``, for faults at ``place``.
 
     ``place`` is the bus of its star point unless stated; ``device``, what is tried in its place, a
-    ``resistor`` or a ``reactor`` (unless stated a reactor where the record is one). Raises ``RequestError``
+    ``resistor`` or a ``reactor`` (unless stated a reactor where the record is one); ``relays`` those whose
+    currents are told. Raises ``RequestError``
     where the neutral or the place is not there.
     """
     record = _record(networks, name)
@@ -93,7 +108,9 @@ def neutral_states(
         model = network.model
         zero = open_zero_sequence(model, (star,))
         ports = neutral_ports(network.sequences, zero, model.index[place], star)
-        states.append(NeutralState(network, star, complex(model.stars.impedance[star]), ports))
+        seeing = [forms for view in relays if (forms := relay_forms(zero, ports, view)) is not None]
+        ohms = complex(model.stars.impedance[star])
+        states.append(NeutralState(network, star, ohms, ports, tuple(seeing)))
     first = states[0]
     reactor = first.ohms.real == 0 if device is None else device == "reactor"
     return NeutralStates(
@@ -104,6 +121,7 @@ def neutral_states(
         direction=1j if reactor else 1,
         states=tuple(states),
         left_out=tuple(left_out),
+        relays=tuple(relays),
     )
 
 

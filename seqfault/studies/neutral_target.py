@@ -1,55 +1,43 @@
 """The ohms of a neutral that a wanted earth-fault current, or a limit of the sound phases, asks for.
 
-Every current and voltage is a ratio of two linear forms in the ohms, so that its square crosses a level
-where a quadratic has its roots: nothing is searched for, and no second root is missed. Converters, whose
-feed depends on the ohms, are the exception; there the crossings are bracketed and bisected.
+Nothing is searched for: where a condition is met with equality is found in closed form
+(``neutral_crossings``), and between those ohms it holds or does not.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+import difflib
+from collections.abc import Iterator, Sequence
 from itertools import pairwise
 
 import msgspec
 import numpy as np
 
-from seqfault.errors import NoAnswerError
-from seqfault.faults.neutral_ports import Form
-from seqfault.model.elements import Bools, Complex, Floats
-from seqfault.studies.neutral_states import OPEN, NeutralState, NeutralStates
+from seqfault.errors import NoAnswerError, RequestError, quoted
+from seqfault.studies.neutral_crossings import Reach, crossings, reach_of, values
+from seqfault.studies.neutral_states import NeutralState, NeutralStates
 
 MET = 1e-9
 """Relative tolerance within which a condition counts as met."""
-AT_END = 1e-12
-"""Relative tolerance within which solid or open has the level asked for."""
 SHOWN = 6
 FLAT = 1e-9
 """A current that changes by less than this share over all ohms does not depend on the neutral."""
-
-
-class Reach(msgspec.Struct, frozen=True):
-    """Least and greatest of a quantity over all ohms of one state, and the ohms that give them."""
-
-    state: str
-    least: float
-    least_ohms: float
-    greatest: float
-    greatest_ohms: float
 
 
 class Target(msgspec.Struct, frozen=True, eq=False):
     """The ohms asked for.
 
     ``current`` A, the line-ground current wanted, or None; ``limit`` the earth-fault factor allowed, or
-    None; ``ohms`` what to put in, in the direction of the device; ``binds`` ``current`` or
-    ``sound-phase``; ``met`` False where the limit leaves no room for the current, and ``ohms`` are the
-    nearest that keep the limit; ``state`` that governs; ``for_current`` the ohms of each state that give
-    the current there, nan where none do; ``others`` further ohms that meet everything; ``reach`` what
-    any ohms could give in each state.
+    None; ``see`` relays and the multiples of their pickup wanted; ``ohms`` what to put in, in the
+    direction of the device; ``binds`` ``current``, ``sound-phase`` or ``relay NAME``; ``met`` False where
+    the conditions leave no room for the current, and ``ohms`` are the nearest that keep them; ``state``
+    that governs; ``for_current`` the ohms of each state that give the current there, nan where none do;
+    ``others`` further ohms that meet everything; ``reach`` what any ohms could give in each state.
     """
 
     current: float | None
     limit: float | None
+    see: tuple[tuple[str, float], ...]
     ohms: float
     binds: str
     met: bool
@@ -59,21 +47,27 @@ class Target(msgspec.Struct, frozen=True, eq=False):
     reach: tuple[Reach, ...]
 
 
-def find_target(neutral: NeutralStates, current: float | None, limit: float | None) -> Target:
+def find_target(
+    neutral: NeutralStates,
+    current: float | None,
+    limit: float | None,
+    see: Sequence[tuple[str, float]] = (),
+) -> Target:
     """The ohms that make ``current`` (A) the greatest line-ground current (3I0) over the states.
 
-    ``limit`` is the highest earth-fault factor allowed, over both kinds and all states. Without a
-    current the greatest ohms that keep the limit are given. Raises ``NoAnswerError`` where the
-    current is out of reach or nothing keeps the limit, and says what can be had.
+    ``limit`` is the highest earth-fault factor allowed, over both kinds and all states; ``see`` names
+    relays and how many times their pickup they must see at the least. Without a current the greatest ohms
+    that keep all of it are given. Raises ``NoAnswerError`` where the current is out of reach or nothing
+    keeps the conditions, and says what can be had; ``RequestError`` for a relay that is none.
     """
-    reach = tuple(_reach(state, neutral.direction) for state in neutral.states)
+    reach = tuple(reach_of(state, neutral.direction) for state in neutral.states)
+    conditions = _conditions(neutral, limit, see)
     if current is None:
-        assert limit is not None
-        ends = _keeping(neutral, limit)
-        ohms = max(end for pair in ends for end in pair)
-        _, name = _sound(neutral, ohms)
-        return Target(None, limit, ohms, "sound-phase", True, name, (), (), reach)
-    roots = [_crossings(state, neutral.direction, "earth", current) for state in neutral.states]
+        assert conditions
+        ohms = max(end for pair in _keeping(neutral, conditions) for end in pair)
+        binding, name = _binding(neutral, conditions, ohms)
+        return Target(None, limit, tuple(see), ohms, binding, True, name, (), (), reach)
+    roots = [crossings(state, neutral.direction, "earth", current) for state in neutral.states]
     if all(r.greatest - r.least <= FLAT * r.greatest for r in reach):
         raise NoAnswerError(
             f"the neutral has no say in earth faults at this place: they draw {_range(reach)} whatever its"
@@ -88,155 +82,127 @@ def find_target(neutral: NeutralStates, current: float | None, limit: float | No
     if not fitting:
         raise NoAnswerError(_out_of_reach(current, reach))
     own = tuple(min(found, default=float("nan")) for found in roots)
-    if limit is not None:
-        kept = [(ohms, k) for ohms, k in fitting if _sound(neutral, ohms)[0] <= limit * (1 + MET)]
-        if not kept:
-            ohms = _nearest(_keeping(neutral, limit), fitting[0][0])
-            _, name = _sound(neutral, ohms)
-            return Target(current, limit, ohms, "sound-phase", False, name, own, (), reach)
-        fitting = kept
-    ohms, k = fitting[0]
-    more = tuple(other for other, _ in fitting[1:] if abs(other - ohms) > MET * ohms)
-    return Target(current, limit, ohms, "current", True, neutral.states[k].name, own, more, reach)
+    kept = [(ohms, k) for ohms, k in fitting if _kept(neutral, conditions, ohms)]
+    if not kept:
+        ohms = _nearest(_keeping(neutral, conditions), fitting[0][0])
+        binding, name = _binding(neutral, conditions, ohms)
+        return Target(current, limit, tuple(see), ohms, binding, False, name, own, (), reach)
+    ohms, k = kept[0]
+    more = tuple(other for other, _ in kept[1:] if abs(other - ohms) > MET * ohms)
+    return Target(
+        current, limit, tuple(see), ohms, "current", True, neutral.states[k].name, own, more, reach
+    )
 
 
-def _values(state: NeutralState, direction: complex, what: str, ohms: Floats) -> Floats:
-    """Line-ground 3I0 (A), or the earth-fault factor, for real ``ohms`` (n,), infinite open."""
-    z = np.full(len(ohms), OPEN)
-    z[np.isfinite(ohms)] = ohms[np.isfinite(ohms)] * direction
-    faults = state.faults(z)
-    return np.asarray(np.abs(faults.earth[0]) if what == "earth" else faults.factor.max(axis=0))
+class Condition(msgspec.Struct, frozen=True):
+    """``what`` (``sound``, or the name of a relay) stays at or below ``level``, or above it."""
+
+    what: str
+    level: float
+    below: bool
+
+    @property
+    def name(self) -> str:
+        """As answers name it."""
+        return "sound-phase" if self.below else f"relay {self.what}"
+
+
+def _conditions(
+    neutral: NeutralStates, limit: float | None, see: Sequence[tuple[str, float]]
+) -> tuple[Condition, ...]:
+    out = [] if limit is None else [Condition("sound", limit, True)]
+    views = {view.name: view for view in neutral.relays}
+    for relay, times in see:
+        if relay not in views:
+            near = difflib.get_close_matches(relay, views, n=1, cutoff=0.5)
+            known = f"did you mean {quoted(near[0])}?" if near else ", ".join(map(quoted, views)) or "none"
+            raise RequestError(f"relay {quoted(relay)}: no earth-fault relay has this name; {known}")
+        if not any(r.view.name == relay for state in neutral.states for r in state.relays):
+            raise RequestError(f"relay {quoted(relay)}: it is out of service in every state asked for")
+        out.append(Condition(relay, times * views[relay].pickup, False))
+    return tuple(out)
+
+
+def _extreme(neutral: NeutralStates, condition: Condition, ohms: float) -> tuple[float, str]:
+    """The value that matters of ``condition`` with ``ohms``, and the state that has it."""
+    at = np.array([ohms])
+    here = [s for s in neutral.states if condition.below or _has(s, condition.what)]
+    found = [float(values(s, neutral.direction, condition.what, at)[0]) for s in here]
+    k = int(np.argmax(found) if condition.below else np.argmin(found))
+    return found[k], here[k].name
+
+
+def _has(state: NeutralState, relay: str) -> bool:
+    return any(r.view.name == relay for r in state.relays)
+
+
+def _holds(neutral: NeutralStates, condition: Condition, ohms: float) -> bool:
+    value, _ = _extreme(neutral, condition, ohms)
+    if condition.below:
+        return value <= condition.level * (1 + MET)
+    return value >= condition.level * (1 - MET)
+
+
+def _kept(neutral: NeutralStates, conditions: Sequence[Condition], ohms: float) -> bool:
+    return all(_holds(neutral, condition, ohms) for condition in conditions)
+
+
+def _binding(neutral: NeutralStates, conditions: Sequence[Condition], ohms: float) -> tuple[str, str]:
+    """The condition that stands nearest to its limit with ``ohms``, and the state that has it."""
+
+    def room(condition: Condition) -> float:
+        ratio = _extreme(neutral, condition, ohms)[0] / condition.level
+        return float(abs(np.log(max(ratio, 1e-300))))
+
+    nearest = min(conditions, key=room)
+    return nearest.name, _extreme(neutral, nearest, ohms)[1]
 
 
 def _greatest_current(neutral: NeutralStates, ohms: float) -> float:
     at = np.array([ohms])
-    return max(float(_values(s, neutral.direction, "earth", at)[0]) for s in neutral.states)
+    return max(float(values(s, neutral.direction, "earth", at)[0]) for s in neutral.states)
 
 
-def _sound(neutral: NeutralStates, ohms: float) -> tuple[float, str]:
-    """Highest earth-fault factor with ``ohms``, and the state that has it."""
-    at = np.array([ohms])
-    values = [float(_values(s, neutral.direction, "sound", at)[0]) for s in neutral.states]
-    k = int(np.argmax(values))
-    return values[k], neutral.states[k].name
-
-
-def _forms(state: NeutralState, what: str) -> Iterable[tuple[Form, float]]:
-    """Forms whose size is ``what``, and the factor from them to it."""
-    one, two = state.ports.forms
-    if what == "earth":
-        model = state.network.model
-        nominal = float(model.nominal[state.ports.place])
-        ampere = model.base_power / (np.sqrt(3) * nominal)
-        return [(one.sequence[0], 3 * ampere * abs(state.ports.before))]
-    return [(form, 1.0) for form in (*one.sound, *two.sound)]
-
-
-def _crossings(state: NeutralState, direction: complex, what: str, level: float) -> list[float]:
-    """Ohms, 0 and infinity among them, at which ``what`` has the value ``level``."""
-    ends = np.array([0.0, np.inf])
-    at_ends = np.abs(_values(state, direction, what, ends) - level) <= AT_END * level
-    out = ends[at_ends].tolist()
-    if state.ports.model.converters.names:
-        return sorted({*out, *_bisected(lambda x: _values(state, direction, what, x) - level)})
-    base = state.ports.device_base
-    for form, factor in _forms(state, what):
-        out += [root * base for root in _positive_roots(_square(form, direction, factor, level))]
-    return sorted({ohms for ohms in out if not _is_end(state, direction, what, level, ohms, at_ends)})
-
-
-def _is_end(
-    state: NeutralState, direction: complex, what: str, level: float, ohms: float, at_ends: Bools
-) -> bool:
-    """Whether ``ohms`` is an end that has the level too, but for rounding: no value lies between them."""
-    if ohms == 0 or np.isinf(ohms):
-        return False
-    between = np.array([ohms / 10, ohms * 10])
-    same = np.abs(_values(state, direction, what, between) - level) <= AT_END * level
-    return bool((same & at_ends).any())
-
-
-def _square(form: Form, direction: complex, factor: float, level: float) -> Floats:
-    """|factor · form|² − level² as a quadratic in the per-unit ohms x, lowest power first."""
-
-    def size(pair: Complex) -> Floats:
-        fixed, sliding = complex(pair[0]), complex(pair[1]) * direction
-        return np.array([abs(fixed) ** 2, 2 * (fixed.conjugate() * sliding).real, abs(sliding) ** 2])
-
-    return factor**2 * size(form.top) - level**2 * size(form.bottom)
-
-
-def _positive_roots(c: Floats) -> list[float]:
-    """Positive real roots of c₀ + c₁ x + c₂ x², each by the form of the formula that does not cancel."""
-    c0, c1, c2 = (float(v) for v in c)
-    square = c1 * c1 - 4 * c0 * c2
-    if square < 0:
-        return []
-    q = -0.5 * (c1 + np.copysign(np.sqrt(square), c1))
-    roots = [q / c2 if c2 else 0.0, c0 / q if q else 0.0]
-    return sorted({root for root in map(float, roots) if 0 < root < np.inf})
-
-
-def _bisected(f: Callable[[Floats], Floats]) -> list[float]:
-    """Roots of ``f`` between 1e-3 and 1e7 ohm by bracketing on a logarithmic grid."""
-    x = np.geomspace(1e-3, 1e7, 241)
-    y = f(x)
-    out = []
-    for k in np.flatnonzero(np.sign(y[:-1]) * np.sign(y[1:]) < 0).tolist():
-        low, high, sign = x[k], x[k + 1], np.sign(y[k])
-        for _ in range(60):
-            middle = np.sqrt(low * high)
-            if np.sign(f(np.array([middle]))[0]) == sign:
-                low = middle
-            else:
-                high = middle
-        out.append(float(np.sqrt(low * high)))
-    return out
-
-
-def _reach(state: NeutralState, direction: complex) -> Reach:
-    """What the line-ground current can be; a ratio of two quadratics has at most two turning points."""
-    points = [0.0, np.inf]
-    ((form, _),) = _forms(state, "earth")
-    top, bottom = (_square(Form(pair, pair * 0), direction, 1.0, 0.0) for pair in (form.top, form.bottom))
-    turning = np.array([
-        top[1] * bottom[0] - top[0] * bottom[1],
-        2 * (top[2] * bottom[0] - top[0] * bottom[2]),
-        top[2] * bottom[1] - top[1] * bottom[2],
-    ])  # fmt: skip
-    points += [root * state.ports.device_base for root in _positive_roots(turning)]
-    if state.ports.model.converters.names:
-        points += np.geomspace(1e-3, 1e7, 121).tolist()
-    ohms = np.array(points)
-    values = _values(state, direction, "earth", ohms)
-    low, high = int(values.argmin()), int(values.argmax())
-    return Reach(state.name, float(values[low]), float(ohms[low]), float(values[high]), float(ohms[high]))
-
-
-def _keeping(neutral: NeutralStates, limit: float) -> list[tuple[float, float]]:
-    """Ranges of ohms that keep the earth-fault factor at or below ``limit`` in every state."""
+def _keeping(neutral: NeutralStates, conditions: Sequence[Condition]) -> list[tuple[float, float]]:
+    """Ranges of ohms that keep all ``conditions`` in every state."""
     breaks = {0.0, float("inf")}
-    for state in neutral.states:
-        breaks.update(_crossings(state, neutral.direction, "sound", limit))
+    for condition in conditions:
+        for state in neutral.states:
+            breaks.update(crossings(state, neutral.direction, condition.what, condition.level))
     ends = sorted(breaks)
     ranges: list[tuple[float, float]] = []
     for low, high in pairwise(ends):
         inside = 2 * low + 1 if np.isinf(high) else 0.5 * (low + high)
-        if _sound(neutral, inside)[0] <= limit * (1 + MET):
+        if _kept(neutral, conditions, inside):
             if ranges and ranges[-1][1] == low:
                 ranges[-1] = (ranges[-1][0], high)
             else:
                 ranges.append((low, high))
     if not ranges:
-        tried = np.concatenate([[0.0], np.geomspace(1e-3, 1e7, 401), [np.inf]])
-        per_state = [_values(s, neutral.direction, "sound", tried) for s in neutral.states]
-        highest = np.stack(per_state).max(axis=0)
-        k = int(highest.argmin())
-        raise NoAnswerError(
-            f"sound phases below {limit:g} times the phase voltage: no {neutral.device} keeps that; the"
-            f" least is {highest[k]:.4g}, with {_ohms(float(tried[k]))}"
-        )
+        raise NoAnswerError("\n".join(_impossible(neutral, conditions)))
     return ranges
+
+
+def _impossible(neutral: NeutralStates, conditions: Sequence[Condition]) -> Iterator[str]:
+    """What to say where no ohms keep all conditions: the best each can have."""
+    tried = np.concatenate([[0.0], np.geomspace(1e-3, 1e7, 401), [np.inf]])
+    if len(conditions) > 1:
+        yield f"no {neutral.device} keeps all conditions together; each alone:"
+    for c in conditions:
+        here = [s for s in neutral.states if c.below or _has(s, c.what)]
+        every = np.stack([values(s, neutral.direction, c.what, tried) for s in here])
+        best = every.max(axis=0) if c.below else every.min(axis=0)
+        k = int(best.argmin() if c.below else best.argmax())
+        least, with_ohms = f"{best[k]:.4g}", _ohms(float(tried[k]))
+        if c.below:
+            fails = best[k] > c.level * (1 + MET)
+            text = f"no {neutral.device} keeps that; the least is" if fails else "the least is"
+            what = f"sound phases below {c.level:g} times the phase voltage"
+            yield f"{what}: {text} {least}, with {with_ohms}"
+        else:
+            fails = best[k] < c.level * (1 - MET)
+            text = f"no {neutral.device} gives that; the most is" if fails else "the most is"
+            yield f"relay {c.what} seeing {c.level:.4g} A: {text} {least} A, with {with_ohms}"
 
 
 def _nearest(ranges: list[tuple[float, float]], wanted: float) -> float:

@@ -17,8 +17,8 @@ class WindingCover(msgspec.Struct, frozen=True):
     """Shares of a winding, from its star point, whose earth faults stay below ``pickup`` (A, primary).
 
     ``simple`` by x = I |Zn|/V, ``unprotected`` with the winding's own impedance ``winding`` (ohm, the
-    whole of it); ``unprotected`` is 1 where nothing is seen. ``neutral`` ohm, ``voltage`` V rated phase voltage, ``state``
-    of the machine's reactance. ``cover`` the share wanted, ``resistor`` ohm that gives it, or None.
+    whole of it), 1 where nothing is seen. ``neutral`` ohm, ``voltage`` V rated phase voltage, ``machine``
+    the reactance used. ``cover`` the share wanted, ``resistor`` ohm that gives it, or None.
     """
 
     generator: str

@@ -1,50 +1,25 @@
-"""Charts, drawn with matplotlib, which only they import: the extra ``plot`` of the package."""
+"""A chart of earth faults over the ohms of a neutral."""
 
 from __future__ import annotations
 
-import io
-import os
-from typing import Any
-
 import numpy as np
 
-from seqfault.errors import RequestError, quoted
 from seqfault.report.numbers import figures
+from seqfault.report.plotting import load_plotting, plain_text, saved
 from seqfault.studies.neutral import NeutralReport
 from seqfault.studies.neutral_sweep import Sweep, sweep
 from seqfault.studies.neutral_target import Target
 
-FORMATS = ("svg", "png", "pdf")
 SMOOTH = 160
 CURRENT, SOUND = "#1f4e79", "#b3541e"
-
-
-def chart_form(path: str) -> str:
-    """The format that the suffix of ``path`` asks for. Raises ``RequestError`` for any but ``FORMATS``."""
-    form = os.path.splitext(path)[1].lower().lstrip(".")
-    if form not in FORMATS:
-        raise RequestError(f"--plot {quoted(path)}: the suffix is one of .svg, .png, .pdf")
-    return form
-
-
-def load_plotting() -> Any:
-    """The class of figures. Raises ``RequestError`` where matplotlib is not installed."""
-    try:
-        import matplotlib
-        from matplotlib.figure import Figure
-    except ImportError:
-        raise RequestError(
-            "--plot: matplotlib is not installed; install it with  pip install 'seqfault[plot]'"
-        ) from None
-    matplotlib.rcParams["svg.hashsalt"] = "seqfault"  # the same figure twice is the same file
-    return Figure
+PICKUP = "#3f7d3a"
 
 
 def neutral_chart(report: NeutralReport, swept: Sweep, target: Target | None, form: str) -> bytes:
     """Current to earth and sound-phase voltage over the ohms of the neutral, as a file of ``form``.
 
     The greatest over kinds and states, on a logarithmic axis; what stands and what the target asks
-    for are marked, solid and open are lines at the edges.
+    for are marked, solid and open are lines at the edges, and so are the pickups of earth-fault relays.
     """
     figure = load_plotting()(figsize=(7.5, 5.0), layout="constrained")
     neutral = report.neutral
@@ -61,6 +36,9 @@ def neutral_chart(report: NeutralReport, swept: Sweep, target: Target | None, fo
     for value, word in zip(ends.earth.value, ("solid", "open"), strict=True):
         drawn.append(left.axhline(value, color=CURRENT, lw=0.6, ls=":"))
         drawn[-1].set_label(f"{word}: {figures(value)} A")
+    for view in neutral.relays:
+        drawn.append(left.axhline(view.pickup, color=PICKUP, lw=0.9, ls="-."))
+        drawn[-1].set_label(f"pickup of {view.name}: {figures(view.pickup)} A")
     standing = {s.ohms[0] for s in report.standing}
     marks = [(z, "stands", "o") for z in standing if z.real == 0 or z.imag == 0]
     if target is not None and np.isfinite(target.ohms):
@@ -88,8 +66,5 @@ def neutral_chart(report: NeutralReport, swept: Sweep, target: Target | None, fo
     for axis in (left.xaxis, left.yaxis, right.yaxis):
         axis.set_major_formatter(lambda value, _: f"{value:g}")
     legend = figure.legend(handles=drawn, loc="outside lower center", ncols=3, fontsize="small")
-    for text in (heading, left.xaxis.label, left.yaxis.label, *legend.get_texts()):
-        text.set_parse_math(False)  # a $ in a name is a $
-    out = io.BytesIO()
-    figure.savefig(out, format=form, metadata={"Date": None} if form == "svg" else None)
-    return out.getvalue()
+    plain_text(heading, left.xaxis.label, left.yaxis.label, *legend.get_texts())
+    return saved(figure, form)

@@ -1,0 +1,162 @@
+"""What earth-fault relays see of earth faults, for every impedance of one neutral.
+
+A relay's current is linear in the fault's zero-sequence current, the neutral device's current and the
+free potentials; each is a ratio of two linear forms in the device over one bottom (``neutral_ports``), and
+so is the relay's current. Two devices tell its top.
+"""
+
+from __future__ import annotations
+
+import msgspec
+import numpy as np
+from msgspec.structs import replace
+
+from seqfault.equations.per_unit import base_current
+from seqfault.faults.flows import sequence_flows, terminal_map
+from seqfault.faults.neutral_faults import driven_voltage
+from seqfault.faults.neutral_ports import Form, KindForms, NeutralPorts, device_of
+from seqfault.model.elements import Complex, Ints, Model
+from seqfault.networks.factors import SEEN, SequenceFactor
+
+PROBES: Complex = np.array([[1, 0.4 - 0.1j], [0.3 + 0.2j, 1]])
+"""Two devices, rows β and α, that tell a linear form in them."""
+
+
+class RelayView(msgspec.Struct, frozen=True):
+    """Where an earth-fault relay looks: a terminal (``element``, ``bus``) or the star point ``star``.
+
+    ``pickup`` A primary. Of a record that stands for several circuits it sees one.
+    """
+
+    name: str
+    element: str
+    bus: str
+    star: str
+    pickup: float
+
+
+class RelayForms(msgspec.Struct, frozen=True, eq=False):
+    """Residual (or neutral) current of one relay: a form for each kind of fault, ``scale`` A a unit."""
+
+    view: RelayView
+    forms: tuple[Form, Form]
+    scale: float
+
+
+def relay_forms(zero: SequenceFactor, ports: NeutralPorts, view: RelayView) -> RelayForms | None:
+    """The forms of ``view`` in the zero-sequence network ``zero`` without the device.
+
+    None where it is not in service, or stands in a part with more than two free potentials.
+    """
+    model = ports.model
+    impedance = model.stars.impedance.copy()
+    impedance[ports.star] = np.inf
+    opened = replace(model, stars=replace(model.stars, impedance=impedance))
+    picked = _pick(model, view)
+    if picked is None:
+        return None
+    rows, star, scale = picked
+    by_fault, by_device, by_free, potentials = _responses(opened, zero, ports, rows, star)
+    if potentials.shape[1] > 4:
+        return None  # more free potentials than the place and the star point tell
+    own = view.star == model.stars.names[ports.star]
+    forms = []
+    for kind in ports.forms:
+        bottom = kind.bottom @ PROBES
+        i0, j = kind.sequence[0].at(PROBES), kind.neutral.at(PROBES)
+        u = _free_potentials(kind, potentials)
+        if u is None:
+            return None
+        value = j if own else by_fault * i0 + by_device * j + by_free @ u
+        forms.append(Form(np.asarray((value * bottom) @ np.linalg.inv(PROBES)), kind.bottom))
+    return RelayForms(view, (forms[0], forms[1]), scale)
+
+
+def _pick(model: Model, view: RelayView) -> tuple[Ints, int, float] | None:
+    """Terminals (t,) a relay's current is the sum of, or its star point, and A of one per unit."""
+    if view.star:
+        if view.star not in model.stars.names:
+            return None
+        star = model.stars.names.index(view.star)
+        return (
+            np.zeros(0, np.int64),
+            star,
+            3 * float(base_current(model.stars.base[star], model.base_power)),
+        )
+    t = terminal_map(model)
+    at = model.index.get(view.bus, -1)
+    rows = np.array(
+        [
+            k
+            for k in range(len(t.element))
+            if t.element[k] == view.element and t.bus[k] == at and t.closed[k]
+        ],
+        np.int64,
+    )
+    if at < 0 or not len(rows):
+        return None
+    scale = 3 * float(base_current(model.nominal[at], model.base_power)) / int(t.count[rows[0]])
+    return rows, -1, scale
+
+
+def relay_currents(ports: NeutralPorts, relay: RelayForms, ohms: Complex) -> Complex:
+    """Current (2, n) A of ``relay`` for both kinds of fault and ``ohms`` (n,) of the device."""
+    device = device_of(np.asarray(ohms, complex), ports.device_base)
+    driven = driven_voltage(ports, device)
+    return np.stack([form.at(device) * driven[k] * relay.scale for k, form in enumerate(relay.forms)])
+
+
+def _responses(
+    model: Model, zero: SequenceFactor, ports: NeutralPorts, rows: Ints, star: int
+) -> tuple[complex, complex, Complex, Complex]:
+    """The relay's current for a unit drawn at the place, at the star point, and of each free potential.
+
+    The last item holds, for place and star point, what i0 and j do to their potentials above the
+    references, and the free potentials themselves: (2, 2 + k).
+    """
+    place, device = int(model.node[ports.place]), int(model.stars.node[ports.star])
+    nodes = np.array([place, device])
+    columns = zero.columns(nodes)
+
+    def seen(w: Complex, v: Complex) -> complex:
+        flows = sequence_flows(model, 0, w, v)
+        return complex(flows.star[star] if star >= 0 else flows.terminal[rows].sum())
+
+    by = [seen(-columns[:, k], -columns[:, k]) for k in range(2)]
+    parts = dict.fromkeys(zero.free.part[nodes].tolist())
+    free, effect = [], []
+    for part in (p for p in parts if p >= 0):
+        inside = zero.free.part == part
+        for q in range(int(zero.free.dimension[part])):
+            w = np.where(inside, -zero.drop[:, q], 0)
+            v = np.where(inside, zero.free.basis[:, q] - zero.drop[:, q], 0)
+            free.append(seen(w, v))
+            effect.append(np.where(zero.free.part[nodes] == part, zero.direction[nodes, q], 0))
+    potentials = np.concatenate([-columns[nodes], np.array(effect, complex).reshape(-1, 2).T], axis=1)
+    return by[0], by[1], np.array(free, complex), potentials
+
+
+def _free_potentials(kind: KindForms, potentials: Complex) -> Complex | None:
+    """Free potentials (k, n) at the ``PROBES``, from the voltages of place and star point.
+
+    The place's zero-sequence voltage is a third of the phases' sum, and faulted phases are at zero. None
+    where the two voltages do not tell all of them.
+    """
+    k = potentials.shape[1] - 2
+    if not k:
+        return np.zeros((0, PROBES.shape[1]), complex)
+    moved = potentials[:, :2] @ np.stack([kind.sequence[0].at(PROBES), kind.neutral.at(PROBES)])
+    place = np.sum([form.at(PROBES) for form in kind.sound], axis=0) / 3
+    stood = np.stack([place, kind.star.at(PROBES)]) - moved
+    out = np.zeros((k, PROBES.shape[1]), complex)
+    effect = potentials[:, 2:]
+    moving = np.flatnonzero(np.abs(effect).max(axis=0) > SEEN)
+    if len(moving) == 1:
+        row = int(np.abs(effect[:, moving[0]]).argmax())
+        out[moving] = stood[row] / effect[row, moving[0]]
+    elif len(moving):
+        own = effect[:, moving]
+        if abs(np.linalg.det(own)) <= SEEN * np.abs(own).max() ** 2:
+            return None
+        out[moving] = np.linalg.solve(own, stood)
+    return out
