@@ -139,7 +139,7 @@ def run(options: argparse.Namespace) -> int:
 
             return fault_rows(solution)
 
-        return Answer(page, tree, rows, network.model.warnings)
+        return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
     return deliver(options, form, [answer(network) for network in networks])
 
