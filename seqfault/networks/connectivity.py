@@ -13,7 +13,7 @@ import numpy as np
 from seqfault.model.elements import DELTA, STAR, Complex, Floats, Ints, Model, WindingSets
 from seqfault.model.windings import incidence
 from seqfault.model.zones import components
-from seqfault.networks.null_space import Conditions, null_space
+from seqfault.networks.null_space import Conditions, null_space, scaled
 
 LEAST = 1e-4
 """Weight of a node without a weak branch where references are chosen; the heaviest has 1."""
@@ -175,7 +175,7 @@ def _apart(basis: Floats, weak: Floats) -> Floats:
         for other in free:
             basis[:, other] -= basis[node, other] / basis[node, pivot] * basis[:, pivot]
             basis[node, other] = 0
-    return basis
+    return scaled(basis)
 
 
 def _references(part: Ints, basis: Floats, dimension: Ints, weak: Floats) -> Ints:
