@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import argparse
 
-from seqfault.cli.options import Commands, add_case, add_command, add_output, read_networks
+from seqfault.cli.batches import add_workers, over_states
+from seqfault.cli.options import Commands, add_case, add_command, add_output
 
 
 def add(commands: Commands) -> None:
@@ -17,6 +18,7 @@ def add(commands: Commands) -> None:
         " least of each, and the states that give them.",
     )
     add_case(parser)
+    add_workers(parser)
     add_output(parser)
     parser.set_defaults(run=run)
 
@@ -28,11 +30,11 @@ def run(options: argparse.Namespace) -> int:
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
     form = form_wanted(options)
-    networks = read_networks(options)
     from seqfault.report.levels import levels_page, levels_rows, levels_tree
     from seqfault.studies.levels import levels, silent
 
-    states = [levels(network) for network in networks]
+    found = over_states(options, levels)
+    networks, states = [network for network, _ in found], [each for _, each in found]
     answer = Answer(
         partial(levels_page, networks, states),
         partial(levels_tree, networks, states),

@@ -159,30 +159,8 @@ def _with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
     return msgspec.structs.replace(case, prefault=prefault)
 
 
-def read_networks(options: argparse.Namespace, place: str | None = None) -> list[Network]:
-    """The network of each state asked for; with several, those that have ``place`` in service."""
+def read_networks(options: argparse.Namespace) -> list[Network]:
+    """The network of each state asked for."""
     from seqfault.faults.network import Network
 
-    networks = [Network(case, machine=options.machine) for case in read_states(options)]
-    if place is None:
-        return networks
-    if len(networks) == 1:
-        networks[0].check_place(place)
-        return networks
-    having = [network for network in networks if _has(network, place)]
-    if not having:
-        networks[0].check_place(place)
-    from seqfault.cli.run import say
-
-    for network in networks:
-        if network not in having:
-            say(f"state {network.model.state}: the place is out of service there; no answer for it")
-    return having
-
-
-def _has(network: Network, place: str) -> bool:
-    try:
-        network.check_place(place)
-    except RequestError:
-        return False
-    return True
+    return [Network(case, machine=options.machine) for case in read_states(options)]
