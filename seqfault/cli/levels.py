@@ -6,6 +6,8 @@ import argparse
 
 from seqfault.cli.batches import add_workers, over_states
 from seqfault.cli.options import Commands, add_case, add_command, add_output
+from seqfault.cli.outages import add_outages, run_outages
+from seqfault.errors import RequestError
 
 
 def add(commands: Commands) -> None:
@@ -15,9 +17,10 @@ def add(commands: Commands) -> None:
         "levels",
         "fault levels at every bus",
         "Bolted-fault currents at every bus, by voltage; with --scenario all the greatest and the"
-        " least of each, and the states that give them.",
+        " least of each, and the states that give them; with --outages the same over outages.",
     )
     add_case(parser)
+    add_outages(parser)
     add_workers(parser)
     add_output(parser)
     parser.set_defaults(run=run)
@@ -28,6 +31,11 @@ def run(options: argparse.Namespace) -> int:
     from functools import partial
 
     from seqfault.cli.delivery import Answer, deliver, form_wanted
+
+    if options.outages is not None:
+        return run_outages(options)
+    if options.at:
+        raise RequestError("--at: this goes with --outages; levels alone answers for every bus")
 
     form = form_wanted(options)
     from seqfault.report.levels import levels_page, levels_rows, levels_tree

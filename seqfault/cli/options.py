@@ -129,7 +129,7 @@ def read_states(options: argparse.Namespace) -> list[Case]:
     names = ["base", *case.scenarios] if options.scenario == "all" else [options.scenario]
     changes = (options.without, options.open, options.close)
     return [
-        _with_prefault(
+        with_prefault(
             case if name == "base" and not any(changes) else in_state(case, name, *changes),
             options.prefault,
             options.loaded,
@@ -138,7 +138,8 @@ def read_states(options: argparse.Namespace) -> list[Case]:
     ]
 
 
-def _with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
+def with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
+    """``case`` as --prefault and --loaded want it. Raises ``RequestError``."""
     import msgspec
 
     if loaded:

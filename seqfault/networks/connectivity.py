@@ -47,10 +47,10 @@ def free_space(model: Model, sequence: int, weak: Complex) -> FreeSpace:
     grounded = model.sources.admittance[sequence] != 0
     tied[group[model.sources.node[grounded]]] = True
     vectors, alone = null_space(_conditions(model, sequence, group), tied)
-    return _spread(vectors, alone, group, _parts(model, sequence, group, size), np.abs(weak))
+    return _spread(vectors, alone, group, joined_parts(model, sequence, group, size), np.abs(weak))
 
 
-def _parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
+def joined_parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
     """Labels (size,) of the merged nodes that strong elements join."""
     first, second = [], []
     for sets in model.winding_sets:

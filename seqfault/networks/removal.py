@@ -22,7 +22,7 @@ import numpy as np
 
 from seqfault.model.elements import Bools, Complex, Floats, Ints, Model
 from seqfault.model.windings import Incidence, incidence
-from seqfault.networks.connectivity import held_windings
+from seqfault.networks.connectivity import held_windings, joined_parts
 from seqfault.networks.factors import SequenceFactor
 from seqfault.networks.parting import Joined, components_of
 
@@ -73,10 +73,13 @@ def strong_edges(model: Model, sequence: int) -> Edges:
     join(names, sources.node[fed], np.full(len(names), earth), np.zeros(len(names), bool))
     lines = model.lines
     stands = np.flatnonzero((lines.nodes >= 0).all(axis=0))
-    join([lines.names[k] for k in stands.tolist()], *lines.nodes[:, stands], np.zeros(len(stands), bool))
+    first, second = lines.nodes[:, stands]
+    join([lines.names[k] for k in stands.tolist()], first, second, np.zeros(len(stands), bool))
     for sets in model.winding_sets:
         inc = incidence(sets, sequence, model.stars.node)
         for unit, winding, other in held_windings(sets, sequence):
+            if not len(unit):
+                continue
             which = [winding] if other is None else [winding, other]
             node = np.where(inc.weight[unit][:, which] != 0, inc.node[unit][:, which], -1)
             node = np.sort(node.reshape(len(unit), -1), axis=1)[:, ::-1]
@@ -121,7 +124,10 @@ class SequenceRemovals:
         self._joined = Joined(self._size, self._edges.ends, self._edges.owners)
         self._label = self._joined.label
         metal = (self._edges.ends != factor.size).all(axis=0)
-        self._beside_earth = components_of(self._size, self._edges.ends[:, metal])
+        every = np.arange(factor.size)
+        beside = np.stack([every, self._size + joined_parts(model, sequence, every, factor.size)])
+        ends = np.concatenate([self._edges.ends[:, metal], beside], axis=1)
+        self._beside_earth = components_of(2 * self._size, ends)[: self._size]
         self._hard = self._hard_components()
         self._incidence = [incidence(s, sequence, model.stars.node) for s in model.winding_sets]
         self._line = {name: k for k, name in enumerate(model.lines.names)}

@@ -19,6 +19,7 @@ from seqfault.networks.parting import Joined
 from seqfault.networks.removal import SequenceRemovals, driving_points
 
 CURRENTS = ("k3", "k2", "k2e", "k1", "k2e_earth")
+ROUNDING = 1e-9
 TOGETHER = 200
 """Outages whose nodes are solved for at once."""
 
@@ -46,12 +47,14 @@ class OutageSurvey(msgspec.Struct, frozen=True, eq=False):
     def extreme(self, least: bool) -> tuple[Floats, Ints]:
         """Greatest or ``least`` of each current (currents, buses) A, and the outage that gives it.
 
-        Outage 0 is the network as it stands; of equals the first counts. nan and −1 at buses that are
-        dead in every state.
+        Outage 0 is the network as it stands; of what differs by rounding the first counts. nan and −1 at
+        buses that are dead in every state.
         """
         lost = -np.inf if not least else np.inf
         known = np.where(np.isnan(self.current), lost, self.current)
-        at = known.argmin(axis=0) if least else known.argmax(axis=0)
+        end = known.min(axis=0) if least else known.max(axis=0)
+        near = known <= end * (1 + ROUNDING) if least else known >= end * (1 - ROUNDING)
+        at = np.asarray(near.argmax(axis=0), np.int64)
         value = np.take_along_axis(self.current, at[None], axis=0)[0]
         return value, np.where(np.isnan(value), -1, at)
 

@@ -106,9 +106,9 @@ def test_a_worker_that_dies_is_told_with_its_item_and_the_item_tried_again(tmp_p
 
 def test_a_worker_that_dies_twice_names_the_one_item_to_blame() -> None:
     items = [Item(case, dying, ("island", "")) for case in CASES]
-    with ProcessPoolExecutor(1, mp_context=get_context("spawn")) as pool:
-        with pytest.raises(WorkerError, match="state island: the worker ended on this item twice"):
-            run_batch(items, pool)
+    told = pytest.raises(WorkerError, match="state island: the worker ended on this item twice")
+    with ProcessPoolExecutor(1, mp_context=get_context("spawn")) as pool, told:
+        run_batch(items, pool)
 
 
 def test_items_beyond_the_window_go_on_after_a_loss(
