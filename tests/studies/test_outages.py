@@ -84,7 +84,7 @@ def test_a_grid_of_hundreds_of_buses_agrees(seed: int) -> None:
     which = chance.choice(len(outages), 25, replace=False) + 1
     compared = against_rebuilt(case, survey, [*which.tolist(), len(outages)])
     assert compared > 18
-    assert len(survey.rebuilt) < 0.1 * len(outages)
+    assert len(survey.rebuilt) < 0.2 * len(outages)
 
 
 @pytest.mark.parametrize("path", CASES, ids=lambda path: path.stem)
