@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 from seqfault.case.quantities import Quantity
-from seqfault.case.records import Bus, Line, SeriesReactor, Tie
+from seqfault.case.records import Bus, Case, Line, SeriesReactor, Tie
 from seqfault.case.subject import Subject, real, said
 from seqfault.case.units import normalised
 from seqfault.case.wording import amount, digits
@@ -21,6 +21,8 @@ _REACH = ((1e3, 10e3), (40e3, 150e3), (150e3, 400e3))
 
 def check_line(subject: Subject, line: Line) -> None:
     """Tell what is wrong or doubtful about a line or cable."""
+    if unremarkable(line, subject.site.case):
+        return
     _ends(subject, line, "a line")
     for bus in line.open:
         if bus not in (line.from_, line.to):
@@ -41,6 +43,45 @@ def check_line(subject: Subject, line: Line) -> None:
         if getattr(line, c) is not None and getattr(line, b) is not None:
             subject.error("", f"both {c} and {b} are given; give one of the two")
     _line_values(subject, line)
+
+
+def unremarkable(line: Line, case: Case) -> bool:
+    """Tell whether every rule would pass a line over: quick, and false where that takes more to know."""
+    start, end, length = case.buses.get(line.from_), case.buses.get(line.to), line.length
+    if start is None or end is None or length is None or line.earthed or line.count < 1:
+        return False
+    metres, nominal, z1, z0 = length.value.real, start.voltage.value.real, line.z1.value, line.z0.value
+    if not (nominal == end.voltage.value and 0 < metres <= _longest(nominal)):
+        return False
+    if not (isinstance(z1, complex) and isinstance(z0, complex) and line.from_ != line.to):
+        return False
+    if z1.real < 0 or z1.imag < 0 or z0.real < 0 or z0.imag < 0:
+        return False
+    one = abs(z1) if line.z1.dimension == "impedance/length" else abs(z1) / metres
+    zero = abs(z0) if line.z0.dimension == "impedance/length" else abs(z0) / metres
+    if not _OHM_PER_KM[0] <= 1e3 * one <= min(1e3 * zero, _OHM_PER_KM[1]):
+        return False
+    if line.open and not {line.from_, line.to}.issuperset(line.open):
+        return False
+    if line.b1 is not None or line.b0 is not None:
+        return False
+    return _usual_capacitances(line.c1, line.c0, metres)
+
+
+def _usual_capacitances(c1: Quantity | None, c0: Quantity | None, metres: float) -> bool:
+    if c1 is None or c0 is None:
+        return c1 is c0
+    one, zero = 1e3 * c1.value.real, 1e3 * c0.value.real
+    if c1.dimension == c0.dimension == "capacitance":
+        one, zero = one / metres, zero / metres
+    elif c1.dimension != c0.dimension:
+        return False
+    return _FARAD_PER_KM[0] <= zero <= one <= _FARAD_PER_KM[1]
+
+
+def _longest(nominal: float | None) -> float:
+    """Return the usual length (m) that a line of a nominal voltage (V) does not exceed."""
+    return next((far for volts, far in _REACH if nominal and nominal <= volts), _LONGEST)
 
 
 def _ends(subject: Subject, branch: Line | SeriesReactor | Tie, kind: str) -> None:
@@ -66,7 +107,7 @@ def _differ(start: Bus, end: Bus) -> bool:
 def _line_values(subject: Subject, line: Line) -> None:
     length = real(line.length)
     nominal = _nominal(subject, line)
-    longest = next((far for volts, far in _REACH if nominal and nominal <= volts), _LONGEST)
+    longest = _longest(nominal)
     if length is not None and length > longest:
         at = f" at {amount(nominal, 'V')}" if nominal else ""
         text = f"{said(line.length)} is above the usual {longest / 1e3:g} km{at}"

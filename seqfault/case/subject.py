@@ -28,16 +28,15 @@ class Site:
         self.names = draft.names
         self.broken = draft.broken
         self.findings = findings
-        self._spelling = {
-            table: Spelling([name for name, of in draft.names.items() if of == table])
-            for table in ("buses", "lines", "neutrals", "relays", "current_transformers")
-        }
+        self._spelling: dict[str, Spelling] = {}
 
     def unknown(self, table: str, name: str) -> str:
         """Return what to say of a name that is not in ``table``."""
         other = self.names.get(name)
         if other is not None:
             return f"{quoted(name)} is {one_of(other)}; {one_of(table)} is wanted"
+        if table not in self._spelling:
+            self._spelling[table] = Spelling([name for name, of in self.names.items() if of == table])
         hint = self._spelling[table].hint(name)
         return f"there is no {SINGULAR[table]} {quoted(name)}{hint}"
 

@@ -10,6 +10,8 @@ import tomllib
 from collections.abc import Mapping
 from typing import Any
 
+import msgspec
+
 from seqfault.case.wording import Spelling
 from seqfault.errors import CaseError, RequestError, quoted
 
@@ -66,7 +68,9 @@ def parse_text(content: bytes, source: str) -> Mapping[str, Any]:
     suffix = os.path.splitext(source)[1].lower()
     is_json = suffix == ".json" or (suffix != ".toml" and text.lstrip()[0] == "{")
     try:
-        return _json(text, source) if is_json else tomllib.loads(text)
+        if not is_json:
+            return tomllib.loads(text)
+        return _json_at_once(content) or _json(text, source)
     except tomllib.TOMLDecodeError as error:
         raise CaseError([_explained(error, text)], source) from None
     except json.JSONDecodeError as error:
@@ -75,6 +79,28 @@ def parse_text(content: bytes, source: str) -> Mapping[str, Any]:
         raise CaseError(["the tables are nested too deeply"], source) from None
     except ValueError:
         raise CaseError(["a number has too many digits to be read"], source) from None
+
+
+def _json_at_once(content: bytes) -> Mapping[str, Any] | None:
+    """Return the tree of good JSON in which no key stands twice; None where either is in doubt.
+
+    Two equal keys leave one in the tree, and each key of the text has a colon behind its quotes. So
+    no key is lost where the tree has as many as the text has colons, or colons after quotes.
+    """
+    try:
+        tree = msgspec.json.decode(content.removeprefix(b"\xef\xbb\xbf"))
+    except (msgspec.DecodeError, ValueError, RecursionError):
+        return None
+    if not isinstance(tree, dict):
+        return None
+    keys, tables = 0, [tree]
+    while tables:
+        table = tables.pop()
+        keys += len(table)
+        tables.extend([value for value in table.values() if type(value) is dict])
+    if keys == content.count(b":") or keys == len(re.findall(rb'"\s*:', content)):
+        return tree
+    return None
 
 
 def _json(text: str, source: str) -> Mapping[str, Any]:
