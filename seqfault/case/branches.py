@@ -51,7 +51,9 @@ def unremarkable(line: Line, case: Case) -> bool:
     if start is None or end is None or length is None or line.earthed or line.count < 1:
         return False
     metres, nominal, z1, z0 = length.value.real, start.voltage.value.real, line.z1.value, line.z0.value
-    if not (nominal == end.voltage.value and 0 < metres <= _longest(nominal)):
+    if nominal != end.voltage.value or metres <= 0:
+        return False
+    if metres > _REACH[0][1] and metres > _longest(nominal):
         return False
     if not (isinstance(z1, complex) and isinstance(z0, complex) and line.from_ != line.to):
         return False

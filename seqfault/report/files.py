@@ -10,15 +10,17 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable, Iterator
+from itertools import islice, repeat
 from typing import Any
 
 import msgspec
 
 from seqfault.errors import RequestError, quoted
-from seqfault.report.data import Quantity
+from seqfault.report.data import Quantity, QuantityColumn
 
 SUFFIXES = {".json": "json", ".csv": "csv", ".txt": "table"}
 COLUMNS = ("place", "kind", "quantity", "phase", "value", "unit", "angle", "where", "state")
+_LINES, _CHUNK = 2000, 1 << 18  # lines made, and characters kept, before they are passed on
 FORMULA = ("=", "+", "-", "@", "\t", "\r")
 
 
@@ -53,8 +55,8 @@ def _scalar(value: Any) -> str:
     return msgspec.json.encode(value).decode()
 
 
-def as_csv(rows: Iterable[Quantity]) -> bytes:
-    """``rows`` under one line of column names."""
+def as_csv(rows: Iterable[Quantity | QuantityColumn]) -> Iterator[bytes]:
+    """``rows`` under one line of column names, some thousands of whole lines at a time."""
     import csv
     import io
 
@@ -62,8 +64,35 @@ def as_csv(rows: Iterable[Quantity]) -> bytes:
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow(COLUMNS)
     for row in rows:
-        writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
-    return text.getvalue().encode()
+        lines = _column_lines(row) if isinstance(row, QuantityColumn) else iter([_line(row)])
+        while block := list(islice(lines, _LINES)):
+            writer.writerows(block)
+            if text.tell() >= _CHUNK:
+                yield text.getvalue().encode()
+                text.seek(0)
+                text.truncate()
+    yield text.getvalue().encode()
+
+
+def _line(row: Quantity) -> tuple[str, ...]:
+    return tuple(_field(getattr(row, column)) for column in COLUMNS)
+
+
+def _column_lines(row: QuantityColumn) -> Iterator[tuple[str | float | None, ...]]:
+    """The lines of a column; of a float the writer itself makes its ``repr``, of None nothing."""
+    places = list(map(_field, row.places))
+    kind, quantity, unit, state = map(_field, (row.kind, row.quantity, row.unit, row.state))
+    return zip(
+        places,
+        repeat(kind),
+        repeat(quantity),
+        repeat(""),
+        row.values,
+        repeat(unit),
+        repeat(""),
+        places,
+        repeat(state),
+    )
 
 
 def _field(value: float | str | None) -> str:
@@ -97,8 +126,8 @@ def check_target(path: str, overwrite: bool, case: str, option: str = "--output"
         raise RequestError(f"{option} {name}: the file exists; give another name, or --overwrite")
 
 
-def write_whole(path: str, content: bytes, overwrite: bool, option: str = "--output") -> None:
-    """Write ``content`` to ``path``, whole or not at all.
+def write_whole(path: str, content: Iterable[bytes], overwrite: bool, option: str = "--output") -> None:
+    """Write the pieces of ``content`` to ``path`` as they come, whole or not at all.
 
     Raises ``RequestError`` where that fails, or where ``path`` has come to exist meanwhile.
     """
@@ -108,7 +137,7 @@ def write_whole(path: str, content: bytes, overwrite: bool, option: str = "--out
         descriptor = os.open(draft, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
         try:
             with open(descriptor, "wb") as file:
-                file.write(content)
+                file.writelines(content)
                 file.flush()
                 os.fsync(file.fileno())
             if overwrite:

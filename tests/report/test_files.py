@@ -43,14 +43,14 @@ def quantity(place: str, value: float | None = -1.5) -> Quantity:
 
 @given(st.text(st.characters(exclude_categories=["Cs", "Cc"]), min_size=1))
 def test_csv_reads_back_and_no_text_is_a_formula(place: str) -> None:
-    (row,) = csv.DictReader(io.StringIO(as_csv([quantity(place)]).decode()))
+    (row,) = csv.DictReader(io.StringIO(b"".join(as_csv([quantity(place)])).decode()))
     assert not row["place"].startswith(FORMULA)
     assert row["place"].removeprefix("'") == place.removeprefix("'")
     assert float(row["value"]) == -1.5
 
 
 def test_csv_leaves_what_is_undefined_empty() -> None:
-    (row,) = csv.DictReader(io.StringIO(as_csv([quantity("x", None)]).decode()))
+    (row,) = csv.DictReader(io.StringIO(b"".join(as_csv([quantity("x", None)])).decode()))
     assert row["value"] == ""
 
 
@@ -63,7 +63,7 @@ def test_a_write_that_fails_leaves_the_old_file(tmp_path: Path, monkeypatch: pyt
 
     monkeypatch.setattr(os, "fsync", fail)
     with pytest.raises(RequestError, match="No space left"):
-        write_whole(str(target), b"new", overwrite=True)
+        write_whole(str(target), [b"new"], overwrite=True)
     assert target.read_bytes() == b"old"
     assert [p.name for p in tmp_path.iterdir()] == ["answer.json"]
 
@@ -72,7 +72,7 @@ def test_a_file_that_appears_meanwhile_is_kept(tmp_path: Path) -> None:
     target = tmp_path / "answer.json"
     target.write_bytes(b"of another")
     with pytest.raises(RequestError, match="exists"):
-        write_whole(str(target), b"new", overwrite=False)
+        write_whole(str(target), [b"new"], overwrite=False)
     assert target.read_bytes() == b"of another"
     assert len(list(tmp_path.iterdir())) == 1
 
@@ -83,7 +83,7 @@ def test_without_hard_links(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> 
 
     monkeypatch.setattr(os, "link", fail)
     target = tmp_path / "answer.json"
-    write_whole(str(target), b"new", overwrite=False)
+    write_whole(str(target), [b"new"], overwrite=False)
     assert target.read_bytes() == b"new"
     with pytest.raises(RequestError, match="exists"):
-        write_whole(str(target), b"newer", overwrite=False)
+        write_whole(str(target), [b"newer"], overwrite=False)
