@@ -23,10 +23,11 @@ AnyStruct = TypeVar("AnyStruct", bound=msgspec.Struct)
 def convert_table(kind: type[AnyStruct], raw: Mapping[str, Any]) -> dict[str, AnyStruct] | None:
     """Return the records of a table by name, in its order; None where any of them has a fault."""
     try:
-        return dict(zip(raw, _structs(kind, list(raw.values())), strict=True))
-    except _NullError:
-        return convert_table(kind, _stated(raw))
-    except (FieldError, _UnsoundError):
+        try:
+            return _by_name(kind, raw)
+        except _NullError:
+            return _by_name(kind, _stated(raw))
+    except (FieldError, RecursionError, _UnsoundError):
         return None
 
 
@@ -40,6 +41,10 @@ class _NullError(Exception):
 
 def _stated(raw: Mapping[str, Any]) -> dict[str, Any]:
     return {k: _stated(v) if isinstance(v, dict) else v for k, v in raw.items() if v is not None}
+
+
+def _by_name(kind: type[AnyStruct], raw: Mapping[str, Any]) -> dict[str, AnyStruct]:
+    return dict(zip(raw, _structs(kind, list(raw.values())), strict=True))
 
 
 def _structs(kind: type[AnyStruct], raws: list[Any]) -> Iterable[AnyStruct]:
