@@ -106,42 +106,50 @@ def test_one_value_changed_anywhere(data: st.DataObject) -> None:
     agree(tree)
 
 
-def spread(low: float, high: float) -> st.SearchStrategy[float]:
-    return st.floats(-1, 12).map(lambda at: low * (high / low) ** (at / 11))
+def near(low: float, high: float) -> st.SearchStrategy[float]:
+    """Mostly between two limits, sometimes a little outside."""
+    return st.floats(-0.1, 1.1).map(lambda at: low * (high / low) ** at)
+
+
+def seldom(usual: Any, *others: Any) -> st.SearchStrategy[Any]:
+    return st.integers(0, 11).flatmap(lambda k: st.just(usual) if k else st.sampled_from(others))
 
 
 @st.composite
 def lines(draw: st.DrawFn) -> dict[str, Any]:
     """Usual lines and such as a rule has something to say about, at the ends of what is usual."""
-    ends = st.sampled_from(["A", "A2", "B", "C"])
-    per = draw(st.sampled_from(["/km", "/km", ""]))
-    line: dict[str, Any] = {"from": draw(ends), "to": draw(ends)}
-    for field, low, high in (("z1", 5e-3, 5.0), ("z0", 5e-3, 5.0)):
-        value = draw(spread(low, high)) * complex(draw(st.sampled_from([0, 0.6, 0.6, -0.6])), 0.8)
-        line[field] = quantity(value, f"ohm{per}")
-    if draw(st.integers(0, 9)):
-        line["length"] = quantity(draw(spread(100, 1e6)), "m")
-    for field in ("c1", "c0", "b1", "b0"):
-        if draw(st.integers(0, 3)) == 0:
-            unit, size = ("F", 1.0) if field[0] == "c" else ("S", 314.0)
-            line[field] = quantity(size * draw(spread(2e-9, 5e-6)), f"{unit}{per}")
-    more = st.fixed_dictionaries(
-        {},
-        optional={
-            "count": st.integers(0, 2),
-            "open": st.lists(ends, max_size=2),
-            "earthed": st.booleans(),
-            "out": st.booleans(),
-        },
-    )
-    return line | draw(more)
+    start, end = draw(st.sampled_from([("A", "A2"), ("D", "D2"), ("C", "C2")]))
+    line: dict[str, Any] = {"from": start, "to": draw(seldom(end, start, "B", "nowhere"))}
+    metres = draw(near(100, {"A": 10e3, "D": 150e3, "C": 400e3}[start]))
+    per, size = draw(st.sampled_from([("/km", 1.0), ("", metres / 1e3)]))
+    if draw(seldom(True, False)):
+        line["length"] = quantity(metres, "m")
+    one = draw(near(5e-3, 5.0))
+    for field, ohms in (("z1", one), ("z0", one * draw(near(1.0, 4.0)))):
+        direction = complex(draw(seldom(0.6, 0, -0.6)), draw(seldom(0.8, 0, -0.8)))
+        line[field] = quantity(size * ohms * direction, f"ohm{per}")
+    for letter, unit, omega in (("c", "F", 1.0), ("b", "S", 314.0)):
+        farads = draw(near(2e-9, 5e-6))
+        if draw(st.booleans() if letter == "c" else seldom(False, True)):
+            for field, share in (("1", 1.0), ("0", draw(near(0.2, 1.0)))):
+                if draw(seldom(True, False)):
+                    text = quantity(size * omega * farads * share, f"{unit}{draw(seldom(per, '/km', ''))}")
+                    line[letter + field] = text
+    more = {
+        "count": (1, 0, 2),
+        "open": ([], [start], ["B"]),
+        "earthed": (False, True),
+        "out": (False, True),
+    }
+    return line | {field: draw(seldom(*values)) for field, values in more.items()}
 
 
 @given(st.dictionaries(st.sampled_from("KLMNOP"), lines(), min_size=1))
 @settings(max_examples=300)
 def test_lines_around_the_limits_of_their_rules(drawn: dict[str, Any]) -> None:
     infeed = {"bus": "A", "z1": "0.1+j1 ohm", "z0": "open"}
-    buses = {"A": "11 kV", "A2": "11 kV", "B": "33 kV", "C": "400 kV"}
+    volts = {"A": "11 kV", "D": "110 kV", "C": "400 kV"}
+    buses = {"B": "33 kV"} | volts | {f"{name}2": volt for name, volt in volts.items()}
     agree({"frequency": "50 Hz", "buses": buses, "infeeds": {"Q": infeed}, "lines": drawn})
 
 
@@ -177,26 +185,25 @@ def test_one_record_with_a_fault_among_many() -> None:
     assert "eleven" in str(agree(tree))
 
 
-NUMBERS = st.from_regex(r"[0-9]{0,25}\.?[0-9]{0,25}", fullmatch=True) | st.floats(0).map(repr)
-TEXTS = st.one_of(
-    st.builds(
-        "{}{} {}".format,
-        NUMBERS,
-        st.just("") | st.builds("{}j{}".format, st.sampled_from("+-"), NUMBERS),
-        st.sampled_from(sorted(UNITS)) | st.sampled_from(["", "kv", "j", "°", "ohm / km"]),
-    ),
-    st.text(max_size=8),
-    st.builds("0.{}1 V".format, st.integers(30, 400).map(lambda zeros: "0" * zeros)),
-)
+PLAIN = st.from_regex(r"[0-9]{1,25}(\.[0-9]{0,25})?", fullmatch=True)
+NUMBERS = PLAIN | PLAIN | st.floats(0).map(repr) | st.just("0." + 400 * "0" + "1") | st.just("." * 2)
 
 
-@given(
-    st.lists(TEXTS, max_size=5),
-    st.lists(st.sampled_from(sorted(KINDS)), min_size=1, max_size=3),
-    st.booleans(),
-)
+@st.composite
+def texts(draw: st.DrawFn, kinds: tuple[str, ...]) -> str:
+    """Mostly quantities of ``kinds``, with everything that can be wrong about one."""
+    odd = ["", "kv", "j", "°", "ohm / km", *UNITS]
+    fitting = [unit for unit, (kind, _, _) in UNITS.items() if kind in kinds]
+    unit = draw(st.sampled_from(fitting) | st.sampled_from(fitting) | st.sampled_from(odd))
+    second = st.builds("{}j{}".format, st.sampled_from("+-"), NUMBERS)
+    return f"{draw(NUMBERS)}{draw(st.just('') | second)} {unit}"
+
+
+@given(st.data(), st.booleans())
 @settings(max_examples=1000)
-def test_quantities_at_once_or_one_by_one(texts: list[str], kinds: list[str], is_complex: bool) -> None:
+def test_quantities_at_once_or_one_by_one(data: st.DataObject, is_complex: bool) -> None:
+    kinds = tuple(data.draw(st.lists(st.sampled_from(sorted(KINDS)), min_size=1, max_size=3)))
+    drawn = data.draw(st.lists(texts(kinds) | st.text(max_size=8), max_size=3))
     dimensions = Dimensions(*kinds, complex=is_complex)
 
     def told(read: Callable[[], object]) -> str:
@@ -206,8 +213,8 @@ def test_quantities_at_once_or_one_by_one(texts: list[str], kinds: list[str], is
             return f"refused: {error}"
 
     parse_quantity.cache_clear()
-    one_by_one = told(lambda: {text: read_quantity(text, dimensions) for text in texts})
-    assert told(lambda: read_quantities(texts, dimensions)) == one_by_one
+    one_by_one = told(lambda: {text: read_quantity(text, dimensions) for text in drawn})
+    assert told(lambda: read_quantities(drawn, dimensions)) == one_by_one
 
 
 KEYS = st.sampled_from(["a", "b", ":", '":', "a\\", "\u00e9"])
