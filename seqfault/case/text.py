@@ -7,6 +7,7 @@ import os
 import re
 import sys
 import tomllib
+from collections import Counter
 from collections.abc import Mapping
 from typing import Any
 
@@ -109,8 +110,8 @@ def _json(text: str, source: str) -> Mapping[str, Any]:
     def table(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
         made = dict(pairs)
         if len(made) < len(pairs):
-            keys = [key for key, _ in pairs]
-            repeated.extend(key for key in made if keys.count(key) > 1)
+            counts = Counter(key for key, _ in pairs)
+            repeated.extend(key for key, count in counts.items() if count > 1)
         return made
 
     tree = json.loads(text, object_pairs_hook=table)
