@@ -194,8 +194,9 @@ class SequenceRemovals:
             if name in self._line:
                 k = self._line[name]
                 ends = lines.nodes[:, k].tolist()
-                drops.append({ends[0]: 1, ends[1]: -1})
-                blocks.append(np.array([[1 / lines.series[self._sequence, k]]]))
+                if ends[0] != ends[1]:  # a closed tie beside it carries all
+                    drops.append({ends[0]: 1, ends[1]: -1})
+                    blocks.append(np.array([[1 / lines.series[self._sequence, k]]]))
                 for end in ends:
                     shunts[end] = shunts.get(end, 0) + complex(lines.shunt[self._sequence, k])
             for s, k in self._units.get(name, ()):
