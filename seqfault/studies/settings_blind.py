@@ -95,6 +95,11 @@ def _places(state: State) -> Iterator[BlindPlace]:
 def _reason(state: State, case: int, current: float, who: View | None, share: float) -> str:
     home = state.forms.probes[0][0].galvanic[int(state.forms.spot[case])]
     here = [name for name, label in state.at_home.items() if label == home]
+    if not here and current > _NOTHING:
+        return (
+            "no relay stands in its network, and its transformers pass none of its zero-sequence current to"
+            " another"
+        )
     if who is not None and share > _NOTHING:
         relay = who.relay
         size = share * float(relay.pickup.primary or 0)
@@ -104,11 +109,6 @@ def _reason(state: State, case: int, current: float, who: View | None, share: fl
         )
     if current <= _NOTHING:
         return "nothing joins this network to earth, so no earth current flows that a relay could see"
-    if not here:
-        return (
-            "no relay stands in its network, and its transformers pass none of its zero-sequence current to"
-            " another"
-        )
     resting = [
         f"{name}: {state.protection.relays[name].blind or 'out of service'}"
         for name in here

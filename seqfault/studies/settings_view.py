@@ -26,6 +26,7 @@ from seqfault.studies.relays import Relay, operate_times
 from seqfault.studies.settings_places import Spot
 from seqfault.studies.settings_probe import Probe, Sites
 
+_FLOOR = 1e-9
 ACTS_WITHIN = {"subtransient": 0.1, "transient": 1.0}
 """Longest operate time (s) for which a reactance stands (common practice); above both, synchronous."""
 
@@ -34,8 +35,9 @@ class View(msgspec.Struct, frozen=True, eq=False):
     """The cases (n) of one relay in one state.
 
     ``top`` and ``towards`` (m, n, q, 2), ``bottom`` (m, n, 2); ``towards`` None without a direction.
-    ``through`` (m, n, 3, 2) phase currents. ``spot`` (n,) into ``spots``, ``kind`` (n,) into
-    ``EARTH_KINDS``, ``hot`` (n,). ``machines`` the m reactances.
+    ``through`` (m, n, 3, 2) phase currents; ``floor`` (n,) below which what polarises is rounding.
+    ``spot`` (n,) into ``spots``, ``kind`` (n,) into ``EARTH_KINDS``, ``hot`` (n,). ``machines`` the m
+    reactances.
     """
 
     relay: Relay
@@ -49,6 +51,7 @@ class View(msgspec.Struct, frozen=True, eq=False):
     towards: Complex | None
     through: Complex
     bottom: Complex
+    floor: Floats
 
     def sizes(self, resistance: Floats) -> Floats:
         """What is measured (m, n, r), A or V, through ``resistance`` (r,) or (n, 1, r) ohm.
@@ -67,7 +70,9 @@ class View(msgspec.Struct, frozen=True, eq=False):
         value = at_resistance(self.top, self.bottom[:, :, None], resistance)
         by = at_resistance(self.towards, self.bottom[:, :, None], resistance)
         work = (value * by.conj()).real
-        return np.asarray((np.abs(by) > 0) & (work >= -1e-12 * np.abs(value) * np.abs(by)))
+        return np.asarray(
+            (np.abs(by) > self.floor[:, None, None]) & (work >= -1e-12 * np.abs(value) * np.abs(by))
+        )
 
     def seen(self, resistance: Floats) -> tuple[Floats, Ints]:
         """What is measured (n, r) with the reactance of the relay's own time, and which (n, r).
@@ -95,6 +100,7 @@ class View(msgspec.Struct, frozen=True, eq=False):
             top=self.top[:, which],
             towards=None if self.towards is None else self.towards[:, which],
             through=self.through[:, which],
+            floor=self.floor[which],
             bottom=self.bottom[:, which],
         )
 
@@ -227,6 +233,7 @@ def view_of(relay: Relay, forms: Forms, sites: Sites, units: int = 1) -> View:
         case _:
             top = 3 * sequence[:, :, :1]
     towards = None
+    by_voltage = relay.polarisation not in sites.stars
     if relay.direction:
         assert relay.characteristic_angle_deg is not None
         sense = 1 if relay.direction == "forward" else -1
@@ -245,6 +252,7 @@ def view_of(relay: Relay, forms: Forms, sites: Sites, units: int = 1) -> View:
         towards=towards,
         through=through,
         bottom=forms.bottom,
+        floor=_FLOOR * forms.probes[0][0].voltage[forms.spot] if by_voltage else np.zeros(len(forms.spot)),
     )
 
 
