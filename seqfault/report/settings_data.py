@@ -8,6 +8,7 @@ from typing import Any
 import msgspec
 
 from seqfault.report.data import FORMAT, Quantity
+from seqfault.report.settings_words import plain
 from seqfault.studies.settings import Settings, method
 from seqfault.studies.settings_states import States
 from seqfault.studies.settings_verdicts import Situation
@@ -46,10 +47,9 @@ def settings_rows(found: Settings) -> Iterator[Quantity]:
             ("greatest pickup that sees", s.greatest_pickup, s.unit),
         )
         for r in s.reach:
-            yield Quantity(
-                s.relay, s.duty, "greatest fault resistance", "", r.resistance, "ohm", None, str(r.spot),
-                r.limit.state,
-            )  # fmt: skip
+            far, where = plain(r.resistance), str(r.spot)
+            name = "greatest fault resistance"
+            yield Quantity(s.relay, s.duty, name, "", far, "ohm", None, where, r.limit.state)
         for c in s.covers:
             yield Quantity(s.relay, s.duty, "share of winding", "", c.share, "", None, c.winding, c.state)
         yield from _reasons(s.relay, s.duty, (*s.reasons, *s.doubts))
@@ -117,7 +117,7 @@ def _rows(
         where += f", {limit.opened} open"
     state = "" if limit is None else limit.state
     for name, value, unit in values:
-        yield Quantity(relay, kind, name, "", value, unit, None, where, state)
+        yield Quantity(relay, kind, name, "", plain(value), unit, None, where, state)
     if limit is not None:
         yield Quantity(relay, kind, "deciding case", "", str(limit), "", None, where, state)
 

@@ -44,3 +44,10 @@ def ohms_up_to(value: float) -> str:
     if math.isnan(value):
         return "none"
     return "any" if math.isinf(value) else figures(value)
+
+
+def plain(value: float | str | None) -> float | str | None:
+    """A value of a table of rows: nothing for what is not known, words for what has no end."""
+    if not isinstance(value, float) or math.isfinite(value):
+        return value
+    return None if math.isnan(value) else "unlimited" if value > 0 else "none"

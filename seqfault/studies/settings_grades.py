@@ -91,7 +91,7 @@ def grades(study: States, backup: str, first: str, doubts: tuple[str, ...]) -> G
         if unset:
             break
         met = True
-        found = _worst(pair)
+        found = worst_of(pair)
         if found is not None and (worst is None or found[0] < worst[0]):
             worst = (found[0], pair, found[1], found[2])
     nothing = Grades(
@@ -142,7 +142,7 @@ def swept(pair: Pair) -> Floats:
     return np.sort(np.concatenate(steps, axis=1), axis=1)
 
 
-def _worst(pair: Pair) -> tuple[float, int, float] | None:
+def worst_of(pair: Pair) -> tuple[float, int, float] | None:
     """The least spare margin, its case and resistance; None where the backup rests in every case."""
     ohms = swept(pair)
     spare, _, late = pair.spare(ohms[:, None])

@@ -83,12 +83,7 @@ class View(msgspec.Struct, frozen=True, eq=False):
         if not self.relay.complete:
             least = sizes.argmin(axis=0)
             return np.take_along_axis(sizes, least[None], axis=0)[0], least
-        last = len(self.machines) - 1
-        which = np.full(sizes.shape[1:], last)
-        for m in range(last - 1, -1, -1):
-            time = operate_times(self.relay, sizes[m])
-            which = np.where(time <= ACTS_WITHIN[self.machines[m]], m, which)
-        return np.take_along_axis(sizes, which[None], axis=0)[0], which
+        return own_time(self.relay, self.machines, sizes)
 
     def only(self, which: Bools) -> View:
         """The view of those cases (n,) that ``which`` tells."""
@@ -125,6 +120,16 @@ class View(msgspec.Struct, frozen=True, eq=False):
             if delay is not None and delay <= ACTS_WITHIN[name]:
                 return m
         return len(self.machines) - 1
+
+
+def own_time(relay: Relay, machines: Sequence[str], sizes: Floats) -> tuple[Floats, Ints]:
+    """Of ``sizes`` (m, ...) by reactance the one (...) that fits the relay's own time, and which."""
+    last = len(machines) - 1
+    which = np.full(sizes.shape[1:], last)
+    for m in range(last - 1, -1, -1):
+        time = operate_times(relay, sizes[m])
+        which = np.where(time <= ACTS_WITHIN[machines[m]], m, which)
+    return np.take_along_axis(sizes, which[None], axis=0)[0], which
 
 
 def sites_of(relays: Mapping[str, Relay], bus_of: Mapping[str, str]) -> Sites:
