@@ -40,8 +40,8 @@ def rewritten(content: bytes, name: str, changes: Changes) -> bytes:
         made = {}
     if made != wanted:
         raise RequestError(
-            f"--write: the relays of {quoted(name)} are written in a way that cannot be edited line by line;"
-            " give each a table [relays.NAME] with a line for pickup, multiplier and delay"
+            f"--write: the relays of {quoted(name)} are written in a way that cannot be edited line by"
+            " line; give each a table [relays.NAME] with a line for pickup, multiplier and delay"
         )
     return edited
 
@@ -64,14 +64,14 @@ def _edited(text: str, changes: Changes) -> str:
             if table[:1] == ("relays",) and len(table) == 2:
                 after[table[1]] = k
             continue
-        path, at = _assigned(line)
-        path = table + path
+        own_path, at = _assigned(line)
+        path = table + own_path
         inside = opened
-        if path[:1] != ("relays",) or len(path) < 2:
+        if path[:1] != ("relays",) or not own_path or len(path) < 2:
             continue
         relay = path[1]
         if len(path) == 3 and table == ("relays", relay):
-            after[relay] = k if path[2] == "curve" else max(after.get(relay, k), 0)
+            after[relay] = k if path[2] == "curve" else after.get(relay, k)
         if len(path) == 3 and (relay, path[2]) in left:
             value = left.pop((relay, path[2]))
             lines[k] = line[:at] + re.sub(_VALUE, lambda _, v=value: v, line[at:], count=1)  # type: ignore[misc]

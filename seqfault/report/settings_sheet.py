@@ -127,8 +127,8 @@ def _more(rows: tuple[SheetRow, ...]) -> Iterator[str]:
             said.append(f"no shorter time than {relay.minimum_time:g} s")
         if relay.direction:
             said.append(
-                f"{relay.direction}, characteristic angle {relay.characteristic_angle_deg:.4g}°, polarised by"
-                f" {relay.polarisation}" + (f", {relay.vt}" if relay.vt else "")
+                f"{relay.direction}, characteristic angle {relay.characteristic_angle_deg:.4g}°,"
+                f" polarised by {relay.polarisation}" + (f", {relay.vt}" if relay.vt else "")
             )
         said.append(f"breaker {relay.breaker_time:g} s")
         yield f"{relay.name}: {'; '.join(said)}"

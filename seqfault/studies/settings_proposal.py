@@ -179,7 +179,8 @@ def _pickup_binds(task: Task, found: Found, name: str) -> str:
         if beyond:
             return (window.why_greatest if definite else window.why_least) or "nothing lower is studied"
         return f"its scale {'ends' if definite else 'begins'} here"
-    pickups = {n: float(s.pickup or 0) for n, s in found.settings.items()}
+    free = {n for n, relay in task.relays.items() if relay.curve == "definite"}
+    pickups = {n: float(s.pickup or 0) for n, s in found.settings.items() if n not in free}
     pickups[name] = window.pickups[at + step]
     try:
         other = times_for(task, pickups)
@@ -220,7 +221,8 @@ def _unmet(proof: Settings) -> Iterator[str]:
             yield f"{still.relay} does not keep still: {'; '.join(still.reasons) or still.limit}"
     for grade in proof.grades:
         if grade.verdict == "fail":
-            yield f"{grade.backup} does not wait for {grade.first}: {'; '.join(grade.reasons) or grade.limit}"
+            why = "; ".join(grade.reasons) or str(grade.limit)
+            yield f"{grade.backup} does not wait for {grade.first}: {why}"
     for last in proof.withstand:
         if last.verdict == "fail":
             why = (

@@ -65,7 +65,24 @@ class Found(msgspec.Struct, frozen=True):
 
 
 class Conflict(Exception):
-    """Why some pickups have no times."""
+    """Why some pickups have no times; ``late`` where the pickups went together and times did not."""
+
+    def __init__(self, text: str, late: bool = True) -> None:
+        super().__init__(text)
+        self.late = late
+
+
+class Reason(msgspec.Struct, frozen=True):
+    """The conflict told where nothing is found: the first of those that came furthest."""
+
+    text: str = ""
+    late: bool = False
+
+    def beside(self, conflict: Conflict) -> Reason:
+        """This reason, or that of ``conflict``."""
+        if self.text and (self.late or not conflict.late):
+            return self
+        return Reason(str(conflict), conflict.late)
 
 
 def task_of(
@@ -149,7 +166,7 @@ def search(task: Task) -> tuple[Found | None, bool, str]:
     tries = {name: task.windows[name].tried() for name in timed}
     count = math.prod(len(each) for each in tries.values())
     best: Found | None = None
-    reason = ""
+    reason = Reason()
     if count <= EXHAUSTIVE:
         for some in product(*tries.values()):
             best, reason = _better(task, dict(zip(timed, some, strict=True)), best, reason)
@@ -164,16 +181,16 @@ def search(task: Task) -> tuple[Found | None, bool, str]:
             own = {n: float(best.settings[n].pickup or 0) for n in timed}
             best, reason = _descend(task, own, near, best, reason)
         return best, whole, ""
-    return None, count <= EXHAUSTIVE, reason
+    return None, count <= EXHAUSTIVE, reason.text
 
 
 def _better(
-    task: Task, pickups: Mapping[str, float], best: Found | None, reason: str
-) -> tuple[Found | None, str]:
+    task: Task, pickups: Mapping[str, float], best: Found | None, reason: Reason
+) -> tuple[Found | None, Reason]:
     try:
         found = times_for(task, pickups)
     except Conflict as conflict:
-        return best, reason or str(conflict)
+        return best, reason.beside(conflict)
     return (found if best is None or _rank(task, found) < _rank(task, best) else best), reason
 
 
@@ -191,8 +208,8 @@ def _descend(
     own: dict[str, float],
     tries: Mapping[str, tuple[float, ...]],
     best: Found | None,
-    reason: str,
-) -> tuple[Found | None, str]:
+    reason: Reason,
+) -> tuple[Found | None, Reason]:
     """One relay after the other, while anything gets better."""
     here: Found | None = None
     here, reason = _better(task, own, None, reason)
@@ -247,7 +264,7 @@ def _pickups(task: Task, given: Mapping[str, float]) -> dict[str, float]:
     chosen: dict[str, float] = {}
     for name, window in task.windows.items():
         if not window.pickups:
-            raise Conflict(f"no pickup of {name} is both above and below what it must be")
+            raise Conflict(f"no pickup of {name} is both above and below what it must be", late=False)
         chosen[name] = given.get(name, window.pickups[-1])
     for _ in range(len(chosen) + 1):
         lowered = False
@@ -260,7 +277,8 @@ def _pickups(task: Task, given: Mapping[str, float]) -> dict[str, float]:
                 raise Conflict(
                     f"{backup} at {chosen[backup]:.4g} {task.relays[backup].unit} acts on faults that"
                     f" {first} at {chosen[first]:.4g} {task.relays[first].unit} does not see: its pickup"
-                    f" would have to be {ratio:.4g} times that of {first}"
+                    f" would have to be no less than {ratio:.4g} times that of {first}",
+                    late=False,
                 )
             chosen[first] = fitting[-1]
             lowered = True
@@ -302,7 +320,7 @@ def _needed(
             late = _times(relay, Setting(pickup, time), each.machines, each.backup)
             acts = np.isfinite(late)
             if np.isinf(want[acts]).any():
-                raise Conflict(f"{backup} acts on faults that {first} does not see")
+                raise Conflict(f"{backup} acts on faults that {first} does not see", late=False)
             floor = np.maximum(late[acts], 1e-6)
             most = max(most, float((want[acts] / floor).max(initial=0.0)))
         return most
