@@ -60,8 +60,18 @@ def build_arranged(
     ``links`` are pairs of its buses that breaks stand between. Coils are tuned as in ``within``, and
     what was assumed and warned of there is not said again.
     """
-    base = within if within.state == "base" else case_from_tree(within.tree, within.source)
+    base = within
+    if within.state != "base" and _may_have_coils(within):
+        base = case_from_tree(within.tree, within.source)
     return _assemble(Context(case, machine, _coils(base, within, machine)[0], links))
+
+
+def _may_have_coils(case: Case) -> bool:
+    """Whether ``case``, or its file without the state, has an arc-suppression coil."""
+    if any(record.kind == ARC_SUPPRESSION for record in case.neutrals.values()):
+        return True
+    stated = case.tree.get("neutrals", {})
+    return any(dict(record).get("kind") == ARC_SUPPRESSION for record in stated.values())
 
 
 def _coils(

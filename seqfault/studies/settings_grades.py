@@ -12,7 +12,7 @@ from seqfault.equations.grading import grading_margin
 from seqfault.model.elements import Floats
 from seqfault.studies.demands import Demanded
 from seqfault.studies.relays import Relay
-from seqfault.studies.settings_states import State, States, inside, zone_of
+from seqfault.studies.settings_states import State, States, breakers_of, inside, zone_of
 from seqfault.studies.settings_verdicts import Situation, Verdict, doubted, judged, situation
 from seqfault.studies.settings_view import View
 
@@ -113,10 +113,11 @@ def grades(study: States, backup: str, first: str, doubts: tuple[str, ...]) -> G
 
 def pair_of(state: State, backup: str, first: str, zone: frozenset[str]) -> Pair | None:
     """Both relays on the cases of ``zone`` in ``state``; None where either sees nothing there."""
+    relays = state.protection.relays
     late, early = state.views.get(backup), state.views.get(first)
     if late is None or early is None:
         return None
-    which = inside(early, zone, late)
+    which = inside(early, zone, breakers_of(backup, relays) | {relays[first].at})
     if not which.any():
         return None
     return Pair(late.only(which), early.only(which), state.protection.demands)
@@ -129,8 +130,9 @@ def swept(pair: Pair) -> Floats:
     for view in (pair.backup, pair.first):
         relay = view.relay
         fast = None if relay.fast is None else relay.fast.primary
-        edges += [view.reach(level) for level in (relay.pickup.primary, fast) if level is not None]
-    last = edges[0]
+        for level in (relay.pickup.primary, fast):
+            edges += list(view.crossings(level)) if level is not None else []
+    last = np.fmax.reduce(edges[: len(pair.backup.machines)])
     scale = np.abs(pair.first.bottom[0, :, 0] / np.where(pair.first.bottom[0, :, 1] == 0, 1, 3))
     end = np.where(np.isfinite(last), last, 1e3 * np.maximum(scale, 1))
     end = np.maximum(end, 1e-6)
@@ -198,7 +200,7 @@ def _told(pair: Pair, case: int, ohm: float, units: tuple[str, str], doubts: tup
 
 def _rests(pair: Pair, case: int) -> str:
     """What to say where the backup acts and the first rests."""
-    reach = [float(v.reach(float(v.relay.pickup.primary or 0))[case]) for v in (pair.first, pair.backup)]
+    reach = [float(view.reach()[0][case]) for view in (pair.first, pair.backup)]
     shown = [
         "no fault" if math.isnan(r) else "any resistance" if math.isinf(r) else f"{r:.4g} ohm"
         for r in reach

@@ -21,7 +21,7 @@ from seqfault.model.elements import Floats
 from seqfault.studies.demands import Demanded
 from seqfault.studies.relays import Relay, operate_times
 from seqfault.studies.settings_grades import Pair, pair_of, required_margin, worst_of
-from seqfault.studies.settings_states import States, inside, zone_of
+from seqfault.studies.settings_states import States, breakers_of, inside, zone_of
 from seqfault.studies.settings_view import own_time
 from seqfault.studies.settings_windows import Setting, Window, with_setting
 
@@ -114,7 +114,7 @@ def task_of(
             view = state.views.get(name)
             if view is None or state.name not in task.demands.least:
                 continue
-            which = inside(view, owners)
+            which = inside(view, owners, breakers_of(name, study.relays))
             if which.any():
                 sizes = view.only(which).sizes(ohms).reshape(len(view.machines), -1)
                 at = sorted({int(sizes[0].argmin()), int(sizes[-1].argmin())})

@@ -12,7 +12,7 @@ from seqfault.equations.winding_cover import uncovered_share
 from seqfault.studies.demands import Demanded
 from seqfault.studies.neutral import duty_of, hot_ohms
 from seqfault.studies.settings_places import Spot
-from seqfault.studies.settings_states import State, States, inside, zone_of
+from seqfault.studies.settings_states import State, States, breakers_of, inside, zone_of
 from seqfault.studies.settings_verdicts import Situation, Verdict, doubted, judged, situation
 from seqfault.studies.settings_view import View
 
@@ -86,7 +86,7 @@ def _sees(
             relay = state.protection.relays[name]
             blind.append(f"state {state.name}: {relay.blind or 'it is out of service'}")
             continue
-        which = inside(whole, owners)
+        which = inside(whole, owners, breakers_of(name, study.relays))
         if not which.any():
             blind.append(f"state {state.name}: nothing of what it {duty} is live")
             continue
@@ -101,7 +101,7 @@ def _sees(
             at = situation(view, case, ohms[k], int(machine[case, k]))
             worst = (rank, least, ratio, pickup, at)
         if pickup is not None:
-            _reaches(view, pickup, reach)
+            _reaches(view, reach)
             if duty == "protects":
                 covers += _covers(state, view, pickup, owners)
     if worst is None:
@@ -155,15 +155,14 @@ def _nothing(study: States, name: str, duty: str, demands: Demanded, *reasons: s
     )
 
 
-def _reaches(view: View, pickup: float, reach: dict[Spot, Reach]) -> None:
+def _reaches(view: View, reach: dict[Spot, Reach]) -> None:
     """Keep the least of the greatest resistances of each place over kinds, states, hot and cold."""
-    found = view.reach(pickup)
-    machine = view.at_pickup()
+    found, machine = view.reach()
     for case, ohm in enumerate(found.tolist()):
         spot = view.spots[int(view.spot[case])]
         before = reach.get(spot)
         if before is None or _less(ohm, before.resistance):
-            reach[spot] = Reach(spot, ohm, situation(view, case, ohm, machine))
+            reach[spot] = Reach(spot, ohm, situation(view, case, ohm, int(machine[case])))
 
 
 def _less(a: float, b: float) -> bool:

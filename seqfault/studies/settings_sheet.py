@@ -9,7 +9,7 @@ import numpy as np
 
 from seqfault.studies.relay_settings import Stage
 from seqfault.studies.relays import Relay
-from seqfault.studies.settings_states import States, inside, zone_of
+from seqfault.studies.settings_states import States, breakers_of, inside, zone_of
 
 
 class Timed(msgspec.Struct, frozen=True):
@@ -56,7 +56,7 @@ def _row(study: States, name: str) -> SheetRow:
         view = state.views.get(name)
         if view is None:
             continue
-        which = inside(view, owners)
+        which = inside(view, owners, breakers_of(name, study.relays))
         if not which.any():
             continue
         view = view.only(which)

@@ -190,20 +190,28 @@ class Zone(msgspec.Struct, frozen=True):
 def zone_of(name: str, relays: dict[str, Relay]) -> Zone:
     """The zone of the relay ``name``; whom those it backs up back up themselves counts too."""
     own = frozenset(relays[name].protects)
-    behind: set[str] = set()
-    met, ahead = {name}, list(relays[name].backs_up)
-    while ahead:
-        other = ahead.pop()
-        if other in met or other not in relays:
-            continue
-        met.add(other)
-        behind |= set(relays[other].protects)
-        ahead += relays[other].backs_up
+    behind = {owner for other in _behind(name, relays) for owner in relays[other].protects}
     return Zone(own, frozenset(behind) - own)
 
 
-def inside(view: View, owners: frozenset[str], *others: View) -> Bools:
-    """Which cases (n,) of ``view`` lie in ``owners``, the relays' own breakers closed."""
-    ends = {relay.at for relay in (view.relay, *(other.relay for other in others))}
+def _behind(name: str, relays: dict[str, Relay]) -> tuple[str, ...]:
+    """A relay and all that it backs up, those of the others too."""
+    met: dict[str, None] = {}
+    ahead = [name]
+    while ahead:
+        other = ahead.pop()
+        if other not in met and other in relays:
+            met[other] = None
+            ahead += relays[other].backs_up
+    return tuple(met)
+
+
+def breakers_of(name: str, relays: dict[str, Relay]) -> frozenset[str]:
+    """The terminals at which a relay, and all that it backs up, open the circuit."""
+    return frozenset(relays[each].at for each in _behind(name, relays))
+
+
+def inside(view: View, owners: frozenset[str], ends: frozenset[str]) -> Bools:
+    """Which cases (n,) of ``view`` lie in ``owners``, the breakers at ``ends`` being closed."""
     own = np.array([spot.owner in owners and spot.opened not in ends for spot in view.spots], bool)
     return np.asarray(own[view.spot] if len(own) else np.zeros(0, bool))

@@ -20,6 +20,7 @@ from seqfault.equations.fault_resistance import (
     greatest_resistance,
     sequence_forms,
 )
+from seqfault.equations.relay_curves import multiple_for
 from seqfault.equations.symmetrical import TO_PHASES
 from seqfault.model.elements import Bools, Complex, Floats, Ints
 from seqfault.studies.relays import Relay, operate_times
@@ -103,23 +104,46 @@ class View(msgspec.Struct, frozen=True, eq=False):
         """Operate times (n, r) s; infinite where it rests. Raises ValueError where a setting is open."""
         return operate_times(self.relay, self.seen(resistance)[0])
 
-    def reach(self, level: float) -> Floats:
-        """Greatest R (n,) ohm at which ``level`` (A or V) is still measured; NaN where at none.
+    def crossings(self, level: float) -> Floats:
+        """Greatest R (m, n) ohm at which ``level`` (A or V) is still measured; NaN where at none."""
+        return np.asarray(
+            np.fmax.reduce(
+                greatest_resistance(self.top, self.bottom[:, :, None], level, self.towards), axis=2
+            )
+        )
 
-        With the reactance that goes with the relay's time at its pickup.
+    def reach(self) -> tuple[Floats, Ints]:
+        """Greatest R (n,) ohm at which the relay still acts, NaN where at none, and the reactance (n,).
+
+        It acts with a reactance where it does so in the time for which that stands; the last of them
+        stands for ever, and alone counts where a setting is open.
         """
-        m = self.at_pickup()
-        towards = None if self.towards is None else self.towards[m]
-        found = greatest_resistance(self.top[m], self.bottom[m][:, None], level, towards)
-        return np.asarray(np.fmax.reduce(found, axis=1))
+        found = np.full((len(self.machines), len(self.spot)), np.nan)
+        for m, name in enumerate(self.machines):
+            last = m == len(self.machines) - 1
+            level = level_within(self.relay, math.inf if last else ACTS_WITHIN[name])
+            if math.isfinite(level):
+                found[m] = self.crossings(level)[m]
+        rank = np.where(np.isnan(found), -1, found)
+        which = rank.argmax(axis=0)
+        return np.take_along_axis(found, which[None], axis=0)[0], which
 
-    def at_pickup(self) -> int:
-        """The reactance at the pickup: an inverse time is longest there."""
-        delay = self.relay.delay if self.relay.curve == "definite" else None
-        for m, name in enumerate(self.machines[:-1]):
-            if delay is not None and delay <= ACTS_WITHIN[name]:
-                return m
-        return len(self.machines) - 1
+
+def level_within(relay: Relay, time: float) -> float:
+    """What a relay must measure (A or V) to act within ``time`` (s); infinite where nothing is enough."""
+    pickup = relay.pickup.primary
+    if pickup is None:
+        return math.inf
+    if math.isinf(time):
+        return pickup
+    setting = relay.delay if relay.curve == "definite" else relay.multiplier
+    if setting is None:
+        return math.inf
+    level = pickup * multiple_for(relay.curve, time, setting, least=relay.minimum_time or 0.0)
+    fast = None if relay.fast is None else relay.fast.primary
+    if fast is not None and (relay.fast_delay or 0.0) <= time:
+        level = min(level, fast)
+    return level
 
 
 def own_time(relay: Relay, machines: Sequence[str], sizes: Floats) -> tuple[Floats, Ints]:

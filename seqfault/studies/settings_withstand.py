@@ -10,9 +10,9 @@ import numpy as np
 from msgspec.structs import replace
 
 from seqfault.errors import quoted
-from seqfault.model.elements import Floats, Ints
+from seqfault.model.elements import Bools, Floats, Ints
 from seqfault.studies.relays import operate_times
-from seqfault.studies.settings_states import State, States, inside, zone_of
+from seqfault.studies.settings_states import State, States, breakers_of, inside, zone_of
 from seqfault.studies.settings_verdicts import Situation, Verdict, doubted, judged, situation
 from seqfault.studies.settings_view import View, view_of
 
@@ -25,7 +25,7 @@ class Withstand(msgspec.Struct, frozen=True):
     Of the worst case: ``time`` s from the fault to the end of its current, the breaker included, with
     ``current`` A through the neutral; ``allowed`` s at that current, which is ``duration`` s at the rated
     ``rated`` A and as much I²t at others. ``stays`` A: the most that flows on through a resistance that
-    the relay no longer sees; ``continuous`` A that the neutral is rated for, or None.
+    no relay sees any more; ``continuous`` A that the neutral is rated for, or None.
     """
 
     relay: str
@@ -49,6 +49,9 @@ def withstands(study: States, doubts: dict[str, tuple[str, ...]]) -> Iterator[Wi
         if not relay.backs_up or relay.out:
             continue
         for neutral in dict.fromkeys(n for state in study.states for n in _rated(state, name)):
+            own = [r.name for r in study.relays.values() if r.star == neutral and r.measures == "neutral"]
+            if own and name not in own:
+                continue  # it has relays of its own
             yield _withstand(study, name, neutral, doubts.get(name, ()))
 
 
@@ -76,7 +79,7 @@ def _withstand(study: States, name: str, neutral: str, doubts: tuple[str, ...]) 
         if view is None or neutral not in set(_rated(state, name)):
             continue
         rated, duration, continuous = _plate(state, neutral)
-        which = inside(view, zone)
+        which = inside(view, zone, breakers_of(name, study.relays))
         if not which.any():
             continue
         if not view.relay.complete:
@@ -88,10 +91,9 @@ def _withstand(study: States, name: str, neutral: str, doubts: tuple[str, ...]) 
         measured, machine = view.seen(ohms)
         current = _with(through, ohms, machine)
         time = operate_times(view.relay, measured) + view.relay.breaker_time
-        stays = max(stays, _stays(view, through))
-        heat = np.where(current > 0, current**2 * time, 0)
-        if not np.isfinite(heat).all():
-            heat = np.where(np.isfinite(heat), heat, math.inf)
+        stays = max(stays, _stays(state, which, through))
+        flows = current > 0
+        heat = np.where(flows, current**2, 0) * np.where(flows, time, 0)
         case, k = (int(x) for x in np.unravel_index(int(heat.argmax()), heat.shape))
         if worst is None or heat[case, k] > worst[0]:
             at = situation(view, case, float(ohms[k]), int(machine[case, k]))
@@ -104,14 +106,16 @@ def _with(view: View, ohms: Floats, machine: Ints) -> Floats:
     return np.asarray(np.take_along_axis(sizes, machine[None], axis=0)[0])
 
 
-def _stays(view: View, through: View) -> float:
-    """A through the neutral at the resistance that the relay just no longer sees."""
-    reach = view.reach(float(view.relay.pickup.primary or 0))
-    here = np.isfinite(reach)
+def _stays(state: State, which: Bools, through: View) -> float:
+    """A through the neutral at the resistance of which no relay at all sees anything more."""
+    reach = np.full(int(which.sum()), np.nan)
+    for view in state.views.values():
+        reach = np.fmax(reach, view.only(which).reach()[0])
+    here = ~np.isinf(reach)
     if not here.any():
         return 0.0
-    at = np.where(here, reach, 0)[:, None, None]
-    return float(np.where(here, through.sizes(at)[view.at_pickup(), :, 0], 0).max())
+    at = np.where(here & ~np.isnan(reach), reach, 0)[:, None, None]
+    return float(np.where(here, through.sizes(at)[-1, :, 0], 0).max())
 
 
 def _plate(state: State, neutral: str) -> tuple[float, float, float | None]:
@@ -154,10 +158,9 @@ def _told(
             reasons.insert(0, "the relay rests while this current flows on")
     if continuous is not None and stays > continuous:
         reasons.append(
-            f"faults that {name} no longer sees may leave {stays:.4g} A flowing through {quoted(neutral)},"
-            f" which carries {continuous:.4g} A for ever"
+            f"a fault that no relay sees may leave {stays:.4g} A flowing through {quoted(neutral)}, which"
+            f" carries {continuous:.4g} A for ever (told, not judged)"
         )
-        verdict = "fail"
     return Withstand(
         relay=name,
         neutral=neutral,

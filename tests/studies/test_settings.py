@@ -32,10 +32,12 @@ def referees() -> dict[str, Referee]:
 
 def owned(study: States, state: int, owners: frozenset[str], at: str) -> list[int]:
     forms = study.states[state].forms
+    ends = {at, "E@main", "E@east", "X@east"} if at in ("NER", "T1@main") else {at}  # and whom they back up
     return [
         case
         for case in range(len(forms.spot))
-        if forms.spots[forms.spot[case]].owner in owners and forms.spots[forms.spot[case]].opened != at
+        if forms.spots[forms.spot[case]].owner in owners
+        and forms.spots[forms.spot[case]].opened not in ends
     ]
 
 
@@ -164,7 +166,7 @@ def test_the_most_seen_outside_is_the_most_of_all_faults_solved_one_by_one(
         for k, state in enumerate(study.states):
             forms = state.forms
             everything = frozenset(spot.owner for spot in forms.spots) - owners
-            for case in owned(study, k, everything, relay.at):
+            for case in owned(study, k, everything, relay.at if relay.element else "-"):
                 spot, hot = forms.spots[forms.spot[case]], bool(forms.world[case])
                 kind = ("line-ground", "line-line-ground")[int(forms.kind[case])]
                 for machine in forms.machines:
@@ -220,7 +222,8 @@ def test_the_least_margin_is_no_more_than_any_found_by_fine_steps(
             forms = state.forms
             if row.first not in state.views or row.backup not in state.views:
                 continue
-            cases = owned(study, k, zone_of(row.first, study.relays).whole, first.at)
+            cases = owned(study, k, zone_of(row.first, study.relays).whole, backup.at)
+            cases = [c for c in cases if forms.spots[forms.spot[c]].opened != first.at]
             for case in cases[:: max(1, len(cases) // 12)]:
                 spot, hot = forms.spots[forms.spot[case]], bool(forms.world[case])
                 kind = ("line-ground", "line-line-ground")[int(forms.kind[case])]
