@@ -95,9 +95,9 @@ def run(options: argparse.Namespace) -> int:
         return deliver(options, form, [sheet])
     from seqfault.report.settings import settings_page
     from seqfault.report.settings_data import settings_rows, settings_tree
-    from seqfault.studies.settings import settings
+    from seqfault.studies.settings import study_settings
 
-    study, found = settings(case, options.points)
+    study, found = study_settings(case, options.points)
     answer = Answer(
         partial(settings_page, study, found),
         partial(settings_tree, study, found),
@@ -129,11 +129,11 @@ def _propose(options: argparse.Namespace, form: str, case: Case) -> int:
     from seqfault.cli.delivery import Answer, deliver
     from seqfault.cli.run import say
     from seqfault.report.settings_proposal import proposal_page, proposal_rows, proposal_tree
-    from seqfault.studies.settings_proposal import changes_of, propose
+    from seqfault.studies.settings_proposal import changes_of, propose_settings
     from seqfault.studies.settings_states import study_states
 
     study = study_states(case, options.points)
-    proposal = propose(study, options.keep)
+    proposal = propose_settings(study, options.keep)
     content = None
     if options.write is not None and proposal.study is not None and not proposal.contradictions:
         from seqfault.case.rewriting import rewritten

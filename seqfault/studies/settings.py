@@ -35,7 +35,7 @@ class Settings(msgspec.Struct, frozen=True, eq=False):
     verdict: Verdict
 
 
-def settings(case: Case, points: int = POINTS) -> tuple[States, Settings]:
+def study_settings(case: Case, points: int = POINTS) -> tuple[States, Settings]:
     """Study the relays of ``case`` in all its states, with ``points`` places along each line.
 
     Raises ``RequestError`` for a case without relays, ``CaseError`` where a state makes no network.

@@ -68,7 +68,7 @@ class Proposal(msgspec.Struct, frozen=True, eq=False):
         return self.proof is not None and self.proof.verdict in ("pass", "tight")
 
 
-def propose(study: States, keep: Sequence[str] = ()) -> Proposal:
+def propose_settings(study: States, keep: Sequence[str] = ()) -> Proposal:
     """Settings for all relays in service but those to ``keep``.
 
     Raises ``RequestError`` for a relay that is not there, that has open settings and is to be kept, or

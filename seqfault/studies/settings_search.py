@@ -2,7 +2,8 @@
 
 For given pickups every condition of grading asks of a backup's time to be no less than something that
 grows with the time of the relay in front, so that there is one set of times of which none could be less:
-it is reached from the least settings by raising what is too short, on the relay's scale. Over the pickups the search is exhaustive where there are few, else one relay after the other.
+it is reached from the least settings by raising what is too short, on the relay's scale. Over the pickups
+the search is exhaustive where there are few, else one relay after the other.
 What grading demands is a set of points, the currents both relays see of one fault; points that the exact
 study finds wanting are added until it finds none.
 """

@@ -10,7 +10,7 @@ import pytest
 from seqfault.equations.current_transformers import residual_error
 from seqfault.errors import RequestError
 from seqfault.studies.relays import Relay, operate_times
-from seqfault.studies.settings import Settings, settings
+from seqfault.studies.settings import Settings, study_settings
 from seqfault.studies.settings_sees import Sees
 from seqfault.studies.settings_states import States, zone_of
 from tests.studies.setting_plants import RING, Referee, case_of, measured, ohms, sampled
@@ -21,7 +21,7 @@ SOUND = "see = 1.5"
 
 @pytest.fixture(scope="module")
 def studied() -> tuple[States, Settings]:
-    return settings(case_of(), points=3)
+    return study_settings(case_of(), points=3)
 
 
 @pytest.fixture(scope="module")
@@ -182,7 +182,7 @@ def test_through_currents_show_the_error_of_current_transformers() -> None:
         "",
     )
     case = case_of(RING, change, ('vt = "11 kV/110 V"\npickup = "20 A"', 'pickup = "20 A"'))
-    study, found = settings(case, points=3)
+    study, found = study_settings(case, points=3)
     row = next(r for r in found.still if r.relay == "E-main")
     relay, ct = study.relays["E-main"], study.states[0].protection.transformers["ring"]
     most = 0.0
@@ -290,12 +290,12 @@ def test_pass_tight_and_fail_by_the_ratio(
     ratio = one(studied[1], "X-east").ratio
     assert ratio > 1.2
     wanted = {"1.0": "1.0", None: f"{ratio / 1.05:.6f}", "over": f"{ratio * 1.001:.6f}"}[see]
-    _, found = settings(case_of(RING, (SOUND, f"see = {wanted}")), points=3)
+    _, found = study_settings(case_of(RING, (SOUND, f"see = {wanted}")), points=3)
     assert one(found, "X-east").verdict == verdict
 
 
 def test_without_a_least_state_nothing_that_must_be_seen_is_proven() -> None:
-    _, found = settings(case_of(RING, ('least = ["base", "open"]\n', "")), points=2)
+    _, found = study_settings(case_of(RING, ('least = ["base", "open"]\n', "")), points=2)
     assert {row.verdict for row in found.sees} <= {"fail", "not proven"}
     assert any("no state is declared" in text for row in found.sees for text in row.doubts)
 
@@ -317,7 +317,7 @@ def test_what_rests_on_an_assumption_is_not_proven_and_says_so(old: str, new: st
     text = RING
     if "NER" in old:
         text = RING.partition("[relays.T1-neutral]")[0] + "[demands]" + RING.partition("[demands]")[2]
-    _, found = settings(case_of(text, (old, new)), points=2)
+    _, found = study_settings(case_of(text, (old, new)), points=2)
     row = next(r for r in found.still if r.relay == "X-east")
     assert row.verdict in ("not proven", "fail")
     assert any(text.startswith(said) for text in row.doubts)
@@ -325,7 +325,7 @@ def test_what_rests_on_an_assumption_is_not_proven_and_says_so(old: str, new: st
 
 
 def test_the_low_side_of_another_transformer_does_not_cast_doubt() -> None:
-    _, found = settings(case_of(RING, ("z0_over_z1 = 0.95\n", "")), points=2)
+    _, found = study_settings(case_of(RING, ("z0_over_z1 = 0.95\n", "")), points=2)
     assert not any(row.doubts for row in found.still)
 
 
@@ -348,7 +348,7 @@ def test_a_pickup_above_what_flows_leaves_places_blind() -> None:
         (f'pickup = "{old}"', 'pickup = "900 A"') for old in ("20 A", "16 A", "60 A", "100 A", "30 A")
     ]
     changes += [('pickup = "12 A"', 'pickup = "110 A"'), ('pickup = "8 %"', 'pickup = "150 %"')]
-    _, found = settings(case_of(RING, *changes), points=2)
+    _, found = study_settings(case_of(RING, *changes), points=2)
     assert found.verdict == "fail"
     assert any(blind.guarded and "nearest is" in blind.reason for blind in found.blind_places)
     assert all(math.isnan(reach.resistance) for reach in one(found, "E-main").reach)
@@ -356,7 +356,7 @@ def test_a_pickup_above_what_flows_leaves_places_blind() -> None:
 
 def test_a_relay_on_what_is_out_in_every_state_fails_in_words() -> None:
     case = case_of(RING, ("[lines.X]\n", "[lines.X]\nout = true\n"), ('open = ["X@west"]\n', ""))
-    _, found = settings(case, points=2)
+    _, found = study_settings(case, points=2)
     row = one(found, "X-east")
     assert row.verdict == "fail"
     assert row.reasons == ('state base: "X" is out', 'state open: "X" is out')
@@ -364,14 +364,14 @@ def test_a_relay_on_what_is_out_in_every_state_fails_in_words() -> None:
 
 
 def test_a_relay_that_answers_for_nothing_is_not_proven() -> None:
-    _, found = settings(case_of(RING, ('protects = ["X"]\n', "")), points=2)
+    _, found = study_settings(case_of(RING, ('protects = ["X"]\n', "")), points=2)
     row = one(found, "X-east")
     assert (row.verdict, row.reasons) == ("not proven", ("it protects nothing and backs up no relay",))
 
 
 def test_open_settings_are_not_proven_and_tell_the_range() -> None:
     fast = ('instant = { pickup = "120 A", delay = "0.05 s" }\n', "")
-    _, found = settings(case_of(RING, ('pickup = "12 A"\n', ""), fast), points=2)
+    _, found = study_settings(case_of(RING, ('pickup = "12 A"\n', ""), fast), points=2)
     row, still = one(found, "X-east"), next(r for r in found.still if r.relay == "X-east")
     assert row.verdict == still.verdict == "not proven"
     assert row.greatest_pickup > 0
@@ -382,13 +382,13 @@ def test_open_settings_are_not_proven_and_tell_the_range() -> None:
 def test_a_case_without_relays_says_so() -> None:
     text = RING.partition("[current_transformers")[0]
     with pytest.raises(RequestError, match="no relays"):
-        settings(case_of(text))
+        study_settings(case_of(text))
 
 
 def test_a_neutral_relay_covers_what_its_resistor_leaves() -> None:
     """x = I |Z_n|/V where the winding's own impedance is nothing beside the resistor."""
     case = case_of(RING, ('impedance = "10 %"\n', 'impedance = "0.01 %"\n'))
-    _, found = settings(case, points=2)
+    _, found = study_settings(case, points=2)
     cover = next(c for row in found.sees for c in row.covers if c.winding == "T1.lv")
     assert cover.resistors == "hot"
     assert 1 - cover.share == pytest.approx(30 * 25 * WARM / (11000 / math.sqrt(3)), rel=5e-3)

@@ -13,8 +13,8 @@ from seqfault.case.text import parse_text
 from seqfault.equations.relay_curves import CURVES, multiple_for, operate_time
 from seqfault.faults.network import Network
 from seqfault.studies.relays import operate_times
-from seqfault.studies.settings import settings
-from seqfault.studies.settings_proposal import propose
+from seqfault.studies.settings import study_settings
+from seqfault.studies.settings_proposal import propose_settings
 from seqfault.studies.settings_sheet import setting_sheet
 from seqfault.studies.settings_states import breakers_of, study_states, zone_of
 from tests.studies.setting_plants import Referee, case_of, measured
@@ -36,7 +36,7 @@ def test_the_multiple_for_a_time_is_the_curve_read_backwards(curve: str, time: f
 
 def test_a_neutral_lasts_as_its_square_of_current_and_time_say() -> None:
     """I²t of the worst fault stepped one by one: 11 kV/√3 over 20 ohm is rated, for 10 s."""
-    study, found = settings(radial(), points=3)
+    study, found = study_settings(radial(), points=3)
     row = next(w for w in found.withstand if w.relay == "board-earth")
     relay = study.relays["board-earth"]
     zone, ends = zone_of("board-earth", study.relays).whole, breakers_of("board-earth", study.relays)
@@ -62,15 +62,17 @@ def test_a_neutral_lasts_as_its_square_of_current_and_time_say() -> None:
 
 
 def test_a_neutral_that_is_spent_before_the_backup_fails() -> None:
-    _, found = settings(radial(('duration = "10 s"', 'duration = "1 s"')), points=2)
+    _, found = study_settings(radial(('duration = "10 s"', 'duration = "1 s"')), points=2)
     assert [w.verdict for w in found.withstand] == ["fail"]
-    _, found = settings(radial(("temperature_rise", 'continuous = "10 A"\ntemperature_rise')), points=2)
+    _, found = study_settings(
+        radial(("temperature_rise", 'continuous = "10 A"\ntemperature_rise')), points=2
+    )
     assert "carries 10 A for ever" in found.withstand[0].reasons[0]
     assert found.withstand[0].verdict == "pass"  # told, not judged
 
 
 def test_the_sheet_tells_least_and_greatest_of_all_faults() -> None:
-    study, found = settings(case_of(), points=3)
+    study, found = study_settings(case_of(), points=3)
     rows = {row.relay.name: row for row in setting_sheet(study)}
     for seen in found.sees:
         if seen.duty == "protects":
@@ -150,7 +152,7 @@ def unearthed(*changes: tuple[str, str]) -> Case:
 
 
 def test_an_unearthed_network_shows_its_whole_phase_voltage_and_no_current() -> None:
-    _, found = settings(unearthed(), points=2)
+    _, found = study_settings(unearthed(), points=2)
     volts = next(row for row in found.sees if row.relay == "open-delta")
     # V0 is the phase voltage of a line-ground fault, half of it of one of two phases
     assert volts.current == pytest.approx(6600 / math.sqrt(3) / 2, rel=1e-9)
@@ -163,7 +165,7 @@ def test_an_unearthed_network_shows_its_whole_phase_voltage_and_no_current() -> 
 
 def test_with_capacitance_the_displacement_is_that_of_full_solutions() -> None:
     case = unearthed(('c0 = "0 uF/km"', 'c0 = "0.4 uF/km"'))
-    study, found = settings(case, points=3)
+    study, found = study_settings(case, points=3)
     view = study.states[0].views["open-delta"]
     network = Network(case)
     reach = {r.spot.place: r for r in next(s for s in found.sees if s.relay == "open-delta").reach}["main"]
@@ -220,7 +222,7 @@ least = ["base"]
 def test_the_reactance_is_that_of_the_relays_own_time() -> None:
     """By hand, 3 E/(Z1 + Z2 + Z0): the transient reactance for 0.5 s, the synchronous for 1.5 s."""
     case = case_from_tree(parse_text(ISLAND.encode(), "i.toml"), "i.toml")
-    _, found = settings(case, points=2)
+    _, found = study_settings(case, points=2)
     base = 11000**2 / 3e6
     rows = {row.relay: row for row in found.sees}
     for name, x1 in (("quick", 0.25), ("slow", 2.20)):
@@ -256,7 +258,7 @@ backs_up = ["N-earth"]
 """
     behind = ('backs_up = ["N-earth", "S-earth"]', 'backs_up = ["N-second", "S-earth"]')
     study = study_states(radial(("[demands]\n", second), behind), 2)
-    proposal = propose(study)
+    proposal = propose_settings(study)
     assert proposal.met
     times = {row.relay: row for row in proposal.rows}
     assert times["N-second"].time_binds.startswith("it waits for N-earth: ")
