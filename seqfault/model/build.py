@@ -53,25 +53,19 @@ def build_model(case: Case, machine: Machine = "subtransient") -> Model:
 
 
 def build_arranged(
-    case: Case, within: Case, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
+    case: Case, like: Model, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
 ) -> Model:
-    """The model of ``case``, which is ``within`` with lines and terminals rewritten.
+    """The model of ``case``, which is that of ``like`` with lines and terminals rewritten.
 
-    ``links`` are pairs of its buses that breaks stand between. Coils are tuned as in ``within``, and
-    what was assumed and warned of there is not said again.
+    ``links`` are pairs of its buses that breaks stand between. Coils keep the ohms they have in ``like``,
+    and what was assumed and warned of there is not said again.
     """
-    base = within
-    if within.state != "base" and _may_have_coils(within):
-        base = case_from_tree(within.tree, within.source)
-    return _assemble(Context(case, machine, _coils(base, within, machine)[0], links))
-
-
-def _may_have_coils(case: Case) -> bool:
-    """Whether ``case``, or its file without the state, has an arc-suppression coil."""
-    if any(record.kind == ARC_SUPPRESSION for record in case.neutrals.values()):
-        return True
-    stated = case.tree.get("neutrals", {})
-    return any(dict(record).get("kind") == ARC_SUPPRESSION for record in stated.values())
+    named = {n for n, record in case.neutrals.items() if record.kind == ARC_SUPPRESSION}
+    coils = dict.fromkeys(named, complex(np.inf))  # of no winding in service
+    for name, ohms in zip(like.stars.names, like.stars.impedance.tolist(), strict=True):
+        if name in named:
+            coils[name] = ohms
+    return _assemble(Context(case, machine, coils, links))
 
 
 def _coils(

@@ -223,8 +223,11 @@ def _blind(found: Settings) -> Iterator[Part]:
         states = ", ".join(once(p.state for p in places))
         own = "" if guarded else " (not counted in the verdict)"
         said.append(f"{', '.join(names[:6])}{more}{how}, state {states}: {reason}{own}")
+    apart: dict[tuple[tuple[str, ...], str], list[str]] = {}
     for relay in found.blind_relays:
-        said.append(f"{relay.relay} shows nothing of {', '.join(relay.places)}: {relay.reason}")
+        apart.setdefault((relay.places, relay.reason), []).append(relay.relay)
+    for (buses, reason), relays in apart.items():
+        said.append(f"nothing of {', '.join(buses)} shows at {', '.join(once(relays))}: {reason}")
     yield Sentences("What does no relay see?", tuple(said) or ("every place studied is seen by a relay",))
 
 

@@ -18,7 +18,7 @@ from seqfault.faults.kinds import fault_at
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from seqfault.model.context import Machine
-from seqfault.model.elements import Bools, Complex, Floats
+from seqfault.model.elements import Bools, Complex, Floats, Ints
 from seqfault.studies.settings_places import Spot
 
 PROBE = "line-line-ground"
@@ -57,21 +57,29 @@ class Probe(msgspec.Struct, frozen=True, eq=False):
     star_share: Complex
     galvanic: tuple[int, ...]
 
-    def with_zero_sequence_of(self, other: Probe) -> Probe:
-        """This probe with the zero sequence of ``other``, made for the same places."""
+    def with_zero_sequence_of(self, other: Probe, at: Ints | None = None) -> Probe:
+        """This probe with the zero sequence of ``other``, made for the same places, or for those ``at``."""
 
         def first(own: Complex, its: Complex) -> Complex:
-            return np.concatenate([its[:1], own[1:]])
+            made = own.copy()
+            made[0, rows] = its[0]
+            return made
 
+        def whole(own: Complex, its: Complex) -> Complex:
+            made = own.copy()
+            made[rows] = its
+            return made
+
+        rows = slice(None) if at is None else at
         return replace(
             self,
             impedance=first(self.impedance, other.impedance),
             terminal=first(self.terminal, other.terminal),
             drop=first(self.drop, other.drop),
-            star=other.star,
-            share=other.share,
-            star_drop=other.star_drop,
-            star_share=other.star_share,
+            star=whole(self.star, other.star),
+            share=whole(self.share, other.share),
+            star_drop=whole(self.star_drop, other.star_drop),
+            star_share=whole(self.star_share, other.star_share),
         )
 
 

@@ -14,12 +14,12 @@ from seqfault.errors import RequestError, quoted
 from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
 from seqfault.model.coils import ARC_SUPPRESSION, impedance_of
-from seqfault.model.elements import Bools
+from seqfault.model.elements import Bools, Ints
 from seqfault.studies.neutral import duty_of, hot_ohms
 from seqfault.studies.protection import Protection, protection
 from seqfault.studies.relays import Relay
 from seqfault.studies.settings_places import POINTS, spots
-from seqfault.studies.settings_probe import Sites, flat, machine_states, probe
+from seqfault.studies.settings_probe import Probe, Sites, flat, machine_states, probe
 from seqfault.studies.settings_view import Forms, View, forms_of, sites_of, view_of
 
 
@@ -109,8 +109,9 @@ def _state(case: Case, points: int) -> tuple[State, list[str]]:
     first = probe(cold, places, sites)
     worlds = [first]
     if warm is not None:
-        hot = probe(Network(warm), first.spots, sites)
-        worlds.append(first.with_zero_sequence_of(hot))
+        at = _near(flat_case, warm, first, sites)
+        hot = probe(Network(warm), [first.spots[k] for k in at.tolist()], sites)
+        worlds.append(first.with_zero_sequence_of(hot, at))
     probes = [worlds]
     for machine in machines[1:]:
         own = probe(Network(flat_case, machine=machine), first.spots, sites)
@@ -136,6 +137,16 @@ def _state(case: Case, points: int) -> tuple[State, list[str]]:
         hot=warm is not None,
     )
     return state, said
+
+
+def _near(case: Case, warm: Case, first: Probe, sites: Sites) -> Ints:
+    """The places (k,) of ``first`` whose faults send a current through a neutral heated in ``warm``."""
+    heated = [
+        k
+        for k, name in enumerate(sites.stars)
+        if name in case.neutrals and warm.neutrals[name] is not case.neutrals[name]
+    ]
+    return np.flatnonzero((first.star[:, heated] != 0).any(axis=1))
 
 
 def warmed(case: Case) -> tuple[Case | None, list[str]]:

@@ -7,6 +7,7 @@ import math
 import numpy as np
 import pytest
 
+from seqfault.case.records import Case
 from seqfault.equations.current_transformers import residual_error
 from seqfault.errors import RequestError
 from seqfault.studies.relays import Relay, operate_times
@@ -279,6 +280,10 @@ def test_a_backup_that_sees_more_than_the_first_acts_alone(studied: tuple[States
         assert "the backup acts alone" in row.reasons[0]
 
 
+def settings_of(case: Case) -> tuple[States, Settings]:
+    return study_settings(case, points=2)
+
+
 def one(found: Settings, relay: str, duty: str = "protects") -> Sees:
     return next(row for row in found.sees if (row.relay, row.duty) == (relay, duty))
 
@@ -361,6 +366,17 @@ def test_a_relay_on_what_is_out_in_every_state_fails_in_words() -> None:
     assert row.verdict == "fail"
     assert row.reasons == ('state base: "X" is out', 'state open: "X" is out')
     assert found.verdict == "fail"
+
+
+def test_a_relay_on_what_no_source_reaches_fails_in_words() -> None:
+    dead = '[buses]\nlost = "11 kV"\naway = "11 kV"\n'
+    line = '[lines.D]\nfrom = "lost"\nto = "away"\nlength = "1 km"\nz1 = "0.2+j0.1 ohm/km"\nz0 = "1+j1 ohm/km"\n'
+    changes = (("[buses]\n", dead), ("[lines.E]\n", f'{line}c0 = "0.1 uF/km"\n\n[lines.E]\n'))
+    moved = ('at = "X@east"', 'at = "D@lost"'), ('protects = ["X"]', 'protects = ["D", "lost"]')
+    _, found = settings_of(case_of(RING, *changes, *moved))
+    row = one(found, "X-east")
+    assert row.verdict == "fail"
+    assert row.reasons[0] == "state base: nothing of what it protects is live"
 
 
 def test_a_relay_that_answers_for_nothing_is_not_proven() -> None:
