@@ -370,8 +370,8 @@ def test_a_relay_on_what_is_out_in_every_state_fails_in_words() -> None:
 
 def test_a_relay_on_what_no_source_reaches_fails_in_words() -> None:
     dead = '[buses]\nlost = "11 kV"\naway = "11 kV"\n'
-    line = '[lines.D]\nfrom = "lost"\nto = "away"\nlength = "1 km"\nz1 = "0.2+j0.1 ohm/km"\nz0 = "1+j1 ohm/km"\n'
-    changes = (("[buses]\n", dead), ("[lines.E]\n", f'{line}c0 = "0.1 uF/km"\n\n[lines.E]\n'))
+    line = '[lines.D]\nfrom = "lost"\nto = "away"\nz1 = "0.2+j0.1 ohm"\nz0 = "1+j1 ohm"\n'
+    changes = (("[buses]\n", dead), ("[lines.E]\n", f'{line}c0 = "0.1 uF"\n\n[lines.E]\n'))
     moved = ('at = "X@east"', 'at = "D@lost"'), ('protects = ["X"]', 'protects = ["D", "lost"]')
     _, found = settings_of(case_of(RING, *changes, *moved))
     row = one(found, "X-east")
