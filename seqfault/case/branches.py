@@ -13,8 +13,10 @@ from seqfault.errors import quoted
 
 # Common practice, overhead lines and cables of all voltages.
 _OHM_PER_KM = (0.005, 5.0)
-_FARAD_PER_KM = (0.5e-9, 5e-6)
+_FARAD_PER_KM = (2e-9, 5e-6)
 _LONGEST = 1000e3  # m
+_REACH = ((1e3, 10e3), (40e3, 150e3), (150e3, 400e3))
+"""Longest usual line (m) up to a nominal voltage (V)."""
 
 
 def check_line(subject: Subject, line: Line) -> None:
@@ -63,10 +65,13 @@ def _differ(start: Bus, end: Bus) -> bool:
 
 def _line_values(subject: Subject, line: Line) -> None:
     length = real(line.length)
-    if length is not None and length > _LONGEST:
-        subject.usual(
-            "length", length, (0, _LONGEST), f"{said(line.length)} is above the usual 1000 km", 1e3
-        )
+    nominal = _nominal(subject, line)
+    longest = next((far for volts, far in _REACH if nominal and nominal <= volts), _LONGEST)
+    if length is not None and length > longest:
+        at = f" at {amount(nominal, 'V')}" if nominal else ""
+        text = f"{said(line.length)} is above the usual {longest / 1e3:g} km{at}"
+        subject.usual("length", length, (0, longest), text, 1e3)
+    _sequences(subject, line)
     for field in ("z1", "z0", "c1", "c0", "b1", "b0"):
         quantity = getattr(line, field)
         if quantity is None:
@@ -86,8 +91,32 @@ def _line_values(subject: Subject, line: Line) -> None:
         elif field[0] in "cb":
             if field[0] == "b":
                 value /= 2 * math.pi * (subject.site.case.frequency or 50.0)
-            text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 0.5 nF/km to 5 uF/km"
+            text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 2 nF/km to 5 uF/km"
             subject.usual(field, value, _FARAD_PER_KM, text, 1e3)
+
+
+def _nominal(subject: Subject, line: Line) -> float | None:
+    bus = subject.site.case.buses.get(line.from_)
+    return real(bus.voltage) if bus is not None else None
+
+
+def _sequences(subject: Subject, line: Line) -> None:
+    """Doubt a zero sequence below the positive one, and a capacitance to earth above the whole."""
+    length = real(line.length)
+    z1, z0 = _per_km(line.z1, length), _per_km(line.z0, length)
+    if z1 and z0 and _OHM_PER_KM[0] <= z0 < z1 <= _OHM_PER_KM[1]:
+        subject.warn(
+            "z0",
+            f"{said(line.z0)} is smaller than z1 = {said(line.z1)}; in a line or cable it is the larger",
+        )
+    for one, zero in ((line.c1, line.c0), (line.b1, line.b0)):
+        if one is None or zero is None or one.dimension != zero.dimension:
+            continue
+        usual = line.b1 is not None or (_per_km(one, length) or 0.0) >= _FARAD_PER_KM[0]
+        if usual and abs(zero.value) > 1.001 * abs(one.value) > 0:
+            name = "c0" if zero is line.c0 else "b0"
+            text = f"{said(zero)} is larger than {name[0]}1 = {said(one)}; to earth it is never more"
+            subject.warn(name, text)
 
 
 def _per_km(quantity: Quantity, length: float | None) -> float | None:

@@ -31,6 +31,13 @@ def check_coupling(subject: Subject, coupling: MutualCoupling) -> None:
     if coupling.z0.value == 0:
         subject.error("z0", f"{said(coupling.z0)}: this cannot be zero")
     subject.resistive("z0", coupling.z0)
+    z = complex(coupling.z0.value)
+    if z.real * z.imag < 0:
+        subject.warn(
+            "z0",
+            f"{said(coupling.z0)}: its parts have opposite signs; where a line runs the other way both turn"
+            " negative",
+        )
     if _lengths(subject, coupling, lines):
         _strength(subject, coupling, lines)
 

@@ -14,6 +14,8 @@ PAIRS = ("hv_lv", "hv_tv", "lv_tv")
 # Common practice; between the windings of a three-winding unit much more is found.
 _IMPEDANCE, _OF_PAIRS = (0.005, 0.30), (0.005, 1.0)
 
+_LARGEST_X_OVER_R = 200.0  # common practice
+
 
 def check_impedance(subject: Subject, unit: Transformer, group: VectorGroup | None) -> None:
     """Tell what is wrong or doubtful about impedance, impedance_on, x_over_r and load_loss."""
@@ -45,6 +47,12 @@ def check_impedance(subject: Subject, unit: Transformer, group: VectorGroup | No
         return
     text = f"{said(impedance)} is {digits(100 * part)} %, outside the usual 0.5 to 30 %"
     subject.usual("impedance", part, _IMPEDANCE, text, 100)
+    if rating and loss and 0 < loss / rating < part / _LARGEST_X_OVER_R:
+        subject.warn(
+            "load_loss",
+            f"{said(unit.load_loss)} makes an X/R of {digits(part * rating / loss)}, above the usual"
+            f" {_LARGEST_X_OVER_R:g}",
+        )
     if rating and loss and loss / rating > part:
         subject.error(
             "load_loss",

@@ -118,6 +118,10 @@ def _bus(case: Case, text: str) -> Place:
             raise RequestError(
                 f"place {quoted(text)}: this is an element, not a bus; write {listed([*ends, *more], 'or')}"
             )
+    if text in case.neutrals:
+        raise RequestError(
+            f"place {quoted(text)}: this is a neutral, not a bus; name the bus whose earth fault is meant"
+        )
     live = [name for name, bus in case.buses.items() if not bus.out]
     near = difflib.get_close_matches(text, live, n=1, cutoff=0.5)
     hint = f"did you mean {quoted(near[0])}?" if near else "inspect CASE --places lists them"

@@ -11,6 +11,8 @@ from seqfault.errors import quoted
 _FAULT_CURRENT = (10.0, 100e3)  # A, common practice
 _SUBTRANSIENT = (0.03, 0.80)
 _LOCKED_ROTOR = (2.0, 12.0)
+_SHARE = (0.5, 1.0)  # of efficiencies and power factors at rated load
+_LEAST_X_OVER_R = 0.2
 
 
 def check_infeed(subject: Subject, infeed: Infeed) -> None:
@@ -19,6 +21,9 @@ def check_infeed(subject: Subject, infeed: Infeed) -> None:
     sound = subject.positive({"three_phase": infeed.three_phase, "line_ground": infeed.line_ground})
     sound &= subject.impedance("z1", infeed.z1) & subject.impedance("z2", infeed.z2)
     subject.x_over_r("x_over_r", infeed.x_over_r)
+    if infeed.x_over_r is not None and 0 <= infeed.x_over_r < _LEAST_X_OVER_R:
+        text = f"{infeed.x_over_r:g} is below the usual {_LEAST_X_OVER_R:g}; is it R/X?"
+        subject.warn("x_over_r", text)
     subject.x_over_r("x0_over_r0", infeed.x0_over_r0)
     subject.resistive("z1", infeed.z1)
     subject.resistive("z2", infeed.z2)
@@ -159,7 +164,11 @@ def _motor_rating(subject: Subject, motor: Motor) -> None:
                 subject.error(field, "this is missing; shaft_power needs it, as in 0.9")
     for field, part in parts.items():
         value = part.value if isinstance(part, Quantity) else part
-        if value is None or isinstance(value, complex) or 0 < value <= 1:
+        if value is None or isinstance(value, complex):
+            continue
+        if 0 < value <= 1:
+            said_of = said(part) if isinstance(part, Quantity) else f"{part:g}"
+            subject.usual(field, value, _SHARE, f"{said_of} is outside the usual 0.5 to 1", 100)
             continue
         text = said(part) if isinstance(part, Quantity) else f"{part:g}"
         repair = f'; write "{value:g} %"' if 2 <= value <= 100 else ""

@@ -81,8 +81,7 @@ def run(options: argparse.Namespace) -> int:
 
     def answer(network: Network) -> Answer:
         opened = options.far_end_open
-        if opened == "":
-            network.check_place(f"{options.line}@50%")
+        if opened == "" and options.line in network.case.lines:
             opened = network.case.lines[options.line].to
         scanned = along(
             network,
@@ -113,6 +112,6 @@ def run(options: argparse.Namespace) -> int:
             from seqfault.report.along_chart import along_chart
 
             deliver_plot(options, along_chart(network.model.title, scanned, drawn))
-        return Answer(page, tree, rows, network.model.warnings)
+        return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
     return deliver(options, form, [answer(network) for network in networks])

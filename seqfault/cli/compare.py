@@ -72,6 +72,6 @@ def run(options: argparse.Namespace) -> int:
 
             return compare_rows(comparison)
 
-        return Answer(page, tree, rows, network.model.warnings)
+        return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
     return deliver(options, form, [answer(network) for network in networks])

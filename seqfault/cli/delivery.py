@@ -5,12 +5,14 @@ from __future__ import annotations
 import argparse
 import sys
 from collections.abc import Callable, Iterable, Sequence
+from itertools import chain
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 from seqfault.cli.run import say
 from seqfault.errors import RequestError, quoted
 
 if TYPE_CHECKING:
+    from seqfault.faults.network import Network
     from seqfault.report.data import Quantity
     from seqfault.report.tables import Page
 
@@ -22,6 +24,7 @@ class Answer(NamedTuple):
     tree: Callable[[], dict[str, Any]]
     rows: Callable[[], Iterable[Quantity]]
     warnings: Sequence[str] = ()
+    state: str = ""
 
 
 def form_wanted(options: argparse.Namespace) -> str:
@@ -61,20 +64,46 @@ def deliver_plot(options: argparse.Namespace, content: bytes) -> None:
 
 def deliver(options: argparse.Namespace, form: str, answers: Sequence[Answer]) -> int:
     """Write ``answers`` in ``form``; warnings go to standard error, and into JSON as well."""
+    warnings = by_state([(answer.state, answer.warnings) for answer in answers])
     if form == "table":
-        _pages(options, [answer.page() for answer in answers])
+        _pages(options, [answer.page() for answer in answers], warnings)
     else:
         from seqfault.report.files import as_csv, as_json
 
         if form == "json":
             content = as_json(_together([answer.tree() for answer in answers]))
         else:
-            content = as_csv(row for answer in answers for row in answer.rows())
+            kept = told(warnings) if options.output is not None else ()
+            content = as_csv(chain((row for answer in answers for row in answer.rows()), kept))
         _write(options, content)
     if form != "json":
-        for warning in dict.fromkeys(text for answer in answers for text in answer.warnings):
+        for warning in warnings:
             say(f"warning: {warning}")
     return 0
+
+
+def told(warnings: Sequence[str]) -> Iterable[Quantity]:
+    """Warnings as rows, so that a file that is kept has them too."""
+    from seqfault.report.data import Quantity
+
+    return (Quantity("", "", "warning", "", text, "", None, "", "") for text in warnings)
+
+
+def warnings_of(networks: Sequence[Network], more: Sequence[Sequence[str]] = ()) -> list[str]:
+    """What the models warn of, and ``more`` of each; of several states each says which it is of."""
+    extra = list(more) or [()] * len(networks)
+    pairs = zip(networks, extra, strict=True)
+    return by_state([(n.model.state, [*n.model.warnings, *texts]) for n, texts in pairs])
+
+
+def by_state(own: Sequence[tuple[str, Sequence[str]]]) -> list[str]:
+    """Warnings of several states, each once; one that not every state has says which it is of."""
+    out: list[str] = []
+    for state, texts in own:
+        for text in texts:
+            everywhere = not state or all(text in others for _, others in own)
+            out.append(text if everywhere else f"state {state}: {text}")
+    return list(dict.fromkeys(out))
 
 
 def _together(trees: list[dict[str, Any]]) -> dict[str, Any]:
@@ -86,10 +115,14 @@ def _together(trees: list[dict[str, Any]]) -> dict[str, Any]:
     return {**shared, "answers": rest}
 
 
-def _pages(options: argparse.Namespace, pages: list[Page]) -> None:
+def _pages(options: argparse.Namespace, pages: list[Page], warnings: Sequence[str]) -> None:
     from seqfault.report.terminal import page_text, show
 
     if options.output is not None:
+        from seqfault.report.tables import Page, Sentences
+
+        if warnings:  # a page that is kept has its warnings on it
+            pages = [*pages, Page((Sentences("Warnings", tuple(warnings)),))]
         text = "\n\n".join(page_text(page, options.width) for page in pages)
         _write(options, text.encode())
         return

@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
 from seqfault.cli.options import (
+    KINDS,
     Commands,
     add_case,
     add_command,
@@ -15,7 +16,6 @@ from seqfault.cli.options import (
     read_networks,
     read_ohms,
 )
-from seqfault.cli.shells import KINDS
 from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
@@ -139,7 +139,7 @@ def run(options: argparse.Namespace) -> int:
 
             return fault_rows(solution)
 
-        return Answer(page, tree, rows, network.model.warnings)
+        return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
     return deliver(options, form, [answer(network) for network in networks])
 

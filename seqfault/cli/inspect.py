@@ -62,6 +62,7 @@ def run(options: argparse.Namespace) -> int:
                 partial(inspect_tree, inspection),
                 partial(inspect_rows, inspection),
                 inspection.warnings,
+                inspection.state,
             )
         )
     return deliver(options, form, answers)
@@ -85,6 +86,7 @@ def _sequence(options: argparse.Namespace, networks: list[Network]) -> int:
                 partial(sequence_tree, views, model.title, model.sha256),
                 partial(sequence_rows, views),
                 model.warnings,
+                model.state,
             )
         )
     return deliver(options, form_wanted(options), answers)

@@ -25,7 +25,7 @@ def run(options: argparse.Namespace) -> int:
     """Answer the command."""
     from functools import partial
 
-    from seqfault.cli.delivery import Answer, deliver, form_wanted
+    from seqfault.cli.delivery import Answer, deliver, form_wanted, warnings_of
 
     form = form_wanted(options)
     networks = read_networks(options)
@@ -37,6 +37,6 @@ def run(options: argparse.Namespace) -> int:
         partial(levels_page, networks, states),
         partial(levels_tree, networks, states),
         partial(levels_rows, states),
-        [text for network in networks for text in (*network.model.warnings, *silent(network))],
+        warnings_of(networks, [silent(network) for network in networks]),
     )
     return deliver(options, form, [answer])

@@ -73,7 +73,7 @@ def run(options: argparse.Namespace) -> int:
     """Answer the command: 1 where a limit leaves no room for the target."""
     from functools import partial
 
-    from seqfault.cli.delivery import Answer, deliver, form_wanted, plot_wanted
+    from seqfault.cli.delivery import Answer, deliver, form_wanted, plot_wanted, warnings_of
 
     form = form_wanted(options)
     between = _range(options.ohms, options.points)
@@ -120,7 +120,7 @@ def run(options: argparse.Namespace) -> int:
 
     if plot:
         _draw(options, answer, plot)
-    warnings = [text for s in report.standing for text in s.state.network.model.warnings]
+    warnings = warnings_of([s.state.network for s in report.standing])
     code = deliver(options, form, [Answer(partial(neutral_page, answer), tree, rows, warnings)])
     return code or (0 if target is None or target.met else 1)
 

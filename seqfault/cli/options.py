@@ -12,6 +12,16 @@ if TYPE_CHECKING:
     from seqfault.faults.network import Network
 
 MACHINES = ("subtransient", "transient", "synchronous")
+KINDS = (
+    "three-phase",
+    "three-phase-ground",
+    "line-line",
+    "line-line-ground",
+    "line-ground",
+    "open-one",
+    "open-two",
+    "open-three",
+)
 FORMATS = ("table", "json", "csv")
 COLORS = ("auto", "always", "never")
 

@@ -9,16 +9,8 @@ from __future__ import annotations
 import argparse
 from dataclasses import dataclass
 
-KINDS = (
-    "three-phase",
-    "three-phase-ground",
-    "line-line",
-    "line-line-ground",
-    "line-ground",
-    "open-one",
-    "open-two",
-    "open-three",
-)
+from seqfault.cli.options import KINDS
+
 WORDS = {"kind": KINDS, "phases": ("a", "b", "c", "ab", "bc", "ca"), "scenario": ("base", "all")}
 
 

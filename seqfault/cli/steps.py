@@ -31,6 +31,7 @@ def run_steps(options: argparse.Namespace) -> int:
                 partial(steps_tree, network, evolution),
                 partial(steps_rows, evolution),
                 network.model.warnings,
+                network.model.state,
             )
         )
     return deliver(options, form, answers)

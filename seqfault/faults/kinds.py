@@ -70,6 +70,9 @@ def fault_kind(name: str) -> Kind:
     """The kind called ``name``. Raises ``RequestError`` with the nearest name."""
     found = KINDS.get(SAME.get(name, name))
     if found is None:
+        symbols = {kind.symbol.lower(): kind.name for kind in KINDS.values() if kind.symbol}
+        if name.lower() in symbols:
+            raise RequestError(f"kind {quoted(name)}: write {symbols[name.lower()]}")
         near = difflib.get_close_matches(name, [*KINDS, *SAME], n=1)
         hint = f"; did you mean {near[0]}?" if near else ""
         raise RequestError(f"kind {quoted(name)}: the kinds are {', '.join(KINDS)}{hint}")
@@ -101,12 +104,14 @@ def fault_at(
         raise RequestError(
             f"zf, zg: an {found.name} conductor touches nothing; say on which side it has fallen to earth"
         )
-    if zg != 0 and not (found.earth or fallen):
+    if zg != 0 and not isinstance(zg, str) and not (found.earth or fallen):
         raise RequestError(
             f"zg: a {found.name} fault does not touch earth; give its impedance as zf,"
             " or ask for a kind to ground"
         )
     for label, value in (("zf", zf), ("zg", zg)):
+        if isinstance(value, str):
+            raise RequestError(f"{label}: read {quoted(value)}; a number of ohm is wanted, as in 0.5")
         if not np.isfinite(value):
             raise RequestError(f"{label}: read {value}; it must be a finite number of ohm")
         if complex(value).real < 0:

@@ -31,7 +31,7 @@ class Network:
     ``model`` holds the per-unit elements and all assumptions, ``sequences`` the factorised networks.
     Building costs one factorisation a sequence; each ``fault`` at a bus after that costs three solves.
     A fault along a line or at a terminal, and an open conductor, make a network with buses there first
-    (``located``).
+    (``located``); ``labels`` say how its answers name terminals, where not as its model does.
     """
 
     def __init__(
@@ -55,7 +55,7 @@ class Network:
         self.sequences = SequenceNetworks(self.model)
         self._bus_of: Mapping[str, str] = {}
         self._breaks: Mapping[str, tuple[str, str, str]] = {}
-        self._labels: Mapping[tuple[str, str], Label | None] = MappingProxyType({})
+        self.labels: Mapping[tuple[str, str], Label | None] = MappingProxyType({})
 
     @property
     def buses(self) -> tuple[str, ...]:
@@ -68,6 +68,10 @@ class Network:
         Raises ``RequestError`` with the nearest name where it names nothing in service.
         """
         return read_place(self.case, text)
+
+    def bus_of(self, place: Place) -> str:
+        """The bus that stands for a place; this network must have been made for it (``located``)."""
+        return place.bus if not place.element else self._bus_of[place.name]
 
     def check_place(self, place: str) -> None:
         """Raises ``RequestError`` with the nearest name where ``place`` names nothing in service."""
@@ -94,7 +98,7 @@ class Network:
         located.machine = self.machine
         located.model = replace(model, assumptions=self.model.assumptions, warnings=self.model.warnings)
         located.sequences = SequenceNetworks(located.model)
-        located._bus_of, located._breaks, located._labels = made.bus_of, made.breaks, made.labels
+        located._bus_of, located._breaks, located.labels = made.bus_of, made.breaks, made.labels
         return located
 
     def fault(
@@ -132,7 +136,7 @@ class Network:
     def _solved(self, faults: Sequence[Fault], places: Sequence[Place]) -> FaultSolution:
         standing = [self._standing(fault, p) for fault, p in zip(faults, places, strict=True)]
         _check_together(self.model, standing)
-        return solve_faults(self.sequences, standing, self.loading, self._labels)
+        return solve_faults(self.sequences, standing, self.loading, self.labels)
 
     def _standing(self, fault: Fault, place: Place) -> Standing:
         if not fault.kind.series:
@@ -141,7 +145,7 @@ class Network:
                     f"place {quoted(place.text)}: the line is broken at this very point; put the other"
                     " fault a little to one side, or say on which side the conductor has fallen"
                 )
-            return Standing(fault, (self._bus_of.get(place.name, place.bus),))
+            return Standing(fault, (self.bus_of(place),))
         joint, near, far = self._breaks[place.name]
         names = (place.bus, place.element)
         if place.fraction is not None:

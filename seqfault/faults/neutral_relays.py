@@ -7,10 +7,14 @@ so is the relay's current. Two devices tell its top.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from types import MappingProxyType
+
 import msgspec
 import numpy as np
 from msgspec.structs import replace
 
+from seqfault.case.arrangement import Label
 from seqfault.equations.per_unit import base_current
 from seqfault.faults.flows import sequence_flows, terminal_map
 from seqfault.faults.neutral_faults import driven_voltage
@@ -43,8 +47,15 @@ class RelayForms(msgspec.Struct, frozen=True, eq=False):
     scale: float
 
 
-def relay_forms(zero: SequenceFactor, ports: NeutralPorts, view: RelayView) -> RelayForms | None:
+def relay_forms(
+    zero: SequenceFactor,
+    ports: NeutralPorts,
+    view: RelayView,
+    labels: Mapping[tuple[str, str], Label | None] = MappingProxyType({}),
+) -> RelayForms | None:
     """The forms of ``view`` in the zero-sequence network ``zero`` without the device.
+
+    ``labels`` name the terminals of a network made for a place along a line.
 
     None where it is not in service, or stands in a part with more than two free potentials.
     """
@@ -52,7 +63,7 @@ def relay_forms(zero: SequenceFactor, ports: NeutralPorts, view: RelayView) -> R
     impedance = model.stars.impedance.copy()
     impedance[ports.star] = np.inf
     opened = replace(model, stars=replace(model.stars, impedance=impedance))
-    picked = _pick(model, view)
+    picked = _pick(model, view, labels)
     if picked is None:
         return None
     rows, star, scale = picked
@@ -72,7 +83,9 @@ def relay_forms(zero: SequenceFactor, ports: NeutralPorts, view: RelayView) -> R
     return RelayForms(view, (forms[0], forms[1]), scale)
 
 
-def _pick(model: Model, view: RelayView) -> tuple[Ints, int, float] | None:
+def _pick(
+    model: Model, view: RelayView, labels: Mapping[tuple[str, str], Label | None]
+) -> tuple[Ints, int, float] | None:
     """Terminals (t,) a relay's current is the sum of, or its star point, and A of one per unit."""
     if view.star:
         if view.star not in model.stars.names:
@@ -85,14 +98,13 @@ def _pick(model: Model, view: RelayView) -> tuple[Ints, int, float] | None:
         )
     t = terminal_map(model)
     at = model.index.get(view.bus, -1)
-    rows = np.array(
-        [
-            k
-            for k in range(len(t.element))
-            if t.element[k] == view.element and t.bus[k] == at and t.closed[k]
-        ],
-        np.int64,
-    )
+
+    def element(k: int) -> str:
+        label = labels.get((t.element[k], t.side[k]))
+        return t.element[k] if label is None else label.element
+
+    mine = [k for k in np.flatnonzero(t.bus == at).tolist() if t.closed[k] and element(k) == view.element]
+    rows = np.array(mine, np.int64)
     if at < 0 or not len(rows):
         return None
     scale = 3 * float(base_current(model.nominal[at], model.base_power)) / int(t.count[rows[0]])

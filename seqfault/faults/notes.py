@@ -8,7 +8,8 @@ import numpy as np
 
 from seqfault.equations.symmetrical import to_phases
 from seqfault.errors import quoted
-from seqfault.faults.solution import FaultState
+from seqfault.faults.solution import FaultState, StarPointState
+from seqfault.model.doubts import idle_star_points
 from seqfault.model.elements import Bools, Complex, Model
 from seqfault.networks.factors import SequenceNetworks
 
@@ -16,6 +17,8 @@ RISEN = 1.1
 """A sound phase above this share of its voltage before an open conductor is named."""
 DISPLACED = 1.8
 """The same where a fault touches earth: more than the √3 of a system without earth."""
+DRIVEN = 0.5
+"""Share of the phase voltage on a coil, without an earth fault, from which resonance is named."""
 
 
 def notes(
@@ -25,9 +28,10 @@ def notes(
     voltage: Complex,
     before: Complex,
     loaded: bool,
+    stars: Sequence[StarPointState],
 ) -> tuple[str, ...]:
     """Notes on ``faults``; ``lost`` (n,) buses without a source since, ``voltage`` (3, n) V by sequence
-    and ``before`` (n,) V phase a before them.
+    and ``before`` (n,) V phase a before them, ``stars`` what star points see.
     """
     model = networks.model
     out = [text for state in faults for text in _of_place(networks, state)]
@@ -43,6 +47,8 @@ def notes(
         if loaded and lost[model.sources.bus[motors]].any():
             out.append("motors behind the break hold some voltage there in the first moment; it decays")
     out += _rise(model, faults, lost, voltage, before)
+    if broken and not any(state.fault.earth for state in faults):
+        out += _resonance(model, stars)
     return tuple(dict.fromkeys(out))
 
 
@@ -59,6 +65,14 @@ def _of_place(networks: SequenceNetworks, state: FaultState) -> list[str]:
         return [
             f"the earthing of {name} is in exact resonance with its capacitance, without loss: no"
             " residual current flows; a real coil's loss would let a little through"
+        ]
+    idle = idle_star_points(model).get(int(model.galvanic[model.node[place]]), [])
+    if idle:
+        return [
+            f"the earthed star point {', '.join(map(quoted, dict.fromkeys(idle)))} lets no current through"
+            " in this model, for want of another winding or a stated magnetising branch: no earth current"
+            " is found here, and a real core may let a large one through; state z0_magnetising or"
+            " zero_tests"
         ]
     return [
         f"nothing joins the network of {name} to earth, not even a capacitance: no earth current"
@@ -79,25 +93,32 @@ def _rise(
     top = float(size[phase, bus])
     if top <= limit:
         return []
-    out = [
+    return [
         f"phase {'abc'[phase]} of {quoted(model.buses[bus])} rises to {top:.2f} of its voltage to earth"
         " before the fault"
     ]
-    if broken and any(z.imag > 0 and z.real < 0.2 * z.imag for z in _coils(model)):
-        out.append(
-            "a broken phase changes the capacitance that a coil in a star point faces: coil and"
-            " capacitance may come near resonance, and the voltage then depends on the coil's losses"
-        )
+
+
+def _resonance(model: Model, stars: Sequence[StarPointState]) -> list[str]:
+    """Coils that an open phase leaves near resonance with the capacitance still there."""
+    out = []
+    for k, star in enumerate(stars):
+        z = complex(model.stars.impedance[k])
+        if (
+            star.kind != "neutral"
+            or star.voltage is None
+            or not np.isfinite(z)
+            or abs(z.real) > 0.2 * z.imag
+        ):
+            continue
+        share = abs(star.voltage) / (float(model.stars.base[k]) / np.sqrt(3))
+        if share > DRIVEN:
+            out.append(
+                f"the open phase and the coil {quoted(star.name)} come near resonance with the capacitance"
+                f" that is left: its star point stands at {share:.2f} of the phase voltage; losses, which"
+                " the case may not state, decide how high it really goes"
+            )
     return out
-
-
-def _coils(model: Model) -> list[complex]:
-    """Impedances (ohm) of the star points that are earthed through a reactance."""
-    return [
-        complex(z)
-        for z, kind in zip(model.stars.impedance, model.stars.kinds, strict=True)
-        if kind == "neutral" and np.isfinite(z)
-    ]
 
 
 def apart(model: Model, place: int, change: Complex) -> tuple[str, ...]:

@@ -95,6 +95,7 @@ def solve_faults(
         calm = tuple(replace(f, current=0 * f.current, through=f.through_before) for f in faults)
         earlier = named(earlier, calm)
     shown = named(shown, faults)
+    stars = star_point_states(model, flows[0], stars_undefined)
     return FaultSolution(
         faults=faults,
         state=model.state,
@@ -109,12 +110,12 @@ def solve_faults(
         joined=np.isin(here, here[[int(at[0]) for at in where]]),
         terminals=shown,
         terminals_before=earlier,
-        star_points=star_point_states(model, flows[0], stars_undefined),
+        star_points=stars,
         deltas=delta_currents(model, flows[0]),
         home=home,
         balance=worst,
         notes=(
-            *notes(networks, faults, lost, voltage, before * base_v, loading is not None),
+            *notes(networks, faults, lost, voltage, before * base_v, loading is not None, stars),
             *apart(model, first, change),
             *fed.notes,
             *tie_notes(model),

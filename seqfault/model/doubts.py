@@ -22,6 +22,7 @@ def doubts(model: Model, case: Case) -> tuple[str, ...]:
     return (
         *_small_resistors(model, case, charging),
         *_parallel_neutrals(model, case, earthed),
+        *_idle_star_points(model, earthed),
         *_unearthed(model, earthed, charging),
         *_strong_earth_faults(model),
         *_assumed_zero_sequence(model),
@@ -63,6 +64,37 @@ def _earthing(model: Model) -> Mapping[int, list[tuple[str, complex]]]:
         label = int(model.galvanic[sources.node[k]])
         out.setdefault(label, []).append((sources.names[k], 0j))
     return out
+
+
+def idle_star_points(model: Model) -> dict[int, list[str]]:
+    """Star points by network that are joined to earth and carry nothing all the same.
+
+    Their unit has no other winding for zero sequence and no magnetising branch stated.
+    """
+    out: dict[int, list[str]] = {}
+    stars = model.stars
+    for sets in model.winding_sets:
+        for unit, winding in zip(*np.nonzero((sets.kind == STAR) & (sets.star >= 0)), strict=True):
+            star = int(sets.star[unit, winding])
+            if not _carrying(sets, int(unit)) and np.isfinite(stars.impedance[star]):
+                label = int(model.galvanic[sets.node[unit, winding]])
+                out.setdefault(label, []).append(stars.names[star])
+    return out
+
+
+def _idle_star_points(model: Model, earthed: Mapping[int, list[tuple[str, complex]]]) -> Iterator[str]:
+    live = set(model.galvanic[model.node][model.live].tolist())
+    for label, names in idle_star_points(model).items():
+        if earthed.get(label) or label not in live:
+            continue
+        shown = ", ".join(quoted(name) for name in dict.fromkeys(names))
+        buses = [model.buses[k] for k in np.flatnonzero(model.galvanic[model.node] == label)]
+        yield (
+            f"star point {shown}: it is earthed, but no other winding of its unit lets zero sequence"
+            f" through and no magnetising branch is stated, so earth faults at {quoted(buses[0])} carry"
+            " nothing in this model; a real core may let a large current through, a three-limb one above"
+            " all: state z0_magnetising or zero_tests"
+        )
 
 
 def _phase_voltage(model: Model, label: int) -> float:
@@ -116,9 +148,12 @@ def _unearthed(
     wired = {int(model.galvanic[k]) for k in model.lines.nodes[model.lines.nodes >= 0].tolist()}
     wired |= {int(model.galvanic[k]) for k in sources.node[np.array(motors, bool)].tolist()}
     fed = {int(model.galvanic[k]) for k in sources.node[~np.array(motors, bool)].tolist()}
+    idle = idle_star_points(model)
     for label in dict.fromkeys(model.galvanic[model.node][model.live].tolist()):
         if earthed.get(label) or charging.get(label, 0.0) > 0 or label not in wired - fed:
             continue
+        if label in idle:
+            continue  # told with its star point
         names = [model.buses[k] for k in np.flatnonzero(model.galvanic[model.node] == label)]
         shown = ", ".join(quoted(name) for name in names[:6])
         more = f" and {len(names) - 6} more" if len(names) > 6 else ""

@@ -151,7 +151,31 @@ def _spread(
     rank = np.arange(len(order)) - np.searchsorted(label[order], label[order])
     basis[order, at[label[order]] + rank] = 1.0
     part, full = number[label[group]], basis[group]
+    for p in np.flatnonzero(dimension > 1).tolist():
+        nodes = np.flatnonzero(part == p)
+        full[nodes, : dimension[p]] = _apart(full[nodes, : dimension[p]], weak[nodes])
     return FreeSpace(part, full, dimension, _references(part, full, dimension, weak))
+
+
+def _apart(basis: Floats, weak: Floats) -> Floats:
+    """The free vectors (n, k) of a part told apart by what ties them to earth.
+
+    Where a neutral binds one free potential and capacitances the other, a Fᵀ S F that mixes them loses
+    the capacitances. Elimination with complete pivoting on √|S| F leaves each vector with exact zeros
+    at the ties of those before it.
+    """
+    basis, root = basis.copy(), np.sqrt(weak)[:, None]
+    free = list(range(basis.shape[1]))
+    while len(free) > 1:
+        size = root * np.abs(basis[:, free])
+        node, at = np.unravel_index(int(size.argmax()), size.shape)
+        if size[node, at] == 0:
+            break
+        pivot = free.pop(int(at))
+        for other in free:
+            basis[:, other] -= basis[node, other] / basis[node, pivot] * basis[:, pivot]
+            basis[node, other] = 0
+    return basis
 
 
 def _references(part: Ints, basis: Floats, dimension: Ints, weak: Floats) -> Ints:

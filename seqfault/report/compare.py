@@ -12,6 +12,7 @@ from seqfault.report.facts import after, conditions, impedances, x_over_r
 from seqfault.report.numbers import figures, kilovolt, quiet
 from seqfault.report.tables import (
     AMPERE,
+    MARKED,
     PERCENT,
     SHARE,
     WORDS,
@@ -23,6 +24,7 @@ from seqfault.report.tables import (
     Group,
     Page,
     Row,
+    Sentences,
     Table,
     Title,
     greatest,
@@ -51,6 +53,7 @@ def compare_page(network: Network, comparison: Comparison) -> Page:
             Table(groups, tuple(blocks)),
             impedances(first),
             Facts(tuple(_facts(comparison))),
+            Sentences("", (MARKED,), quiet=True),
             *after(solutions),
         )
     )

@@ -93,7 +93,7 @@ def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
         "earthed_lines": [
             {"element": line.name, "residual": polar(line.residual)} for line in s.earthed_lines
         ],
-        "home": [{"path": path.path, "current": polar(path.current)} for path in s.home],
+        "home": [{"path": path.path, "current": polar(quiet(path.current, s.largest))} for path in s.home],
         "notes": list(s.notes),
         "assumptions": [text for a in s.assumptions for text in a.sentences()],
         "warnings": list(s.warnings),
@@ -227,7 +227,7 @@ def fault_rows(solution: FaultSolution) -> Iterator[Quantity]:
     for line in s.earthed_lines:
         yield row("current of an earthed line", "", line.residual, "A", line.name)
     for path in s.home:
-        yield row("earth current home", "", path.current, "A", path.path)
+        yield row("earth current home", "", quiet(path.current, s.largest), "A", path.path)
 
 
 def _phasor(pair: list[float] | None) -> complex | None:

@@ -122,7 +122,8 @@ def home_table(s: FaultSolution) -> Table:
     total = abs(sent)
     if total < 1e-9 * max(map(abs, earthed)):  # out at one fault, back at the other
         sent, total = 0j, 0.0
-    top = max([total, 1e-9 * s.largest, *(abs(path.current) for path in s.home)])
+    top = max([s.largest, *(abs(path.current) for path in s.home)])
+    total = abs(quiet(total, top))
     worth = total > 0.05 * max(map(abs, earthed))  # else what comes home is all but nothing
     rows = []
     for path in s.home:

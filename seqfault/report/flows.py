@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from seqfault.equations.symmetrical import to_sequence
 from seqfault.faults.solution import FaultSolution, FaultState
 from seqfault.model.elements import Complex
 from seqfault.report.numbers import angle, counted, quiet
@@ -100,20 +101,30 @@ def components(s: FaultSolution) -> Table:
     current = tuple(
         Row("fault" if len(s.faults) == 1 else f.fault.place, _cells(f.current_sequence, top))
         for f in s.faults
+        if f.through is None or f.fault.fallen
     )
     volts = []
     for k, bus in enumerate(s.buses):
         values = s.voltage_sequence[:, k] / 1000
         cells = _cells(values, max(abs(complex(s.before[k])) / 1000, float(np.abs(values).max())))
         volts.append(Row(bus, (("undefined", ""), *cells[1:]) if s.undefined[k] else cells))
-    flows = [
-        Row(f"{element} at {t.bus[k]}", _cells(t.sequence[:, k], top))
-        for k, element in enumerate(t.element)
-    ]
+    flows = []
+    for k, element in enumerate(t.element):
+        inner = f" {t.side[k]}" if t.side[k].startswith("from ") else ""
+        flows.append(Row(f"{element}{inner} at {t.bus[k]}", _cells(t.sequence[:, k], top)))
+    through = tuple(
+        Row(f"through {f.fault.place}", _cells(to_sequence(f.through), top))
+        for f in s.faults
+        if f.through is not None
+    )
     return Table(
         tuple(Group((f"{name} sequence",)) for name in ("zero", "positive", "negative")),
         (
-            Block("Components into the fault: ampere, degrees", (AMPERE, ANGLE), current),
+            Block(
+                "Components into the fault, or through a break: ampere, degrees",
+                (AMPERE, ANGLE),
+                (*current, *through),
+            ),
             Block("Components of the voltages: kilovolt, degrees", (KILOVOLT, ANGLE), tuple(volts)),
             Block("Components into each element: ampere, degrees", (AMPERE, ANGLE), tuple(flows)),
         ),

@@ -48,6 +48,8 @@ PLURALS = {
 DEVICES = {
     "tie": "Ties",
     "capacitor": "Capacitor banks",
+    "load": "Loads",
+    "voltage": "Voltages before a fault, in the loaded state (phase to phase)",
     "converter": "Converters",
     "line": "Lines out of service, earthed",
 }
@@ -58,11 +60,13 @@ def inspect_page(inspection: Inspection) -> Page:
     i = inspection
     buses = sum(len(zone.buses) for zone in i.zones)
     what = f"{counted(buses, 'bus', 'buses')}, {counted(len(i.elements), 'element')}"
+    loaded = any(d.kind == "voltage" for d in i.devices)
+    before = "load flows" if loaded else f"{i.prefault:.2f} of nominal"
     title = Title(
         "",
         i.title or "Case without a title",
         f"{what}, {i.frequency:g} Hz, base {i.base_power / 1e6:g} MVA,"
-        f" before a fault {i.prefault:.2f} of nominal, state: {i.state}",
+        f" before a fault {before}, state: {i.state}",
     )
     parts: list[Part] = [title, _zones(i), Sentences("Buses", _buses(i))]
     if i.elements:

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from seqfault.errors import quoted
 from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
 from seqfault.model.elements import Floats
@@ -16,6 +17,7 @@ from seqfault.report.numbers import kilovolt
 from seqfault.report.tables import (
     AMPERE,
     CAUTION,
+    MARKED,
     Block,
     Cell,
     Column,
@@ -54,7 +56,7 @@ def levels_page(networks: Sequence[Network], states: Sequence[Levels]) -> Page:
     """The page of one state, or of the greatest and least over several."""
     model = networks[0].model
     several = len(states) > 1
-    conditions = f"bolted faults at every bus, before them {_prefault(networks)} of nominal"
+    conditions = f"bolted faults at every bus, before them {_prefault(networks)}"
     conditions += f", {len(states)} states" if several else f", state: {model.state}"
     if model.machine != "subtransient":
         conditions += f", {model.machine} reactances"
@@ -65,11 +67,28 @@ def levels_page(networks: Sequence[Network], states: Sequence[Levels]) -> Page:
         (
             title,
             *(_ranges(states) if several else (_one(states[0]),)),
+            *(() if several else (Sentences("", (MARKED,), quiet=True),)),
             Sentences("States", key),
+            Sentences("Note", once(_without_earth_current(networks, states))),
             Sentences("Assumed", assumed),
             Sentences("", (CAUTION,), quiet=True),
         )
     )
+
+
+def _without_earth_current(networks: Sequence[Network], states: Sequence[Levels]) -> Iterator[str]:
+    """Why earth faults carry nothing, by state."""
+    several = len(states) > 1
+    for network, each in zip(networks, states, strict=True):
+        none = [bus for k, bus in enumerate(each.buses) if each.live[k] and each.k1[k] == 0]
+        if not none:
+            continue
+        shown = ", ".join(map(quoted, none[:6])) + (f" and {len(none) - 6} more" if len(none) > 6 else "")
+        state = f"state {network.model.state}: " if several else ""
+        yield (
+            f"{state}no earth current at {shown}: nothing in the case joins them to earth, or only a star"
+            " point that passes none; compare tells which"
+        )
 
 
 def _together(assumptions: Iterable[Assumption]) -> Iterator[Assumption]:
@@ -82,9 +101,13 @@ def _together(assumptions: Iterable[Assumption]) -> Iterator[Assumption]:
 
 
 def _prefault(networks: Sequence[Network]) -> str:
-    voltages = [abs(complex(n.case.prefault.voltage.value)) for n in networks]
+    voltages = [abs(complex(n.case.prefault.voltage.value)) for n in networks if n.loading is None]
+    loaded = "load flows"
+    if not voltages:
+        return loaded
     low, high = min(voltages), max(voltages)
-    return f"{low:.2f}" if low == high else f"{low:.2f} to {high:.2f}"
+    flat = f"{low:.2f} of nominal" if low == high else f"{low:.2f} to {high:.2f} of nominal"
+    return flat if len(voltages) == len(networks) else f"{flat}, or {loaded}"
 
 
 def _groups() -> tuple[Group, ...]:
@@ -142,7 +165,7 @@ def _ranges(states: Sequence[Levels]) -> tuple[Table, Table]:
                     if not math.isfinite(value):
                         cells.append(("dead" if name == "k3" else "-", ""))
                     elif name == "k1_over_k3":
-                        cells.append((_text(name, value),))
+                        cells.append((_text(name, value), f"({number[state]})"))
                     else:
                         cells.append((value, f"({number[state]})"))
                 rows.append(Row(bus, tuple(cells)))

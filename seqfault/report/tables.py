@@ -131,6 +131,7 @@ def once(items: Iterable[str]) -> tuple[str, ...]:
     return tuple(dict.fromkeys(items))
 
 
+MARKED = "> stands before the greatest of its row."
 CAUTION = (
     "Steady-state currents of a linear model of the data entered; nothing here is a setting ready"
     " to apply. Settings are checked and signed by a licensed engineer; local codes, the utility's"

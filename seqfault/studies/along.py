@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import difflib
 from collections.abc import Sequence
 
 import msgspec
 import numpy as np
 
+from seqfault.case.findings import one_of
 from seqfault.case.records import Line
+from seqfault.case.wording import listed
 from seqfault.errors import RequestError, quoted
 from seqfault.faults.kinds import fault_at, fault_kind
 from seqfault.faults.network import Network
@@ -97,8 +100,14 @@ def along(
 def _line(network: Network, line: str) -> Line:
     record = network.case.lines.get(line)
     if record is None:
-        network.place(f"{line}@50%")  # says what there is
-        raise RequestError(f"{quoted(line)} is no line")
+        others = {name: table for table, name, _ in network.case.records()}
+        if line in others:
+            raise RequestError(f"line {quoted(line)}: this is {one_of(others[line])}, not a line")
+        near = difflib.get_close_matches(line, network.case.lines, n=1, cutoff=0.5)
+        known = (
+            f"did you mean {quoted(near[0])}?" if near else f"there are {listed(network.case.lines, 'and')}"
+        )
+        raise RequestError(f"line {quoted(line)}: no line has this name; {known}")
     network.place(f"{line}@50%")
     return record
 

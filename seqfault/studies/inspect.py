@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 
@@ -194,6 +194,8 @@ def _elements(model: Model) -> Iterator[Element]:
             yield Element(name, sets.kind_of_record, at, z, int(sets.count[k]), ratio)
     sources = model.sources
     for k, name in enumerate(sources.names):
+        if sources.kinds[k] == "load":
+            continue
         z = _inverse(sources.admittance[:, k])
         yield Element(name, sources.kinds[k], (buses[sources.bus[k]],), z, 1, 1.0)
 
@@ -240,6 +242,20 @@ def _devices(case: Case, model: Model) -> Iterator[Device]:
         size = bank.power or bank.capacitance
         if not bank.out and size is not None:
             yield Device(name, "capacitor", f"at {bank.bus}, {size.text}, {bank.connection}")
+    for name, load in case.loads.items():
+        if load.out or load.bus not in model.index:
+            continue
+        factor = "" if load.power_factor is None else f" at power factor {_number(load.power_factor):g}"
+        how = load.connection or "star, assumed"
+        acts = "" if model.operating is not None else "; left out of the flat state"
+        yield Device(name, "load", f"at {load.bus}, {load.power.text}{factor}, {how}{acts}")
+    if model.operating is not None:
+        for name, v, nominal in zip(
+            model.buses, model.before.tolist(), model.nominal.tolist(), strict=True
+        ):
+            volts = f"{abs(v) * nominal / 1000:.4g} kV, {abs(v):.4f} of nominal"
+            turn = f", {np.degrees(np.angle(v)):.1f} degrees in its own clock" if v else ""
+            yield Device(name, "voltage", f"{volts}{turn}")
     converters = model.converters
     for k, name in enumerate(converters.names):
         bus = int(converters.bus[k])
@@ -252,6 +268,10 @@ def _devices(case: Case, model: Model) -> Iterator[Device]:
         )
     for k in np.flatnonzero(model.lines.earthed).tolist():
         yield Device(model.lines.names[k], "line", "out of service, earthed at both ends")
+
+
+def _number(value: Any) -> float:
+    return float(getattr(value, "value", value))
 
 
 def _inverse(y: Complex) -> Complex:

@@ -172,13 +172,14 @@ def _standing(neutral: NeutralStates, state: NeutralState, duty: Duty) -> Standi
     faults = state.faults(np.array(ohms))
     one, two = (state.network.fault(neutral.place, k) for k in ("line-ground", "line-line-ground"))
     _agree(faults, (one, two))
+    whole = state.whole.model
     return Standing(
         state=state,
         ohms=ohms,
         let_through=(neutral.phase_voltage / abs(ohms[0]), neutral.phase_voltage / abs(ohms[1])),
         faults=faults,
         solutions=(one, two),
-        charging=charging_currents(state.network.model, metal_networks(state.network.model, state.star)),
+        charging=charging_currents(whole, metal_networks(whole, state.star)),
         grounding=earthing_class(faults, one.impedance, state.ohms, record.kind == ARC_SUPPRESSION),
         duties=earthing_duties(state.network, state.star, (one, two)),
     )

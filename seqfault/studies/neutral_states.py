@@ -21,9 +21,13 @@ NOT_COUNTED = "; it does not count"
 
 
 class NeutralState(msgspec.Struct, frozen=True, eq=False):
-    """The neutral in one state: ``ohms`` of the device as it stands, and the closed forms of it."""
+    """The neutral in one state: ``ohms`` of the device as it stands, and the closed forms of it.
+
+    ``network`` has a bus at the faulted place, ``whole`` is the case as it is; ``relays`` what relays see.
+    """
 
     network: Network
+    whole: Network
     star: int
     ohms: complex
     ports: NeutralPorts
@@ -85,7 +89,7 @@ def neutral_states(
     ``place`` is the bus of its star point unless stated; ``device``, what is tried in its place, a
     ``resistor`` or a ``reactor`` (unless stated a reactor where the record is one); ``relays`` those whose
     currents are told. Raises ``RequestError``
-    where the neutral or the place is not there.
+    where the neutral or the place (a bus, or a point along a line) is not there.
     """
     record = _record(networks, name)
     left_out, kept = [], []
@@ -104,13 +108,15 @@ def neutral_states(
         raise RequestError(f"{why}; --scenario picks another state")
     assert place is not None
     states = []
-    for network, star in kept:
+    for whole, star in kept:
+        network, bus = _at(whole, place)
         model = network.model
         zero = open_zero_sequence(model, (star,))
-        ports = neutral_ports(network.sequences, zero, model.index[place], star)
-        seeing = [forms for view in relays if (forms := relay_forms(zero, ports, view)) is not None]
+        ports = neutral_ports(network.sequences, zero, model.index[bus], star)
+        forms = [relay_forms(zero, ports, view, network.labels) for view in relays]
+        seeing = [form for form in forms if form is not None]
         ohms = complex(model.stars.impedance[star])
-        states.append(NeutralState(network, star, ohms, ports, tuple(seeing)))
+        states.append(NeutralState(network, whole, star, ohms, ports, tuple(seeing)))
     first = states[0]
     reactor = first.ohms.real == 0 if device is None else device == "reactor"
     return NeutralStates(
@@ -125,12 +131,24 @@ def neutral_states(
     )
 
 
+def _at(network: Network, place: str) -> tuple[Network, str]:
+    """The network with a bus at ``place``, and that bus."""
+    read = network.place(place)
+    if read.element and read.fraction is None:
+        raise RequestError(
+            f"place {quoted(place)}: an earth fault at a terminal draws what one at its bus does; name bus"
+            f" {quoted(read.bus)}"
+        )
+    located = network.located([place])
+    return located, located.bus_of(read)
+
+
 def without(state: NeutralState, other: int) -> NeutralState:
     """The same state with the device of star point ``other`` lost."""
     model = state.network.model
     zero = open_zero_sequence(model, (state.star, other))
     ports = neutral_ports(state.network.sequences, zero, state.ports.place, state.star)
-    return NeutralState(state.network, state.star, state.ohms, ports)
+    return NeutralState(state.network, state.whole, state.star, state.ohms, ports)
 
 
 def metal_networks(model: Model, star: int) -> set[int]:
@@ -165,10 +183,18 @@ def _why_not(network: Network, name: str) -> str | None:
 def _why_not_at(network: Network, place: str, alone: bool) -> str | None:
     if alone:
         network.check_place(place)
-    if place not in network.model.index:
+    if "@" in place:
+        try:
+            read = network.place(place)
+        except RequestError as error:
+            return str(error)
+        bus = read.bus or network.case.lines[read.element].from_
+    elif place not in network.model.index:
         if place not in network.case.buses:
             network.check_place(place)
         return f"the place {quoted(place)} is out of service"
-    if not network.model.live[network.model.index[place]]:
+    else:
+        bus = place
+    if not network.model.live[network.model.index[bus]]:
         return f"the place {quoted(place)} is dead: no infeed or generator is connected"
     return None

@@ -8,7 +8,7 @@ import math
 import pytest
 
 from seqfault import Network
-from seqfault.cli.shells import KINDS
+from seqfault.cli.options import KINDS
 from seqfault.report.numbers import figures
 from tests.cli.console import PLANT, Run, Write, unearthed
 

@@ -150,3 +150,40 @@ def test_what_cannot_be_asked(run: Run, arguments: tuple[str, ...], words: str) 
     assert (done.code, done.out) == (2, "")
     assert words in done.err
     assert "Traceback" not in done.err
+
+
+RELAYS = """
+[current_transformers.CB]
+ratio = "100/1 A"
+connection = "core-balance"
+
+[relays.R1]
+at = "F1@main"
+measures = "core-balance"
+ct = "CB"
+pickup = "20 A"
+curve = "definite"
+delay = "0.3 s"
+"""
+
+
+def test_what_relays_see_and_ohms_that_make_them_see(run: Run, tmp_path: Path) -> None:
+    path = tmp_path / "relays.toml"
+    path.write_text(PLANT.read_text(encoding="utf-8") + RELAYS)
+    far = ("--at", "F1@90%")
+    page = run("neutral", path, "NER", *far, "--ohms", "2..200", "--see", "R1=10", "--width", 80)
+    assert page.code == 0
+    assert "What relays see of faults at F1@90%" in page.flat
+    assert "What keeps R1 at 10 times its pickup or more" in page.flat
+    tree = run(
+        "neutral", path, "NER", *far, "--target", "100 A", "--see", "R1=10", "--format", "json"
+    ).tree["target"]
+    assert (tree["met"], tree["binds"], tree["see"]) == (False, "relay R1", {"R1": 10})
+    assert run("neutral", path, "NER", *far, "--target", "100 A", "--see", "R1=10").code == 1
+    for wrong, words in (("R1", "as in R1=2"), ("R1=x", "as in R1=2"), ("R2=2", "did you mean")):
+        refused = run("neutral", path, "NER", "--see", wrong)
+        assert refused.code == 2
+        assert words in refused.err
+    impossible = run("neutral", path, "NER", *far, "--see", "R1=100000")
+    assert impossible.code == 3
+    assert "the most is" in impossible.err

@@ -29,7 +29,8 @@ RELAYED = changed(
                 "curve": "definite", "delay": "0.3 s",
             },
             "RP": {
-                "at": "C1@main", "measures": "phase", "pickup": "400 A", "curve": "definite", "delay": "1 s",
+                "at": "C1@main", "measures": "phase", "pickup": "400 A", "curve": "definite",
+                "delay": "1 s",
             },
         },
     ),

@@ -206,3 +206,24 @@ def test_names_that_hold_percent_signs_and_colons_are_places_like_others():
     tree["lines"] = {"50% of: it": tree["lines"]["C1"]}
     solution = network(tree).fault("50% of: it@50%")
     assert abs(solution.residual) > 100
+
+
+COIL: tuple[tuple[str, Any], ...] = (
+    *LOAD[:1],
+    ("loads", {"D1": {"bus": "low", "power": "300 kW", "power_factor": 1, "connection": "delta"}}),
+    ("neutrals.NER", {"kind": "arc-suppression", "detuning": "+2 %", "loss": "2 %"}),
+    ("lines.C2", {**PLANT["lines"]["C1"], "length": "5 km", "open": ["far"]}),
+)
+
+
+def test_an_open_phase_that_drives_a_coil_is_told_with_its_voltage():
+    solution = network(PLANT, *COIL).fault("C1@main", "open-one")
+    (star,) = [p for p in solution.star_points if p.name == "NER"]
+    share = abs(star.voltage) / (11e3 / np.sqrt(3))
+    assert share > 3
+    assert any(
+        "resonance" in note and f"{share:.2f} of the phase voltage" in note for note in solution.notes
+    )
+    assert any("rises to" in note for note in solution.notes)
+    calm = network(PLANT, *LOAD).fault("C1@main", "open-one")
+    assert not any("resonance" in note for note in calm.notes)

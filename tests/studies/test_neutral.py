@@ -13,6 +13,7 @@ from seqfault.errors import RequestError
 from seqfault.faults.network import Network
 from seqfault.faults.neutral_ports import KINDS
 from seqfault.studies.neutral import NeutralReport, Standing, study_neutral
+from seqfault.studies.neutral_relays import relay_views
 from seqfault.studies.neutral_states import OPEN
 from seqfault.studies.neutral_sweep import spaced, sweep
 from tests.faults.small import PLANT, changed, network
@@ -257,3 +258,33 @@ def test_a_dead_place_is_told() -> None:
     net = network(PLANT, ("buses.spare", "11 kV"))
     with pytest.raises(RequestError, match='place "spare" is dead'):
         study_neutral([net], "NER", "spare")
+
+
+def test_a_place_along_a_line_and_its_relays() -> None:
+    tree = changed(
+        PLANT,
+        ("current_transformers", {"CB": {"ratio": "100/1 A", "connection": "core-balance"}}),
+        (
+            "relays",
+            {
+                "R1": {
+                    "at": "C1@main", "measures": "core-balance", "ct": "CB", "pickup": "20 A",
+                    "curve": "definite", "delay": "0.3 s",
+                }
+            },
+        ),
+    )  # fmt: skip
+    case = case_from_tree(tree)
+    network = Network(case)
+    report = study_neutral([network], "NER", "C1@40%", relays=relay_views(case)[0])
+    standing = report.standing[0]
+    full = network.fault("C1@40%", "line-ground")
+    assert abs(standing.faults.earth[0, 0]) == pytest.approx(abs(full.residual), rel=1e-9)
+    assert [share.name for share in standing.charging.shares] == ["C1"]
+    t = full.terminals
+    k = next(k for k in range(len(t.element)) if (t.element[k], t.bus[k]) == ("C1", "main"))
+    two = network.fault("C1@40%", "line-line-ground").terminals
+    least = min(abs(t.residual[k]), abs(two.residual[k]))
+    assert standing.state.seen("R1", np.array([standing.ohms[0]]))[0] == pytest.approx(least, rel=1e-9)
+    with pytest.raises(RequestError, match="name bus"):
+        study_neutral([network], "NER", "T1@main")
