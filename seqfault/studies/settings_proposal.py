@@ -11,6 +11,7 @@ import msgspec
 from seqfault.case.quantities import Quantity
 from seqfault.errors import RequestError, quoted
 from seqfault.studies.settings import Settings, judge
+from seqfault.studies.settings_caps import Cap, caps
 from seqfault.studies.settings_grades import pairs
 from seqfault.studies.settings_search import (
     Conflict,
@@ -86,15 +87,23 @@ def propose_settings(study: States, keep: Sequence[str] = ()) -> Proposal:
     for _ in range(ROUNDS):
         found, whole, reason = search(task)
         if found is None:
-            return msgspec.structs.replace(nothing, contradictions=(reason,), whole=whole)
+            lowered = [w for w in task.windows.values() if w.greatest < ranges[w.relay].greatest]
+            more = tuple(
+                f"{w.relay}: no more than {w.greatest:.4g} {study.relays[w.relay].unit},"
+                f" since {w.why_greatest}"
+                for w in lowered
+            )
+            return msgspec.structs.replace(nothing, contradictions=(reason, *more), whole=whole)
         settled = resettled(study, found.settings)
-        if not list(cuts(settled, order, task)):
+        if list(cuts(settled, order, task)):
+            continue
+        proof = judge(settled)
+        if not _lowered(task, list(caps(settled, proof, kept))):
             break
     else:
         return msgspec.structs.replace(
-            nothing, contradictions=(f"after {ROUNDS} rounds the margins still do not all hold",)
+            nothing, contradictions=(f"after {ROUNDS} rounds the conditions still do not all hold",)
         )
-    proof = judge(settled)
     return Proposal(
         rows=tuple(_rows(study, task, found, proof)),
         total=found.total,
@@ -105,6 +114,23 @@ def propose_settings(study: States, keep: Sequence[str] = ()) -> Proposal:
         study=settled,
         proof=proof,
     )
+
+
+def _lowered(task: Task, wanted: Sequence[Cap]) -> bool:
+    """Narrow the windows of ``task`` to what is ``wanted``; whether any of them became narrower.
+
+    A cap that leaves a relay no pickup is not taken: the proof tells what is then not met.
+    """
+    narrower = False
+    for cap in wanted:
+        window = task.windows[cap.relay]
+        pickups = tuple(p for p in window.pickups if p <= cap.level * (1 - 1e-9))
+        if pickups and len(pickups) < len(window.pickups):
+            task.windows[cap.relay] = msgspec.structs.replace(
+                window, pickups=pickups, greatest=cap.level, why_greatest=f"above it {cap.why}"
+            )
+            narrower = True
+    return narrower
 
 
 def _check(study: States, keep: frozenset[str]) -> None:

@@ -65,24 +65,27 @@ class Found(msgspec.Struct, frozen=True):
 
 
 class Conflict(Exception):
-    """Why some pickups have no times; ``late`` where the pickups went together and times did not."""
+    """Why some pickups have no times.
 
-    def __init__(self, text: str, late: bool = True) -> None:
+    ``gap`` says how far two pickups are from going together, as a factor; 0 where only times do not.
+    """
+
+    def __init__(self, text: str, gap: float = 0.0) -> None:
         super().__init__(text)
-        self.late = late
+        self.gap = gap
 
 
 class Reason(msgspec.Struct, frozen=True):
-    """The conflict told where nothing is found: the first of those that came furthest."""
+    """The conflict told where nothing is found: the one that came nearest."""
 
     text: str = ""
-    late: bool = False
+    gap: float = math.inf
 
     def beside(self, conflict: Conflict) -> Reason:
         """This reason, or that of ``conflict``."""
-        if self.text and (self.late or not conflict.late):
+        if self.text and self.gap <= conflict.gap:
             return self
-        return Reason(str(conflict), conflict.late)
+        return Reason(str(conflict), conflict.gap)
 
 
 def task_of(
@@ -90,7 +93,7 @@ def task_of(
 ) -> Task:
     """The task, with the points of a coarse sweep."""
     relays = {name: relay for name, relay in study.relays.items() if name in windows}
-    task = Task(relays, windows, keep, study.states[0].protection.demands, {}, {}, {})
+    task = Task(relays, dict(windows), keep, study.states[0].protection.demands, {}, {}, {})
     for backup, first in pairs:
         if backup not in windows or first not in windows:
             continue
@@ -262,26 +265,33 @@ def _pickups(task: Task, given: Mapping[str, float]) -> dict[str, float]:
     chosen: dict[str, float] = {}
     for name, window in task.windows.items():
         if not window.pickups:
-            raise Conflict(f"no pickup of {name} is both above and below what it must be", late=False)
+            raise Conflict(f"no pickup of {name} is both above and below what it must be", math.inf)
         chosen[name] = given.get(name, window.pickups[-1])
-    for _ in range(len(chosen) + 1):
+    lowered = True
+    while lowered:
         lowered = False
         for (backup, first), ratio in task.ratio.items():
-            if chosen[backup] >= ratio * chosen[first] * (1 - 1e-12):
+            if chosen[backup] >= ratio * chosen[first] * (1 - 1e-12) or first in given:
                 continue
-            window = task.windows[first]
-            fitting = [p for p in window.pickups if p * ratio <= chosen[backup] * (1 + 1e-12)]
-            if first in given or not fitting or len(window.pickups) == 1:
-                raise Conflict(
-                    f"{backup} at {chosen[backup]:.4g} {task.relays[backup].unit} acts on faults that"
-                    f" {first} at {chosen[first]:.4g} {task.relays[first].unit} does not see: its pickup"
-                    f" would have to be no less than {ratio:.4g} times that of {first}",
-                    late=False,
-                )
-            chosen[first] = fitting[-1]
-            lowered = True
-        if not lowered:
-            break
+            pickups = task.windows[first].pickups
+            fitting = [p for p in pickups if p * ratio <= chosen[backup] * (1 + 1e-12)]
+            lower = fitting[-1] if fitting else pickups[0]
+            if lower < chosen[first]:
+                chosen[first] = lower
+                lowered = True
+    apart = [
+        (ratio * chosen[first] / chosen[backup], backup, first, ratio)
+        for (backup, first), ratio in task.ratio.items()
+        if chosen[backup] < ratio * chosen[first] * (1 - 1e-12)
+    ]
+    if apart:
+        gap, backup, first, ratio = max(apart)
+        raise Conflict(
+            f"{backup} at {chosen[backup]:.4g} {task.relays[backup].unit} acts on faults that {first} at"
+            f" {chosen[first]:.4g} {task.relays[first].unit} does not see: its pickup would have to be no"
+            f" less than {ratio:.4g} times that of {first}",
+            gap,
+        )
     return chosen
 
 
@@ -317,11 +327,10 @@ def _needed(
         for each, want in zip(points, wanted, strict=True):
             late = _times(relay, Setting(pickup, time), each.machines, each.backup)
             acts = np.isfinite(late)
-            if np.isinf(want[acts]).any():
-                raise Conflict(f"{backup} acts on faults that {first} does not see", late=False)
             floor = np.maximum(late[acts], 1e-6)
             most = max(most, float((want[acts] / floor).max(initial=0.0)))
-        return most
+        # Where the first rests a longer time may let the backup rest too, with a later reactance.
+        return 2.0 if math.isinf(most) else most
 
     start = time
     for _ in range(200):
@@ -332,7 +341,8 @@ def _needed(
             raise Conflict(f"{backup} as it stands does not wait long enough for {first}")
         further = scale.at_least(max(time * min(short, 8.0), time + 0.5 * scale.step))
         if math.isnan(further) or further > 1e4:
-            raise Conflict(f"{backup} can be set to no time that is long enough behind {first}")
+            fast = ", its fast stage counted" if relay.fast is not None else ""
+            raise Conflict(f"{backup} can be set to no time that is long enough behind {first}{fast}")
         time = further
     else:
         raise Conflict(f"{backup}: its fast stage or minimum time is too short behind {first}")

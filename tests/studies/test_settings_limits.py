@@ -17,7 +17,7 @@ from seqfault.studies.settings import study_settings
 from seqfault.studies.settings_proposal import propose_settings
 from seqfault.studies.settings_sheet import setting_sheet
 from seqfault.studies.settings_states import breakers_of, study_states, zone_of
-from tests.studies.setting_plants import Referee, case_of, measured
+from tests.studies.setting_plants import RING, Referee, case_of, measured
 from tests.studies.test_settings_proposal import radial
 
 
@@ -266,3 +266,76 @@ backs_up = ["N-earth"]
     assert proposal.proof is not None
     for grade in proposal.proof.grades:
         assert grade.margin >= grade.required - 1e-9
+
+
+GENERATOR = """
+[generators.G]
+bus = "main"
+rating = "4 MVA"
+voltage = "11 kV"
+subtransient = "16 %"
+transient = "24 %"
+synchronous = "190 %"
+x2 = "18 %"
+x0 = "7 %"
+resistance = "1 %"
+neutral = "NER-G"
+
+[neutrals.NER-G]
+resistance = "60 ohm"
+duration = "10 s"
+
+[relays.G-earth]
+at = "NER-G"
+measures = "neutral"
+pickup = "20 A"
+curve = "IEC very inverse"
+multiplier = 0.5
+protects = ["main", "G", "T1.lv"]
+backs_up = ["N-earth", "S-earth"]
+
+[demands]
+"""
+ALONE = '\n[scenarios.island]\nout = ["utility", "grid", "T1"]\n'
+
+
+def generating(*changes: tuple[str, str]) -> Case:
+    wider = ('protects = ["main", "T1.lv"]', 'protects = ["main", "T1.lv", "G"]')
+    last = 'three_phase = "200 MVA"\n'
+    return radial(("[demands]\n", GENERATOR), wider, (last, last + ALONE), *changes)
+
+
+def test_a_pickup_comes_down_until_some_relay_sees_every_place() -> None:
+    low = ('step = "0.1 In", least = "0.1 In", greatest = "1 In"', 'step = "0.01 In", least = "0.04 In"')
+    case = generating(low, ('length = "3.2 km"', 'length = "1.0 km"'))
+    proposal = propose_settings(study_states(case, 2))
+    assert proposal.met, proposal.contradictions
+    row = next(row for row in proposal.rows if row.relay == "G-earth")
+    assert 4 < float(row.setting.pickup or 0) < 5.2
+    assert proposal.proof is not None
+    assert not any(place.guarded for place in proposal.proof.blind_places)
+
+
+def test_where_it_cannot_come_down_both_conditions_are_told() -> None:
+    proposal = propose_settings(study_states(generating(), 2))
+    assert proposal.proof is None
+    assert "acts on faults that S-earth at 10 A does not see" in proposal.contradictions[0]
+    assert "G-earth: no more than" in proposal.contradictions[1]
+    assert "no relay would see a line-line-ground fault at" in proposal.contradictions[1]
+
+
+def test_a_core_beyond_its_class_is_not_proven() -> None:
+    direction = (
+        'direction = "forward"\ncharacteristic_angle = "-15 deg"\npolarisation = "residual-voltage"\n'
+    )
+    case = case_of(
+        RING,
+        (direction, ""),
+        ('vt = "11 kV/110 V"\npickup = "20 A"', 'pickup = "20 A"'),
+        ('connected_burden = "2.5 ohm"', 'connected_burden = "90 ohm"'),
+    )
+    _, found = study_settings(case, points=2)
+    row = next(r for r in found.still if r.relay == "E-main")
+    assert math.isinf(row.error)
+    assert row.verdict == "not proven"
+    assert "no bound is known" in row.reasons[0]
