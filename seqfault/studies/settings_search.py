@@ -22,7 +22,7 @@ from seqfault.studies.demands import Demanded
 from seqfault.studies.relays import Relay, operate_times
 from seqfault.studies.settings_grades import Pair, pair_of, required_margin, worst_of
 from seqfault.studies.settings_states import States, breakers_of, inside, zone_of
-from seqfault.studies.settings_view import own_time
+from seqfault.studies.settings_view import ACTS_WITHIN, own_time
 from seqfault.studies.settings_windows import Setting, Window, with_setting
 
 EXHAUSTIVE = 4000
@@ -44,7 +44,8 @@ class Task(msgspec.Struct, eq=False):
     """All that the search needs of a study.
 
     ``points`` of each pair (backup, first), ``ratio`` the most that the backup sees over the first where
-    the two are in proportion; ``least`` what each relay must see at least, by state.
+    the two are in proportion; ``least`` what each relay must see at least, by state, and ``must`` all that
+    it must see (m, k).
     """
 
     relays: dict[str, Relay]
@@ -54,6 +55,7 @@ class Task(msgspec.Struct, eq=False):
     points: dict[tuple[str, str], list[Points]]
     ratio: dict[tuple[str, str], float]
     least: dict[str, list[tuple[tuple[str, ...], Floats]]]
+    must: dict[str, list[tuple[tuple[str, ...], Floats]]]
 
 
 class Found(msgspec.Struct, frozen=True):
@@ -93,7 +95,7 @@ def task_of(
 ) -> Task:
     """The task, with the points of a coarse sweep."""
     relays = {name: relay for name, relay in study.relays.items() if name in windows}
-    task = Task(relays, dict(windows), keep, study.states[0].protection.demands, {}, {}, {})
+    task = Task(relays, dict(windows), keep, study.states[0].protection.demands, {}, {}, {}, {})
     for backup, first in pairs:
         if backup not in windows or first not in windows:
             continue
@@ -112,12 +114,15 @@ def task_of(
     for name in relays:
         zone_ = zone_of(name, study.relays)
         owners = zone_.protects or zone_.backs_up
-        task.least[name] = []
+        task.least[name], task.must[name] = [], []
         for state in study.states:
             view = state.views.get(name)
             if view is None or state.name not in task.demands.least:
                 continue
-            which = inside(view, owners, breakers_of(name, study.relays))
+            ends = breakers_of(name, study.relays)
+            whole = view.only(inside(view, zone_.whole, ends)).sizes(ohms)
+            task.must[name].append((view.machines, whole.reshape(len(view.machines), -1)))
+            which = inside(view, owners, ends)
             if which.any():
                 sizes = view.only(which).sizes(ohms).reshape(len(view.machines), -1)
                 at = sorted({int(sizes[0].argmin()), int(sizes[-1].argmin())})
@@ -178,10 +183,10 @@ def search(task: Task) -> tuple[Found | None, bool, str]:
             own = {n: each[round(start * (len(each) - 1))] for n, each in tries.items()}
             best, reason = _descend(task, own, tries, best, reason)
     if best is not None:
-        near = {name: task.windows[name].pickups for name in timed}
-        whole = count <= EXHAUSTIVE and all(len(tries[n]) == len(near[n]) for n in timed)
+        whole = count <= EXHAUSTIVE and all(len(tries[n]) == len(task.windows[n].pickups) for n in timed)
         if not whole:
             own = {n: float(best.settings[n].pickup or 0) for n in timed}
+            near = {n: task.windows[n].near(pickup) for n, pickup in own.items()}
             best, reason = _descend(task, own, near, best, reason)
         return best, whole, ""
     return None, count <= EXHAUSTIVE, reason.text
@@ -236,7 +241,27 @@ def times_for(task: Task, pickups: Mapping[str, float]) -> Found:
 
     Raises ``Conflict`` where there are none.
     """
-    chosen = _pickups(task, pickups)
+    limits: dict[str, float] = {}
+    while True:  # it ends: each round lowers a pickup of a scale
+        settings, binds = _least_times(task, _pickups(task, pickups, limits))
+        slow = {
+            name: limit
+            for name, setting in settings.items()
+            if name not in pickups
+            and (limit := _seen_at_delay(task, name, setting)) < float(setting.pickup or 0) * (1 - _SLACK)
+            and limit < limits.get(name, math.inf)
+        }
+        if not slow:
+            break
+        limits |= slow
+    for name, setting in settings.items():
+        _sees_in_time(task, name, setting)
+    total = sum(longest(task, name, settings[name]) for name in task.relays)
+    return Found(settings, total, binds)
+
+
+def _least_times(task: Task, chosen: Mapping[str, float]) -> tuple[dict[str, Setting], dict[str, str]]:
+    """The least times that grade with the pickups ``chosen``, and what set each."""
     settings: dict[str, Setting] = {}
     binds: dict[str, str] = {}
     for name, window in task.windows.items():
@@ -257,16 +282,29 @@ def times_for(task: Task, pickups: Mapping[str, float]) -> Found:
                 settings[backup] = Setting(chosen[backup], needed)
                 binds[backup] = f"it waits for {first}"
                 raised = True
-    total = sum(longest(task, name, settings[name]) for name in task.relays)
-    return Found(settings, total, binds)
+    return settings, binds
 
 
-def _pickups(task: Task, given: Mapping[str, float]) -> dict[str, float]:
+def _seen_at_delay(task: Task, name: str, setting: Setting) -> float:
+    """The greatest pickup (A or V) at which a definite relay sees all it must with its delay."""
+    relay, delay = task.relays[name], float(setting.time or 0)
+    if relay.curve != "definite" or name in task.keep:
+        return math.inf
+    least = math.inf
+    for machines, sizes in task.must[name]:
+        within = [m for m, each in enumerate(machines[:-1]) if delay <= ACTS_WITHIN[each]]
+        least = min(least, float(sizes[within[0] if within else -1].min(initial=math.inf)))
+    return least / task.demands.see
+
+
+def _pickups(task: Task, given: Mapping[str, float], limits: Mapping[str, float]) -> dict[str, float]:
     chosen: dict[str, float] = {}
     for name, window in task.windows.items():
         if not window.pickups:
             raise Conflict(f"no pickup of {name} is both above and below what it must be", math.inf)
-        chosen[name] = given.get(name, window.pickups[-1])
+        limit = limits.get(name, math.inf)
+        under = [p for p in window.pickups if p <= limit]
+        chosen[name] = given.get(name, under[-1] if under else window.pickups[0])
     lowered = True
     while lowered:
         lowered = False
@@ -298,6 +336,23 @@ def _pickups(task: Task, given: Mapping[str, float]) -> dict[str, float]:
 def _times(relay: Relay, setting: Setting, machines: tuple[str, ...], sizes: Floats) -> Floats:
     own = with_setting(relay, setting)
     return operate_times(own, own_time(own, machines, sizes)[0])
+
+
+def _sees_in_time(task: Task, name: str, setting: Setting) -> None:
+    """Raise ``Conflict`` where a relay is so slow that the machines no longer feed what it must see."""
+    own = with_setting(task.relays[name], setting)
+    wanted = task.demands.see * float(setting.pickup or 0)
+    for machines, sizes in task.must[name]:
+        if len(machines) == 1 or not sizes.size or name in task.keep:
+            continue
+        seen, which = own_time(own, machines, sizes)
+        k = int(seen.argmin())
+        if seen[k] < wanted * (1 - _SLACK):
+            raise Conflict(
+                f"{name} at {setting.pickup:.4g} {own.unit} is so slow that with the {machines[which[k]]}"
+                f" reactance of the machines it sees {seen[k]:.4g} {own.unit}, not {wanted:.4g}",
+                wanted / seen[k] if seen[k] else math.inf,
+            )
 
 
 def longest(task: Task, name: str, setting: Setting) -> float:

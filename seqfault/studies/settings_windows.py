@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping
 
 import msgspec
+import numpy as np
 from msgspec.structs import replace
 
 from seqfault.case.quantities import Quantity
@@ -13,12 +14,16 @@ from seqfault.case.relay_sites import Places
 from seqfault.errors import quoted
 from seqfault.studies.relay_settings import Scale, Stage, stage_of
 from seqfault.studies.relays import Relay
-from seqfault.studies.settings_sees import sees
-from seqfault.studies.settings_states import State, States
+from seqfault.studies.settings_states import State, States, breakers_of, inside, zone_of
 from seqfault.studies.settings_still import keeps_still
+from seqfault.studies.settings_verdicts import Situation, situation
 
 MOST = 24
 """Pickups tried a relay; of a finer scale as many, evenly spread, and then the neighbours of the best."""
+
+
+FINEST = 20000
+"""Settings of a scale that are looked at; a finer one is cut off there."""
 
 
 class Setting(msgspec.Struct, frozen=True):
@@ -49,6 +54,11 @@ class Window(msgspec.Struct, frozen=True):
             return self.pickups
         last = len(self.pickups) - 1
         return tuple(self.pickups[round(k * last / (MOST - 1))] for k in range(MOST))
+
+    def near(self, pickup: float) -> tuple[float, ...]:
+        """The pickups between those tried on either side of ``pickup``."""
+        at, reach = self.pickups.index(pickup), len(self.pickups) // MOST + 1
+        return self.pickups[max(at - reach, 0) : at + reach + 1]
 
 
 def resettled(study: States, settings: Mapping[str, Setting]) -> States:
@@ -90,12 +100,10 @@ def windows(study: States, keep: frozenset[str]) -> tuple[dict[str, Window], tup
     assumed: list[str] = []
     for name, relay in active.items():
         still = keeps_still(blank, name, ())
-        rows = [row for row in sees(blank, name, ()) if row.limit is not None]
-        lowest = min(rows, key=lambda row: row.greatest_pickup, default=None)
-        greatest = math.inf if lowest is None else lowest.greatest_pickup
+        greatest, limit = _seen_at_best(blank, name)
         least = still.least_pickup
         why_least = f"it keeps still for {still.limit}" if still.limit is not None else ""
-        why_greatest = "" if lowest is None else f"it sees {lowest.limit}"
+        why_greatest = "" if limit is None else f"it sees {limit}"
         if relay.fast is not None and relay.fast.primary is not None and relay.fast.primary <= greatest:
             greatest = math.nextafter(relay.fast.primary, 0)
             why_greatest = f"it stays below its fast stage of {relay.fast.primary:.5g} {relay.unit}"
@@ -110,13 +118,36 @@ def windows(study: States, keep: frozenset[str]) -> tuple[dict[str, Window], tup
     return out, tuple(dict.fromkeys(assumed))
 
 
+def _seen_at_best(study: States, name: str) -> tuple[float, Situation | None]:
+    """The greatest pickup (A or V) with which a relay quick enough still sees all it must, and the case."""
+    demands = study.states[0].protection.demands
+    ohms = np.array(sorted(set(demands.fault_resistances)))
+    least: tuple[float, Situation | None] = (math.inf, None)
+    owners, ends = zone_of(name, study.relays).whole, breakers_of(name, study.relays)
+    for state in study.states:
+        view = state.views.get(name)
+        if view is None or state.name not in demands.least:
+            continue
+        which = inside(view, owners, ends)
+        if not which.any():
+            continue
+        view = view.only(which)
+        sizes = view.sizes(ohms)
+        best = sizes.max(axis=0)
+        case, k = (int(x) for x in np.unravel_index(int(best.argmin()), best.shape))
+        if best[case, k] < least[0]:
+            machine = int(sizes[:, case, k].argmax())
+            least = (float(best[case, k]), situation(view, case, float(ohms[k]), machine))
+    return least[0] / demands.see, least[1]
+
+
 def _settings(scale: Scale, least: float, greatest: float) -> tuple[float, ...]:
     """The settings of ``scale`` in a window; where it has no upper end, a hundred of them."""
     if math.isinf(least):
         return ()
     first = scale.at_least(least)
     out: list[float] = []
-    while not math.isnan(first) and first <= greatest * (1 + 1e-12) and len(out) < 400:
+    while not math.isnan(first) and first <= greatest * (1 + 1e-12) and len(out) < FINEST:
         out.append(first)
         if math.isinf(greatest) and len(out) >= 100:
             break

@@ -339,3 +339,23 @@ def test_a_core_beyond_its_class_is_not_proven() -> None:
     assert math.isinf(row.error)
     assert row.verdict == "not proven"
     assert "no bound is known" in row.reasons[0]
+
+
+@pytest.mark.parametrize(("least", "x1"), [("0.05 s", 0.15), ("0.5 s", 0.25), ("1.5 s", 2.20)])
+def test_a_proposed_pickup_is_one_that_its_own_delay_still_sees(least: str, x1: float) -> None:
+    text = ISLAND.replace("[relays.slow]", "[relays.away]\nout = true")
+    steps = f'steps = {{ pickup = "1 A", delay = {{ step = "0.05 s", least = "{least}" }} }}'
+    text = text.replace('delay = "0.5 s"\n', f'delay = "5 s"\n{steps}\n')
+    text = text.replace('protects = ["F"]', 'protects = ["F", "far"]')
+    case = case_from_tree(parse_text(text.encode(), "i.toml"), "i.toml")
+    proposal = propose_settings(study_states(case, 2))
+    base = 11000**2 / 3e6
+    z1, z2 = (complex(0.01, x) * base + 2 * (0.3 + 0.1j) for x in (x1, 0.18))
+    z0 = complex(0.01, 0.07) * base + 2 * (1.1 + 0.3j)
+    single = 3 * 11000 / math.sqrt(3) / abs(z1 + z2 + z0)
+    double = 3 * 11000 / math.sqrt(3) * abs(z2 / (z1 * z2 + (z1 + z2) * z0))
+    row = proposal.rows[0]
+    assert row.setting.time == float(least.split()[0])
+    assert row.setting.pickup == math.floor(min(single, double) / 1.5)
+    assert proposal.proof is not None
+    assert all(seen.verdict in ("pass", "tight") for seen in proposal.proof.sees)
