@@ -13,17 +13,9 @@ from seqfault.errors import RequestError, quoted
 from seqfault.studies.settings import Settings, judge
 from seqfault.studies.settings_caps import Cap, caps
 from seqfault.studies.settings_grades import pairs
-from seqfault.studies.settings_search import (
-    Conflict,
-    Found,
-    Task,
-    cuts,
-    longest,
-    search,
-    task_of,
-    times_for,
-)
+from seqfault.studies.settings_search import search
 from seqfault.studies.settings_states import States
+from seqfault.studies.settings_times import Conflict, Found, Task, cuts, longest, task_of, times_for
 from seqfault.studies.settings_windows import Setting, Window, resettled, windows
 
 ROUNDS = 30
