@@ -4,7 +4,8 @@ SeqfaultError
 ├── InputError              the command or the case is wrong           exit code 2
 │   ├── CaseError           complaints about a case file, all of them
 │   ├── QuantityError       a text that is no number with a unit, or the wrong one
-│   └── RequestError        a place, kind, option or file asked for that cannot be
+│   ├── RequestError        a place, kind, option or file asked for that cannot be
+│   └── WorkerError         a process that worked on an item ended twice
 ├── NoAnswerError           the case is fine, yet no answer exists      exit code 3
 └── CheckError              an answer failed its own check: a defect    exit code 70
 """
@@ -37,6 +38,9 @@ class CaseError(InputError):
         self.source = source
         super().__init__("\n".join(self.complaints))
 
+    def __reduce__(self) -> tuple[type[CaseError], tuple[tuple[str, ...], str]]:
+        return type(self), (self.complaints, self.source)
+
 
 class FieldError(InputError):
     """A value that its field cannot take; the message repeats it and says what would be right."""
@@ -48,6 +52,10 @@ class QuantityError(FieldError):
 
 class RequestError(InputError):
     """A place, a fault, an option or a file that cannot be served."""
+
+
+class WorkerError(InputError):
+    """A worker of a batch ended on an item, and another one on the same item."""
 
 
 class NoAnswerError(SeqfaultError):

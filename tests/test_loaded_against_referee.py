@@ -17,7 +17,8 @@ from hypothesis import strategies as st
 from seqfault.case.reader import case_from_tree
 from seqfault.errors import NoAnswerError, RequestError
 from seqfault.faults.network import Network
-from seqfault.faults.solution import FaultSolution
+from seqfault.faults.solution import FaultSolution, FaultState
+from tests.conditioning import well_conditioned
 from tests.placed import Placed, placed
 from tests.referee import TURN, Result
 from tests.spots import Trouble
@@ -176,8 +177,16 @@ def misfits(net: PlainNetwork, holding: Holding, ours: FaultSolution, calm: Resu
     return out
 
 
+def _tells(state: FaultState) -> bool:
+    """Whether what a break carried is more than the rounding of the voltages it is the difference of."""
+    if state.through_before is None:
+        return True
+    carried = float(np.abs(state.through_before).max())
+    return carried == 0 or carried > 1e-3
+
+
 @settings(
-    settings.get_profile("referee"),
+    settings.get_profile("anywhere"),
     suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large, HealthCheck.filter_too_much],
 )
 @given(data=st.data(), drawn=loaded_networks())
@@ -185,6 +194,7 @@ def test_loaded_states_agree_with_the_referee(
     drawn: tuple[PlainNetwork, Holding], data: st.DataObject
 ) -> None:
     net, holding = drawn
+    assume(well_conditioned(replace(net, loads={})))
     wanted = data.draw(troubles(net))
     try:
         network = Network(case_from_tree(loaded_tree(net, holding)))
@@ -193,6 +203,7 @@ def test_loaded_states_agree_with_the_referee(
         if "is joined already" not in str(refused) and "Newton" not in str(refused):
             raise
         reject()
+    assume(all(_tells(state) for state in ours.faults))
     made, theirs, _, calm = driven(net, wanted, ours)
     assume({made.bus_of[t.spot][0] for t in wanted} <= theirs.joined)
     wrong = misfits(net, holding, ours, calm) + differences(net, wanted, ours, made, theirs)

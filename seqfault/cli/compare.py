@@ -6,13 +6,13 @@ import argparse
 from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
+from seqfault.cli.batches import add_workers, over_states
 from seqfault.cli.options import (
     Commands,
     add_case,
     add_command,
     add_impedances,
     add_output,
-    read_networks,
     read_ohms,
 )
 
@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from seqfault.faults.network import Network
     from seqfault.report.data import Quantity
     from seqfault.report.tables import Page
+    from seqfault.studies.compare import Comparison
 
 
 def add(commands: Commands) -> None:
@@ -41,21 +42,24 @@ def add(commands: Commands) -> None:
         help="show what each kind of fault looks like from this terminal, wherever it is",
     )
     add_impedances(parser)
+    add_workers(parser)
     add_output(parser)
     parser.set_defaults(run=run)
 
 
 def run(options: argparse.Namespace) -> int:
     """Answer the command."""
+    from functools import partial
+
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
     form = form_wanted(options)
     zf, zg = read_ohms(options.zf, "--zf"), read_ohms(options.zg, "--zg")
-    networks = read_networks(options, options.place)
     from seqfault.studies.compare import compare
 
-    def answer(network: Network) -> Answer:
-        comparison = compare(network, options.place, zf=zf, zg=zg, at=options.at)
+    study = partial(compare, place=options.place, zf=zf, zg=zg, at=options.at)
+
+    def answer(network: Network, comparison: Comparison) -> Answer:
 
         def page() -> Page:
             from seqfault.report.compare import compare_page
@@ -74,4 +78,6 @@ def run(options: argparse.Namespace) -> int:
 
         return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
-    return deliver(options, form, [answer(network) for network in networks])
+    return deliver(
+        options, form, [answer(*each) for each in over_states(options, study, place=options.place)]
+    )

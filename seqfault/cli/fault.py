@@ -6,6 +6,7 @@ import argparse
 from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
+from seqfault.cli.batches import add_workers, over_states
 from seqfault.cli.options import (
     KINDS,
     Commands,
@@ -13,7 +14,6 @@ from seqfault.cli.options import (
     add_command,
     add_impedances,
     add_output,
-    read_networks,
     read_ohms,
 )
 from seqfault.errors import RequestError
@@ -21,6 +21,7 @@ from seqfault.errors import RequestError
 if TYPE_CHECKING:
     from seqfault.faults.kinds import Fault
     from seqfault.faults.network import Network
+    from seqfault.faults.solution import FaultSolution
     from seqfault.report.data import Quantity
     from seqfault.report.tables import Page
 
@@ -79,6 +80,7 @@ def add(commands: Commands) -> None:
     shown = parser.add_argument_group("what is shown")
     shown.add_argument("--flows", action="store_true", help="every element, small flows included")
     shown.add_argument("--components", action="store_true", help="zero, positive, negative sequence")
+    add_workers(parser)
     add_output(parser)
     parser.set_defaults(run=run)
 
@@ -119,10 +121,9 @@ def run(options: argparse.Namespace) -> int:
     form = form_wanted(options)
     first = {name: getattr(options, name) for name in ("place", *OWN)}
     faults = [read_fault(own) for own in (first, *(options.also or []))]
-    networks = read_networks(options, options.place)
+    from seqfault.faults.network import Network
 
-    def answer(network: Network) -> Answer:
-        solution = network.solve(faults)
+    def answer(network: Network, solution: FaultSolution) -> Answer:
 
         def page() -> Page:
             from seqfault.report.fault import fault_page
@@ -141,7 +142,8 @@ def run(options: argparse.Namespace) -> int:
 
         return Answer(page, tree, rows, network.model.warnings, network.model.state)
 
-    return deliver(options, form, [answer(network) for network in networks])
+    found = over_states(options, Network.solve, faults, place=options.place)
+    return deliver(options, form, [answer(*each) for each in found])
 
 
 def read_fault(own: dict[str, Any]) -> Fault:

@@ -4,7 +4,10 @@ from __future__ import annotations
 
 import argparse
 
-from seqfault.cli.options import Commands, add_case, add_command, add_output, read_networks
+from seqfault.cli.batches import add_workers, over_states
+from seqfault.cli.options import Commands, add_case, add_command, add_output
+from seqfault.cli.outages import add_outages, run_outages
+from seqfault.errors import RequestError
 
 
 def add(commands: Commands) -> None:
@@ -14,9 +17,11 @@ def add(commands: Commands) -> None:
         "levels",
         "fault levels at every bus",
         "Bolted-fault currents at every bus, by voltage; with --scenario all the greatest and the"
-        " least of each, and the states that give them.",
+        " least of each, and the states that give them; with --outages the same over outages.",
     )
     add_case(parser)
+    add_outages(parser)
+    add_workers(parser)
     add_output(parser)
     parser.set_defaults(run=run)
 
@@ -27,12 +32,17 @@ def run(options: argparse.Namespace) -> int:
 
     from seqfault.cli.delivery import Answer, deliver, form_wanted, warnings_of
 
+    if options.outages is not None:
+        return run_outages(options)
+    if options.at:
+        raise RequestError("--at: this goes with --outages; levels alone answers for every bus")
+
     form = form_wanted(options)
-    networks = read_networks(options)
     from seqfault.report.levels import levels_page, levels_rows, levels_tree
     from seqfault.studies.levels import levels, silent
 
-    states = [levels(network) for network in networks]
+    found = over_states(options, levels)
+    networks, states = [network for network, _ in found], [each for _, each in found]
     answer = Answer(
         partial(levels_page, networks, states),
         partial(levels_tree, networks, states),

@@ -139,7 +139,7 @@ def read_states(options: argparse.Namespace) -> list[Case]:
     names = ["base", *case.scenarios] if options.scenario == "all" else [options.scenario]
     changes = (options.without, options.open, options.close)
     return [
-        _with_prefault(
+        with_prefault(
             case if name == "base" and not any(changes) else in_state(case, name, *changes),
             options.prefault,
             options.loaded,
@@ -148,7 +148,8 @@ def read_states(options: argparse.Namespace) -> list[Case]:
     ]
 
 
-def _with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
+def with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
+    """``case`` as --prefault and --loaded want it. Raises ``RequestError``."""
     import msgspec
 
     if loaded:
@@ -169,30 +170,8 @@ def _with_prefault(case: Case, text: str | None, loaded: bool) -> Case:
     return msgspec.structs.replace(case, prefault=prefault)
 
 
-def read_networks(options: argparse.Namespace, place: str | None = None) -> list[Network]:
-    """The network of each state asked for; with several, those that have ``place`` in service."""
+def read_networks(options: argparse.Namespace) -> list[Network]:
+    """The network of each state asked for."""
     from seqfault.faults.network import Network
 
-    networks = [Network(case, machine=options.machine) for case in read_states(options)]
-    if place is None:
-        return networks
-    if len(networks) == 1:
-        networks[0].check_place(place)
-        return networks
-    having = [network for network in networks if _has(network, place)]
-    if not having:
-        networks[0].check_place(place)
-    from seqfault.cli.run import say
-
-    for network in networks:
-        if network not in having:
-            say(f"state {network.model.state}: the place is out of service there; no answer for it")
-    return having
-
-
-def _has(network: Network, place: str) -> bool:
-    try:
-        network.check_place(place)
-    except RequestError:
-        return False
-    return True
+    return [Network(case, machine=options.machine) for case in read_states(options)]

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from types import MappingProxyType
 
 import numpy as np
 from msgspec.structs import replace
@@ -55,7 +54,7 @@ class Network:
         self.sequences = SequenceNetworks(self.model)
         self._bus_of: Mapping[str, str] = {}
         self._breaks: Mapping[str, tuple[str, str, str]] = {}
-        self.labels: Mapping[tuple[str, str], Label | None] = MappingProxyType({})
+        self.labels: Mapping[tuple[str, str], Label | None] = {}  # a mapping proxy does not pickle
 
     @property
     def buses(self) -> tuple[str, ...]:

@@ -182,6 +182,7 @@ def _determinants(zero: SequenceFactor, place: int, star: int) -> tuple[Complex,
         d.shape[1] and (np.abs(d).min(axis=0) > SEEN).any()
     )
     if joined:
+        d, sigma = _even(d, sigma)
         full = np.block([[g, -d], [d.T, sigma]])
         moved = full[1:, 1:].copy()
         moved[:, 0] = -full[1:, 0]
@@ -191,7 +192,7 @@ def _determinants(zero: SequenceFactor, place: int, star: int) -> tuple[Complex,
             n = [np.linalg.det(full), np.linalg.det(full[np.ix_(rest, rest)])]
             own = [np.linalg.det(full[1:, 1:]), np.linalg.det(sigma)]
             return np.array(n), np.array(own), j
-    d, sigma, _ = _free(zero, int(part[0]), nodes[:1])
+    d, sigma = _even(*_free(zero, int(part[0]), nodes[:1])[:2])
     full = np.block([[g[:1, :1], -d], [d.T, sigma]])
     both = np.ones(2, complex)
     return np.linalg.det(full) * both, np.linalg.det(sigma) * both, 0j
@@ -218,6 +219,16 @@ def _free(zero: SequenceFactor, part: int, nodes: Ints) -> tuple[Complex, Comple
     whole = np.zeros((k - slacks + free.shape[1],) * 2, complex)
     whole[: k - slacks, : k - slacks] = bound.T @ sigma @ bound
     return np.concatenate([direction @ bound, free], axis=1), whole, free.shape[1]
+
+
+def _even(direction: Complex, sigma: Complex) -> tuple[Complex, Complex]:
+    """Free potentials scaled so that what binds each is 1; ratios of determinants do not change.
+
+    Elimination would lose a σ of capacitances among port impedances otherwise.
+    """
+    own = np.abs(np.diagonal(sigma))
+    scale = np.where(own > 0, 1 / np.sqrt(np.where(own > 0, own, 1)), 1)
+    return direction * scale, sigma * scale * scale[:, None]
 
 
 def _independent(columns: Complex) -> Complex:

@@ -19,11 +19,14 @@ from seqfault.equations.per_unit import base_current
 from seqfault.faults.flows import sequence_flows, terminal_map
 from seqfault.faults.neutral_faults import driven_voltage
 from seqfault.faults.neutral_ports import Form, KindForms, NeutralPorts, device_of
+from seqfault.faults.ports import CANCELLED
 from seqfault.model.elements import Complex, Ints, Model
 from seqfault.networks.factors import SEEN, SequenceFactor
 
-PROBES: Complex = np.array([[1, 0.4 - 0.1j], [0.3 + 0.2j, 1]])
-"""Two devices, rows β and α, that tell a linear form in them."""
+ENDS: Complex = np.eye(2, dtype=complex)
+"""Solid and open, rows β and α: two devices tell a linear form in them."""
+BETWEEN: Complex = np.array([[1, 0.4 - 0.1j], [0.3 + 0.2j, 1]])
+"""Two others, where the network has no answer at an end."""
 
 
 class RelayView(msgspec.Struct, frozen=True):
@@ -57,7 +60,7 @@ def relay_forms(
 
     ``labels`` name the terminals of a network made for a place along a line.
 
-    None where it is not in service, or stands in a part with more than two free potentials.
+    None where it is not in service, or more free potentials are tied by nothing than two voltages tell.
     """
     model = ports.model
     impedance = model.stars.impedance.copy()
@@ -67,19 +70,19 @@ def relay_forms(
     if picked is None:
         return None
     rows, star, scale = picked
-    by_fault, by_device, by_free, potentials = _responses(opened, zero, ports, rows, star)
-    if potentials.shape[1] > 4:
-        return None  # more free potentials than the place and the star point tell
+    response = _responses(opened, zero, ports, rows, star)
     own = view.star == model.stars.names[ports.star]
     forms = []
     for kind in ports.forms:
-        bottom = kind.bottom @ PROBES
-        i0, j = kind.sequence[0].at(PROBES), kind.neutral.at(PROBES)
-        u = _free_potentials(kind, potentials)
+        regular = (np.abs(kind.bottom) > CANCELLED * kind.size).all()
+        probes = ENDS if regular else BETWEEN
+        i0, j = kind.sequence[0].at(probes), kind.neutral.at(probes)
+        u = _free_potentials(kind, response, probes)
         if u is None:
             return None
-        value = j if own else by_fault * i0 + by_device * j + by_free @ u
-        forms.append(Form(np.asarray((value * bottom) @ np.linalg.inv(PROBES)), kind.bottom))
+        value = j if own else response.fault * i0 + response.device * j + response.free @ u
+        top = (value * (kind.bottom @ probes)) @ np.linalg.inv(probes)
+        forms.append(Form(np.asarray(top), kind.bottom))
     return RelayForms(view, (forms[0], forms[1]), scale)
 
 
@@ -118,14 +121,24 @@ def relay_currents(ports: NeutralPorts, relay: RelayForms, ohms: Complex) -> Com
     return np.stack([form.at(device) * driven[k] * relay.scale for k, form in enumerate(relay.forms)])
 
 
-def _responses(
-    model: Model, zero: SequenceFactor, ports: NeutralPorts, rows: Ints, star: int
-) -> tuple[complex, complex, Complex, Complex]:
-    """The relay's current for a unit drawn at the place, at the star point, and of each free potential.
+class _Response(msgspec.Struct, frozen=True, eq=False):
+    """A relay's current for a unit drawn at the place (``fault``), at the star point (``device``), and of
+    each free potential (``free`` (k,)).
 
-    The last item holds, for place and star point, what i0 and j do to their potentials above the
-    references, and the free potentials themselves: (2, 2 + k).
+    ``above`` (2, 2) what the two do to the potentials of place and star point above the references,
+    ``direction`` (2, k) what the free ones do; ``compliance`` (k, k) what ties these to earth, None where
+    nothing ties one of them.
     """
+
+    fault: complex
+    device: complex
+    free: Complex
+    above: Complex
+    direction: Complex
+    compliance: Complex | None
+
+
+def _responses(model: Model, zero: SequenceFactor, ports: NeutralPorts, rows: Ints, star: int) -> _Response:
     place, device = int(model.node[ports.place]), int(model.stars.node[ports.star])
     nodes = np.array([place, device])
     columns = zero.columns(nodes)
@@ -134,41 +147,53 @@ def _responses(
         flows = sequence_flows(model, 0, w, v)
         return complex(flows.star[star] if star >= 0 else flows.terminal[rows].sum())
 
-    by = [seen(-columns[:, k], -columns[:, k]) for k in range(2)]
-    parts = dict.fromkeys(zero.free.part[nodes].tolist())
-    free, effect = [], []
-    for part in (p for p in parts if p >= 0):
-        inside = zero.free.part == part
-        for q in range(int(zero.free.dimension[part])):
+    parts = [p for p in dict.fromkeys(zero.free.part[nodes].tolist()) if p >= 0]
+    sizes = [int(zero.free.dimension[p]) for p in parts]
+    k = sum(sizes)
+    free: list[complex] = []
+    direction, compliance = np.zeros((2, k), complex), np.zeros((k, k), complex)
+    for part, size in zip(parts, sizes, strict=True):
+        inside, at = zero.free.part == part, len(free)
+        for q in range(size):
             w = np.where(inside, -zero.drop[:, q], 0)
             v = np.where(inside, zero.free.basis[:, q] - zero.drop[:, q], 0)
+            direction[:, at + q] = np.where(zero.free.part[nodes] == part, zero.direction[nodes, q], 0)
             free.append(seen(w, v))
-            effect.append(np.where(zero.free.part[nodes] == part, zero.direction[nodes, q], 0))
-    potentials = np.concatenate([-columns[nodes], np.array(effect, complex).reshape(-1, 2).T], axis=1)
-    return by[0], by[1], np.array(free, complex), potentials
+        compliance[at : at + size, at : at + size] = zero.compliance[part, :size, :size]
+    tied = not any(int(zero.slacks[p]) for p in parts)
+    return _Response(
+        fault=seen(-columns[:, 0], -columns[:, 0]),
+        device=seen(-columns[:, 1], -columns[:, 1]),
+        free=np.array(free, complex),
+        above=-columns[nodes],
+        direction=direction,
+        compliance=compliance if tied else None,
+    )
 
 
-def _free_potentials(kind: KindForms, potentials: Complex) -> Complex | None:
-    """Free potentials (k, n) at the ``PROBES``, from the voltages of place and star point.
+def _free_potentials(kind: KindForms, response: _Response, probes: Complex) -> Complex | None:
+    """Free potentials (k, n) at the ``probes``.
 
-    The place's zero-sequence voltage is a third of the phases' sum, and faulted phases are at zero. None
-    where the two voltages do not tell all of them.
+    From what ties them to earth; where nothing does, from the voltages of place and star point: the
+    place's zero-sequence voltage is a third of the phases' sum, and faulted phases are at zero. None where
+    these two do not tell all of them.
     """
-    k = potentials.shape[1] - 2
-    if not k:
-        return np.zeros((0, PROBES.shape[1]), complex)
-    moved = potentials[:, :2] @ np.stack([kind.sequence[0].at(PROBES), kind.neutral.at(PROBES)])
-    place = np.sum([form.at(PROBES) for form in kind.sound], axis=0) / 3
-    stood = np.stack([place, kind.star.at(PROBES)]) - moved
-    out = np.zeros((k, PROBES.shape[1]), complex)
-    effect = potentials[:, 2:]
-    moving = np.flatnonzero(np.abs(effect).max(axis=0) > SEEN)
+    drawn = np.stack([kind.sequence[0].at(probes), kind.neutral.at(probes)])
+    if response.compliance is not None:
+        return np.asarray(-response.compliance @ response.direction.T @ drawn)
+    place = np.sum([form.at(probes) for form in kind.sound], axis=0) / 3
+    stood = np.stack([place, kind.star.at(probes)]) - response.above @ drawn
+    out = np.zeros((len(response.free), probes.shape[1]), complex)
+    effect = response.direction
+    moving = np.flatnonzero(np.abs(effect).max(axis=0, initial=0.0) > SEEN)
     if len(moving) == 1:
         row = int(np.abs(effect[:, moving[0]]).argmax())
         out[moving] = stood[row] / effect[row, moving[0]]
-    elif len(moving):
+    elif len(moving) == 2:
         own = effect[:, moving]
         if abs(np.linalg.det(own)) <= SEEN * np.abs(own).max() ** 2:
             return None
         out[moving] = np.linalg.solve(own, stood)
+    elif len(moving):
+        return None
     return out

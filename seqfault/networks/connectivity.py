@@ -13,7 +13,7 @@ import numpy as np
 from seqfault.model.elements import DELTA, STAR, Complex, Floats, Ints, Model, WindingSets
 from seqfault.model.windings import incidence
 from seqfault.model.zones import components
-from seqfault.networks.null_space import Conditions, null_space
+from seqfault.networks.null_space import Conditions, null_space, scaled
 
 LEAST = 1e-4
 """Weight of a node without a weak branch where references are chosen; the heaviest has 1."""
@@ -47,10 +47,10 @@ def free_space(model: Model, sequence: int, weak: Complex) -> FreeSpace:
     grounded = model.sources.admittance[sequence] != 0
     tied[group[model.sources.node[grounded]]] = True
     vectors, alone = null_space(_conditions(model, sequence, group), tied)
-    return _spread(vectors, alone, group, _parts(model, sequence, group, size), np.abs(weak))
+    return _spread(vectors, alone, group, joined_parts(model, sequence, group, size), np.abs(weak))
 
 
-def _parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
+def joined_parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:
     """Labels (size,) of the merged nodes that strong elements join."""
     first, second = [], []
     for sets in model.winding_sets:
@@ -81,7 +81,7 @@ def _conditions(model: Model, sequence: int, group: Ints) -> Conditions:
         if not len(sets.names):
             continue
         inc = incidence(sets, sequence, model.stars.node)
-        for unit, first, second in _held(sets, sequence):
+        for unit, first, second in held_windings(sets, sequence):
             number = start + np.arange(len(unit))
             start += len(unit)
             for winding, factor in ((first, 1.0), (second, -1.0)):
@@ -102,7 +102,7 @@ def _conditions(model: Model, sequence: int, group: Ints) -> Conditions:
     return Conditions(np.concatenate(rows), np.concatenate(nodes), np.concatenate(weights), start)
 
 
-def _held(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int | None]]:
+def held_windings(sets: WindingSets, sequence: int) -> list[tuple[Ints, int, int | None]]:
     """(units, winding, other winding): the winding's voltage is zero, or equals the other's.
 
     A leakage matrix leaves exactly equal winding voltages free. A delta holds its winding's
@@ -175,7 +175,7 @@ def _apart(basis: Floats, weak: Floats) -> Floats:
         for other in free:
             basis[:, other] -= basis[node, other] / basis[node, pivot] * basis[:, pivot]
             basis[node, other] = 0
-    return basis
+    return scaled(basis)
 
 
 def _references(part: Ints, basis: Floats, dimension: Ints, weak: Floats) -> Ints:

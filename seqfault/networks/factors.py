@@ -249,11 +249,17 @@ class _Sparse:
 
 
 class SequenceNetworks:
-    """The three factorised networks of a model, each made when first asked for."""
+    """The three factorised networks of a model, each made when first asked for.
+
+    Factors do not travel between processes: a copy makes its own.
+    """
 
     def __init__(self, model: Model) -> None:
         self.model = model
         self._factors: dict[int, SequenceFactor] = {}
+
+    def __reduce__(self) -> tuple[type[SequenceNetworks], tuple[Model]]:
+        return type(self), (self.model,)
 
     def __getitem__(self, sequence: int) -> SequenceFactor:
         if sequence not in self._factors:

@@ -145,16 +145,16 @@ def _expanded(
             continue
         members = np.concatenate([order[start[h] : start[h + 1]] for h in heads.tolist()])
         at = np.repeat(np.arange(len(heads)), start[heads + 1] - start[heads])
-        vectors.append((members, _scaled(factor[members, None] * columns[at])))
+        vectors.append((members, scaled(factor[members, None] * columns[at])))
     loose = ~blocked[head] & ~tied
     size = np.diff(start)
     for h in np.flatnonzero(loose & (size > 1)).tolist():
         members = order[start[h] : start[h + 1]]
-        vectors.append((members, _scaled(factor[members, None])))
+        vectors.append((members, scaled(factor[members, None])))
     return vectors, np.flatnonzero(loose & (size[head] == 1))
 
 
-def _scaled(columns: Floats) -> Floats:
+def scaled(columns: Floats) -> Floats:
     """``columns`` with a largest entry of exactly 1 each, what falls under the tolerance zero."""
     largest = columns[np.abs(columns).argmax(axis=0), np.arange(columns.shape[1])]
     out = np.asarray(columns / largest)

@@ -14,6 +14,7 @@ from seqfault.errors import CaseError, NoAnswerError
 from seqfault.faults.network import Network
 from seqfault.faults.neutral_faults import EarthFaults, earth_faults
 from seqfault.faults.neutral_ports import KINDS, NeutralPorts, neutral_ports, open_zero_sequence
+from tests.conditioning import well_conditioned
 from tests.faults.small import PLANT, changed, network
 from tests.strategies import PlainNetwork, networks, spread, to_case_tree
 
@@ -74,6 +75,7 @@ def misfits(net: Network, faults: EarthFaults, n: int, name: str, place: str) ->
 )
 @given(data=st.data(), net=networks())
 def test_closed_forms_agree_with_drawn_networks(net: PlainNetwork, data: st.DataObject) -> None:
+    assume(well_conditioned(net))
     plain = sorted(n for n, r in net.neutrals.items() if r.detuning is None and net.star_points(n))
     assume(plain)
     name = data.draw(st.sampled_from(plain))
@@ -117,6 +119,40 @@ def test_an_open_neutral_without_capacitance_leaves_exactly_nothing() -> None:
     assert np.isfinite(faults.z0[1])
     assert faults.factor[0, 0] == pytest.approx(np.sqrt(3), rel=1e-12)
     assert faults.factor[1, 0] == pytest.approx(1.5, rel=1e-12)
+
+
+@pytest.mark.parametrize("more", [{}, {"N2": {"resistance": "1 ohm"}}])
+def test_capacitances_are_not_drowned_beside_another_free_potential(more: dict[str, Any]) -> None:
+    """Two free potentials, one bound by some nanofarad, the other by a neutral or by nothing at all."""
+    half = {"bus": "B2", "rating": "50 kVA", "subtransient": "8 %", "x0": "4 %"}
+    star = {"vector_group": "Yy0y0", "rating": "100 kVA", "magnetic_circuit": "five-limb",
+            "impedance": {"hv_lv": "0.8+j9 %", "hv_tv": "0.8+j9 %", "lv_tv": "0.8+j12 %"}}  # fmt: skip
+    tree: dict[str, Any] = {
+        "title": "two potentials", "frequency": "50 Hz",
+        "buses": {"B1": "110 kV", "B2": "400 V", "B3": "400 V", "B4": "400 V"},
+        "infeeds": {"Q": {"bus": "B1", "z1": "90+j90 ohm", "z0": "open"}},
+        "generators": {
+            "G1": {"bus": "B2", "rating": "100 kVA", "subtransient": "28 %", "x0": "11 %", "neutral": "N1"},
+            "G2": half | {"neutral": "N2" if more else "isolated"},
+        },
+        "transformers": {
+            "T2": star | {"hv": {"bus": "B1", "voltage": "110 kV"}, "lv": {"bus": "B3", "voltage": "400 V"},
+                          "tv": {"bus": "B2", "voltage": "400 V"}},
+            "T3": {"vector_group": "YNyn0", "rating": "100 kVA", "impedance": "12 %", "x_over_r": 1,
+                   "magnetic_circuit": "five-limb",
+                   "hv": {"bus": "B1", "voltage": "110 kV", "neutral": "N1"},
+                   "lv": {"bus": "B3", "voltage": "400 V", "neutral": "N1"}},
+        },
+        "neutrals": {"N1": {"resistance": "32 ohm"}, **more},
+        "lines": {"L1": {"from": "B3", "to": "B4", "length": "20 m", "z1": "0.7+j0.7 ohm/km",
+                         "z0": "0.7+j0.7 ohm/km", "c1": "6.4 nF/km", "c0": "2 nF/km"}},
+    }  # fmt: skip
+    ohms = np.array([0.3, 30.0], complex)
+    faults = earth_faults(ports_of(network(tree), "N1", "B2"), ohms)
+    for n, z in enumerate(ohms):
+        solved = Network(case_from_tree(in_its_place(tree, "N1", complex(z)))).fault("B2")
+        assert abs(faults.earth[0, n] - solved.residual) < 1e-11 * abs(solved.residual)
+        assert solved.balance < 1e-3
 
 
 def test_a_neutral_has_no_say_behind_a_delta() -> None:

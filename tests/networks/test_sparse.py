@@ -9,7 +9,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
 from seqfault.case.reader import case_from_tree
@@ -21,6 +21,7 @@ from seqfault.networks.assembly import Stamps
 from seqfault.networks.connectivity import FreeSpace
 from seqfault.networks.factors import SequenceFactor
 from tests.bench.grid import degree, grid
+from tests.conditioning import well_conditioned
 from tests.strategies import PlainNetwork, fault_requests, networks, to_case_tree
 
 CASES = Path(__file__).parents[2] / "cases"
@@ -80,6 +81,7 @@ def same_driving_points(ours: Network, theirs: Network) -> None:
 @settings(max_examples=40, suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large])
 @given(data=st.data(), net=networks())
 def test_drawn_networks(net: PlainNetwork, data: st.DataObject) -> None:
+    assume(well_conditioned(net))
     request = data.draw(fault_requests(net))
     tree = to_case_tree(net, prefault=request.prefault)
 

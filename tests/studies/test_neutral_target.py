@@ -17,6 +17,7 @@ from seqfault.studies.neutral import study_neutral
 from seqfault.studies.neutral_states import NeutralStates
 from seqfault.studies.neutral_target import find_target
 from seqfault.studies.winding_cover import winding_cover
+from tests.conditioning import well_conditioned
 from tests.faults.small import PLANT, changed, network
 from tests.strategies import PlainNetwork, fractions, networks, to_case_tree
 
@@ -45,6 +46,7 @@ def factor(net: Network, place: str) -> float:
 )
 @given(data=st.data(), net=networks())
 def test_the_ohms_found_give_the_current_in_drawn_networks(net: PlainNetwork, data: st.DataObject) -> None:
+    assume(well_conditioned(net))
     resistors = [n for n, r in net.neutrals.items() if r.resistance and not r.reactance]
     resistors = sorted(n for n in resistors if net.star_points(n) and net.neutrals[n].detuning is None)
     assume(resistors)

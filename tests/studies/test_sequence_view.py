@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
 from seqfault.case.reader import case_from_tree, read_case
 from seqfault.faults.network import Network
 from seqfault.studies.sequence_links import REFERENCE
 from seqfault.studies.sequence_view import SequenceView, sequence_views
+from tests.conditioning import well_conditioned
 from tests.strategies import PlainNetwork, networks, to_case_tree
 
 
@@ -65,6 +66,7 @@ def test_the_shipped_cases_reduce_to_what_was_solved(name: str, place: str) -> N
 @settings(max_examples=60, suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large])
 @given(data=st.data(), net=networks())
 def test_drawn_networks_reduce_to_what_was_solved(net: PlainNetwork, data: st.DataObject) -> None:
+    assume(well_conditioned(net))
     place = data.draw(st.sampled_from(sorted(net.buses)))
     network = Network(case_from_tree(to_case_tree(net)))
     for view in sequence_views(network, place):
