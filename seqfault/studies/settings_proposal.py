@@ -138,9 +138,9 @@ def _check(study: States, keep: frozenset[str]) -> None:
             )
     for state in study.states[1:]:
         for name, relay in state.protection.relays.items():
-            first = study.relays[name]
-            same = (relay.pickup, relay.multiplier, relay.delay, relay.out)
-            if same != (first.pickup, first.multiplier, first.delay, first.out):
+            first = study.states[0].protection.relays.get(name)
+            same = (relay.pickup, relay.multiplier, relay.delay)
+            if first is None or same != (first.pickup, first.multiplier, first.delay):
                 raise RequestError(
                     f"relay {quoted(name)}: scenario {quoted(state.name)} gives it settings of its own; one"
                     " proposal is for all states: take them out of the scenario, or leave --propose out"

@@ -83,8 +83,9 @@ def _sees(
             continue
         whole = state.views.get(name)
         if whole is None:
-            relay = state.protection.relays[name]
-            blind.append(f"state {state.name}: {relay.blind or 'it is out of service'}")
+            relay = state.protection.relays.get(name)
+            why = relay.blind if relay is not None else "this state does not have it"
+            blind.append(f"state {state.name}: {why or 'it is out of service'}")
             continue
         which = inside(whole, owners, breakers_of(name, study.relays))
         if not which.any():

@@ -50,8 +50,13 @@ class States(msgspec.Struct, frozen=True, eq=False):
 
     @property
     def relays(self) -> dict[str, Relay]:
-        """The relays of the file, in its order."""
-        return self.states[0].protection.relays
+        """The relays of the file, in its order, each as in the first state in which it is in service."""
+        found: dict[str, Relay] = {}
+        for state in self.states:
+            for name, relay in state.protection.relays.items():
+                if name not in found or (found[name].out and not relay.out):
+                    found[name] = relay
+        return found
 
     @property
     def assumptions(self) -> tuple[str, ...]:
@@ -64,7 +69,11 @@ class States(msgspec.Struct, frozen=True, eq=False):
     @property
     def warnings(self) -> tuple[str, ...]:
         """Warnings of all states, those that not every state has with its name."""
-        out: list[str] = []
+        out = [
+            f"relay {quoted(name)}: out of service in every state, so it is not studied"
+            for name, relay in self.relays.items()
+            if relay.out
+        ]
         for state in self.states:
             for text in (*state.network.model.warnings, *state.protection.warnings):
                 everywhere = all(

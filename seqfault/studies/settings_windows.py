@@ -68,6 +68,8 @@ def resettled(study: States, settings: Mapping[str, Setting]) -> States:
         guarded, places = state.protection, Places(state.case)
         relays = dict(guarded.relays)
         for name, setting in settings.items():
+            if name not in relays:
+                continue
             relay = with_setting(relays[name], setting)
             if setting.pickup is not None:
                 amount = Quantity(setting.pickup, "voltage" if relay.unit == "V" else "current", "")

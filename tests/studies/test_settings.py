@@ -379,6 +379,18 @@ def test_a_relay_on_what_no_source_reaches_fails_in_words() -> None:
     assert row.reasons[0] == "state base: nothing of what it protects is live"
 
 
+def test_a_relay_in_service_in_one_state_alone_is_judged_there() -> None:
+    off = ("[relays.X-east]\n", "[relays.X-east]\nout = true\n")
+    _, found = settings_of(case_of(RING, off, ('out = ["G", "M"]', 'out = ["G", "M"]\nin = ["X-east"]')))
+    row = one(found, "X-east")
+    assert row.limit is not None
+    assert row.limit.state == "open"
+    assert "state base: it is out of service" in row.reasons
+    study, found = settings_of(case_of(RING, off))
+    assert not any(r.relay == "X-east" for r in found.sees)
+    assert 'relay "X-east": out of service in every state, so it is not studied' in study.warnings
+
+
 def test_a_relay_that_answers_for_nothing_is_not_proven() -> None:
     _, found = study_settings(case_of(RING, ('protects = ["X"]\n', "")), points=2)
     row = one(found, "X-east")
