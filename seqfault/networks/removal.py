@@ -26,7 +26,7 @@ from seqfault.networks.connectivity import held_windings, joined_parts
 from seqfault.networks.factors import SequenceFactor
 from seqfault.networks.parting import Joined, components_of
 
-BLOCK = 64
+BLOCK = 32
 """Columns solved at a time."""
 LEFT = 1e-3
 """Share of what earths a floating piece that must be left for an update to keep its digits."""
@@ -163,7 +163,15 @@ class SequenceRemovals:
 
     def prepare(self, outages: Sequence[Sequence[str]]) -> None:
         """Solve at once for the nodes of all ``outages``, which are then asked for one by one."""
-        nodes = {node for names in outages for node in self.branches(names).nodes.tolist()}
+        self._made = {tuple(names): self.branches(names) for names in outages}
+        reached = np.zeros(int(self._beside_earth.max()) + 1, bool)
+        reached[self._beside_earth[self.chosen[~self._unearthed]]] = True
+        nodes = {
+            node
+            for made in self._made.values()
+            if reached[self._beside_earth[made.nodes]].any()  # no other outage changes anything here
+            for node in made.nodes.tolist()
+        }
         self._prepared = np.array(sorted(nodes), np.int64)
         m = len(self._prepared)
         self._block = np.zeros((m, m), complex)
@@ -212,14 +220,14 @@ class SequenceRemovals:
         return _Branches(np.array(nodes, np.int64), drop, admittance, shunt)
 
     def without(self, names: Sequence[str], wanted: Bools) -> Complex | str:
-        """Driving-point impedances (chosen,) without ``names`` where ``wanted`` (chosen,).
+        """Driving-point impedances (chosen,) without ``names``, prepared, where ``wanted`` (chosen,).
 
         Infinite where ``infinite`` says so of the whole. Text says why there is no update.
         """
         if any(name in self._coupled for name in names):
             return "it is coupled with other lines"
         out = self.whole.copy()
-        b = self.branches(names)
+        b = self._made[tuple(names)]
         if not len(b.nodes):
             return out
         own = self._beside_earth[b.nodes]

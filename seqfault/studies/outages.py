@@ -20,7 +20,7 @@ from seqfault.networks.removal import SequenceRemovals, driving_points
 
 CURRENTS = ("k3", "k2", "k2e", "k1", "k2e_earth")
 ROUNDING = 1e-9
-TOGETHER = 200
+TOGETHER = 1000
 """Outages whose nodes are solved for at once."""
 
 Outage = tuple[str, ...]
