@@ -51,6 +51,8 @@ if TYPE_CHECKING:
     from seqfault.studies.levels import Levels, levels
     from seqfault.studies.neutral import NeutralReport, study_neutral
     from seqfault.studies.neutral_target import Target, find_target
+    from seqfault.studies.settings import Settings, study_settings
+    from seqfault.studies.settings_proposal import Proposal, propose_settings
     from seqfault.studies.steps import Evolution, evolve
     from seqfault.studies.winding_cover import WindingCover, winding_cover
 
@@ -70,9 +72,11 @@ __all__ = [
     "Network",
     "NeutralReport",
     "NoAnswerError",
+    "Proposal",
     "QuantityError",
     "RequestError",
     "SeqfaultError",
+    "Settings",
     "Target",
     "WindingCover",
     "__version__",
@@ -84,9 +88,11 @@ __all__ = [
     "find_target",
     "in_state",
     "levels",
+    "propose_settings",
     "read_case",
     "read_steps",
     "study_neutral",
+    "study_settings",
     "winding_cover",
 ]
 
@@ -113,6 +119,8 @@ _HOMES = {
     "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
     "seqfault.studies.neutral_target": ("Target", "find_target"),
     "seqfault.studies.winding_cover": ("WindingCover", "winding_cover"),
+    "seqfault.studies.settings": ("Settings", "study_settings"),
+    "seqfault.studies.settings_proposal": ("Proposal", "propose_settings"),
     "seqfault.studies.steps": ("Evolution", "evolve"),
 }
 

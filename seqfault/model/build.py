@@ -53,15 +53,19 @@ def build_model(case: Case, machine: Machine = "subtransient") -> Model:
 
 
 def build_arranged(
-    case: Case, within: Case, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
+    case: Case, like: Model, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
 ) -> Model:
-    """The model of ``case``, which is ``within`` with lines and terminals rewritten.
+    """The model of ``case``, which is that of ``like`` with lines and terminals rewritten.
 
-    ``links`` are pairs of its buses that breaks stand between. Coils are tuned as in ``within``, and
-    what was assumed and warned of there is not said again.
+    ``links`` are pairs of its buses that breaks stand between. Coils keep the ohms they have in ``like``,
+    and what was assumed and warned of there is not said again.
     """
-    base = within if within.state == "base" else case_from_tree(within.tree, within.source)
-    return _assemble(Context(case, machine, _coils(base, within, machine)[0], links))
+    named = {n for n, record in case.neutrals.items() if record.kind == ARC_SUPPRESSION}
+    coils = dict.fromkeys(named, complex(np.inf))  # of no winding in service
+    for name, ohms in zip(like.stars.names, like.stars.impedance.tolist(), strict=True):
+        if name in named:
+            coils[name] = ohms
+    return _assemble(Context(case, machine, coils, links))
 
 
 def _coils(
