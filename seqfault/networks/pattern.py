@@ -1,0 +1,88 @@
+"""The three networks on one pattern of entries: the union of Y0, Y1 and Y2.
+
+Coupled lines and shared star points join nodes in zero sequence that are no neighbours in the others.
+A node that a sequence lacks, or holds at zero as a reference, is a row of the unit matrix there.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+import msgspec
+import numpy as np
+
+from seqfault.model.elements import Complex, Ints
+from seqfault.networks.assembly import Stamps
+
+
+class UnionPattern(msgspec.Struct, frozen=True, eq=False):
+    """Columns of symmetric matrices: entries ``start[k]`` to ``start[k + 1]`` of column k.
+
+    ``row`` and ``column`` (e,) of each entry, rows ascending in a column; ``diagonal`` (n,) the entry
+    (k, k), always there; ``value`` (sequences, e).
+    """
+
+    start: Ints
+    row: Ints
+    column: Ints
+    diagonal: Ints
+    value: Complex
+
+    @property
+    def size(self) -> int:
+        """Number of nodes."""
+        return len(self.start) - 1
+
+    def find(self, row: Ints, column: Ints) -> Ints:
+        """Entries at ``row``, ``column``, which must be there."""
+        n = self.size
+        return np.searchsorted(self.column * n + self.row, column * n + row)
+
+
+def grounded(stamps: Stamps, reference: Ints, size: int) -> Any:
+    """The matrix (``size``, ``size``) of ``stamps`` as CSC, rows of the unit matrix at ``reference``."""
+    from scipy.sparse import csc_array
+
+    kept = np.ones(size, bool)
+    kept[reference] = False
+    kept[stamps.size :] = False
+    both = kept[stamps.row] & kept[stamps.column]
+    own = np.ones(size, complex)
+    own[: stamps.size] = np.where(kept[: stamps.size], stamps.weak, 1)
+    every = np.arange(size)
+    return csc_array(
+        (
+            np.concatenate([stamps.value[both], own]),
+            (
+                np.concatenate([stamps.row[both], every]).astype(np.int32),
+                np.concatenate([stamps.column[both], every]).astype(np.int32),
+            ),
+        ),
+        shape=(size, size),
+    )
+
+
+def union(matrices: Sequence[Any]) -> UnionPattern:
+    """Square CSC ``matrices`` of one size, symmetric and with every diagonal entry, on one pattern."""
+    from scipy.sparse import csc_array
+
+    n = matrices[0].shape[0]
+    whole = None
+    for matrix in matrices:
+        matrix.sort_indices()
+        ones = csc_array((np.ones(matrix.nnz, np.int8), matrix.indices, matrix.indptr), shape=(n, n))
+        whole = ones if whole is None else whole.maximum(ones)
+    assert whole is not None
+    whole.sort_indices()
+    start, row = whole.indptr.astype(np.int64), whole.indices.astype(np.int64)
+    column = np.repeat(np.arange(n), np.diff(start))
+    value = np.zeros((len(matrices), len(row)), complex)
+    key = column * n + row
+    for sequence, matrix in zip(value, matrices, strict=True):
+        if matrix.nnz == len(row):
+            sequence[:] = matrix.data
+        else:
+            at = np.repeat(np.arange(n), np.diff(matrix.indptr)) * n + matrix.indices
+            sequence[np.searchsorted(key, at)] = matrix.data
+    return UnionPattern(start, row, column, np.flatnonzero(row == column), value)
