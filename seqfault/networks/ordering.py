@@ -48,13 +48,13 @@ class Peeled(msgspec.Struct, frozen=True, eq=False):
     own: Complex
 
 
-def mirrored(pattern: UnionPattern) -> Ints:
-    """The entry (j, k) for every entry (k, j)."""
+def mirrored(start: Ints, row: Ints) -> Ints:
+    """The entry (j, k) for every entry (k, j) of a symmetric pattern."""
     from scipy.sparse import csc_array
 
-    n = pattern.size
-    entries = np.arange(len(pattern.row), dtype=np.int32)
-    turned = csc_array((entries, pattern.row.astype(np.int32), pattern.start), shape=(n, n)).tocsr()
+    n = len(start) - 1
+    entries = np.arange(len(row), dtype=np.int32)
+    turned = csc_array((entries, row.astype(np.int32), start.astype(np.int32)), shape=(n, n)).tocsr()
     return np.asarray(turned.data, np.int64)
 
 
@@ -142,7 +142,7 @@ def _cancelled(row: Ints, column: Ints, value: Complex, n: int) -> Bools:
 
 
 def _after_a_neighbour(place: Ints, waiting: Bools, row: Ints, column: Ints) -> Ints:
-    """``place`` with each waiting node moved behind the first neighbour that does not wait, or to the end."""
+    """``place`` with each waiting node behind the first neighbour that does not wait, or last."""
     pairs = waiting[column] & ~waiting[row]
     first = np.full(len(place), len(place))
     np.minimum.at(first, column[pairs], place[row[pairs]])

@@ -40,6 +40,29 @@ class UnionPattern(msgspec.Struct, frozen=True, eq=False):
         return np.searchsorted(self.column * n + self.row, column * n + row)
 
 
+def small_union(stamps: Sequence[Stamps], references: Sequence[Ints], size: int) -> UnionPattern:
+    """The union pattern of small networks, without scipy; as ``union`` of ``grounded`` ones."""
+    keys, values = [], []
+    every = np.arange(size)
+    for each, reference in zip(stamps, references, strict=True):
+        kept = np.zeros(size, bool)
+        kept[: each.size] = True
+        kept[reference] = False
+        both = kept[each.row] & kept[each.column]
+        own = np.ones(size, complex)
+        own[: each.size] = np.where(kept[: each.size], each.weak, 1)
+        keys.append(np.concatenate([each.column[both] * size + each.row[both], every * (size + 1)]))
+        values.append(np.concatenate([each.value[both], own]))
+    key = np.sort(np.concatenate(keys))
+    key = key[np.diff(key, prepend=-1) > 0]
+    value = np.zeros((len(stamps), len(key)), complex)
+    for into, at, of in zip(value, keys, values, strict=True):
+        np.add.at(into, np.searchsorted(key, at), of)
+    column, row = key // size, key % size
+    start = np.searchsorted(column, np.arange(size + 1))
+    return UnionPattern(start, row, column, np.flatnonzero(row == column), value)
+
+
 def grounded(stamps: Stamps, reference: Ints, size: int) -> Any:
     """The matrix (``size``, ``size``) of ``stamps`` as CSC, rows of the unit matrix at ``reference``."""
     from scipy.sparse import csc_array

@@ -33,7 +33,7 @@ def selected_inverse(pattern: UnionPattern) -> Complex:
 
     Raises ``RuntimeError`` where a matrix cannot be factorised with its pivots on the diagonal.
     """
-    mirror = mirrored(pattern)
+    mirror = mirrored(pattern.start, pattern.row)
     peeled = peel(pattern, mirror)
     out = np.empty(pattern.value.shape, complex)
     core = peeled.core
@@ -59,12 +59,12 @@ def _core(row: Ints, column: Ints, value: Complex, n: int) -> Complex:
     structure = supernodes(elimination.lower)
     factor, pivot = _factorised(row, column, value, elimination, structure)
     inverse = invert(structure, factor, pivot)
-    a, b = elimination.place[row], elimination.place[column]
-    lower = np.flatnonzero(row >= column)
+    lower = np.flatnonzero(row > column)  # L stores one of a pair
+    a, b = elimination.place[row[lower]], elimination.place[column[lower]]
     place = np.empty(len(row), np.int64)
-    place[lower] = structure.find(a[lower], b[lower])
-    upper = np.flatnonzero(row < column)
-    place[upper] = structure.find(a[upper], b[upper])
+    place[lower] = structure.find(a, b)
+    place[mirrored(start, row)[lower]] = place[lower]
+    place[row == column] = structure.own[elimination.place]
     return inverse.take(place, axis=1)
 
 
@@ -75,11 +75,11 @@ def _factorised(
     from scipy.sparse import csc_array
     from scipy.sparse.linalg import splu
 
-    n, place = len(elimination.place), elimination.place
+    n, place = len(elimination.place), elimination.place.astype(np.int32)
     entries = csc_array(
         (
             np.arange(len(row), dtype=np.int32),
-            (place[row].astype(np.int32), place[column].astype(np.int32)),
+            (place[row], place[column]),
         ),
         shape=(n, n),
     )

@@ -19,8 +19,8 @@ import numpy as np
 from seqfault.model.elements import Ints
 
 BELOW = np.array(
-    [*range(5), 6, 8, 10, 12, 16, 20, 24, 28, *range(32, 129, 8), 144, 160, 192, 224, 256, 320, 384, 448]
-    + [512, 640, 768, 1024, 1536, 2048, 3072, 4096, 6144, 8192, 12288, 16384]
+    (*range(5), 6, 8, 10, 12, 16, 20, 24, 28, *range(32, 129, 8), *range(144, 257, 32), 320, 384, 448)
+    + (512, 640, 768, 1024, 1536, 2048, 3072, 4096, 6144, 8192, 12288, 16384)
 )
 """Numbers of rows below are rounded up to these: a few zeros buy fewer shapes."""
 FEW = 40
