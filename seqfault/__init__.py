@@ -46,6 +46,7 @@ if TYPE_CHECKING:
     from seqfault.faults.network import Network
     from seqfault.faults.solution import FaultSolution
     from seqfault.studies.compare import Comparison, compare
+    from seqfault.studies.contributions import Contributions, contributions
     from seqfault.studies.levels import Levels, levels
 
 __version__ = "0.1.0"
@@ -55,6 +56,7 @@ __all__ = [
     "CaseError",
     "CheckError",
     "Comparison",
+    "Contributions",
     "Fault",
     "FaultSolution",
     "InputError",
@@ -67,6 +69,7 @@ __all__ = [
     "__version__",
     "case_from_tree",
     "compare",
+    "contributions",
     "in_state",
     "levels",
     "read_case",
@@ -89,6 +92,7 @@ _HOMES = {
     "seqfault.faults.network": ("Network",),
     "seqfault.faults.solution": ("FaultSolution",),
     "seqfault.studies.compare": ("Comparison", "compare"),
+    "seqfault.studies.contributions": ("Contributions", "contributions"),
     "seqfault.studies.levels": ("Levels", "levels"),
 }
 

@@ -124,6 +124,7 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
         place = _after_a_neighbour(place, waiting, row, column)
         turned = np.argsort(place)
         lu = splu(csc_array(stand_in[turned][:, turned]), permc_spec="NATURAL", **SETTINGS)
+        place = np.asarray(lu.perm_c, np.int64)[place]  # it still sorts children before their parents
     lower = lu.L
     if not lower.has_sorted_indices:
         lower.sort_indices()

@@ -37,7 +37,11 @@ class UnionPattern(msgspec.Struct, frozen=True, eq=False):
     def find(self, row: Ints, column: Ints) -> Ints:
         """Entries at ``row``, ``column``, which must be there."""
         n = self.size
-        return np.searchsorted(self.column * n + self.row, column * n + row)
+        key, wanted = self.column * n + self.row, column * n + row
+        found = np.searchsorted(key, wanted)
+        if len(wanted) and not np.array_equal(key[np.minimum(found, len(key) - 1)], wanted):
+            raise AssertionError("an entry is not on the pattern")
+        return found
 
 
 def small_union(stamps: Sequence[Stamps], references: Sequence[Ints], size: int) -> UnionPattern:
@@ -51,8 +55,8 @@ def small_union(stamps: Sequence[Stamps], references: Sequence[Ints], size: int)
         both = kept[each.row] & kept[each.column]
         own = np.ones(size, complex)
         own[: each.size] = np.where(kept[: each.size], each.weak, 1)
-        keys.append(np.concatenate([each.column[both] * size + each.row[both], every * (size + 1)]))
-        values.append(np.concatenate([each.value[both], own]))
+        keys.append(np.concatenate([each.column * size + each.row, every * (size + 1)]))
+        values.append(np.concatenate([np.where(both, each.value, 0), own]))
     key = np.sort(np.concatenate(keys))
     key = key[np.diff(key, prepend=-1) > 0]
     value = np.zeros((len(stamps), len(key)), complex)
@@ -64,7 +68,10 @@ def small_union(stamps: Sequence[Stamps], references: Sequence[Ints], size: int)
 
 
 def grounded(stamps: Stamps, reference: Ints, size: int) -> Any:
-    """The matrix (``size``, ``size``) of ``stamps`` as CSC, rows of the unit matrix at ``reference``."""
+    """The matrix (``size``, ``size``) of ``stamps`` as CSC, rows of the unit matrix at ``reference``.
+
+    What was in such rows stays as zeros: its neighbours still ask for the entries of the inverse.
+    """
     from scipy.sparse import csc_array
 
     kept = np.ones(size, bool)
@@ -76,10 +83,10 @@ def grounded(stamps: Stamps, reference: Ints, size: int) -> Any:
     every = np.arange(size)
     return csc_array(
         (
-            np.concatenate([stamps.value[both], own]),
+            np.concatenate([np.where(both, stamps.value, 0), own]),
             (
-                np.concatenate([stamps.row[both], every]).astype(np.int32),
-                np.concatenate([stamps.column[both], every]).astype(np.int32),
+                np.concatenate([stamps.row, every]).astype(np.int32),
+                np.concatenate([stamps.column, every]).astype(np.int32),
             ),
         ),
         shape=(size, size),

@@ -19,8 +19,10 @@ import numpy as np
 from seqfault.model.elements import Ints
 
 BELOW = np.array(
-    (*range(5), 6, 8, 10, 12, 16, 20, 24, 28, *range(32, 129, 8), *range(144, 257, 32), 320, 384, 448)
-    + (512, 640, 768, 1024, 1536, 2048, 3072, 4096, 6144, 8192, 12288, 16384)
+    (
+        *(*range(5), 6, 8, 10, 12, 16, 20, 24, 28, *range(32, 129, 8), *range(144, 257, 32), 320, 384),
+        *(448, 512, 640, 768, 1024, 1536, 2048, 3072, 4096, 6144, 8192, 12288, 16384),
+    )
 )
 """Numbers of rows below are rounded up to these: a few zeros buy fewer shapes."""
 FEW = 40
@@ -102,7 +104,7 @@ def supernodes(lower: Any) -> Supernodes:
     found = np.searchsorted(keys, target)
     if not np.array_equal(keys[np.minimum(found, len(keys) - 1)], target):
         raise AssertionError("the pattern of the factor is not closed")  # rows of a child are its parent's
-    position = np.zeros(links, np.int32)
+    position = np.zeros(links, np.int64)
     at = link[whose] + step
     position[at] = found - start[head] + within[head]
     every = np.repeat(turn, below[turn])
