@@ -143,12 +143,21 @@ def _cancelled(row: Ints, column: Ints, value: Complex, n: int) -> Bools:
 
 
 def _after_a_neighbour(place: Ints, waiting: Bools, row: Ints, column: Ints) -> Ints:
-    """``place`` with each waiting node behind the first neighbour that does not wait, or last."""
-    pairs = waiting[column] & ~waiting[row]
-    first = np.full(len(place), len(place))
-    np.minimum.at(first, column[pairs], place[row[pairs]])
+    """``place`` with each waiting node behind a neighbour of its own that does not wait.
+
+    Two behind the same neighbour could cancel each other. Where every neighbour is taken, the last counts.
+    """
     wanted: Floats = place.astype(float)
-    wanted[waiting] = np.maximum(place[waiting], first[waiting] + 0.5)
+    taken: set[int] = set()
+    for node in np.flatnonzero(waiting).tolist():
+        here = slice(*np.searchsorted(column, (node, node + 1)).tolist())
+        others = row[here][~waiting[row[here]]]
+        others = others[np.argsort(place[others])].tolist()
+        free = [other for other in others if other not in taken]
+        behind = free[0] if free else others[-1] if others else None
+        if behind is not None:
+            taken.add(behind)
+        wanted[node] = max(place[node], len(place) if behind is None else place[behind]) + 0.5
     moved = np.empty(len(place), np.int64)
     moved[np.argsort(wanted, kind="stable")] = np.arange(len(place))
     return moved
