@@ -83,3 +83,16 @@ def test_elements_with_couplings_and_shared_star_points() -> None:
     assert np.abs(total[1, level.live] - 1).max() < 1e-9
     closed = np.isfinite(level.impedance[0])
     assert np.abs(total[0, closed] - 1).max() < 1e-9
+
+
+@pytest.mark.parametrize("name", [*CASES, "cases/moor.toml", "tests/cli/elements.toml"])
+def test_the_selected_inverse_of_small_cases(name: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    # Couplings, shared star points, negative star branches, parts without earth: all in these cases.
+    ours, theirs = (Network(read_case(str(ROOT / name))) for _ in range(2))
+    dense = contributions(theirs)
+    monkeypatch.setattr(factors, "DENSE", 0)
+    sparse = contributions(ours)
+    assert (sparse.start == dense.start).all()
+    for current in ("k3", "k2", "k2e", "k1", "earth", "k1_earth"):
+        a, b = getattr(sparse, current), getattr(dense, current)
+        assert a == pytest.approx(b, rel=1e-8, abs=1e-8 * np.nanmax(b), nan_ok=True)
