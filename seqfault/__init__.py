@@ -48,6 +48,7 @@ if TYPE_CHECKING:
     from seqfault.faults.solution import FaultSolution
     from seqfault.studies.along import Along, along
     from seqfault.studies.compare import Comparison, compare
+    from seqfault.studies.contributions import Contributions, contributions
     from seqfault.studies.levels import Levels, levels
     from seqfault.studies.neutral import NeutralReport, study_neutral
     from seqfault.studies.neutral_target import Target, find_target
@@ -64,6 +65,7 @@ __all__ = [
     "CaseError",
     "CheckError",
     "Comparison",
+    "Contributions",
     "Evolution",
     "Fault",
     "FaultSolution",
@@ -83,6 +85,7 @@ __all__ = [
     "along",
     "case_from_tree",
     "compare",
+    "contributions",
     "evolve",
     "fault_at",
     "find_target",
@@ -115,6 +118,7 @@ _HOMES = {
     "seqfault.faults.solution": ("FaultSolution",),
     "seqfault.studies.along": ("Along", "along"),
     "seqfault.studies.compare": ("Comparison", "compare"),
+    "seqfault.studies.contributions": ("Contributions", "contributions"),
     "seqfault.studies.levels": ("Levels", "levels"),
     "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
     "seqfault.studies.neutral_target": ("Target", "find_target"),

@@ -48,7 +48,9 @@ def against_rebuilt(case: Case, survey: OutageSurvey, which: list[int], agree: f
                 continue
             for c, name in enumerate(CURRENTS):
                 expected = float(getattr(whole, name)[at])
-                least = agree * AGREE * float(whole.k3[at])  # what is rounding beside the three-phase current
+                least = (
+                    agree * AGREE * float(whole.k3[at])
+                )  # what is rounding beside the three-phase current
                 assert survey.current[number, c, k] == pytest.approx(expected, rel=agree, abs=least)
     return compared
 
