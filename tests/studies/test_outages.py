@@ -28,8 +28,13 @@ CASES = sorted((Path(__file__).parents[2] / "cases").glob("*.toml"))
 AGREE = 1e-9
 
 
-def against_rebuilt(case: Case, survey: OutageSurvey, which: list[int], agree: float = AGREE) -> int:
-    """Hold the outages ``which`` (from 1) to networks built without them; how many were updated."""
+def against_rebuilt(
+    case: Case, survey: OutageSurvey, which: list[int], phase: float = AGREE, earth: float = AGREE
+) -> int:
+    """Hold the outages ``which`` (from 1) to networks built without them; how many were updated.
+
+    Currents of earth faults may differ by ``earth``, others by ``phase``.
+    """
     rebuilt, failed = dict(survey.rebuilt), dict(survey.failed)
     compared = 0
     for number in which:
@@ -48,9 +53,8 @@ def against_rebuilt(case: Case, survey: OutageSurvey, which: list[int], agree: f
                 continue
             for c, name in enumerate(CURRENTS):
                 expected = float(getattr(whole, name)[at])
-                least = (
-                    agree * AGREE * float(whole.k3[at])
-                )  # what is rounding beside the three-phase current
+                agree = phase if name in ("k3", "k2") else earth
+                least = agree * AGREE * float(whole.k3[at])  # rounding beside the three-phase current
                 assert survey.current[number, c, k] == pytest.approx(expected, rel=agree, abs=least)
     return compared
 
@@ -73,7 +77,8 @@ def test_random_networks_agree_with_networks_built_without_the_element(data: st.
         survey = survey_outages(network, outages)
     except NoAnswerError:
         return
-    against_rebuilt(case, survey, list(range(1, len(outages) + 1)), agree=1e-8)
+    # Drawn data may cost eight digits; so do milliohms beside a part that capacitance alone ties to earth.
+    against_rebuilt(case, survey, list(range(1, len(outages) + 1)), phase=1e-8, earth=1e-6)
 
 
 @pytest.mark.parametrize("seed", [1, 2])
