@@ -31,6 +31,8 @@ BLOCK = 32
 """Columns solved at a time."""
 LEFT = 1e-3
 """Share of what earths a floating piece that must be left for an update to keep its digits."""
+ROUNDING = 1e-8
+"""Bound on what rounding may do to an update; it does less by a factor of ten or more."""
 BLIND = 1e-9
 """A free potential that an element sees by less than this is one it does not see."""
 
@@ -115,6 +117,17 @@ def coupled_edges(model: Model, sequence: int) -> Edges:
         owners += [sets.names[k] for k in unit.tolist()]
     ends = np.stack([np.concatenate(firsts), np.concatenate(seconds)])
     return Edges(ends, tuple(owners), np.zeros(len(owners), bool))
+
+
+def _once(*each: Edges) -> tuple[Ints, list[str]]:
+    """Ends (2, e) and owners (e,) of all edges, every pair of nodes once for each owner."""
+    ends = np.concatenate([edges.ends for edges in each], axis=1)
+    owners = [name for edges in each for name in edges.owners]
+    first: dict[tuple[str, int, int], int] = {}
+    for k, (i, j) in enumerate(ends.T.tolist()):
+        first.setdefault((owners[k], min(i, j), max(i, j)), k)
+    kept = list(first.values())
+    return ends[:, kept], [owners[k] for k in kept]
 
 
 def driving_points(factor: SequenceFactor, nodes: Ints) -> tuple[Complex, Bools]:
@@ -272,19 +285,26 @@ class SequenceRemovals:
         inner = self._between(b.nodes)
         z_branches = _seen(self._factor, b, inner, b.nodes)  # Uᵀ Z_NN
         outer = self._columns[b.nodes]
+        noise = np.finfo(float).eps * _largest_terms(b, inner, z_branches)
         for piece in set(near[self.chosen[touched]].tolist()):
             here = np.flatnonzero(touched & (near[self.chosen] == piece))
             k = np.flatnonzero(near[b.nodes] == piece)
-            z_k = _transfer(self._factor, b.nodes[k], self.chosen[here], outer[np.ix_(k, here)])
-            if len(k) == len(b.nodes):
-                seen = _seen(self._factor, b, outer[:, here], self.chosen[here])
+            whole = len(k) == len(b.nodes)
+            if whole:
                 core = np.eye(b.drop.shape[1]) - b.admittance @ (z_branches @ b.drop)
+            else:
+                share = b.drop[k] @ b.admittance @ z_branches[:, k]
+                core = np.eye(len(k)) - share
+            if len(k) and noise > ROUNDING * np.linalg.svd(core, compute_uv=False).min():
+                return "an update would lose its digits"
+            if whole:
+                seen = _seen(self._factor, b, outer[:, here], self.chosen[here])
                 gain = np.linalg.solve(core, b.admittance @ seen)
                 out[here] += (seen * gain).sum(axis=0)
             elif len(k):
-                share = b.drop[k] @ b.admittance @ z_branches[:, k]
+                z_k = _transfer(self._factor, b.nodes[k], self.chosen[here], outer[np.ix_(k, here)])
                 z_kk = _transfer(self._factor, b.nodes[k], b.nodes[k], inner[np.ix_(k, k)])
-                w = share @ np.linalg.inv(z_kk @ (np.eye(len(k)) - share))
+                w = share @ np.linalg.inv(z_kk @ core)
                 out[here] += ((w @ z_k) * z_k).sum(axis=0)
         return out
 
@@ -292,6 +312,8 @@ class SequenceRemovals:
         """Why the parts ``after`` the outage, in the pieces ``near`` chosen nodes, are no matter for an
         update, or nothing."""
         label = self._label
+        if after is label and (label[b.nodes] == label[-1]).all():
+            return ""
         split = len(set(after[np.isin(label, label[b.nodes])].tolist())) > len(set(label[b.nodes].tolist()))
         if split and len(self._beside) and np.isin(label[self._beside], label[b.nodes]).any():
             return "what it cuts off may be coupled with other lines"
@@ -331,6 +353,13 @@ def _of_unit(inc: Incidence, k: int, drops: list[dict[int, complex]], blocks: li
         rows = [{n: row.get(n, 0) - last.get(n, 0) for n in {**row, **last}} for row in rows]
     drops.extend(rows)
     blocks.append(y)
+
+
+def _largest_terms(b: _Branches, inner: Complex, z_branches: Complex) -> float:
+    """The largest of what C Uᵀ Z U is the sum of, by the entries ``inner`` of G between its nodes."""
+    drop = np.abs(b.drop)
+    terms = drop.T @ np.abs(inner) @ drop + np.abs(z_branches) @ drop
+    return float((np.abs(b.admittance) @ terms).max(initial=0.0))
 
 
 def _transfer(factor: SequenceFactor, rows: Ints, nodes: Ints, grounded: Complex) -> Complex:
