@@ -35,7 +35,7 @@ def check_line(subject: Subject, line: Line) -> None:
             "a line in service is not earthed at its ends; write out = true beside it, or earthed = false",
         )
     subject.count(line.count)
-    subject.positive({"length": line.length})
+    subject.positive({"length": line.length, "screen_current": line.screen_current})
     subject.positive({"c1": line.c1, "c0": line.c0, "b1": line.b1, "b0": line.b0}, zero=True)
     for c, b in (("c1", "b1"), ("c0", "b0")):
         if getattr(line, c) is not None and getattr(line, b) is not None:

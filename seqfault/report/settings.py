@@ -42,6 +42,7 @@ def settings_page(study: States, found: Settings) -> Page:
     parts += _still(found)
     parts += _grades(found)
     parts += _withstand(found)
+    parts += _screens(found)
     parts += _blind(found)
     parts += _doubts(found)
     parts += [
@@ -210,6 +211,22 @@ def _withstand(found: Settings) -> Iterator[Part]:
     yield Sentences("The hardest case is", said)
 
 
+def _screens(found: Settings) -> Iterator[Part]:
+    if not found.screens:
+        return
+    rows = [
+        (
+            f"{each.line} by {each.relay}",
+            (size(each.current, "A"), seconds(each.time), seconds(each.allowed), each.verdict),
+        )
+        for each in found.screens
+    ]
+    columns = (("carries",), ("for",), ("withstands",), ("verdict",))
+    yield _table("Do the screens of the cables last as long?", columns, rows)
+    said = tuple(_why(f"{w.line} by {w.relay}", w.limit, w.reasons) for w in found.screens)
+    yield Sentences("The hardest case is", said)
+
+
 def _blind(found: Settings) -> Iterator[Part]:
     """Places no relay sees, those with one reason together."""
     said = []
@@ -249,6 +266,7 @@ def _facts(found: Settings) -> Iterator[Fact]:
         ("Keep still", found.still),
         ("Grade", found.grades),
         ("Neutral lasts", found.withstand),
+        ("Screens last", found.screens),
     )
     for label, each in groups:
         counts = Counter(item.verdict for item in each)

@@ -97,6 +97,18 @@ def settings_rows(found: Settings) -> Iterator[Quantity]:
             ("left on unseen", w.stays, "A"),
         )
         yield from _reasons(w.relay, kind, (*w.reasons, *w.doubts))
+    for m in found.screens:
+        kind = f"before the screen of {m.line} is spent"
+        yield from _rows(
+            m.relay,
+            kind,
+            m.limit,
+            ("verdict", m.verdict, ""),
+            ("current of the screen", m.current, "A"),
+            ("time to clear", m.time, "s"),
+            ("withstands", m.allowed, "s"),
+        )
+        yield from _reasons(m.relay, kind, (*m.reasons, *m.doubts))
     for b in found.blind_places:
         where = f"{b.place}, {b.opened} open" if b.opened else b.place
         yield Quantity("no relay", b.kind, "blind", "", b.reason, "", None, where, b.state)

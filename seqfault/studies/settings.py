@@ -5,10 +5,12 @@ from __future__ import annotations
 import msgspec
 
 from seqfault.case.records import Case
+from seqfault.errors import quoted
 from seqfault.studies.settings_blind import BlindPlace, BlindRelay, blind_places, blind_relays
 from seqfault.studies.settings_doubts import doubts_of
 from seqfault.studies.settings_grades import Grades, grades, pairs
 from seqfault.studies.settings_places import POINTS
+from seqfault.studies.settings_screens import Screen, screens
 from seqfault.studies.settings_sees import Sees, sees
 from seqfault.studies.settings_states import States, study_states, zone_of
 from seqfault.studies.settings_still import Still, keeps_still
@@ -30,6 +32,7 @@ class Settings(msgspec.Struct, frozen=True, eq=False):
     still: tuple[Still, ...]
     grades: tuple[Grades, ...]
     withstand: tuple[Withstand, ...]
+    screens: tuple[Screen, ...]
     blind_places: tuple[BlindPlace, ...]
     blind_relays: tuple[BlindRelay, ...]
     verdict: Verdict
@@ -56,11 +59,13 @@ def judge(study: States) -> Settings:
         for backup, first in pairs(study)
     )
     patience = tuple(withstands(study, doubts))
+    metal = tuple(screens(study, doubts))
     blind = blind_places(study)
     verdicts: list[Verdict] = [each.verdict for each in seen]
     verdicts += [each.verdict for each in still]
     verdicts += [each.verdict for each in graded]
     verdicts += [each.verdict for each in patience]
+    verdicts += [each.verdict for each in metal]
     if any(place.guarded for place in blind):
         verdicts.append("fail")
     return Settings(
@@ -70,6 +75,7 @@ def judge(study: States) -> Settings:
         still=still,
         grades=graded,
         withstand=patience,
+        screens=metal,
         blind_places=blind,
         blind_relays=blind_relays(study),
         verdict=worst(tuple(verdicts)),
@@ -103,8 +109,16 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
             "cover of a winding: its voltage and its impedance in proportion to the turns, the winding's"
             " reactance such that a fault at its terminals draws what was solved"
         )
-    if any(study.states[0].case.neutrals):
-        out.append("screens of cables: a case states no withstand of theirs, so none was checked")
+    bare = [n for n, line in study.case.lines.items() if line.screen_current is None and not line.out]
+    if found.screens:
+        out.append(
+            "screens of cables: all of 3I0 into the fault flows in the screen of the faulted cable and heats it"
+            " without loss (IEC 60949, adiabatic)"
+        )
+    if bare:
+        more = f" and {len(bare) - 6} more" if len(bare) > 6 else ""
+        shown = ", ".join(quoted(name) for name in bare[:6]) + more
+        out.append(f"lines {shown}: screen_current not stated, so what a screen withstands was not checked")
     return tuple(out)
 
 

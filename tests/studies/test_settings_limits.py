@@ -61,6 +61,37 @@ def test_a_neutral_lasts_as_its_square_of_current_and_time_say() -> None:
     assert 0 < row.stays <= 50 + 1e-6  # what its own pickup of 50 A lets through at most
 
 
+SCREEN = ("[lines.S]\n", '[lines.S]\nscreen_current = "1 kA"\n')
+
+
+def test_a_screen_lasts_as_its_square_of_current_and_time_say() -> None:
+    """I²t of the whole earth current of the worst fault on the cable, stepped one by one."""
+    study, found = study_settings(radial(SCREEN), points=3)
+    assert {(w.line, w.relay) for w in found.screens} == {("S", "board-earth")}
+    row, relay = found.screens[0], study.relays["board-earth"]
+    ends, worst, worst_time = breakers_of("board-earth", study.relays), 0.0, 0.0
+    for state in study.states:
+        referee = Referee(study.case, state.name, 1.4)
+        for spot in state.forms.spots:
+            if spot.owner != "S" or spot.opened in ends:
+                continue
+            for kind in ("line-ground", "line-line-ground"):
+                for hot in (False, True):
+                    for ohm in np.linspace(0, 10, 6):
+                        solution = referee.solve(spot, kind, float(ohm), "subtransient", hot)
+                        time = float(operate_times(relay, measured(solution, relay))) + 0.1
+                        size = abs(solution.residual)
+                        if size**2 * time > worst:
+                            worst, worst_time = size**2 * time, time
+    assert row.current**2 * row.time == pytest.approx(worst, rel=1e-6)
+    assert row.time == pytest.approx(worst_time, rel=1e-6)
+    assert row.allowed == pytest.approx((1000 / row.current) ** 2)
+    assert row.verdict == "pass"
+    spent = study_settings(radial((SCREEN[0], SCREEN[1].replace("1 kA", "50 A"))), points=2)[1]
+    assert [w.verdict for w in spent.screens] == ["fail"]
+    assert spent.verdict == "fail"
+
+
 def test_a_neutral_that_is_spent_before_the_backup_fails() -> None:
     _, found = study_settings(radial(('duration = "10 s"', 'duration = "1 s"')), points=2)
     assert [w.verdict for w in found.withstand] == ["fail"]
