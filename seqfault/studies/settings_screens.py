@@ -47,12 +47,9 @@ def screens(study: States, doubts: dict[str, tuple[str, ...]]) -> Iterator[Scree
     for line in dict.fromkeys(name for state in study.states for name in state.case.lines):
         if not any(_rated(state, line) for state in study.states):
             continue
-        behind = [
-            n for n, r in study.relays.items() if not r.out and line in zone_of(n, study.relays).backs_up
-        ]
-        own = [
-            n for n, r in study.relays.items() if not r.out and line in zone_of(n, study.relays).protects
-        ]
+        zones = {n: zone_of(n, study.relays) for n, relay in study.relays.items() if not relay.out}
+        behind = [n for n, zone in zones.items() if line in zone.backs_up]
+        own = [n for n, zone in zones.items() if line in zone.protects]
         for name in behind or own:
             yield _screen(study, name, line, doubts.get(name, ()))
 
