@@ -112,8 +112,8 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
     bare = [n for n, line in study.case.lines.items() if line.screen_current is None and not line.out]
     if found.screens:
         out.append(
-            "screens of cables: all of 3I0 into the fault flows in the screen of the faulted cable and heats"
-            " it without loss (IEC 60949, adiabatic)"
+            "screens of cables: all of 3I0 into the fault flows in the screen of the faulted cable and"
+            " heats it without loss (IEC 60949, adiabatic)"
         )
     if bare:
         more = f" and {len(bare) - 6} more" if len(bare) > 6 else ""
