@@ -48,9 +48,12 @@ if TYPE_CHECKING:
     from seqfault.faults.solution import FaultSolution
     from seqfault.studies.along import Along, along
     from seqfault.studies.compare import Comparison, compare
+    from seqfault.studies.contributions import Contributions, contributions
     from seqfault.studies.levels import Levels, levels
     from seqfault.studies.neutral import NeutralReport, study_neutral
     from seqfault.studies.neutral_target import Target, find_target
+    from seqfault.studies.settings import Settings, study_settings
+    from seqfault.studies.settings_proposal import Proposal, propose_settings
     from seqfault.studies.steps import Evolution, evolve
     from seqfault.studies.winding_cover import WindingCover, winding_cover
 
@@ -62,6 +65,7 @@ __all__ = [
     "CaseError",
     "CheckError",
     "Comparison",
+    "Contributions",
     "Evolution",
     "Fault",
     "FaultSolution",
@@ -70,23 +74,28 @@ __all__ = [
     "Network",
     "NeutralReport",
     "NoAnswerError",
+    "Proposal",
     "QuantityError",
     "RequestError",
     "SeqfaultError",
+    "Settings",
     "Target",
     "WindingCover",
     "__version__",
     "along",
     "case_from_tree",
     "compare",
+    "contributions",
     "evolve",
     "fault_at",
     "find_target",
     "in_state",
     "levels",
+    "propose_settings",
     "read_case",
     "read_steps",
     "study_neutral",
+    "study_settings",
     "winding_cover",
 ]
 
@@ -109,10 +118,13 @@ _HOMES = {
     "seqfault.faults.solution": ("FaultSolution",),
     "seqfault.studies.along": ("Along", "along"),
     "seqfault.studies.compare": ("Comparison", "compare"),
+    "seqfault.studies.contributions": ("Contributions", "contributions"),
     "seqfault.studies.levels": ("Levels", "levels"),
     "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
     "seqfault.studies.neutral_target": ("Target", "find_target"),
     "seqfault.studies.winding_cover": ("WindingCover", "winding_cover"),
+    "seqfault.studies.settings": ("Settings", "study_settings"),
+    "seqfault.studies.settings_proposal": ("Proposal", "propose_settings"),
     "seqfault.studies.steps": ("Evolution", "evolve"),
 }
 

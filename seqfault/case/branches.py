@@ -37,7 +37,7 @@ def check_line(subject: Subject, line: Line) -> None:
             "a line in service is not earthed at its ends; write out = true beside it, or earthed = false",
         )
     subject.count(line.count)
-    subject.positive({"length": line.length})
+    subject.positive({"length": line.length, "screen_current": line.screen_current})
     subject.positive({"c1": line.c1, "c0": line.c0, "b1": line.b1, "b0": line.b0}, zero=True)
     for c, b in (("c1", "b1"), ("c0", "b0")):
         if getattr(line, c) is not None and getattr(line, b) is not None:
@@ -65,20 +65,22 @@ def unremarkable(line: Line, case: Case) -> bool:
         return False
     if line.open and not {line.from_, line.to}.issuperset(line.open):
         return False
-    if line.b1 is not None or line.b0 is not None:
+    if line.screen_current is not None and line.screen_current.value.real <= 0:
         return False
-    return _usual_capacitances(line.c1, line.c0, metres)
+    if line.b1 is line.b0 is None:
+        return _usual_capacitances(line.c1, line.c0, metres, 1.0)
+    omega = 2 * math.pi * (case.frequency or 50.0)
+    return line.c1 is line.c0 is None and _usual_capacitances(line.b1, line.b0, metres, omega)
 
 
-def _usual_capacitances(c1: Quantity | None, c0: Quantity | None, metres: float) -> bool:
-    if c1 is None or c0 is None:
-        return c1 is c0
-    one, zero = 1e3 * c1.value.real, 1e3 * c0.value.real
-    if c1.dimension == c0.dimension == "capacitance":
-        one, zero = one / metres, zero / metres
-    elif c1.dimension != c0.dimension:
+def _usual_capacitances(one: Quantity | None, zero: Quantity | None, metres: float, omega: float) -> bool:
+    """Tell whether both sequences are usual, or neither is stated; ``omega`` makes susceptances of them."""
+    if one is None or zero is None:
+        return one is zero
+    if one.dimension != zero.dimension:
         return False
-    return _FARAD_PER_KM[0] <= zero <= one <= _FARAD_PER_KM[1]
+    per_km = 1e3 / omega if one.dimension.endswith("/length") else 1e3 / omega / metres
+    return _FARAD_PER_KM[0] <= per_km * zero.value.real <= per_km * one.value.real <= _FARAD_PER_KM[1]
 
 
 def _longest(nominal: float | None) -> float:

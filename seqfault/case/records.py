@@ -106,6 +106,7 @@ class Line(Record, frozen=True, kw_only=True, rename={"from_": "from"}):
     count: int = 1
     open: tuple[BusName, ...] = ()
     earthed: bool = False  # out of service and earthed at both ends
+    screen_current: Current | None = None  # its metal screen carries this for a second
 
 
 class MutualCoupling(Record, frozen=True, kw_only=True):

@@ -58,7 +58,7 @@ def deliver_plot(options: argparse.Namespace, content: bytes) -> None:
     """Write a chart to the file of ``--plot``."""
     from seqfault.report.files import write_whole
 
-    write_whole(options.plot, (content,), options.overwrite, "--plot")
+    write_whole(options.plot, content, options.overwrite, "--plot")
     say(f"wrote {options.plot}")
 
 

@@ -9,7 +9,7 @@ from typing import NoReturn
 
 from seqfault import __version__
 
-COMMANDS = ("inspect", "fault", "compare", "levels", "along", "neutral", "completion")
+COMMANDS = ("inspect", "fault", "compare", "levels", "along", "neutral", "settings", "completion")
 EPILOG = """\
 examples:
   seqfault inspect plant.toml

@@ -104,6 +104,21 @@ def multiplier_for(
     return np.where(possible, wanted / base, np.nan)
 
 
+def multiple_for(curve: str, time: float, multiplier: float, *, least: float = 0.0) -> float:
+    """The multiple of the pickup from which ``operate_time`` is no longer than ``time`` (s).
+
+    m = (k/(t/M − c) + 1)^(1/α), the curve solved for m; 1 where every operation is as fast, infinite where
+    none is. Raises KeyError for an unknown curve.
+    """
+    constants = CURVES[curve]
+    if least > time:
+        return inf
+    if constants.k == 0:
+        return 1.0 if multiplier * constants.c <= time else inf
+    left = time / multiplier - constants.c if multiplier else inf
+    return float((constants.k / left + 1) ** (1 / constants.alpha)) if left > 0 else inf
+
+
 def reset_time(curve: str, multiple: npt.ArrayLike, multiplier: npt.ArrayLike) -> Reals:
     """Reset time (s) from full travel, t = M t_r/(1 − m²): IEEE C37.112-1996; infinite from the pickup up.
 

@@ -89,10 +89,10 @@ class Network:
         made = arranged(self.case, points, broken)
         located = object.__new__(Network)
         located.case = self.case
-        model, located.loading = loaded(build_arranged(made.case, self.case, self.machine))
+        model, located.loading = loaded(build_arranged(made.case, self.model, self.machine))
         if made.breaks:
             case, links = made.broken()
-            opened = build_arranged(case, self.case, self.machine, links)
+            opened = build_arranged(case, self.model, self.machine, links)
             model = replace(opened, before=model.before, sources=_loads_of(model, opened))
         located.machine = self.machine
         located.model = replace(model, assumptions=self.model.assumptions, warnings=self.model.warnings)

@@ -127,7 +127,8 @@ class _Response(msgspec.Struct, frozen=True, eq=False):
 
     ``above`` (2, 2) what the two do to the potentials of place and star point above the references,
     ``direction`` (2, k) what the free ones do; ``compliance`` (k, k) what ties these to earth, None where
-    nothing ties one of them.
+    nothing ties one of them. ``bound`` (k, t) spans those that something ties, and ``tied`` (t, k) are the
+    currents to earth of each potential, along these.
     """
 
     fault: complex
@@ -136,6 +137,8 @@ class _Response(msgspec.Struct, frozen=True, eq=False):
     above: Complex
     direction: Complex
     compliance: Complex | None
+    bound: Complex
+    tied: Complex
 
 
 def _responses(model: Model, zero: SequenceFactor, ports: NeutralPorts, rows: Ints, star: int) -> _Response:
@@ -160,40 +163,66 @@ def _responses(model: Model, zero: SequenceFactor, ports: NeutralPorts, rows: In
             direction[:, at + q] = np.where(zero.free.part[nodes] == part, zero.direction[nodes, q], 0)
             free.append(seen(w, v))
         compliance[at : at + size, at : at + size] = zero.compliance[part, :size, :size]
-    tied = not any(int(zero.slacks[p]) for p in parts)
+    bound, tied = _ties(zero, parts, sizes)
     return _Response(
         fault=seen(-columns[:, 0], -columns[:, 0]),
         device=seen(-columns[:, 1], -columns[:, 1]),
         free=np.array(free, complex),
         above=-columns[nodes],
         direction=direction,
-        compliance=compliance if tied else None,
+        compliance=compliance if bound.shape[1] == k else None,
+        bound=bound,
+        tied=tied,
     )
+
+
+def _ties(zero: SequenceFactor, parts: list[int], sizes: list[int]) -> tuple[Complex, Complex]:
+    """``bound`` and ``tied`` of a response, over all ``parts``."""
+    bound: list[Complex] = []
+    tied: list[Complex] = []
+    for part, size in zip(parts, sizes, strict=True):
+        inside, slacks = zero.free.part == part, int(zero.slacks[part])
+        basis, drop = zero.free.basis[inside, :size], zero.drop[inside, :size]
+        load = zero.stamps.weak[inside, None] * basis
+        own = np.eye(size, dtype=complex)
+        if slacks:
+            own = np.linalg.svd(zero.slack[part, :size, :slacks])[0][:, slacks:]
+        bound.append(own)
+        tied.append(own.T @ (basis.T @ load - load.T @ drop))
+    return _blocks(bound), _blocks(tied)
+
+
+def _blocks(each: list[Complex]) -> Complex:
+    """The matrices along a diagonal."""
+    out = np.zeros((sum(len(m) for m in each), sum(m.shape[1] for m in each)), complex)
+    row = column = 0
+    for m in each:
+        out[row : row + len(m), column : column + m.shape[1]] = m
+        row, column = row + len(m), column + m.shape[1]
+    return out
 
 
 def _free_potentials(kind: KindForms, response: _Response, probes: Complex) -> Complex | None:
     """Free potentials (k, n) at the ``probes``.
 
-    From what ties them to earth; where nothing does, from the voltages of place and star point: the
-    place's zero-sequence voltage is a third of the phases' sum, and faulted phases are at zero. None where
-    these two do not tell all of them.
+    From what ties them to earth; where nothing ties some, from the voltages of place and star point as
+    well: the place's zero-sequence voltage is a third of the phases' sum, and faulted phases are at zero.
+    None where all these do not tell what the relay sees of them.
     """
     drawn = np.stack([kind.sequence[0].at(probes), kind.neutral.at(probes)])
     if response.compliance is not None:
         return np.asarray(-response.compliance @ response.direction.T @ drawn)
     place = np.sum([form.at(probes) for form in kind.sound], axis=0) / 3
     stood = np.stack([place, kind.star.at(probes)]) - response.above @ drawn
-    out = np.zeros((len(response.free), probes.shape[1]), complex)
-    effect = response.direction
-    moving = np.flatnonzero(np.abs(effect).max(axis=0, initial=0.0) > SEEN)
-    if len(moving) == 1:
-        row = int(np.abs(effect[:, moving[0]]).argmax())
-        out[moving] = stood[row] / effect[row, moving[0]]
-    elif len(moving) == 2:
-        own = effect[:, moving]
-        if abs(np.linalg.det(own)) <= SEEN * np.abs(own).max() ** 2:
-            return None
-        out[moving] = np.linalg.solve(own, stood)
-    elif len(moving):
+    effect = np.where(np.abs(response.direction) > SEEN, response.direction, 0)
+    told = np.concatenate([response.tied, effect])
+    amount = np.concatenate([-response.bound.T @ response.direction.T @ drawn, stood])
+    size = np.abs(told).max(axis=1, initial=0.0)
+    told, amount = told[size > 0] / size[size > 0, None], amount[size > 0] / size[size > 0, None]
+    left, values, right = np.linalg.svd(told)
+    rank = int((values > SEEN).sum())
+    untold = right[rank:] @ response.free
+    if np.abs(untold).max(initial=0.0) > SEEN * np.abs(response.free).max(initial=0.0):
         return None
-    return out
+    along = (left.conj().T @ amount)[:rank] / values[:rank, None]
+    return np.asarray(right[:rank].conj().T @ along)

@@ -31,37 +31,44 @@ from seqfault.model.zones import components, displacements, live_buses
 __all__ = ["MACHINES", "Machine", "build_model"]
 
 
-def build_model(case: Case, machine: Machine = "subtransient") -> Model:
+def build_model(
+    case: Case, machine: Machine = "subtransient", base: tuple[Case, Model] | None = None
+) -> Model:
     """The per-unit model of ``case`` with its machines behind the reactance named by ``machine``.
 
+    ``base`` is the case in its base state and its model with the same machines, where these are at hand.
     Raises ``CaseError`` where vector groups do not close a loop, a reactance that is needed is not
     stated, or a coil has nothing to be tuned to.
     """
-    base = case if case.state == "base" else case_from_tree(case.tree, case.source)
-    coils, noted, complaints = _coils(base, case, machine)
+    home = case if case.state == "base" else base[0] if base else case_from_tree(case.tree, case.source)
+    coils, noted, complaints = _coils(home, case, machine)
     c = Context(case, machine, coils)
     c.complaints += complaints
     for name, text in noted:
         c.ledger.note("neutral", name, text)
     model = _assemble(c)
     found = doubts(model, case)
-    bare = unearthed_buses(model) if base is not case else ()
+    bare = unearthed_buses(model) if home is not case else ()
     if bare:
-        whole = _assemble(Context(base, machine, _coils(base, base, machine)[0]))
+        whole = base[1] if base else _assemble(Context(home, machine, _coils(home, home, machine)[0]))
         found += lost_earth(model, bare, whole)
     return replace(model, warnings=(*model.warnings, *found))
 
 
 def build_arranged(
-    case: Case, within: Case, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
+    case: Case, like: Model, machine: Machine = "subtransient", links: Sequence[tuple[str, str]] = ()
 ) -> Model:
-    """The model of ``case``, which is ``within`` with lines and terminals rewritten.
+    """The model of ``case``, which is that of ``like`` with lines and terminals rewritten.
 
-    ``links`` are pairs of its buses that breaks stand between. Coils are tuned as in ``within``, and
-    what was assumed and warned of there is not said again.
+    ``links`` are pairs of its buses that breaks stand between. Coils keep the ohms they have in ``like``,
+    and what was assumed and warned of there is not said again.
     """
-    base = within if within.state == "base" else case_from_tree(within.tree, within.source)
-    return _assemble(Context(case, machine, _coils(base, within, machine)[0], links))
+    named = {n for n, record in case.neutrals.items() if record.kind == ARC_SUPPRESSION}
+    coils = dict.fromkeys(named, complex(np.inf))  # of no winding in service
+    for name, ohms in zip(like.stars.names, like.stars.impedance.tolist(), strict=True):
+        if name in named:
+            coils[name] = ohms
+    return _assemble(Context(case, machine, coils, links))
 
 
 def _coils(

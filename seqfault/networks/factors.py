@@ -14,7 +14,7 @@ and currents obey dᵀ i = 0. Bordering of a nearly singular system: the method 
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -22,6 +22,9 @@ from seqfault.errors import NoAnswerError
 from seqfault.model.elements import Bools, Complex, Floats, Ints, Model
 from seqfault.networks.assembly import Stamps, assemble
 from seqfault.networks.connectivity import FreeSpace, free_space
+
+if TYPE_CHECKING:
+    from seqfault.networks.survey import Survey
 
 DENSE = 300
 """Networks of up to this many nodes are inverted densely, without importing scipy."""
@@ -257,6 +260,7 @@ class SequenceNetworks:
     def __init__(self, model: Model) -> None:
         self.model = model
         self._factors: dict[int, SequenceFactor] = {}
+        self._survey: Survey | None = None
 
     def __reduce__(self) -> tuple[type[SequenceNetworks], tuple[Model]]:
         return type(self), (self.model,)
@@ -267,3 +271,14 @@ class SequenceNetworks:
             free = free_space(self.model, sequence, stamps.weak)
             self._factors[sequence] = SequenceFactor(stamps, free)
         return self._factors[sequence]
+
+    def survey(self) -> Survey:
+        """Every bus of the three networks at once.
+
+        Raises ``CheckError`` where a column of an inverse fails its check.
+        """
+        if self._survey is None:
+            from seqfault.networks.survey import survey_of
+
+            self._survey = survey_of([self[s] for s in range(3)], self.model.nodes)
+        return self._survey

@@ -1,9 +1,10 @@
 """Networks without one element, or a few, by low-rank updates of the factors of the whole.
 
 The elements taken out are branches U with admittances C on their nodes N. What is left is looked at a
-piece at a time, a piece being what strong elements still join. Of the currents that one unit into a node
-of a piece sends into the removed elements, with all that hangs behind them, H holds those at the nodes K
-that elements and piece share: H = (U C Uᵀ Z)_KK. Without elements and what hangs behind them
+piece at a time, a piece being what strong elements still join or windings on one core couple. Of the
+currents that one unit into a node of a piece sends into the removed elements, with all that hangs behind
+them, H holds those at the nodes K that elements and piece share: H = (U C Uᵀ Z)_KK. Without elements and
+what hangs behind them
 
     Z' = Z + Z_K W Z_Kᵀ,   W = H (I − H)⁻¹ Z_KK⁻¹,
 
@@ -30,6 +31,8 @@ BLOCK = 32
 """Columns solved at a time."""
 LEFT = 1e-3
 """Share of what earths a floating piece that must be left for an update to keep its digits."""
+ROUNDING = 1e-8
+"""Bound on what rounding may do to an update; it does less by a factor of ten or more."""
 BLIND = 1e-9
 """A free potential that an element sees by less than this is one it does not see."""
 
@@ -97,6 +100,36 @@ def strong_edges(model: Model, sequence: int) -> Edges:
     return Edges(ends, tuple(owners), np.concatenate(hard))
 
 
+def coupled_edges(model: Model, sequence: int) -> Edges:
+    """Edges between all nodes of one unit: its windings share a core, joined or not."""
+    firsts, seconds = [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
+    owners: list[str] = []
+    for sets in model.winding_sets:
+        inc = incidence(sets, sequence, model.stars.node)
+        carries = (inc.admittance != 0).any(axis=2)[:, :, None]
+        node = np.where((inc.weight != 0) & carries, inc.node, -1).reshape(
+            len(sets.names), 2 * carries.shape[1]
+        )
+        head = node.max(axis=1, initial=-1)[:, None]
+        unit, place = np.nonzero((node >= 0) & (node != head))
+        firsts.append(head[unit, 0])
+        seconds.append(node[unit, place])
+        owners += [sets.names[k] for k in unit.tolist()]
+    ends = np.stack([np.concatenate(firsts), np.concatenate(seconds)])
+    return Edges(ends, tuple(owners), np.zeros(len(owners), bool))
+
+
+def _once(*each: Edges) -> tuple[Ints, list[str]]:
+    """Ends (2, e) and owners (e,) of all edges, every pair of nodes once for each owner."""
+    ends = np.concatenate([edges.ends for edges in each], axis=1)
+    owners = [name for edges in each for name in edges.owners]
+    first: dict[tuple[str, int, int], int] = {}
+    for k, (i, j) in enumerate(ends.T.tolist()):
+        first.setdefault((owners[k], min(i, j), max(i, j)), k)
+    kept = list(first.values())
+    return ends[:, kept], [owners[k] for k in kept]
+
+
 def driving_points(factor: SequenceFactor, nodes: Ints) -> tuple[Complex, Bools]:
     """Driving-point impedances (r,) of ``nodes``, and where they are infinite."""
     return _driving_points(factor, nodes, factor.columns(nodes))
@@ -123,6 +156,12 @@ class SequenceRemovals:
         self._size = factor.size + 1
         self._joined = Joined(self._size, self._edges.ends, self._edges.owners)
         self._label = self._joined.label
+        cores = coupled_edges(model, sequence)
+        ends, owners = (
+            np.concatenate([self._edges.ends, cores.ends], axis=1),
+            self._edges.owners + cores.owners,
+        )
+        self._near = Joined(self._size, ends, owners)
         metal = (self._edges.ends != factor.size).all(axis=0)
         every = np.arange(factor.size)
         beside = np.stack([every, self._size + joined_parts(model, sequence, every, factor.size)])
@@ -194,8 +233,9 @@ class SequenceRemovals:
             if name in self._line:
                 k = self._line[name]
                 ends = lines.nodes[:, k].tolist()
-                drops.append({ends[0]: 1, ends[1]: -1})
-                blocks.append(np.array([[1 / lines.series[self._sequence, k]]]))
+                if ends[0] != ends[1]:  # a closed tie beside it carries all
+                    drops.append({ends[0]: 1, ends[1]: -1})
+                    blocks.append(np.array([[1 / lines.series[self._sequence, k]]]))
                 for end in ends:
                     shunts[end] = shunts.get(end, 0) + complex(lines.shunt[self._sequence, k])
             for s, k in self._units.get(name, ()):
@@ -238,37 +278,48 @@ class SequenceRemovals:
             return "what floats beside it is not simple"
         if self._touches_slack(b.nodes):
             return "it stands in a part that nothing ties to earth"
-        after = self._joined.without(names)
-        why = self._lost_earth(b, after, touched)
+        near = self._near.without(names)
+        why = self._lost_earth(b, self._joined.without(names), near, touched)
         if why:
             return why
         inner = self._between(b.nodes)
         z_branches = _seen(self._factor, b, inner, b.nodes)  # Uᵀ Z_NN
         outer = self._columns[b.nodes]
-        for piece in set(after[self.chosen[touched]].tolist()):
-            here = np.flatnonzero(touched & (after[self.chosen] == piece))
-            k = np.flatnonzero(after[b.nodes] == piece)
-            z_k = _transfer(self._factor, b.nodes[k], self.chosen[here], outer[np.ix_(k, here)])
-            if len(k) == len(b.nodes):
-                seen = _seen(self._factor, b, outer[:, here], self.chosen[here])
+        noise = np.finfo(float).eps * _largest_terms(b, inner, z_branches)
+        for piece in set(near[self.chosen[touched]].tolist()):
+            here = np.flatnonzero(touched & (near[self.chosen] == piece))
+            k = np.flatnonzero(near[b.nodes] == piece)
+            whole = len(k) == len(b.nodes)
+            if whole:
                 core = np.eye(b.drop.shape[1]) - b.admittance @ (z_branches @ b.drop)
+            else:
+                share = b.drop[k] @ b.admittance @ z_branches[:, k]
+                core = np.eye(len(k)) - share
+            if len(k) and noise > ROUNDING * np.linalg.svd(core, compute_uv=False).min():
+                return "an update would lose its digits"
+            if whole:
+                seen = _seen(self._factor, b, outer[:, here], self.chosen[here])
                 gain = np.linalg.solve(core, b.admittance @ seen)
                 out[here] += (seen * gain).sum(axis=0)
             elif len(k):
-                share = b.drop[k] @ b.admittance @ z_branches[:, k]
+                z_k = _transfer(self._factor, b.nodes[k], self.chosen[here], outer[np.ix_(k, here)])
                 z_kk = _transfer(self._factor, b.nodes[k], b.nodes[k], inner[np.ix_(k, k)])
-                w = share @ np.linalg.inv(z_kk @ (np.eye(len(k)) - share))
+                w = share @ np.linalg.inv(z_kk @ core)
                 out[here] += ((w @ z_k) * z_k).sum(axis=0)
         return out
 
-    def _lost_earth(self, b: _Branches, after: Ints, touched: Bools) -> str:
-        """Why the pieces of ``after`` that hold chosen nodes are no matter for an update, or nothing."""
+    def _lost_earth(self, b: _Branches, after: Ints, near: Ints, touched: Bools) -> str:
+        """Why the parts ``after`` the outage, in the pieces ``near`` chosen nodes, are no matter for an
+        update, or nothing."""
         label = self._label
+        if after is label and (label[b.nodes] == label[-1]).all():
+            return ""
         split = len(set(after[np.isin(label, label[b.nodes])].tolist())) > len(set(label[b.nodes].tolist()))
         if split and len(self._beside) and np.isin(label[self._beside], label[b.nodes]).any():
             return "what it cuts off may be coupled with other lines"
         weak = self._factor.stamps.weak
-        for piece in set(after[self.chosen[touched]].tolist()):
+        inside = np.isin(near[:-1], near[self.chosen[touched]]) & np.isin(label[:-1], label[b.nodes])
+        for piece in set(after[:-1][inside].tolist()):
             if piece == after[-1]:
                 continue
             members = np.flatnonzero(after[:-1] == piece)
@@ -302,6 +353,13 @@ def _of_unit(inc: Incidence, k: int, drops: list[dict[int, complex]], blocks: li
         rows = [{n: row.get(n, 0) - last.get(n, 0) for n in {**row, **last}} for row in rows]
     drops.extend(rows)
     blocks.append(y)
+
+
+def _largest_terms(b: _Branches, inner: Complex, z_branches: Complex) -> float:
+    """The largest of what C Uᵀ Z U is the sum of, by the entries ``inner`` of G between its nodes."""
+    drop = np.abs(b.drop)
+    terms = drop.T @ np.abs(inner) @ drop + np.abs(z_branches) @ drop
+    return float((np.abs(b.admittance) @ terms).max(initial=0.0))
 
 
 def _transfer(factor: SequenceFactor, rows: Ints, nodes: Ints, grounded: Complex) -> Complex:

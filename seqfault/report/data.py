@@ -41,9 +41,9 @@ class Quantity(msgspec.Struct, frozen=True):
 
 
 class QuantityColumn(msgspec.Struct, frozen=True):
-    """One quantity of one kind of fault at many places, each value belonging to its place.
+    """One quantity of one kind of fault at many places, a line of the long form for each.
 
-    The long form has a line for each; ``values`` (n,) hold None where undefined.
+    ``places``, ``values`` and ``where`` (n,) go together; a value is None where undefined.
     """
 
     places: Sequence[str]
@@ -51,6 +51,7 @@ class QuantityColumn(msgspec.Struct, frozen=True):
     quantity: str
     values: Sequence[float | None]
     unit: str
+    where: Sequence[str]
     state: str
 
 

@@ -81,6 +81,7 @@ def _line(row: Quantity) -> tuple[str, ...]:
 def _column_lines(row: QuantityColumn) -> Iterator[tuple[str | float | None, ...]]:
     """The lines of a column; of a float the writer itself makes its ``repr``, of None nothing."""
     places = list(map(_field, row.places))
+    where = places if row.where is row.places else list(map(_field, row.where))
     kind, quantity, unit, state = map(_field, (row.kind, row.quantity, row.unit, row.state))
     return zip(
         places,
@@ -90,7 +91,7 @@ def _column_lines(row: QuantityColumn) -> Iterator[tuple[str | float | None, ...
         row.values,
         repeat(unit),
         repeat(""),
-        places,
+        where,
         repeat(state),
     )
 
@@ -126,8 +127,10 @@ def check_target(path: str, overwrite: bool, case: str, option: str = "--output"
         raise RequestError(f"{option} {name}: the file exists; give another name, or --overwrite")
 
 
-def write_whole(path: str, content: Iterable[bytes], overwrite: bool, option: str = "--output") -> None:
-    """Write the pieces of ``content`` to ``path`` as they come, whole or not at all.
+def write_whole(
+    path: str, content: bytes | Iterable[bytes], overwrite: bool, option: str = "--output"
+) -> None:
+    """Write ``content``, its pieces as they come, to ``path``, whole or not at all.
 
     Raises ``RequestError`` where that fails, or where ``path`` has come to exist meanwhile.
     """
@@ -137,7 +140,7 @@ def write_whole(path: str, content: Iterable[bytes], overwrite: bool, option: st
         descriptor = os.open(draft, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
         try:
             with open(descriptor, "wb") as file:
-                file.writelines(content)
+                file.writelines((content,) if isinstance(content, bytes) else content)
                 file.flush()
                 os.fsync(file.fileno())
             if overwrite:

@@ -12,6 +12,7 @@ from seqfault.errors import quoted
 from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
 from seqfault.model.elements import Floats
+from seqfault.report.contributions import contributions_table, contributions_tree
 from seqfault.report.data import QuantityColumn, cartesian, header
 from seqfault.report.numbers import kilovolt
 from seqfault.report.tables import (
@@ -30,6 +31,7 @@ from seqfault.report.tables import (
     greatest,
     once,
 )
+from seqfault.studies.contributions import Contributions
 from seqfault.studies.levels import LevelRange, Levels, level_range
 
 Current = Callable[[Levels], Floats]
@@ -52,8 +54,10 @@ KINDS = {
 }
 
 
-def levels_page(networks: Sequence[Network], states: Sequence[Levels]) -> Page:
-    """The page of one state, or of the greatest and least over several."""
+def levels_page(
+    networks: Sequence[Network], states: Sequence[Levels], fed: Sequence[Contributions] = ()
+) -> Page:
+    """The page of one state, or of the greatest and least over several; ``fed`` adds who feeds them."""
     model = networks[0].model
     several = len(states) > 1
     conditions = f"bolted faults at every bus, before them {_prefault(networks)}"
@@ -68,6 +72,7 @@ def levels_page(networks: Sequence[Network], states: Sequence[Levels]) -> Page:
             title,
             *(_ranges(states) if several else (_one(states[0]),)),
             *(() if several else (Sentences("", (MARKED,), quiet=True),)),
+            *(contributions_table(n.model, each) for n, each in zip(networks, fed, strict=False)),
             Sentences("States", key),
             Sentences("Note", once(_without_earth_current(networks, states))),
             Sentences("Assumed", assumed),
@@ -178,15 +183,26 @@ def _ranges(states: Sequence[Levels]) -> tuple[Table, Table]:
     )
 
 
-def levels_tree(networks: Sequence[Network], states: Sequence[Levels]) -> dict[str, Any]:
-    """Levels as plain values for JSON: ``buses`` of one state, or ``states`` and ``range``."""
+def levels_tree(
+    networks: Sequence[Network], states: Sequence[Levels], fed: Sequence[Contributions] = ()
+) -> dict[str, Any]:
+    """Levels as plain values for JSON: ``buses`` of one state, or ``states`` and ``range``.
+
+    With ``fed``, one a state, each bus lists its ``contributions``.
+    """
     first = networks[0]
     tree = header(first)
+    buses = [_buses(each) for each in states]
+    for network, rows, each in zip(networks, buses, fed, strict=False):
+        for b, row in enumerate(rows):
+            row["contributions"] = contributions_tree(network.model, each, b)
     if len(states) == 1:
-        tree["buses"] = _buses(states[0])
+        tree["buses"] = buses[0]
     else:
         tree["scenario"] = "all"
-        tree["states"] = [{"scenario": each.state, "buses": _buses(each)} for each in states]
+        tree["states"] = [
+            {"scenario": each.state, "buses": rows} for each, rows in zip(states, buses, strict=True)
+        ]
         tree["range"] = _range_tree(states)
     tree["assumptions"] = list(
         once(text for n in networks for a in n.model.assumptions for text in a.sentences())
@@ -235,4 +251,4 @@ def levels_rows(states: Sequence[Levels]) -> Iterator[QuantityColumn]:
             kind, quantity = KINDS[name]
             unit = "" if name == "k1_over_k3" else "A"
             values = list(map(_finite, np.asarray(current(each)).tolist()))
-            yield QuantityColumn(each.buses, kind, quantity, values, unit, each.state)
+            yield QuantityColumn(each.buses, kind, quantity, values, unit, each.buses, each.state)

@@ -64,6 +64,7 @@ def neutral_page(answer: NeutralAnswer) -> Page:
         parts += _one(report, report.standing[0])
     else:
         parts += standing_by_state(report)
+        parts += _duties_by_state(report)
         parts.append(Sentences("", ("ask for one state to see its feeders, paths home and class",)))
     if answer.target is not None:
         parts += target_parts(report, answer.target)
@@ -238,6 +239,27 @@ def _earthing_duty(d: EarthingDuty) -> Iterator[Fact]:
         f" {figures(d.hundred_percent)} ohm a phase, and z0 is {figures(abs(d.z0))} ohm,"
         f" {figures(d.z0_percent)} %",
     )
+
+
+def _duties_by_state(report: NeutralReport) -> Iterator[Part]:
+    """The greatest duty of each earthing transformer over the states, and the hot ohms of the neutral."""
+    facts: list[Fact] = []
+    cold, hot = report.standing[0].ohms
+    if cold != hot:
+        seconds = f"{report.duty.duration:g} s"
+        facts.append(
+            Fact("Hot", ohms(hot, 4), f"after {seconds}, in state {report.standing[0].state.name}")
+        )
+    greatest: dict[str, tuple[EarthingDuty, str]] = {}
+    for s in report.standing:
+        for d in s.duties:
+            if d.name not in greatest or d.neutral > greatest[d.name][0].neutral:
+                greatest[d.name] = d, s.state.name
+    for duty, state in greatest.values():
+        first, *more = _earthing_duty(duty)
+        facts += [Fact(first.label, first.figure, f"{first.text}, state {state}"), *more]
+    if facts:
+        yield Facts(tuple(facts))
 
 
 def notes(answer: NeutralAnswer) -> tuple[str, ...]:

@@ -53,18 +53,15 @@ class LevelRange(msgspec.Struct, frozen=True, eq=False):
 def levels(network: Network) -> Levels:
     """Bolted-fault currents at every bus of ``network``."""
     model = network.model
-    n = len(model.buses)
     z_base = base_impedance(model.nominal, model.base_power)
-    z = np.zeros((3, n), complex)
-    infinite = np.zeros((3, n), bool)
-    for s in range(3):
-        diagonal, unbounded = network.sequences[s].driving_point()
-        z[s], infinite[s] = diagonal[model.node] * z_base, unbounded[model.node]
+    survey = network.sequences.survey()
+    z = survey.impedance[:, model.node] * z_base
+    infinite = survey.infinite[:, model.node]
     v = np.abs(model.before) * model.nominal / np.sqrt(3)
     closed = ~(infinite[1] | infinite[2]) & model.live
     one = np.where(closed, z[1], 1)
     two = np.where(closed, z[2], 1)
-    y0 = np.zeros(n, complex)
+    y0 = np.zeros(len(model.buses), complex)
     joined = ~infinite[0] & (z[0] != 0)
     y0[joined] = 1 / z[0, joined]
     currents = bolted_currents(np.where(closed, v, 0), one, two, y0)

@@ -171,7 +171,7 @@ def _standing(neutral: NeutralStates, state: NeutralState, duty: Duty) -> Standi
     ohms = (state.ohms, hot_ohms(record, state.ohms, duty))
     faults = state.faults(np.array(ohms))
     one, two = (state.network.fault(neutral.place, k) for k in ("line-ground", "line-line-ground"))
-    _agree(faults, (one, two))
+    _agree(faults, state.ports.before, (one, two))
     whole = state.whole.model
     return Standing(
         state=state,
@@ -185,11 +185,15 @@ def _standing(neutral: NeutralStates, state: NeutralState, duty: Duty) -> Standi
     )
 
 
-def _agree(faults: EarthFaults, solutions: tuple[FaultSolution, FaultSolution]) -> None:
-    """Raise ``CheckError`` where the closed forms and the full solutions differ."""
+def _agree(faults: EarthFaults, before: complex, solutions: tuple[FaultSolution, FaultSolution]) -> None:
+    """Raise ``CheckError`` where the closed forms and the full solutions differ.
+
+    Solutions count angles from the voltage ``before`` at the place, closed forms from that of the network.
+    """
+    turn = abs(before) / before
     for k, solution in enumerate(solutions):
         size = max(float(np.abs(solution.current).max()), 1e-3)
-        gap = abs(complex(faults.earth[k, 0]) - solution.residual)
+        gap = abs(complex(faults.earth[k, 0]) * turn - solution.residual)
         if gap > 1e-7 * size:
             raise CheckError(
                 f"the closed form and the full solution of the {solution.fault.kind.name} fault differ by"

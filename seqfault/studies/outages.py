@@ -14,7 +14,9 @@ from seqfault.equations.iec60909 import bolted_currents
 from seqfault.equations.per_unit import base_impedance
 from seqfault.errors import CaseError, NoAnswerError, RequestError
 from seqfault.faults.network import Network
+from seqfault.model.build import build_model
 from seqfault.model.elements import Bools, Complex, Floats, Ints, Model
+from seqfault.networks.factors import SequenceNetworks
 from seqfault.networks.parting import Joined
 from seqfault.networks.removal import SequenceRemovals, driving_points
 
@@ -223,11 +225,10 @@ class _Survey:
         current = np.full((len(CURRENTS), len(self.index)), np.nan)
         dead = np.ones(len(self.index), bool)
         try:
-            network = Network(self._rebuild(outage), machine=self._network.machine)
-            model = network.model
+            model, networks = self._built(self._rebuild(outage))
             here = np.array([k for k, bus in enumerate(self._buses) if bus in model.index], np.int64)
             at = np.array([model.index[self._buses[k]] for k in here.tolist()], np.int64)
-            found = [driving_points(network.sequences[s], model.node[at]) for s in range(3)]
+            found = [driving_points(networks[s], model.node[at]) for s in range(3)]
         except (CaseError, NoAnswerError) as error:
             self.failed.append((outage, str(error)))
         else:
@@ -240,6 +241,16 @@ class _Survey:
             current = self._currents(z, infinite, ~dead, volts)
         self.current.append(current)
         self.dead.append(dead)
+
+    def _built(self, case: Case) -> tuple[Model, SequenceNetworks]:
+        """Model and networks of ``case``, an outage of the network at hand."""
+        whole = self._network
+        if whole.loading is not None:
+            network = Network(case, machine=whole.machine)
+            return network.model, network.sequences
+        base = (whole.case, whole.model) if whole.case.state == "base" else None
+        model = build_model(case, whole.machine, base)
+        return model, SequenceNetworks(model)
 
 
 def _updatable(case: Case) -> Callable[[Outage], bool]:

@@ -5,7 +5,7 @@ import io
 
 import pytest
 
-from seqfault import Network, levels, read_case
+from seqfault import Network, contributions, levels, read_case
 from seqfault.report.numbers import figures
 from tests.cli.console import PLANT, Run
 
@@ -102,3 +102,21 @@ def test_inspect_json_and_csv(run: Run) -> None:
         r for r in rows if r["place"] == "G1" and r["quantity"] == "reactance" and r["phase"] == "1"
     )
     assert float(reactance["value"]) == pytest.approx(0.15 * 100 / 4)
+
+
+def test_contributions_in_every_form(run: Run, plant: Network) -> None:
+    found = contributions(plant)
+    at = plant.buses.index("main")
+    here = range(int(found.start[at]), int(found.start[at + 1]))
+    page = run("levels", PLANT, "--contributions")
+    block = page.out.partition("\nmain, 11 kV\n")[2].partition("\n\n")[0].splitlines()
+    assert [line.split()[0] for line in block] == [found.element[k] for k in here]
+    assert figures(float(found.k3[here[2]])) in block[2].split()
+    tree = run("levels", PLANT, "--contributions", "--format", "json").tree
+    listed = tree["buses"][at]["contributions"]
+    assert [each["k1"] for each in listed] == [float(found.k1[k]) for k in here]
+    out = run("levels", PLANT, "--contributions", "--format", "csv").out
+    rows = [r for r in csv.DictReader(io.StringIO(out)) if r["quantity"] == "contribution"]
+    k2e = [float(r["value"]) for r in rows if r["place"] == "main" and r["kind"] == "line-line-ground"]
+    assert k2e == [float(found.k2e[k]) for k in here]
+    assert "contribution" not in run("levels", PLANT, "--format", "csv").out

@@ -90,6 +90,15 @@ def test_states_in_which_the_neutral_is_not_there_are_told(run: Run) -> None:
     assert "gives 500 A line-ground (3I0) at main-a, state ring-closed" in page.flat
 
 
+def test_earthing_transformer_and_hot_ohms_over_all_states(run: Run) -> None:
+    page = run("neutral", QUARRY.with_name("moor.toml"), "NR-B", "--scenario", "all", "--width", 80)
+    assert page.code == 0
+    assert max(map(len, page.out.splitlines())) <= 80
+    assert page.row("Hot")[:2] == ["58.08", "ohm"]
+    assert page.row("ET")[:2] == ["115", "A"]
+    assert page.row("short-time")[:2] == ["3999", "kVA"]
+
+
 def test_the_winding_of_a_generator(run: Run) -> None:
     page = run(
         "neutral", QUARRY, "NER-G", "--scenario", "standby", "--winding", "standby", "--pickup", "10 A",

@@ -5,7 +5,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from seqfault import (
@@ -21,14 +21,20 @@ from seqfault import (
 from seqfault.case.records import Case
 from seqfault.studies.outages import CURRENTS, OutageSurvey, single_outages, survey_outages
 from tests.bench.grid import grid
+from tests.conditioning import well_conditioned
 from tests.strategies import networks, to_case_tree
 
 CASES = sorted((Path(__file__).parents[2] / "cases").glob("*.toml"))
 AGREE = 1e-9
 
 
-def against_rebuilt(case: Case, survey: OutageSurvey, which: list[int]) -> int:
-    """Hold the outages ``which`` (from 1) to networks built without them; how many were updated."""
+def against_rebuilt(
+    case: Case, survey: OutageSurvey, which: list[int], phase: float = AGREE, earth: float = AGREE
+) -> int:
+    """Hold the outages ``which`` (from 1) to networks built without them; how many were updated.
+
+    Currents of earth faults may differ by ``earth``, others by ``phase``.
+    """
     rebuilt, failed = dict(survey.rebuilt), dict(survey.failed)
     compared = 0
     for number in which:
@@ -47,8 +53,9 @@ def against_rebuilt(case: Case, survey: OutageSurvey, which: list[int]) -> int:
                 continue
             for c, name in enumerate(CURRENTS):
                 expected = float(getattr(whole, name)[at])
-                floor = AGREE * float(whole.k3[at])  # what is rounding beside the three-phase current
-                assert survey.current[number, c, k] == pytest.approx(expected, rel=AGREE, abs=AGREE * floor)
+                agree = phase if name in ("k3", "k2") else earth
+                least = agree * AGREE * float(whole.k3[at])  # rounding beside the three-phase current
+                assert survey.current[number, c, k] == pytest.approx(expected, rel=agree, abs=least)
     return compared
 
 
@@ -61,6 +68,7 @@ def all_singles(network: Network) -> tuple[tuple[str, ...], ...]:
 def test_random_networks_agree_with_networks_built_without_the_element(data: st.DataObject) -> None:
     net = data.draw(networks(min_buses=3))
     try:
+        assume(well_conditioned(net))
         case = case_from_tree(to_case_tree(net))
         network = Network(case)
         outages = all_singles(network)
@@ -69,7 +77,8 @@ def test_random_networks_agree_with_networks_built_without_the_element(data: st.
         survey = survey_outages(network, outages)
     except NoAnswerError:
         return
-    against_rebuilt(case, survey, list(range(1, len(outages) + 1)))
+    # Drawn data may cost eight digits; so do milliohms beside a part that capacitance alone ties to earth.
+    against_rebuilt(case, survey, list(range(1, len(outages) + 1)), phase=1e-8, earth=1e-7)
 
 
 @pytest.mark.parametrize("seed", [1, 2])
@@ -187,3 +196,14 @@ def test_an_infeed_out_is_built_anew_and_the_loaded_state_always() -> None:
 def test_what_cannot_be_asked(outages: Any, at: Any, message: str) -> None:
     with pytest.raises(RequestError, match=message):
         survey_outages(Network(case_from_tree(station())), outages, at)
+
+
+def test_a_line_beside_a_closed_tie_carries_nothing() -> None:
+    tree = station(
+        lines={"feeder": {"from": "main", "to": "end", "z1": "0.2+j0.1 ohm", "z0": "0.5+j0.3 ohm"}},
+        ties={"bypass": {"from": "main", "to": "end", "closed": True}},
+    )
+    network = Network(case_from_tree(tree))
+    survey = survey_outages(network, [("feeder",)])
+    assert survey.rebuilt == ()
+    assert against_rebuilt(network.case, survey, [1]) == 1
