@@ -9,14 +9,17 @@ do. Strip that quote before comparing such a name with the case file.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Iterator
-from itertools import islice, repeat
-from typing import Any
+from collections.abc import Iterable, Iterator, Sequence
+from itertools import islice
+from typing import TYPE_CHECKING, Any
 
 import msgspec
 
 from seqfault.errors import RequestError, quoted
 from seqfault.report.data import Quantity, QuantityColumn
+
+if TYPE_CHECKING:
+    import io
 
 SUFFIXES = {".json": "json", ".csv": "csv", ".txt": "table"}
 COLUMNS = ("place", "kind", "quantity", "phase", "value", "unit", "angle", "where", "state")
@@ -64,36 +67,53 @@ def as_csv(rows: Iterable[Quantity | QuantityColumn]) -> Iterator[bytes]:
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow(COLUMNS)
     for row in rows:
-        lines = _column_lines(row) if isinstance(row, QuantityColumn) else iter([_line(row)])
-        while block := list(islice(lines, _LINES)):
-            writer.writerows(block)
+        if isinstance(row, QuantityColumn):
+            yield _taken(text)
+            yield from (lines.encode() for lines in _column_lines(row))
+        else:
+            writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
             if text.tell() >= _CHUNK:
-                yield text.getvalue().encode()
-                text.seek(0)
-                text.truncate()
-    yield text.getvalue().encode()
+                yield _taken(text)
+    yield _taken(text)
 
 
-def _line(row: Quantity) -> tuple[str, ...]:
-    return tuple(_field(getattr(row, column)) for column in COLUMNS)
+def _taken(text: io.StringIO) -> bytes:
+    written = text.getvalue().encode()
+    text.seek(0)
+    text.truncate()
+    return written
 
 
-def _column_lines(row: QuantityColumn) -> Iterator[tuple[str | float | None, ...]]:
-    """The lines of a column; of a float the writer itself makes its ``repr``, of None nothing."""
-    places = list(map(_field, row.places))
-    where = places if row.where is row.places else list(map(_field, row.where))
-    kind, quantity, unit, state = map(_field, (row.kind, row.quantity, row.unit, row.state))
-    return zip(
-        places,
-        repeat(kind),
-        repeat(quantity),
-        repeat(""),
-        row.values,
-        repeat(unit),
-        repeat(""),
-        where,
-        repeat(state),
+def _column_lines(row: QuantityColumn) -> Iterator[str]:
+    places = _cells(row.places)
+    where = places if row.where is row.places else _cells(row.where)
+    kind, quantity, unit, state = _cells((row.kind, row.quantity, row.unit, row.state))
+    before, behind, end = f",{kind},{quantity},,", f",{unit},,", f",{state}\n"
+    lines = (
+        f"{place}{before}{'' if value is None else repr(value)}{behind}{at}{end}"
+        for place, value, at in zip(places, row.values, where, strict=True)
     )
+    while block := "".join(islice(lines, _LINES)):
+        yield block
+
+
+def _cells(texts: Sequence[str]) -> list[str]:
+    """Each text as the writer of the standard library puts it between two commas."""
+    import csv
+    import io
+
+    text = io.StringIO()
+    write = csv.writer(text, lineterminator="\n").writerow
+    cells = []
+    for one in texts:
+        if one.isalnum():
+            cells.append(one)
+            continue
+        write((_field(one), ""))
+        cells.append(text.getvalue()[:-2])
+        text.seek(0)
+        text.truncate()
+    return cells
 
 
 def _field(value: float | str | None) -> str:
