@@ -46,12 +46,12 @@ def stages(path: str, target: str) -> dict[str, Any]:
         return made
 
     def imports() -> None:
-        import scipy.sparse.linalg
+        import scipy.sparse.linalg  # noqa: F401 - imported to be timed, as the others
 
         import seqfault.faults.network
         import seqfault.networks.survey
         import seqfault.report.files
-        import seqfault.report.levels  # noqa: F401 - imported to be timed, as the others
+        import seqfault.report.levels  # noqa: F401
 
     timed("imports", imports)
     from seqfault.case.reader import read_case
@@ -76,9 +76,7 @@ def stages(path: str, target: str) -> dict[str, Any]:
 def process(*arguments: str) -> tuple[float, bytes]:
     """Seconds of one process of Python, and what it printed."""
     start = time.perf_counter()
-    run = subprocess.run(
-        [sys.executable, *arguments], cwd=ROOT, check=True, stdout=subprocess.PIPE, stderr=subprocess.PIPE
-    )
+    run = subprocess.run([sys.executable, *arguments], cwd=ROOT, check=True, capture_output=True)
     return time.perf_counter() - start, run.stdout
 
 
