@@ -6,7 +6,7 @@ import math
 
 from seqfault.case.quantities import Quantity
 from seqfault.case.records import Bus, Case, Line, SeriesReactor, Tie
-from seqfault.case.subject import Subject, real, said
+from seqfault.case.subject import Subject, is_usual, real, said
 from seqfault.case.units import normalised
 from seqfault.case.wording import amount, digits
 from seqfault.errors import quoted
@@ -130,14 +130,15 @@ def _line_values(subject: Subject, line: Line) -> None:
         value = _per_km(quantity, length)
         if value is None or value == 0:
             continue
-        if field == "z1":
+        if field == "z1" and not is_usual(value, _OHM_PER_KM):
             text = f"{said(quantity)} is {digits(value)} ohm/km, outside the usual 0.005 to 5 ohm/km"
             subject.usual(field, value, _OHM_PER_KM, text, 1e3)
         elif field[0] in "cb":
             if field[0] == "b":
                 value /= 2 * math.pi * (subject.site.case.frequency or 50.0)
-            text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 2 nF/km to 5 uF/km"
-            subject.usual(field, value, _FARAD_PER_KM, text, 1e3)
+            if not is_usual(value, _FARAD_PER_KM):
+                text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 2 nF/km to 5 uF/km"
+                subject.usual(field, value, _FARAD_PER_KM, text, 1e3)
 
 
 def _nominal(subject: Subject, line: Line) -> float | None:

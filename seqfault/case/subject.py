@@ -187,15 +187,20 @@ class Subject:
         self, field: str, value: float, limits: tuple[float, float], text: str, factor: float
     ) -> None:
         """Doubt a magnitude outside its usual ``limits``; ``text`` says what it is and they are."""
-        low, high = limits
-        if low * (1 - 1e-9) <= value <= high * (1 + 1e-9):
+        if is_usual(value, limits):
             return
+        low, high = limits
         cure = ""
         if low <= value / factor <= high:
             cure = f"; a factor of {factor:g} too large?"
         elif low <= value * factor <= high:
             cure = f"; a factor of {factor:g} too small?"
         self.warn(field, text + cure)
+
+
+def is_usual(value: float, limits: tuple[float, float]) -> bool:
+    """Tell whether a magnitude is inside its ``limits``, rounding aside."""
+    return limits[0] * (1 - 1e-9) <= value <= limits[1] * (1 + 1e-9)
 
 
 def voltage_cure(ratio: float) -> str:
