@@ -23,12 +23,13 @@ Stated = Sequence[tuple[str, str]]
 class Operation(msgspec.Struct, frozen=True, eq=False):
     """Relays and one fault: ``acting`` in order of tripping, ``resting`` in the order of the file.
 
-    ``trips`` says which breakers each relay trips.
+    ``trips`` says which breakers each relay trips, ``machines`` whether any machine runs.
     """
 
     solution: FaultSolution
     protection: Protection
     trips: Trips
+    machines: bool
     acting: tuple[Reading, ...]
     resting: tuple[Reading, ...]
 
@@ -62,14 +63,21 @@ def operate(network: Network, faults: Sequence[Fault], stated: Stated = ()) -> O
     network, guarded = guarded_network(network, [breaker for _, breaker in stated])
     trips = trips_of(network.case, guarded.relays, stated)
     solution = network.solve(faults)
-    return operation(solution, guarded, trips)
+    return operation(network, solution, guarded, trips)
 
 
-def operation(solution: FaultSolution, guarded: Protection, trips: Trips) -> Operation:
-    """The relays sorted by what they do about ``solution``."""
+def operation(network: Network, solution: FaultSolution, guarded: Protection, trips: Trips) -> Operation:
+    """The relays sorted by what they do about ``solution``, a fault on ``network``."""
     seen = readings(solution, guarded)
-    acting = sorted((each for each in seen if each.acts), key=lambda each: each.time)
-    return Operation(solution, guarded, trips, tuple(acting), tuple(each for each in seen if not each.acts))
+    records = (*network.case.generators.values(), *network.case.motors.values())
+    return Operation(
+        solution=solution,
+        protection=guarded,
+        trips=trips,
+        machines=any(not record.out for record in records),
+        acting=tuple(sorted((each for each in seen if each.acts), key=lambda each: each.time)),
+        resting=tuple(each for each in seen if not each.acts),
+    )
 
 
 def said_of(found: Operation) -> tuple[str, ...]:
@@ -106,21 +114,30 @@ def said_of(found: Operation) -> tuple[str, ...]:
     return tuple(out)
 
 
-def method_of(network: Network, found: Operation) -> tuple[str, ...]:
-    """How times and currents were come by, in sentences for the list of assumptions."""
-    case = network.case
-    out = []
-    machines = [n for n, r in (*case.generators.items(), *case.motors.items()) if not r.out]
-    if machines:
+def assumed_of(found: Operation) -> tuple[str, ...]:
+    """All that the currents and times rest on and nobody has stated, in sentences."""
+    s, relays = found.solution, [each.relay for each in found.readings]
+    out = [str(each) for each in s.assumptions]
+    out += [
+        str(each)
+        for each in found.protection.assumptions
+        if each.record != "demands" or each.names in (("margin.breaker",), ("margin.overshoot",))
+    ]
+    out += found.trips.assumed
+    if found.machines:
         out.append(
-            f"machines hold their {network.machine} reactance for as long as the fault lasts; what they"
-            " feed decays, and slow relays see less of it (--machine asks for another)"
+            f"machines keep their {s.machine} reactance for as long as the fault lasts; what they feed"
+            " decays, so slow relays see less of it (--machine asks for another)"
         )
-    relays = [each.relay for each in found.readings]
     if any(relay.direction for relay in relays):
         out.append(
             "a directional relay acts where its current lies within 90 degrees either side of its"
             " characteristic angle ahead of what polarises it, however small that is (common practice)"
         )
-    out.append("neutral resistors at the ohms of the case, cold; steady state, no dc offset")
+    if any(relay.measures == "residual" for relay in relays):
+        out.append(
+            "errors of residually connected current transformers: each of the three loses at most its"
+            " composite error, all in one sense (IEC 61869-2; steady state, no remanence)"
+        )
+    out.append("currents are steady, without dc offset; neutral resistors have the ohms of the case, cold")
     return tuple(out)

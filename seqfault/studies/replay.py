@@ -16,7 +16,7 @@ import numpy as np
 
 from seqfault.case.relay_sites import Places
 from seqfault.equations.relay_travel import travelled, until_operation
-from seqfault.errors import CheckError, NoAnswerError, RequestError
+from seqfault.errors import CheckError, NoAnswerError, RequestError, quoted
 from seqfault.faults.kinds import Fault
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution, FaultState
@@ -137,7 +137,7 @@ def replay(
     trips = trips_of(network.case, guarded.relays, stated)
     open_already = {b for own in trips.of.values() for b in own if not closed(places, network.case, b)}
     solution = network.solve(faults)
-    first = operation(solution, guarded, trips)
+    first = operation(network, solution, guarded, trips)
     floor = _NOISE * solution.largest
     solutions = [solution]
     running = _Running(list(guarded.relays))
@@ -249,3 +249,25 @@ def _buses(state: FaultState) -> tuple[str, ...]:
 def _fed(solution: FaultSolution, bus: str) -> bool:
     at = solution.index[bus]
     return bool(solution.before[at] != 0 and not solution.lost[at])
+
+
+def overrun(found: Replay) -> tuple[Way, ...]:
+    """Relays that would operate within the overshoot of the demands after their current ceased or fell."""
+    return tuple(way for way in found.ways if way.lacking <= found.first.protection.demands.overshoot)
+
+
+def replay_assumed(found: Replay) -> tuple[str, ...]:
+    """What the replay takes for granted beside the currents and settings, in sentences."""
+    out = [
+        "relays run by the dynamic formula of IEC 60255-151, the sum of dt/t(I); one that falls to its pickup"
+        " or turns the wrong way begins anew at once, since a case states no reset time",
+        "a relay that has operated stays so, and all three poles of its breakers open together, once for all:"
+        " nothing recloses",
+        "a relay stops where its current stops: no overshoot; one that would operate in the very moment a"
+        " breaker opens counts as operated",
+    ]
+    if found.stuck:
+        out.append(f"taken to stay closed: {', '.join(map(quoted, found.stuck))} (--stuck)")
+    if found.first.machines:
+        out.append("machines stay in step, and none trips by itself")
+    return tuple(out)
