@@ -1,4 +1,4 @@
-"""``seqfault operate CASE PLACE``: what every relay does about a fault, and a replay until it is cleared."""
+"""``seqfault operate CASE PLACE``: what every relay does about a fault, and a replay of it."""
 
 from __future__ import annotations
 

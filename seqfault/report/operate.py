@@ -85,8 +85,8 @@ def acting(found: Operation, heading: str) -> Iterator[Part]:
                 sees(each),
                 "-" if each.secondary is None else size(each.secondary, each.relay.unit),
                 times(each),
-                seconds(each.time) + (" fast" if each.fast < each.main else ""),
-                seconds(each.cleared),
+                when(each.time) + (" fast" if each.fast < each.main else ""),
+                when(each.cleared),
                 ", ".join(found.trips.of[each.relay.name]) or "nothing",
             ),
         )
@@ -111,11 +111,11 @@ def order(found: Operation) -> Iterator[str]:
     first, *others = found.acting
     breakers = found.trips.of[first.relay.name]
     opens = (
-        f"; {listed(breakers, 'and')} would be open {seconds(first.cleared)} after the fault began"
+        f"; {listed(breakers, 'and')} would be open {when(first.cleared)} after the fault began"
         if breakers
         else ""
     )
-    yield f"{first.relay.name} acts first, in {seconds(first.time)}{opens}."
+    yield f"{first.relay.name} acts first, in {when(first.time)}{opens}."
     if not others:
         yield f"No other relay acts: nothing backs up {first.relay.name} for this fault."
         return
@@ -129,7 +129,7 @@ def order(found: Operation) -> Iterator[str]:
     later = next((each for each in others if each not in early), None)
     if later is not None:
         yield (
-            f"{later.relay.name} comes next, {seconds(later.time - first.cleared)} after the first breaker;"
+            f"{later.relay.name} comes next, {when(later.time - first.cleared)} after the first breaker;"
             " it acts only where the fault still stands, with what it sees then (--replay)."
         )
 
@@ -146,6 +146,22 @@ def resting(readings: Sequence[Reading], heading: str) -> Iterator[Part]:
         for each in readings
     ]
     yield table(heading, (("sees",), ("pickup",), ("times", "that"), ("why",)), rows)
+    yield Sentences("", tuple(because(readings)))
+
+
+def because(readings: Sequence[Reading]) -> Iterator[str]:
+    """What there is to say on why relays rest, those with one reason together."""
+    together: dict[str, list[str]] = {}
+    for each in readings:
+        if each.because:
+            together.setdefault(each.because, []).append(each.relay.name)
+    for reason, names in together.items():
+        yield f"{listed(names, 'and')}: {reason}."
+
+
+def when(time: float) -> str:
+    """``0.393 s``, ``12.3 s``, ``328 s``."""
+    return seconds(time) if not 10 <= time < math.inf else f"{figures(time)} s"
 
 
 def _facts(found: Operation) -> Iterator[Fact]:

@@ -72,6 +72,7 @@ def _relay(each: Reading, trips: Trips) -> dict[str, Any]:
         "time_with_breaker": _known(each.cleared),
         "trips": list(trips.of[relay.name]),
         "why_not": each.why or None,
+        "because": each.because or None,
         "degrees_from_characteristic_angle": each.turned,
         "error_of_current_transformers": plain(each.error),
         "beyond_the_class_of_its_transformer": each.beyond,
@@ -134,3 +135,5 @@ def _readings(solution: FaultSolution, readings: tuple[Reading, ...], trips: Tri
             yield row(name, value, unit, relay.name)
         if each.why:
             yield row("why it rests", each.why, "", relay.name)
+        if each.because:
+            yield row("because", each.because, "", relay.name)

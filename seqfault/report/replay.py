@@ -8,9 +8,9 @@ from collections.abc import Iterator
 from seqfault.case.wording import listed
 from seqfault.faults.network import Network
 from seqfault.report.fault import fault_title
-from seqfault.report.operate import acting, closing, resting, sees, table
-from seqfault.report.settings_words import seconds, size
-from seqfault.report.tables import Page, Part, Row, Sentences
+from seqfault.report.operate import acting, closing, resting, sees, table, when
+from seqfault.report.settings_words import size
+from seqfault.report.tables import Page, Part, Sentences
 from seqfault.studies.operate import said_of
 from seqfault.studies.relay_readings import Reading
 from seqfault.studies.replay import Event, Replay, overrun, replay_assumed
@@ -38,7 +38,7 @@ def _events(found: Replay) -> Iterator[Part]:
     for event in found.events:
         rows.append(
             (
-                seconds(event.time),
+                when(event.time),
                 (told(event), size(event.left.phase, "A"), size(event.left.earth, "A")),
             )
         )
@@ -68,7 +68,7 @@ def ending(found: Replay) -> Iterator[str]:
     if found.cleared is not None:
         opened = [b for b, time in found.opened.items() if time <= found.cleared]
         yield (
-            f"Cleared {seconds(found.cleared)} after the fault began, with {listed(opened, 'and')} open:"
+            f"Cleared {when(found.cleared)} after the fault began, with {listed(opened, 'and')} open:"
             " no infeed or generator feeds it any more."
         )
         late = [event.breaker for event in found.events if event.late]
@@ -81,12 +81,14 @@ def ending(found: Replay) -> Iterator[str]:
         )
     else:
         yield (
-            "NOT cleared: the place is still live, and so little flows into the fault that no relay sees it."
+            "NOT cleared: the place is still live, and so little flows into the fault that no relay"
+            " sees it."
         )
     for way in overrun(found):
         yield (
-            f"{way.relay} lacked {1000 * way.lacking:.1f} ms when its current fell, at {seconds(way.time)}:"
-            f" less than the overshoot of {found.first.protection.demands.overshoot:g} s, so it may trip too."
+            f"{way.relay} lacked {1000 * way.lacking:.1f} ms when its current fell, at {when(way.time)}:"
+            f" less than the overshoot of {found.first.protection.demands.overshoot:g} s, so it may trip"
+            " too."
         )
 
 
@@ -102,9 +104,9 @@ def _why(found: Replay) -> Iterator[str]:
 def _state(reading: Reading, events: list[Event]) -> str:
     now = "" if math.isnan(reading.value) else f"sees {sees(reading)}, "
     if not events:
-        return f"{now}{reading.why}" if reading.why else f"{now}acts"
+        return f"{now}{reading.why}" + (f"; {reading.because}" if reading.because else "")
     held = [event.breaker for event in events if event.what == "stays closed"]
-    text = f"operated at {seconds(events[0].time)}"
+    text = f"operated at {when(events[0].time)}"
     if not any(event.breaker for event in events):
         return f"{text}; it trips nothing"
     if held:
@@ -121,7 +123,7 @@ def _ways(found: Replay) -> Iterator[Part]:
     rows = [
         (
             way.relay,
-            (f"{100 * way.share:.0f} %", seconds(way.time), seconds(way.lacking)),
+            (f"{100 * way.share:.0f} %", when(way.time), when(way.lacking)),
         )
         for way in sorted(found.ways, key=lambda way: -way.share)
     ]

@@ -146,6 +146,12 @@ def unfolded(case: Case, breakers: Iterable[str] = ()) -> Case:
     return replace(case, **tables, relays=relays) if tables else case
 
 
+def apart_of(case: Case) -> tuple[str, ...]:
+    """The records of ``case`` that ``unfolded`` took apart."""
+    own = Places(case).elements
+    return tuple(name for name, (_, record) in own.items() if own.get(f"{name} (2)", (0, 0))[1] is record)
+
+
 def _at_twin(at: str, name: str, twin: str, places: Places) -> str:
     """Where the relay at ``at`` of ``name`` stands on its ``twin``; nothing where it is not on it alone."""
     element, mark, bus = at.partition("@")

@@ -12,7 +12,7 @@ from seqfault.errors import RequestError, quoted
 from seqfault.faults.kinds import Fault
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
-from seqfault.studies.breakers import Trips, trips_of, unfolded
+from seqfault.studies.breakers import Trips, apart_of, trips_of, unfolded
 from seqfault.studies.protection import Protection, protection
 from seqfault.studies.relay_readings import Reading, readings
 
@@ -23,13 +23,15 @@ Stated = Sequence[tuple[str, str]]
 class Operation(msgspec.Struct, frozen=True, eq=False):
     """Relays and one fault: ``acting`` in order of tripping, ``resting`` in the order of the file.
 
-    ``trips`` says which breakers each relay trips, ``machines`` whether any machine runs.
+    ``trips`` says which breakers each relay trips, ``machines`` whether any machine runs. ``apart`` are records
+    of several circuits that were taken apart, each circuit with relays of its own.
     """
 
     solution: FaultSolution
     protection: Protection
     trips: Trips
     machines: bool
+    apart: tuple[str, ...]
     acting: tuple[Reading, ...]
     resting: tuple[Reading, ...]
 
@@ -75,6 +77,7 @@ def operation(network: Network, solution: FaultSolution, guarded: Protection, tr
         protection=guarded,
         trips=trips,
         machines=any(not record.out for record in records),
+        apart=apart_of(network.case),
         acting=tuple(sorted((each for each in seen if each.acts), key=lambda each: each.time)),
         resting=tuple(each for each in seen if not each.acts),
     )
@@ -91,7 +94,14 @@ def said_of(found: Operation) -> tuple[str, ...]:
                 f" {each.limit:.4g} A at most; what its secondary shows beyond that is not known"
             )
         pickup = relay.pickup.primary
-        if pickup is not None and not each.acts and each.value <= pickup < each.value + each.error:
+        if pickup is None or each.acts:
+            continue
+        if each.value > pickup and each.turned is not None and each.error >= each.value:
+            out.append(
+                f"relay {name}: the errors of its current transformers may show up to {each.error:.4g} A, as"
+                f" much as the {each.value:.4g} A it sees, and so turn its direction"
+            )
+        elif each.value <= pickup < each.value + each.error:
             shown = "any amount" if each.error == float("inf") else f"up to {each.error:.4g} A"
             out.append(
                 f"relay {name}: the errors of its current transformers may show {shown} beside"
@@ -124,6 +134,11 @@ def assumed_of(found: Operation) -> tuple[str, ...]:
         if each.record != "demands" or each.names in (("margin.breaker",), ("margin.overshoot",))
     ]
     out += found.trips.assumed
+    if found.apart:
+        out.append(
+            f"of {listed(map(quoted, found.apart), 'and')} each circuit or unit has relays of its own: a fault"
+            " inside lies in the first, the others carry their number"
+        )
     if found.machines:
         out.append(
             f"machines keep their {s.machine} reactance for as long as the fault lasts; what they feed"

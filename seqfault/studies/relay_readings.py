@@ -38,7 +38,8 @@ class Reading(msgspec.Struct, frozen=True):
 
     ``value`` A (neutral-voltage: V) primary, NaN where nothing fixes it, and ``secondary`` behind its
     transformer, None where the case does not tell; ``multiple`` of its pickup; ``main`` and ``fast`` the
-    times (s) of its two stages, infinite where they rest. ``why`` it rests is empty where it acts.
+    times (s) of its two stages, infinite where they rest. ``why`` it rests in a word or two, empty where
+    it acts, and ``because`` of what, where there is more to say.
     ``turned`` degrees from its characteristic angle, None where it has none. ``error`` A that the errors
     of its residually connected transformers may show beside; ``beyond`` A through its transformers where
     that is more than the ``limit`` of their class, None where not.
@@ -51,6 +52,7 @@ class Reading(msgspec.Struct, frozen=True):
     main: float
     fast: float
     why: str
+    because: str
     turned: float | None
     error: float
     beyond: float | None
@@ -113,12 +115,12 @@ def _reading(
     opened: Mapping[str, float],
 ) -> Reading:
     if relay.out:
-        return _rests(relay, "out of service in this state")
+        return _rests(relay, "out of service")
     if relay.blind:
-        return _rests(relay, relay.blind)
+        return _rests(relay, "blind", relay.blind)
     looked = looks_at(solution, relay, rows)
     if isinstance(looked, str):
-        return _rests(relay, looked)
+        return _rests(relay, "not known", looked)
     sizes = np.abs(looked.own)
     allowed, turned = _allowed(solution, relay, looked)
     counted = float(np.where(allowed, sizes, 0).max())
@@ -127,12 +129,14 @@ def _reading(
     pickup = relay.pickup.primary
     multiple = math.nan if pickup is None else value / pickup
     main, fast, why = _times(relay, value, counted)
+    because = ""
     if why and relay.at in opened:
-        why = f"its own breaker is open, {why}" if value > 0 else "its own breaker is open"
+        because = f"its own breaker {quoted(relay.at)} is open"
+        why = "breaker open"
     elif why and value == 0:
-        why = _nothing_words(solution, relay)
+        why, because = _nothing_words(solution, relay)
     elif why == "direction":
-        why = _direction_words(relay, turned)
+        why, because = "wrong way", _direction_words(relay, turned)
     through = value if looked.phases is None or ct is None else float(np.abs(looked.phases).max())
     if ct is not None and ct.connection != "residual":
         through = value
@@ -145,6 +149,7 @@ def _reading(
         main=main,
         fast=fast,
         why=why,
+        because=because,
         turned=turned,
         error=_error(relay, ct, looked.phases),
         beyond=through if limit is not None and through > limit else None,
@@ -152,8 +157,9 @@ def _reading(
     )
 
 
-def _rests(relay: Relay, why: str) -> Reading:
-    return Reading(relay, math.nan, None, math.nan, math.inf, math.inf, why, None, 0.0, None, None)
+def _rests(relay: Relay, why: str, because: str = "") -> Reading:
+    rest = math.inf
+    return Reading(relay, math.nan, None, math.nan, rest, rest, why, because, None, 0.0, None, None)
 
 
 def looks_at(solution: FaultSolution, relay: Relay, rows: Mapping[tuple[str, str], int]) -> Looked | str:
@@ -239,11 +245,11 @@ def _times(relay: Relay, value: float, counted: float) -> tuple[float, float, st
     rest = math.inf
     pickup = relay.pickup.primary
     if pickup is None:
-        return rest, rest, "its pickup is still to be set"
+        return rest, rest, "pickup not set"
     if not relay.complete:
-        return rest, rest, "its time is still to be set"
+        return rest, rest, "time not set"
     if value <= pickup:
-        return rest, rest, "below its pickup" if value < pickup else "no more than its pickup"
+        return rest, rest, "below pickup" if value < pickup else "just at pickup"
     if counted <= pickup:
         return rest, rest, "direction"
     main = float(operate_times(msgspec.structs.replace(relay, fast=None), counted))
@@ -254,25 +260,25 @@ def _times(relay: Relay, value: float, counted: float) -> tuple[float, float, st
 
 def _direction_words(relay: Relay, turned: float | None) -> str:
     if turned is None:
-        return f"no direction: nothing of its polarising quantity ({relay.polarisation}) is there"
+        return f"nothing is left of what polarises it, {relay.polarisation}, so it tells no direction"
     return (
-        f"wrong direction: {turned:.0f} degrees from its characteristic angle, up to 90 act"
-        f" ({relay.direction})"
+        f"its current lies {turned:.0f} degrees from its characteristic angle, {relay.direction}; it acts up"
+        " to 90"
     )
 
 
-def _nothing_words(solution: FaultSolution, relay: Relay) -> str:
-    """Why a relay in service measures nothing at all."""
+def _nothing_words(solution: FaultSolution, relay: Relay) -> tuple[str, str]:
+    """Why a relay in service measures nothing at all, in a word or two and in a sentence."""
     stars = {star.name: star.bus for star in solution.star_points}
     at = solution.index.get(relay.bus or stars.get(relay.star, ""))
     if at is None or solution.before[at] == 0 or solution.lost[at]:
-        return "nothing is live there"
+        return "dead", "nothing is live there"
     if relay.measures in EARTHS:
         if not any(state.fault.earth for state in solution.faults):
-            return "the fault is clear of earth and drives no earth current"
+            return "sees nothing", "the fault is clear of earth and drives no earth current"
         if not solution.joined[at]:
-            return "blind: no transformer between passes it any of the fault's zero-sequence current"
-    return "nothing of the fault flows there"
+            return "blind", "no transformer between passes on any of the fault's zero-sequence current"
+    return "sees nothing", "nothing that it measures flows there"
 
 
 def _displacement(solution: FaultSolution, bus: str) -> complex | None:

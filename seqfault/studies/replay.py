@@ -259,10 +259,10 @@ def overrun(found: Replay) -> tuple[Way, ...]:
 def replay_assumed(found: Replay) -> tuple[str, ...]:
     """What the replay takes for granted beside the currents and settings, in sentences."""
     out = [
-        "relays run by the dynamic formula of IEC 60255-151, the sum of dt/t(I); one that falls to its pickup"
-        " or turns the wrong way begins anew at once, since a case states no reset time",
-        "a relay that has operated stays so, and all three poles of its breakers open together, once for all:"
-        " nothing recloses",
+        "relays run by the dynamic formula of IEC 60255-151, the sum of dt/t(I); one that falls to its"
+        " pickup or turns the wrong way begins anew at once, since a case states no reset time",
+        "a relay that has operated stays so, and all three poles of its breakers open together, once for"
+        " all: nothing recloses",
         "a relay stops where its current stops: no overshoot; one that would operate in the very moment a"
         " breaker opens counts as operated",
     ]
