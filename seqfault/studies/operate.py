@@ -23,8 +23,8 @@ Stated = Sequence[tuple[str, str]]
 class Operation(msgspec.Struct, frozen=True, eq=False):
     """Relays and one fault: ``acting`` in order of tripping, ``resting`` in the order of the file.
 
-    ``trips`` says which breakers each relay trips, ``machines`` whether any machine runs. ``apart`` are records
-    of several circuits that were taken apart, each circuit with relays of its own.
+    ``trips`` says which breakers each relay trips, ``machines`` whether any machine runs. ``apart`` are
+    records of several circuits that were taken apart, each circuit with relays of its own.
     """
 
     solution: FaultSolution
@@ -98,8 +98,8 @@ def said_of(found: Operation) -> tuple[str, ...]:
             continue
         if each.value > pickup and each.turned is not None and each.error >= each.value:
             out.append(
-                f"relay {name}: the errors of its current transformers may show up to {each.error:.4g} A, as"
-                f" much as the {each.value:.4g} A it sees, and so turn its direction"
+                f"relay {name}: the errors of its current transformers may show up to {each.error:.4g} A,"
+                f" as much as the {each.value:.4g} A it sees, and so turn its direction"
             )
         elif each.value <= pickup < each.value + each.error:
             shown = "any amount" if each.error == float("inf") else f"up to {each.error:.4g} A"
@@ -136,8 +136,8 @@ def assumed_of(found: Operation) -> tuple[str, ...]:
     out += found.trips.assumed
     if found.apart:
         out.append(
-            f"of {listed(map(quoted, found.apart), 'and')} each circuit or unit has relays of its own: a fault"
-            " inside lies in the first, the others carry their number"
+            f"of {listed(map(quoted, found.apart), 'and')} each circuit or unit has relays of its own: a"
+            " fault inside lies in the first, the others carry their number"
         )
     if found.machines:
         out.append(

@@ -262,8 +262,8 @@ def _direction_words(relay: Relay, turned: float | None) -> str:
     if turned is None:
         return f"nothing is left of what polarises it, {relay.polarisation}, so it tells no direction"
     return (
-        f"its current lies {turned:.0f} degrees from its characteristic angle, {relay.direction}; it acts up"
-        " to 90"
+        f"its current lies {turned:.0f} degrees from its characteristic angle, {relay.direction}; it acts"
+        " up to 90"
     )
 
 

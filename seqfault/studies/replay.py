@@ -13,6 +13,7 @@ from typing import Literal
 
 import msgspec
 import numpy as np
+from msgspec.structs import replace
 
 from seqfault.case.relay_sites import Places
 from seqfault.equations.relay_travel import travelled, until_operation
@@ -137,6 +138,7 @@ def replay(
     trips = trips_of(network.case, guarded.relays, stated)
     open_already = {b for own in trips.of.values() for b in own if not closed(places, network.case, b)}
     solution = network.solve(faults)
+    faults = [_settled(network, *each) for each in zip(faults, solution.faults, strict=True)]
     first = operation(network, solution, guarded, trips)
     floor = _NOISE * solution.largest
     solutions = [solution]
@@ -202,6 +204,18 @@ def replay(
         solutions=tuple(solutions),
         dead=dead,
     )
+
+
+def _settled(network: Network, fault: Fault, state: FaultState) -> Fault:
+    """``fault`` with its source or load side by name: open breakers may leave no source to tell it by."""
+    if fault.fallen not in ("source", "load") or state.sides is None:
+        return fault
+    place = network.place(fault.place)
+    names = (place.bus, place.element)
+    if place.fraction is not None:
+        line = network.case.lines[place.element]
+        names = (line.from_, line.to)
+    return replace(fault, fallen=names[state.sides.index(state.bus)])
 
 
 def _solved(
