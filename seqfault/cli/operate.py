@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from seqfault.cli.batches import add_workers, over_states
 from seqfault.cli.fault import OWN, add_fault, read_fault
-from seqfault.cli.options import Commands, add_case, add_command, add_output
+from seqfault.cli.options import Commands, add_case, add_command, add_curves, add_output
 from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
@@ -60,16 +60,18 @@ def add(commands: Commands) -> None:
     )
     add_workers(parser)
     add_output(parser)
+    add_curves(parser)
     parser.set_defaults(run=run)
 
 
 def run(options: argparse.Namespace) -> int:
     """Answer the command: 1 where a replay ends with the fault still fed."""
+    from seqfault.cli.curves import check_curves
     from seqfault.cli.delivery import deliver, form_wanted
 
     if options.stuck and not options.replay:
         raise RequestError("--stuck: it goes with --replay; add it")
-    form = form_wanted(options)
+    form, plot = form_wanted(options), check_curves(options)
     first = {name: getattr(options, name) for name in ("place", *OWN)}
     faults = [read_fault(own) for own in (first, *(options.also or []))]
     stated = [_trip(text) for text in options.trips]
@@ -77,11 +79,13 @@ def run(options: argparse.Namespace) -> int:
         from seqfault.studies.operate import operate
 
         found = over_states(options, operate, faults, stated, place=options.place)
+        _draw(options, *found[0], plot)
         deliver(options, form, [_operation(*each) for each in found])
         return 0
     from seqfault.studies.replay import replay
 
     played = over_states(options, replay, faults, stated, options.stuck, place=options.place)
+    _draw(options, played[0][0], played[0][1].first, plot)
     deliver(options, form, [_replay(*each) for each in played])
     return 0 if all(each.cleared is not None for _, each in played) else 1
 
@@ -92,6 +96,24 @@ def _trip(text: str) -> tuple[str, str]:
     if not (mark and relay and breaker):
         raise RequestError(f'--trips "{text}": a relay and its breaker are wanted, as in R1=T1@main')
     return relay, breaker
+
+
+def _draw(options: argparse.Namespace, network: Network, found: Operation, plot: str) -> None:
+    """Write the chart of the fault as it stands at first, where one is asked for."""
+    if not plot:
+        return
+    from seqfault.cli.curves import write_curves
+    from seqfault.report.fault import fault_title
+    from seqfault.studies.curve_zone import curves_of_fault, voltage_of
+    from seqfault.studies.operate import guarded_network
+
+    s = found.solution
+    case = guarded_network(network, [b for own in found.trips.of.values() for b in own])[0].case
+    balanced = all(len(state.fault.phases) == 3 and not state.fault.kind.series for state in s.faults)
+    at = voltage_of(case, options.plot_at)
+    curves = curves_of_fault(case, found.readings, s.nominal, balanced, at)
+    title = fault_title(network, s)
+    write_curves(options, plot, curves, title.over, f"{title.name}  {title.conditions}")
 
 
 def _operation(network: Network, found: Operation) -> Answer:
