@@ -71,6 +71,8 @@ def ending(found: Replay) -> Iterator[str]:
             f"Cleared {when(found.cleared)} after the fault began, with {listed(opened, 'and')} open:"
             " no infeed or generator feeds it any more."
         )
+        if found.left.phase > 0:
+            yield f"Motors still feed {size(found.left.phase, 'A')} in the first moment; that dies away."
         late = [event.breaker for event in found.events if event.late]
         if late:
             yield f"More opens than had to: {listed(late, 'and')}, whose relays had operated by then."

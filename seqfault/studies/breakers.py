@@ -89,7 +89,9 @@ def closed(places: Places, case: Case, breaker: str) -> bool:
 def solve_with(network: Network, faults: Sequence[Fault], opened: Iterable[str]) -> FaultSolution:
     """Solve ``faults`` on ``network`` with the breakers ``opened``.
 
-    Raises as ``Network.solve`` does; ``RequestError`` where a fallen conductor lies at a breaker itself.
+    Converters that this cuts off from every infeed and generator feed nothing, as in a part that has none
+    from the start. Raises as ``Network.solve`` does; ``RequestError`` where a fallen conductor lies at the
+    breaker itself.
     """
     case = network.case
     opened = list(opened)
@@ -113,7 +115,22 @@ def solve_with(network: Network, faults: Sequence[Fault], opened: Iterable[str])
                 )
             continue
         standing.append(fault)
-    return network.solve([*standing, *(fault_at(breaker, "open-three") for breaker in poles)])
+    standing += [fault_at(breaker, "open-three") for breaker in poles]
+    running = [name for name, record in network.case.converters.items() if not record.out]
+    if not (running and poles):
+        return network.solve(standing)
+    calm = _without(network, running).solve(standing)
+    lost = [n for n in running if calm.lost[calm.index[network.case.converters[n].bus]]]
+    if set(lost) == set(running):
+        return calm
+    return (_without(network, lost) if lost else network).solve(standing)
+
+
+def _without(network: Network, converters: Sequence[str]) -> Network:
+    """``network`` with ``converters`` out."""
+    case = network.case
+    kept = {n: replace(r, out=r.out or n in converters) for n, r in case.converters.items()}
+    return Network(replace(case, converters=kept), machine=network.machine)
 
 
 def unfolded(case: Case, breakers: Iterable[str] = ()) -> Case:

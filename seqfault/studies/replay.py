@@ -229,7 +229,7 @@ def _solved(
 
 
 def standing(solution: FaultSolution, opened: Container[str]) -> bool:
-    """Whether an infeed or generator still feeds any fault; breakers that have ``opened`` are none.
+    """Whether an infeed or generator still feeds any fault; breakers that have ``opened`` are no faults.
 
     A break that lies on no earth counts while both its sides are fed.
     """
@@ -283,5 +283,10 @@ def replay_assumed(found: Replay) -> tuple[str, ...]:
     if found.stuck:
         out.append(f"taken to stay closed: {', '.join(map(quoted, found.stuck))} (--stuck)")
     if found.first.machines:
-        out.append("machines stay in step, and none trips by itself")
+        out.append("generators stay in step and none trips by itself; what motors feed alone dies away")
+    if any(kind == "converter" for kind in found.first.solution.terminals.kind):
+        out.append(
+            "converters that breakers cut off from every infeed and generator stop at once: their own"
+            " protection must see to that, and a case does not state it"
+        )
     return tuple(out)
