@@ -50,9 +50,9 @@ if TYPE_CHECKING:
     from seqfault.studies.compare import Comparison, compare
     from seqfault.studies.levels import Levels, levels
     from seqfault.studies.neutral import NeutralReport, study_neutral
+    from seqfault.studies.neutral_target import Target, find_target
     from seqfault.studies.operate import Operation, operate
     from seqfault.studies.replay import Replay, replay
-    from seqfault.studies.neutral_target import Target, find_target
     from seqfault.studies.settings import Settings, study_settings
     from seqfault.studies.settings_proposal import Proposal, propose_settings
     from seqfault.studies.steps import Evolution, evolve

@@ -15,7 +15,7 @@ from seqfault.report.settings_words import plain
 from seqfault.studies.breakers import Trips
 from seqfault.studies.operate import Operation, assumed_of, said_of
 from seqfault.studies.relay_readings import Reading
-from seqfault.studies.replay import Replay, replay_assumed
+from seqfault.studies.replay import Replay, feeding, replay_assumed
 
 
 def operate_tree(network: Network, found: Operation) -> dict[str, Any]:
@@ -45,6 +45,7 @@ def replay_tree(network: Network, found: Replay) -> dict[str, Any]:
             "dead": found.dead,
             "events": [msgspec.to_builtins(event) for event in found.events],
             "left": msgspec.to_builtins(found.left),
+            "still_feeding": [] if found.cleared is not None else list(feeding(found)),
             "opened": found.opened,
             "stuck": list(found.stuck),
             "nearest": [msgspec.to_builtins(way) for way in found.ways],
@@ -97,6 +98,7 @@ def replay_rows(found: Replay) -> Iterator[Quantity]:
         yield row(at, event.time, "s", event.relay)
         yield row(f"{at}, what", event.what, "", event.relay)
         yield row(f"{at}, breaker", event.breaker, "", event.relay)
+        yield row(f"{at}, times pickup", _known(event.multiple), "", event.relay)
         yield row(f"{at}, phase current left", event.left.phase, "A", event.relay)
         yield row(f"{at}, current left to earth", event.left.earth, "A", event.relay)
     for way in found.ways:

@@ -6,6 +6,8 @@ import math
 from collections.abc import Iterator
 
 from seqfault.case.wording import listed
+from seqfault.equations.relay_curves import EFFECTIVE_RANGE
+from seqfault.errors import quoted
 from seqfault.faults.network import Network
 from seqfault.report.fault import fault_title
 from seqfault.report.operate import acting, closing, resting, sees, table, when
@@ -13,7 +15,7 @@ from seqfault.report.settings_words import size
 from seqfault.report.tables import Page, Part, Sentences
 from seqfault.studies.operate import said_of
 from seqfault.studies.relay_readings import Reading
-from seqfault.studies.replay import Event, Replay, overrun, replay_assumed
+from seqfault.studies.replay import Event, Replay, feeding, overrun, replay_assumed, unsure
 
 
 def replay_page(network: Network, found: Replay) -> Page:
@@ -25,8 +27,18 @@ def replay_page(network: Network, found: Replay) -> Page:
     parts += _ways(found)
     parts += acting(found.first, "Who acts on the fault as it stands at first?")
     parts += resting(found.first.resting, "Who does not, and why?")
-    parts += closing(found.first, said_of(found.first), replay_assumed(found))
+    parts += closing(found.first, tuple(_said(found)), replay_assumed(found))
     return Page(tuple(parts))
+
+
+def _said(found: Replay) -> Iterator[str]:
+    yield from said_of(found.first)
+    names = unsure(found)
+    if names:
+        yield (
+            f"when {listed(map(quoted, names), 'and')} operated, less than {EFFECTIVE_RANGE[0]:g} times the"
+            " pickup was seen: the times from there on are of the formula alone"
+        )
 
 
 def _events(found: Replay) -> Iterator[Part]:
@@ -72,7 +84,7 @@ def ending(found: Replay) -> Iterator[str]:
             " no infeed or generator feeds it any more."
         )
         if found.left.phase > 0:
-            yield f"Motors still feed {size(found.left.phase, 'A')} in the first moment; that dies away."
+            yield f"{size(found.left.phase, 'A')} still flow into it, from neither of them."
         late = [event.breaker for event in found.events if event.late]
         if late:
             yield f"More opens than had to: {listed(late, 'and')}, whose relays had operated by then."
@@ -95,6 +107,9 @@ def ending(found: Replay) -> Iterator[str]:
 
 
 def _why(found: Replay) -> Iterator[str]:
+    names = feeding(found)
+    if names:
+        yield f"still feeding it: {listed(names, 'and')}"
     operated: dict[str, list[Event]] = {}
     for event in found.events:
         if event.what != "opens":

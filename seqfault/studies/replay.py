@@ -16,6 +16,7 @@ import numpy as np
 from msgspec.structs import replace
 
 from seqfault.case.relay_sites import Places
+from seqfault.equations.relay_curves import EFFECTIVE_RANGE
 from seqfault.equations.relay_travel import travelled, until_operation
 from seqfault.errors import CheckError, NoAnswerError, RequestError, quoted
 from seqfault.faults.kinds import Fault
@@ -43,8 +44,9 @@ class Left(msgspec.Struct, frozen=True):
 class Event(msgspec.Struct, frozen=True):
     """What happens at ``time`` (s): ``relay`` operates, or its ``breaker`` opens, or fails to.
 
-    ``left`` is what flows afterwards. ``late`` tells of what happens when the fault is cleared already;
-    ``opens no more`` of a breaker that is open, or that this state has open, when its relay operates.
+    ``left`` is what flows afterwards; ``seen`` (A or V) and ``multiple`` what a relay that operates sees in
+    that moment, and how many pickups that is, NaN of a breaker that opens. ``late`` tells of what happens
+    when the fault is cleared already; ``opens no more`` of a breaker that is open when its relay operates.
     """
 
     time: float
@@ -52,6 +54,8 @@ class Event(msgspec.Struct, frozen=True):
     relay: str
     breaker: str
     left: Left
+    seen: float = math.nan
+    multiple: float = math.nan
     late: bool = False
 
 
@@ -73,7 +77,8 @@ class Replay(msgspec.Struct, frozen=True, eq=False):
     ``first`` what the relays do about it as it stands; ``events`` in order; ``cleared`` the time (s) at
     which no infeed or generator feeds it any more, None where it goes on; ``last`` what relays make of it
     after the last breaker that opened in time, ``left`` what flows then. ``ways`` of relays that ran and
-    did not operate. ``opened`` breakers by the time they opened. ``dead``: nothing fed it from the start.
+    did not operate. ``opened`` breakers by the time they opened; ``final`` the solution ``last`` is of.
+    ``dead``: nothing fed it from the start.
     """
 
     first: Operation
@@ -84,7 +89,7 @@ class Replay(msgspec.Struct, frozen=True, eq=False):
     ways: tuple[Way, ...]
     opened: dict[str, float]
     stuck: tuple[str, ...]
-    solutions: tuple[FaultSolution, ...]
+    final: FaultSolution
     dead: bool
 
 
@@ -141,7 +146,6 @@ def replay(
     faults = [_settled(network, *each) for each in zip(faults, solution.faults, strict=True)]
     first = operation(network, solution, guarded, trips)
     floor = _NOISE * solution.largest
-    solutions = [solution]
     running = _Running(list(guarded.relays))
     events: list[Event] = []
     pending: list[tuple[float, str, str]] = []
@@ -164,7 +168,6 @@ def replay(
             pending = [each for each in pending if each[0] > now + SAME]
             opened |= {breaker: now for _, breaker, _ in due}
             solution = _solved(network, faults, opened, now)
-            solutions.append(solution)
             left, seen = left_of(solution, opened, floor), readings(solution, guarded, opened)
             events += [Event(now, "opens", relay, breaker, left) for _, breaker, relay in due]
             if not standing(solution, opened):
@@ -172,6 +175,7 @@ def replay(
             continue
         running.run(seen, wait, now + wait)
         now += wait
+        sight = {each.relay.name: (each.value, each.multiple) for each in seen}
         for name in operating:
             running.operated.add(name)
             delay = guarded.relays[name].breaker_time
@@ -185,9 +189,9 @@ def replay(
                 elif now + delay < due_at.get(breaker, math.inf):
                     pending = [p for p in pending if p[1] != breaker]
                     pending.append((now + delay, breaker, name))
-                events.append(Event(now, what, name, breaker, left))
+                events.append(Event(now, what, name, breaker, left, *sight[name]))
             if not trips.of[name]:
-                events.append(Event(now, "operates", name, "", left))
+                events.append(Event(now, "operates", name, "", left, *sight[name]))
     for time, breaker, relay in sorted(pending):  # their relays had operated; nothing stops them now
         opened[breaker] = time
         events.append(Event(time, "opens", relay, breaker, left, late=True))
@@ -201,7 +205,7 @@ def replay(
         ways=ways,
         opened=opened,
         stuck=tuple(stuck),
-        solutions=tuple(solutions),
+        final=solution,
         dead=dead,
     )
 
@@ -270,6 +274,29 @@ def overrun(found: Replay) -> tuple[Way, ...]:
     return tuple(way for way in found.ways if way.lacking <= found.first.protection.demands.overshoot)
 
 
+def feeding(found: Replay) -> tuple[str, ...]:
+    """Infeeds and generators that carry more than a hundredth of what is left in a fault that goes on."""
+    t = found.final.terminals
+    size = np.abs(t.phases).max(axis=0)
+    return tuple(
+        name
+        for k, (name, kind) in enumerate(zip(t.element, t.kind, strict=True))
+        if kind in ("infeed", "generator") and size[k] > 0.01 * found.left.phase > 0
+    )
+
+
+def unsure(found: Replay) -> tuple[str, ...]:
+    """Inverse relays that operate below the range for which any accuracy of their time is declared."""
+    relays = found.first.protection.relays
+    return tuple(
+        dict.fromkeys(
+            event.relay
+            for event in found.events
+            if event.multiple < EFFECTIVE_RANGE[0] and relays[event.relay].curve != "definite"
+        )
+    )
+
+
 def replay_assumed(found: Replay) -> tuple[str, ...]:
     """What the replay takes for granted beside the currents and settings, in sentences."""
     out = [
@@ -283,7 +310,9 @@ def replay_assumed(found: Replay) -> tuple[str, ...]:
     if found.stuck:
         out.append(f"taken to stay closed: {', '.join(map(quoted, found.stuck))} (--stuck)")
     if found.first.machines:
-        out.append("generators stay in step and none trips by itself; what motors feed alone dies away")
+        out.append(
+            "generators stay in step and none trips by itself; what motors feed alone dies away and is left out"
+        )
     if any(kind == "converter" for kind in found.first.solution.terminals.kind):
         out.append(
             "converters that breakers cut off from every infeed and generator stop at once: their own"

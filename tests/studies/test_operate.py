@@ -21,7 +21,7 @@ from seqfault.studies.breakers import unfolded
 from seqfault.studies.operate import Operation, operate, said_of
 from seqfault.studies.relay_readings import Reading
 from seqfault.studies.relays import Relay
-from seqfault.studies.replay import Replay, overrun, replay
+from seqfault.studies.replay import Replay, feeding, overrun, replay, replay_assumed, unsure
 from tests.studies.setting_plants import RING, case_of, measured
 
 RADIAL = Path(__file__).with_name("radial.toml")
@@ -467,3 +467,62 @@ def test_cleared_is_never_claimed_while_anything_feeds() -> None:
         assert fed == (found.cleared is None), place
         some += not fed
     assert some
+
+
+def test_what_motors_feed_alone_is_no_fault_that_stands() -> None:
+    """A three-phase fault at a board with a motor, cut off from all else."""
+    network = Network(case_of(RING, SINGLE))
+    trips = [("W-phase", "E@east"), ("W-phase", "X@east")]
+    found = replay(network, [fault_at("east", "three-phase")], trips)
+    motor = 5.5 * 800e3 / (math.sqrt(3) * 11e3)  # locked rotor at full voltage: it feeds the fault at first
+    fed = [k for k, name in enumerate(found.first.solution.terminals.element) if name == "M"]
+    assert abs(found.first.solution.terminals.phases[0, fed[0]]) == pytest.approx(motor, rel=0.01)
+    assert found.cleared == pytest.approx(reading(found.first, "W-phase").cleared)
+    assert set(found.opened) == {"E@east", "X@east"}
+    assert found.left.phase == 0
+    assert any("motors feed alone" in text for text in replay_assumed(found))
+
+
+def test_converters_that_are_cut_off_stop() -> None:
+    text = RADIAL.read_text(encoding="utf-8") + (
+        '[converters.C]\nbus = "north"\nrating = "1 MVA"\nfault_current = 1.2\n'
+        '[relays.C-phase]\nat = "N@main"\nmeasures = "phase"\npickup = "90 A"\ncurve = "definite"\n'
+        'delay = "0.1 s"\nbreaker_time = "0.05 s"\n'
+    )
+    network = Network(case_from_tree(parse_text(text.encode(), "c.toml"), "c.toml"))
+    found = replay(network, [fault_at("north", "three-phase")])
+    assert found.first.solution.largest > 0
+    assert found.cleared == pytest.approx(0.15)
+    assert found.left.phase == 0
+    assert any("converters that breakers cut off" in text for text in replay_assumed(found))
+    other = replay(network, [fault_at("S@50%")])  # here it stays with the board
+    assert other.cleared == pytest.approx(0.3)
+
+
+def test_load_before_the_fault_is_what_relays_see_too() -> None:
+    load = '[loads.L]\nbus = "south"\npower = "2 MW"\npower_factor = 0.9\nconnection = "delta"\n'
+    relay = (
+        '[relays.S-phase]\nat = "S@main"\nmeasures = "phase"\npickup = "150 A"\ncurve = "definite"\n'
+        'delay = "1 s"\n[prefault]\nstate = "loaded"\n'
+    )
+    text = RADIAL.read_text(encoding="utf-8") + load + relay
+    network = Network(case_from_tree(parse_text(text.encode(), "l.toml"), "l.toml"))
+    found = replay(network, [fault_at("N@50%")])
+    seen = reading(found.first, "S-phase").value
+    assert seen == pytest.approx(2e6 / 0.9 / (math.sqrt(3) * 11e3), rel=0.02)  # load current
+    assert found.cleared == pytest.approx(reading(found.first, "N-earth").cleared, rel=1e-9)
+    own = replay(network, [fault_at("S@50%")])
+    assert set(own.opened) == {"S@main"}
+    assert own.cleared == pytest.approx(0.3)
+
+
+def test_who_still_feeds_and_which_times_are_unsure() -> None:
+    case = case_of(RING, SINGLE)
+    found = replay(Network(case), [fault_at("main")])
+    assert feeding(found) == ("G",)  # the transformer is open, the generator of the ring is not
+    slow = replay(Network(radial()), [fault_at("N@50%", zf=550)])
+    m = reading(slow.first, "N-earth").multiple
+    assert 1 < m < 2
+    assert unsure(slow) == ("N-earth",)
+    assert slow.events[0].multiple == pytest.approx(m)
+    assert math.isnan(slow.events[-1].multiple)
