@@ -25,9 +25,9 @@ from seqfault.report.tables import (
     Table,
     once,
 )
+from seqfault.studies.fault_left import left_of
 from seqfault.studies.operate import Operation, assumed_of, said_of
 from seqfault.studies.relay_readings import SYMBOLS, Reading
-from seqfault.studies.replay import left_of
 
 
 def operate_page(network: Network, found: Operation) -> Page:

@@ -15,7 +15,8 @@ from seqfault.report.settings_words import plain
 from seqfault.studies.breakers import Trips
 from seqfault.studies.operate import Operation, assumed_of, said_of
 from seqfault.studies.relay_readings import Reading
-from seqfault.studies.replay import Replay, feeding, replay_assumed
+from seqfault.studies.replay import Replay
+from seqfault.studies.replay_said import feeding, replay_assumed
 
 
 def operate_tree(network: Network, found: Operation) -> dict[str, Any]:

@@ -15,7 +15,8 @@ from seqfault.report.settings_words import size
 from seqfault.report.tables import Page, Part, Sentences
 from seqfault.studies.operate import said_of
 from seqfault.studies.relay_readings import Reading
-from seqfault.studies.replay import Event, Replay, feeding, overrun, replay_assumed, unsure
+from seqfault.studies.replay import Event, Replay
+from seqfault.studies.replay_said import feeding, overrun, replay_assumed, unsure
 
 
 def replay_page(network: Network, found: Replay) -> Page:

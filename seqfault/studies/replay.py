@@ -8,21 +8,20 @@ the wrong way, begins anew. A relay that has operated stays so; its breakers ope
 from __future__ import annotations
 
 import math
-from collections.abc import Container, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from typing import Literal
 
 import msgspec
-import numpy as np
 from msgspec.structs import replace
 
 from seqfault.case.relay_sites import Places
-from seqfault.equations.relay_curves import EFFECTIVE_RANGE
 from seqfault.equations.relay_travel import travelled, until_operation
-from seqfault.errors import CheckError, NoAnswerError, RequestError, quoted
+from seqfault.errors import CheckError, NoAnswerError, RequestError
 from seqfault.faults.kinds import Fault
 from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution, FaultState
 from seqfault.studies.breakers import check_breaker, closed, solve_with, trips_of
+from seqfault.studies.fault_left import Left, left_of, standing
 from seqfault.studies.operate import Operation, Stated, guarded_network, operation
 from seqfault.studies.relay_readings import Reading, readings
 
@@ -32,13 +31,6 @@ _NOISE = 1e-9
 """A current below this share of the first one is rounding."""
 
 What = Literal["operates", "opens", "stays closed", "opens no more"]
-
-
-class Left(msgspec.Struct, frozen=True):
-    """What still flows into the faults, A: the greatest phase current, and the greatest 3I0 to earth."""
-
-    phase: float
-    earth: float
 
 
 class Event(msgspec.Struct, frozen=True):
@@ -230,92 +222,3 @@ def _solved(
     except (NoAnswerError, RequestError, CheckError) as error:
         names = ", ".join(opened)
         raise type(error)(f"at {now:.3f} s, with {names} open: {error}") from None
-
-
-def standing(solution: FaultSolution, opened: Container[str]) -> bool:
-    """Whether an infeed or generator still feeds any fault; breakers that have ``opened`` are no faults.
-
-    A break that lies on no earth counts while both its sides are fed.
-    """
-    return any(all(_fed(solution, bus) for bus in _buses(state)) for state in _asked(solution, opened))
-
-
-def left_of(solution: FaultSolution, opened: Container[str], floor: float = 0.0) -> Left:
-    """What flows into the faults, and through breaks that lie on no earth; 0 up to ``floor`` A."""
-    phase = earth = 0.0
-    for state in _asked(solution, opened):
-        phase = max(phase, float(np.abs(state.current).max()))
-        earth = max(earth, abs(state.residual) if state.fault.earth else 0.0)
-        if state.through is not None and not state.fault.fallen:
-            phase = max(phase, float(np.abs(state.through).max()))
-    return Left(phase if phase > floor else 0.0, earth if earth > floor else 0.0)
-
-
-def _asked(solution: FaultSolution, opened: Container[str]) -> list[FaultState]:
-    """The faults asked for, without the breakers that have opened since."""
-    return [
-        state
-        for state in solution.faults
-        if not (state.fault.kind.name == "open-three" and state.fault.place in opened)
-    ]
-
-
-def _buses(state: FaultState) -> tuple[str, ...]:
-    return state.sides if state.sides is not None and not state.fault.fallen else (state.bus,)
-
-
-def _fed(solution: FaultSolution, bus: str) -> bool:
-    at = solution.index[bus]
-    return bool(solution.before[at] != 0 and not solution.lost[at])
-
-
-def overrun(found: Replay) -> tuple[Way, ...]:
-    """Relays that would operate within the overshoot of the demands after their current ceased or fell."""
-    return tuple(way for way in found.ways if way.lacking <= found.first.protection.demands.overshoot)
-
-
-def feeding(found: Replay) -> tuple[str, ...]:
-    """Infeeds and generators that carry more than a hundredth of what is left in a fault that goes on."""
-    t = found.final.terminals
-    size = np.abs(t.phases).max(axis=0)
-    return tuple(
-        name
-        for k, (name, kind) in enumerate(zip(t.element, t.kind, strict=True))
-        if kind in ("infeed", "generator") and size[k] > 0.01 * found.left.phase > 0
-    )
-
-
-def unsure(found: Replay) -> tuple[str, ...]:
-    """Inverse relays that operate below the range for which any accuracy of their time is declared."""
-    relays = found.first.protection.relays
-    return tuple(
-        dict.fromkeys(
-            event.relay
-            for event in found.events
-            if event.multiple < EFFECTIVE_RANGE[0] and relays[event.relay].curve != "definite"
-        )
-    )
-
-
-def replay_assumed(found: Replay) -> tuple[str, ...]:
-    """What the replay takes for granted beside the currents and settings, in sentences."""
-    out = [
-        "relays run by the dynamic formula of IEC 60255-151, the sum of dt/t(I); one that falls to its"
-        " pickup or turns the wrong way begins anew at once, since a case states no reset time",
-        "a relay that has operated stays so, and all three poles of its breakers open together, once for"
-        " all: nothing recloses",
-        "a relay stops where its current stops: no overshoot; one that would operate in the very moment a"
-        " breaker opens counts as operated",
-    ]
-    if found.stuck:
-        out.append(f"taken to stay closed: {', '.join(map(quoted, found.stuck))} (--stuck)")
-    if found.first.machines:
-        out.append(
-            "generators stay in step and none trips by itself; what motors feed alone dies away and is left out"
-        )
-    if any(kind == "converter" for kind in found.first.solution.terminals.kind):
-        out.append(
-            "converters that breakers cut off from every infeed and generator stop at once: their own"
-            " protection must see to that, and a case does not state it"
-        )
-    return tuple(out)

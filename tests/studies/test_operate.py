@@ -21,7 +21,8 @@ from seqfault.studies.breakers import unfolded
 from seqfault.studies.operate import Operation, operate, said_of
 from seqfault.studies.relay_readings import Reading
 from seqfault.studies.relays import Relay
-from seqfault.studies.replay import Replay, feeding, overrun, replay, replay_assumed, unsure
+from seqfault.studies.replay import Replay, replay
+from seqfault.studies.replay_said import feeding, overrun, replay_assumed, unsure
 from tests.studies.setting_plants import RING, case_of, measured
 
 RADIAL = Path(__file__).with_name("radial.toml")
