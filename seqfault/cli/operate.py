@@ -104,11 +104,11 @@ def _draw(options: argparse.Namespace, network: Network, found: Operation, plot:
         return
     from seqfault.cli.curves import write_curves
     from seqfault.report.fault import fault_title
+    from seqfault.studies.breakers import unfolded
     from seqfault.studies.curve_zone import curves_of_fault, voltage_of
-    from seqfault.studies.operate import guarded_network
 
     s = found.solution
-    case = guarded_network(network, [b for own in found.trips.of.values() for b in own])[0].case
+    case = unfolded(network.case, [b for own in found.trips.of.values() for b in own])
     balanced = all(len(state.fault.phases) == 3 and not state.fault.kind.series for state in s.faults)
     at = voltage_of(case, options.plot_at)
     curves = curves_of_fault(case, found.readings, s.nominal, balanced, at)

@@ -71,7 +71,7 @@ def sees(reading: Reading) -> str:
 
 def times(reading: Reading) -> str:
     """How many times its pickup."""
-    return "-" if math.isnan(reading.multiple) else figures(reading.multiple)
+    return "-" if math.isnan(reading.multiple) else figures(reading.multiple, 3, 3)
 
 
 def acting(found: Operation, heading: str) -> Iterator[Part]:

@@ -10,15 +10,19 @@ from __future__ import annotations
 import math
 from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
+from typing import TYPE_CHECKING
 
 import msgspec
 
+from seqfault.case.quantities import Dimensions, read_quantity
 from seqfault.case.records import Case
 from seqfault.case.relay_sites import Places
-from seqfault.errors import RequestError, quoted
+from seqfault.errors import QuantityError, RequestError, quoted
 from seqfault.studies.relay_readings import Reading
 from seqfault.studies.relays import Relay
-from seqfault.studies.settings_sheet import SheetRow
+
+if TYPE_CHECKING:
+    from seqfault.studies.settings_sheet import SheetRow
 
 
 class Mark(msgspec.Struct, frozen=True):
@@ -147,9 +151,6 @@ def voltage_of(case: Case, text: str | None) -> float | None:
     """The voltage (V) that ``--plot-at`` names. Raises ``RequestError`` where no bus has it."""
     if text is None:
         return None
-    from seqfault.case.quantities import Dimensions, read_quantity
-    from seqfault.errors import QuantityError
-
     there = sorted({float(bus.voltage.value.real) for bus in case.buses.values()}, reverse=True)
     try:
         value = float(read_quantity(text, Dimensions("voltage")).value.real)

@@ -420,6 +420,30 @@ def test_three_circuits_are_tripped_each_by_its_own_relay() -> None:
     assert stated.trips.of["board"] == ("W@main", "W (2)@main", "W (3)@main")
 
 
+def test_units_of_one_record_that_share_a_resistor_are_tripped_together() -> None:
+    case = radial(('vector_group = "Dyn11"\n', 'vector_group = "Dyn11"\ncount = 2\n'))
+    found = replay(Network(case), [fault_at("main")])
+    assert found.first.trips.of["board-earth"] == ("T1@main", "T1 (2)@main")
+    assert set(found.opened) == {"T1@main", "T1 (2)@main"}
+    assert found.cleared is not None
+    whole = {star.name: star for star in Network(case).fault("main").star_points}["NER"]
+    assert reading(found.first, "board-earth").value == pytest.approx(abs(whole.current), rel=1e-9)
+
+
+def test_units_of_one_record_with_star_points_of_their_own_have_a_relay_each() -> None:
+    case = radial(
+        ('vector_group = "Dyn11"\n', 'vector_group = "Dyn11"\ncount = 2\n'),
+        ('neutral = "NER"', 'neutral = "solid"'),
+        ('at = "NER"', 'at = "T1.lv"'),
+    )
+    found = replay(Network(case), [fault_at("main")])
+    assert found.first.trips.of["board-earth (2)"] == ("T1 (2)@main",)
+    whole = {star.name: star for star in Network(case).fault("main").star_points}["T1.lv"]
+    for name in ("board-earth", "board-earth (2)"):
+        assert reading(found.first, name).value == pytest.approx(abs(whole.current) / 2, rel=1e-9)
+    assert found.cleared == pytest.approx(reading(found.first, "board-earth").cleared)
+
+
 @pytest.mark.parametrize(
     ("stated", "stuck", "said"),
     [
