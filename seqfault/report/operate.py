@@ -25,7 +25,7 @@ from seqfault.report.tables import (
     Table,
     once,
 )
-from seqfault.studies.fault_left import left_of
+from seqfault.studies.fault_left import left_of, standing
 from seqfault.studies.operate import Operation, assumed_of, said_of
 from seqfault.studies.relay_readings import SYMBOLS, Reading
 
@@ -105,6 +105,9 @@ def acting(found: Operation, heading: str) -> Iterator[Part]:
 
 def order(found: Operation) -> Iterator[str]:
     """What to take away from the order of tripping."""
+    if not standing(found.solution, ()):
+        yield "Nothing feeds the place in this state: no current flows, and there is nothing to clear."
+        return
     if not found.acting:
         yield "No relay acts on this fault: it stands until somebody finds it."
         return

@@ -49,12 +49,16 @@ def replay_assumed(found: Replay) -> tuple[str, ...]:
     ]
     if found.stuck:
         out.append(f"taken to stay closed: {', '.join(map(quoted, found.stuck))} (--stuck)")
+    s = found.first.solution
+    ties = {name for name, kind in zip(s.terminals.element, s.terminals.kind, strict=True) if kind == "tie"}
+    if s.loaded and ties & {breaker.partition("@")[0] for breaker in found.opened}:
+        out.append("once a tie has opened the load before the fault is taken as it flows with the tie open")
     if found.first.machines:
         out.append(
             "generators stay in step and none trips by itself; what motors feed alone dies away and is left"
             " out"
         )
-    if any(kind == "converter" for kind in found.first.solution.terminals.kind):
+    if any(kind == "converter" for kind in s.terminals.kind):
         out.append(
             "converters that breakers cut off from every infeed and generator stop at once: their own"
             " protection must see to that, and a case does not state it"

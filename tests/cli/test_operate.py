@@ -69,6 +69,9 @@ def test_a_replay_that_clears_and_one_that_does_not(run: Run, ring: Path) -> Non
     assert page.code == 0
     page = run("operate", ring, "E@50%", "--replay")
     assert "X-east lacked 0.5 ms when its current fell" in page.flat
+    page = run("operate", RADIAL, "main", "--without", "utility")
+    assert "there is nothing to clear" in page.flat
+    assert "until somebody finds it" not in page.flat
     page = run("operate", RADIAL, "main", "--replay", "--without", "utility")
     assert page.code == 0
     assert "there is nothing to clear" in page.flat

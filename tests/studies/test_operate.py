@@ -551,3 +551,22 @@ def test_who_still_feeds_and_which_times_are_unsure() -> None:
     assert unsure(slow) == ("N-earth",)
     assert slow.events[0].multiple == pytest.approx(m)
     assert math.isnan(slow.events[-1].multiple)
+
+
+def test_an_open_conductor_under_load_ends_when_its_line_is_switched_off() -> None:
+    load = '[loads.L]\nbus = "south"\npower = "2 MW"\npower_factor = 0.9\nconnection = "delta"\n'
+    relay = (
+        '[relays.S-sequence]\nat = "S@main"\nmeasures = "negative-sequence"\npickup = "20 A"\n'
+        'curve = "definite"\ndelay = "3 s"\n[prefault]\nstate = "loaded"\n'
+    )
+    text = RADIAL.read_text(encoding="utf-8") + load + relay
+    network = Network(case_from_tree(parse_text(text.encode(), "l.toml"), "l.toml"))
+    found = replay(network, [fault_at("S@50%", "open-one")])
+    current = 2e6 / 0.9 / (math.sqrt(3) * 11e3)
+    # a delta load fed by two phases: it draws √3/2 of the current there, half of that by sequence 1 and 2
+    assert reading(found.first, "S-sequence").value == pytest.approx(current / 2, rel=0.03)
+    assert found.cleared == pytest.approx(3.1)
+    assert found.events[0].left.phase == pytest.approx(current * math.sqrt(3) / 2, rel=0.03)
+    at_breaker = replay(network, [fault_at("S@main", "open-one")])  # its own breaker opens the other poles
+    assert at_breaker.cleared == pytest.approx(3.1)
+    assert at_breaker.left.phase == 0
