@@ -67,7 +67,8 @@ def fault_title(network: Network, s: FaultSolution) -> Title:
         name = f"{s.fault.place}  {kilovolt(s.nominal)}"
         return Title(network.model.title, name, f"{described(s.fault)}, {conditions([s])}")
     names = " and ".join(f"{f.fault.place}  {kilovolt(f.nominal)}" for f in s.faults)
-    told = "; ".join(f"{f.fault.place}: {described(f.fault)}, {impedance_words(f.fault)}" for f in s.faults)
+    each = [(f.fault.place, (described(f.fault), impedance_words(f.fault))) for f in s.faults]
+    told = "; ".join(f"{place}: {', '.join(filter(None, words))}" for place, words in each)
     return Title(network.model.title, names, f"at once: {told}; {circumstances(s)}")
 
 
