@@ -53,7 +53,7 @@ def free_space(model: Model, sequence: int, weak: Complex) -> FreeSpace:
 
 
 def connected(model: Model, near: Ints = NONE, far: Ints = NONE) -> Ints:
-    """Labels (n,) of the nodes that lines and transformers join, and each of ``near`` with one of ``far``."""
+    """Labels (n,) of what lines and transformers join, and each node of ``near`` with one of ``far``."""
     through = (model.lines.nodes >= 0).all(axis=0)
     first, second = [model.lines.nodes[0, through], near], [model.lines.nodes[1, through], far]
     for sets in model.winding_sets:
