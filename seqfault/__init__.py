@@ -52,6 +52,8 @@ if TYPE_CHECKING:
     from seqfault.studies.levels import Levels, levels
     from seqfault.studies.neutral import NeutralReport, study_neutral
     from seqfault.studies.neutral_target import Target, find_target
+    from seqfault.studies.operate import Operation, operate
+    from seqfault.studies.replay import Replay, replay
     from seqfault.studies.settings import Settings, study_settings
     from seqfault.studies.settings_proposal import Proposal, propose_settings
     from seqfault.studies.steps import Evolution, evolve
@@ -74,8 +76,10 @@ __all__ = [
     "Network",
     "NeutralReport",
     "NoAnswerError",
+    "Operation",
     "Proposal",
     "QuantityError",
+    "Replay",
     "RequestError",
     "SeqfaultError",
     "Settings",
@@ -91,9 +95,11 @@ __all__ = [
     "find_target",
     "in_state",
     "levels",
+    "operate",
     "propose_settings",
     "read_case",
     "read_steps",
+    "replay",
     "study_neutral",
     "study_settings",
     "winding_cover",
@@ -122,6 +128,8 @@ _HOMES = {
     "seqfault.studies.levels": ("Levels", "levels"),
     "seqfault.studies.neutral": ("NeutralReport", "study_neutral"),
     "seqfault.studies.neutral_target": ("Target", "find_target"),
+    "seqfault.studies.operate": ("Operation", "operate"),
+    "seqfault.studies.replay": ("Replay", "replay"),
     "seqfault.studies.winding_cover": ("WindingCover", "winding_cover"),
     "seqfault.studies.settings": ("Settings", "study_settings"),
     "seqfault.studies.settings_proposal": ("Proposal", "propose_settings"),

@@ -4,24 +4,13 @@ from __future__ import annotations
 
 import msgspec
 
+from seqfault.case.places import TABLES
 from seqfault.case.records import Case, Record, Transformer
 from seqfault.case.vector_group import parse_vector_group
 from seqfault.case.wording import Spelling
 from seqfault.errors import FieldError
 
-ELEMENTS = (
-    "infeeds",
-    "generators",
-    "motors",
-    "lines",
-    "transformers",
-    "earthing_transformers",
-    "series_reactors",
-    "capacitors",
-    "loads",
-    "converters",
-    "ties",
-)
+ELEMENTS = (*TABLES, "converters", "ties")
 
 
 class StarUser(msgspec.Struct, frozen=True):

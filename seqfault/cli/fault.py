@@ -46,6 +46,20 @@ def add(commands: Commands) -> None:
         nargs="?",
         help="a bus (inspect CASE --places lists them), ELEMENT@BUS, LINE@37%% or LINE@4.2km",
     )
+    group = add_fault(parser)
+    group.add_argument(
+        "--steps", metavar="FILE", help="faults and open poles step by step, in TOML, instead of PLACE"
+    )
+    shown = parser.add_argument_group("what is shown")
+    shown.add_argument("--flows", action="store_true", help="every element, small flows included")
+    shown.add_argument("--components", action="store_true", help="zero, positive, negative sequence")
+    add_workers(parser)
+    add_output(parser)
+    parser.set_defaults(run=run)
+
+
+def add_fault(parser: argparse.ArgumentParser) -> Any:
+    """The options of one fault, and of others at the same time; returns their group."""
     group = parser.add_argument_group("fault")
     group.add_argument(
         "--kind",
@@ -74,15 +88,7 @@ def add(commands: Commands) -> None:
         help="another fault at the same time; its own --kind, --phases, --zf, --zg and --fallen follow",
     )
     add_impedances(parser, OfLast)
-    group.add_argument(
-        "--steps", metavar="FILE", help="faults and open poles step by step, in TOML, instead of PLACE"
-    )
-    shown = parser.add_argument_group("what is shown")
-    shown.add_argument("--flows", action="store_true", help="every element, small flows included")
-    shown.add_argument("--components", action="store_true", help="zero, positive, negative sequence")
-    add_workers(parser)
-    add_output(parser)
-    parser.set_defaults(run=run)
+    return group
 
 
 class OfLast(argparse.Action):

@@ -108,6 +108,19 @@ def add_output(parser: argparse.ArgumentParser) -> None:
     group.add_argument("--debug", action="store_true", help="show the traceback of an internal error")
 
 
+def add_curves(parser: argparse.ArgumentParser) -> None:
+    """--plot and --plot-at, of time-current curves."""
+    group = parser.add_argument_group("chart")
+    group.add_argument(
+        "--plot", metavar="FILE", help="draw the time-current curves of the relays: .svg .png .pdf"
+    )
+    group.add_argument(
+        "--plot-at",
+        metavar="VOLTAGE",
+        help='with --plot: the voltage whose amperes are drawn, as in "11 kV"',
+    )
+
+
 def _width(text: str) -> int:
     try:
         width = int(text)

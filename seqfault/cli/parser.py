@@ -9,7 +9,17 @@ from typing import NoReturn
 
 from seqfault import __version__
 
-COMMANDS = ("inspect", "fault", "compare", "levels", "along", "neutral", "settings", "completion")
+COMMANDS = (
+    "inspect",
+    "fault",
+    "compare",
+    "levels",
+    "along",
+    "neutral",
+    "settings",
+    "operate",
+    "completion",
+)
 EPILOG = """\
 examples:
   seqfault inspect plant.toml
@@ -19,6 +29,7 @@ examples:
   seqfault along plant.toml F1 --far-end-open
   seqfault levels plant.toml --scenario all --output levels.csv
   seqfault neutral plant.toml NER --target "300 A"
+  seqfault operate plant.toml F1@37% --replay
 
 exit codes: 0 done, 1 done and a condition is not met, 2 command or case wrong, 3 no answer exists,
 70 internal error, 130 interrupted

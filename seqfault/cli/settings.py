@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING
 
-from seqfault.cli.options import Commands, add_command, add_output
+from seqfault.cli.options import Commands, add_command, add_curves, add_output
 from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
@@ -55,6 +55,7 @@ def add(commands: Commands) -> None:
         help="with --propose: save the case with the proposed settings, its comments kept",
     )
     add_output(parser)
+    add_curves(parser)
     parser.set_defaults(run=run)
 
 
@@ -73,19 +74,21 @@ def run(options: argparse.Namespace) -> int:
     from functools import partial
 
     from seqfault.case.reader import read_case
+    from seqfault.cli.curves import check_curves, draw_settings
     from seqfault.cli.delivery import Answer, deliver, form_wanted
 
     _check(options)
-    form = form_wanted(options)
+    form, plot = form_wanted(options), check_curves(options)
     case = read_case(options.case)
     if options.propose:
-        return _propose(options, form, case)
+        return _propose(options, form, case, plot)
     if options.sheet:
         from seqfault.report.settings_sheet import sheet_page, sheet_rows, sheet_tree
         from seqfault.studies.settings_sheet import setting_sheet
         from seqfault.studies.settings_states import study_states
 
         study = study_states(case, options.points)
+        draw_settings(options, plot, study)
         sheet = Answer(
             partial(sheet_page, study),
             partial(sheet_tree, study),
@@ -98,6 +101,7 @@ def run(options: argparse.Namespace) -> int:
     from seqfault.studies.settings import study_settings
 
     study, found = study_settings(case, options.points)
+    draw_settings(options, plot, study)
     answer = Answer(
         partial(settings_page, study, found),
         partial(settings_tree, study, found),
@@ -123,9 +127,10 @@ def _check(options: argparse.Namespace) -> None:
     check_target(options.write, options.overwrite, options.case, "--write")
 
 
-def _propose(options: argparse.Namespace, form: str, case: Case) -> int:
+def _propose(options: argparse.Namespace, form: str, case: Case, plot: str) -> int:
     from functools import partial
 
+    from seqfault.cli.curves import draw_settings
     from seqfault.cli.delivery import Answer, deliver
     from seqfault.cli.run import say
     from seqfault.report.settings_proposal import proposal_page, proposal_rows, proposal_tree
@@ -134,6 +139,7 @@ def _propose(options: argparse.Namespace, form: str, case: Case) -> int:
 
     study = study_states(case, options.points)
     proposal = propose_settings(study, options.keep)
+    draw_settings(options, plot, proposal.study or study)
     content = None
     if options.write is not None and proposal.study is not None and not proposal.contradictions:
         from seqfault.case.rewriting import rewritten

@@ -14,7 +14,7 @@ from seqfault.faults.kinds import Fault
 from seqfault.faults.solution import FaultState, Terminals
 from seqfault.faults.standing import Standing
 from seqfault.model.elements import Bools, Ints, Model
-from seqfault.model.zones import components
+from seqfault.networks.connectivity import connected
 
 
 def lost_buses(model: Model, standing: Sequence[Standing], where: Sequence[Ints]) -> Bools:
@@ -29,15 +29,7 @@ def lost_buses(model: Model, standing: Sequence[Standing], where: Sequence[Ints]
 
 def _fed(model: Model, near: Ints, far: Ints) -> Bools:
     """Nodes (n,) that a source reaches, the nodes ``near`` and ``far`` joined."""
-    lines = model.lines
-    through = (lines.nodes >= 0).all(axis=0)
-    first, second = [lines.nodes[0, through]], [lines.nodes[1, through]]
-    for sets in model.winding_sets:
-        first += [sets.node[:, 0]] * (sets.node.shape[1] - 1)
-        second += list(sets.node[:, 1:].T)
-    first.append(near)
-    second.append(far)
-    part = components(model.common, np.concatenate(first), np.concatenate(second))
+    part = connected(model, near, far)
     infeeds = np.array([kind == "infeed" for kind in model.sources.kinds], bool)
     sources = [model.sources.node[infeeds]]
     sources += [sets.node[:, 0] for sets in model.winding_sets if sets.kind_of_record == "generator"]

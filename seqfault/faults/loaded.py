@@ -9,7 +9,8 @@ from seqfault.errors import CaseError, quoted
 from seqfault.faults.flows import TerminalMap, sequence_flows, terminal_map
 from seqfault.faults.standing import Loading
 from seqfault.model.elements import Complex, Ints, Model, Operating, WindingSets
-from seqfault.networks.power_flow import Conditions, connected, power_flow
+from seqfault.networks.connectivity import connected
+from seqfault.networks.power_flow import Conditions, power_flow
 
 
 def loaded(model: Model) -> tuple[Model, Loading | None]:

@@ -129,9 +129,10 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
     ``faults`` the faults that stand at once; the properties ``fault``, ``nominal``, ``prefault``,
     ``impedance``, ``current`` and ``current_sequence`` are of the first. ``voltage_sequence`` (3, n) V to
     earth at every bus of ``buses``; ``before`` (n,) V, phase a before the fault; ``undefined`` (n,)
-    buses whose potential to earth nothing fixes; ``joined`` (n,) buses joined by metal to a faulted
-    place; ``terminals`` the currents during the fault and ``terminals_before`` those before it, None on
-    a flat profile; ``balance`` the largest imbalance of any node over what the check allows.
+    buses whose potential to earth nothing fixes; ``lost`` (n,) buses that open poles have cut off from
+    every infeed and generator; ``joined`` (n,) buses joined by metal to a faulted place; ``terminals``
+    the currents during the fault and ``terminals_before`` those before it, None on a flat profile;
+    ``balance`` the largest imbalance of any node over what the check allows.
     """
 
     faults: tuple[FaultState, ...]
@@ -144,6 +145,7 @@ class FaultSolution(msgspec.Struct, frozen=True, eq=False):
     voltage_sequence: Complex
     before: Complex
     undefined: Bools
+    lost: Bools
     joined: Bools
     terminals: Terminals
     terminals_before: Terminals | None

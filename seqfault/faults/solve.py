@@ -107,6 +107,7 @@ def solve_faults(
         voltage_sequence=voltage,
         before=before * clock_turn(clock) * base_v,
         undefined=undefined & ~lost,
+        lost=lost,
         joined=np.isin(here, here[[int(at[0]) for at in where]]),
         terminals=shown,
         terminals_before=earlier,

@@ -15,6 +15,8 @@ from seqfault.model.windings import incidence
 from seqfault.model.zones import components
 from seqfault.networks.null_space import Conditions, null_space, scaled
 
+NONE: Ints = np.zeros(0, np.int64)
+
 LEAST = 1e-4
 """Weight of a node without a weak branch where references are chosen; the heaviest has 1."""
 
@@ -48,6 +50,16 @@ def free_space(model: Model, sequence: int, weak: Complex) -> FreeSpace:
     tied[group[model.sources.node[grounded]]] = True
     vectors, alone = null_space(_conditions(model, sequence, group), tied)
     return _spread(vectors, alone, group, joined_parts(model, sequence, group, size), np.abs(weak))
+
+
+def connected(model: Model, near: Ints = NONE, far: Ints = NONE) -> Ints:
+    """Labels (n,) of what lines and transformers join, and each node of ``near`` with one of ``far``."""
+    through = (model.lines.nodes >= 0).all(axis=0)
+    first, second = [model.lines.nodes[0, through], near], [model.lines.nodes[1, through], far]
+    for sets in model.winding_sets:
+        first += [sets.node[:, 0]] * (sets.node.shape[1] - 1)
+        second += list(sets.node[:, 1:].T)
+    return components(model.common, np.concatenate(first), np.concatenate(second))
 
 
 def joined_parts(model: Model, sequence: int, group: Ints, size: int) -> Ints:

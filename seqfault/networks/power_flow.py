@@ -14,7 +14,6 @@ import numpy as np
 
 from seqfault.errors import NoAnswerError, quoted
 from seqfault.model.elements import Bools, Complex, Floats, Ints, Model
-from seqfault.model.zones import components
 from seqfault.networks.assembly import assemble
 from seqfault.networks.factors import DENSE
 
@@ -195,14 +194,3 @@ def _newton_step(y: Any, v: Complex, gap: Complex, turns: Ints, sizes: Ints) -> 
         [by_angle.imag[sizes][:, turns], by_size.imag[sizes][:, sizes]],
     ]
     return np.asarray(scipy.sparse.linalg.splu(sp.block_array(blocks, format="csc")).solve(rhs))
-
-
-def connected(model: Model) -> Ints:
-    """Labels (n,) of the nodes that lines and transformers join."""
-    lines = model.lines
-    through = (lines.nodes >= 0).all(axis=0)
-    first, second = [lines.nodes[0, through]], [lines.nodes[1, through]]
-    for sets in model.winding_sets:
-        first += [sets.node[:, 0]] * (sets.node.shape[1] - 1)
-        second += list(sets.node[:, 1:].T)
-    return components(model.common, np.concatenate(first), np.concatenate(second))

@@ -83,7 +83,7 @@ def header(network: Network) -> dict[str, Any]:
 def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
     """``solution`` as plain values."""
     s = solution
-    first, *others = [_state(state, s.largest) for state in s.faults]
+    first, *others = [state_tree(state, s.largest) for state in s.faults]
     return {
         **header(network),
         "loaded": s.loaded,
@@ -116,7 +116,7 @@ def fault_tree(network: Network, solution: FaultSolution) -> dict[str, Any]:
     }
 
 
-def _state(state: FaultState, top: float) -> dict[str, Any]:
+def state_tree(state: FaultState, top: float) -> dict[str, Any]:
     """One fault: what was asked, the impedances, the currents; of a break what passes and stands across."""
     fault = state.fault
     current = {p: polar(quiet(state.current[k], top)) for k, p in enumerate("abc")}

@@ -42,7 +42,7 @@ def fault_page(
     ``every_flow`` lists elements that carry next to nothing too, ``sequence`` adds components.
     """
     s = solution
-    parts: list[Part] = [_title(network, s), Table(PHASES, tuple(_into(s)))]
+    parts: list[Part] = [fault_title(network, s), Table(PHASES, tuple(_into(s)))]
     if s.home:
         parts.append(home_table(s))
     parts.append(Table(PHASES, _voltages(s)))
@@ -61,12 +61,14 @@ def fault_page(
     return Page(tuple(parts))
 
 
-def _title(network: Network, s: FaultSolution) -> Title:
+def fault_title(network: Network, s: FaultSolution) -> Title:
+    """The place and its kind of fault, or all that stand at once."""
     if len(s.faults) == 1:
         name = f"{s.fault.place}  {kilovolt(s.nominal)}"
         return Title(network.model.title, name, f"{described(s.fault)}, {conditions([s])}")
     names = " and ".join(f"{f.fault.place}  {kilovolt(f.nominal)}" for f in s.faults)
-    told = "; ".join(f"{f.fault.place}: {described(f.fault)}, {impedance_words(f.fault)}" for f in s.faults)
+    each = [(f.fault.place, (described(f.fault), impedance_words(f.fault))) for f in s.faults]
+    told = "; ".join(f"{place}: {', '.join(filter(None, words))}" for place, words in each)
     return Title(network.model.title, names, f"at once: {told}; {circumstances(s)}")
 
 

@@ -8,6 +8,7 @@ import msgspec
 import numpy as np
 from msgspec.structs import replace
 
+from seqfault.case.places import TABLES
 from seqfault.case.records import Case
 from seqfault.case.scenarios import in_state
 from seqfault.equations.iec60909 import bolted_currents
@@ -124,18 +125,7 @@ def _unknown(name: str, known: set[str]) -> str:
 
 def _tables(case: Case) -> list[tuple[str, str]]:
     """Elements in service that an outage may name, and their tables."""
-    tables = (
-        "infeeds",
-        "generators",
-        "motors",
-        "lines",
-        "transformers",
-        "earthing_transformers",
-        "series_reactors",
-        "capacitors",
-        "loads",
-        "converters",
-    )
+    tables = (*TABLES, "converters")
     return [(name, t) for t in tables for name, record in getattr(case, t).items() if not record.out]
 
 

@@ -40,6 +40,15 @@ def test_a_small_case_needs_no_scipy() -> None:
     assert not {"scipy", "matplotlib"} & modules
 
 
+def test_a_replay_of_a_small_case_needs_no_scipy() -> None:
+    radial = ROOT / "tests" / "studies" / "radial.toml"
+    modules = loaded(
+        f"from seqfault.cli import main\nmain(['operate', {str(radial)!r}, 'N@50%', '--replay'])"
+    )
+    assert "numpy" in modules
+    assert not {"scipy", "matplotlib"} & modules
+
+
 @pytest.mark.parametrize("name", seqfault.__all__)
 def test_public_names_exist(name: str) -> None:
     assert getattr(seqfault, name) is not None

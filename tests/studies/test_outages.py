@@ -63,7 +63,7 @@ def all_singles(network: Network) -> tuple[tuple[str, ...], ...]:
     return single_outages(network, "lines") + single_outages(network, "transformers")
 
 
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=60, deadline=None)
 @given(data=st.data())
 def test_random_networks_agree_with_networks_built_without_the_element(data: st.DataObject) -> None:
     net = data.draw(networks(min_buses=3))
