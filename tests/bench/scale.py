@@ -83,7 +83,7 @@ class Turns:
     def once(self, turn: int) -> SequenceNetworks:
         """Every stage, from the file to a fault somewhere."""
         case = self.timed("read", lambda: seqfault.read_case(self.path))
-        network = self.timed("model", lambda: Network(case))
+        network: Network = self.timed("model", lambda: Network(case))
         networks = network.sequences
         self.timed("networks", lambda: [networks[s] for s in range(3)])
         bus = network.buses[(turn * 7919) % len(network.buses)]
