@@ -5,8 +5,8 @@ from __future__ import annotations
 import math
 
 from seqfault.case.quantities import Quantity
-from seqfault.case.records import Bus, Line, SeriesReactor, Tie
-from seqfault.case.subject import Subject, real, said
+from seqfault.case.records import Bus, Case, Line, SeriesReactor, Tie
+from seqfault.case.subject import Subject, is_usual, real, said
 from seqfault.case.units import normalised
 from seqfault.case.wording import amount, digits
 from seqfault.errors import quoted
@@ -21,6 +21,8 @@ _REACH = ((1e3, 10e3), (40e3, 150e3), (150e3, 400e3))
 
 def check_line(subject: Subject, line: Line) -> None:
     """Tell what is wrong or doubtful about a line or cable."""
+    if unremarkable(line, subject.site.case):
+        return
     _ends(subject, line, "a line")
     for bus in line.open:
         if bus not in (line.from_, line.to):
@@ -41,6 +43,49 @@ def check_line(subject: Subject, line: Line) -> None:
         if getattr(line, c) is not None and getattr(line, b) is not None:
             subject.error("", f"both {c} and {b} are given; give one of the two")
     _line_values(subject, line)
+
+
+def unremarkable(line: Line, case: Case) -> bool:
+    """Tell whether every rule would pass a line over: quick, and false where that takes more to know."""
+    start, end, length = case.buses.get(line.from_), case.buses.get(line.to), line.length
+    if start is None or end is None or length is None or line.earthed or line.count < 1:
+        return False
+    metres, nominal, z1, z0 = length.value.real, start.voltage.value.real, line.z1.value, line.z0.value
+    if nominal != end.voltage.value or metres <= 0:
+        return False
+    if metres > _REACH[0][1] and metres > _longest(nominal):
+        return False
+    if not (isinstance(z1, complex) and isinstance(z0, complex) and line.from_ != line.to):
+        return False
+    if z1.real < 0 or z1.imag < 0 or z0.real < 0 or z0.imag < 0:
+        return False
+    one = abs(z1) if line.z1.dimension == "impedance/length" else abs(z1) / metres
+    zero = abs(z0) if line.z0.dimension == "impedance/length" else abs(z0) / metres
+    if not _OHM_PER_KM[0] <= 1e3 * one <= min(1e3 * zero, _OHM_PER_KM[1]):
+        return False
+    if line.open and not {line.from_, line.to}.issuperset(line.open):
+        return False
+    if line.screen_current is not None and line.screen_current.value.real <= 0:
+        return False
+    if line.b1 is line.b0 is None:
+        return _usual_capacitances(line.c1, line.c0, metres, 1.0)
+    omega = 2 * math.pi * (case.frequency or 50.0)
+    return line.c1 is line.c0 is None and _usual_capacitances(line.b1, line.b0, metres, omega)
+
+
+def _usual_capacitances(one: Quantity | None, zero: Quantity | None, metres: float, omega: float) -> bool:
+    """Tell whether both sequences are usual, or neither is stated; ``omega`` makes susceptances of them."""
+    if one is None or zero is None:
+        return one is zero
+    if one.dimension != zero.dimension:
+        return False
+    per_km = 1e3 / omega if one.dimension.endswith("/length") else 1e3 / omega / metres
+    return _FARAD_PER_KM[0] <= per_km * zero.value.real <= per_km * one.value.real <= _FARAD_PER_KM[1]
+
+
+def _longest(nominal: float | None) -> float:
+    """Return the usual length (m) that a line of a nominal voltage (V) does not exceed."""
+    return next((far for volts, far in _REACH if nominal and nominal <= volts), _LONGEST)
 
 
 def _ends(subject: Subject, branch: Line | SeriesReactor | Tie, kind: str) -> None:
@@ -66,7 +111,7 @@ def _differ(start: Bus, end: Bus) -> bool:
 def _line_values(subject: Subject, line: Line) -> None:
     length = real(line.length)
     nominal = _nominal(subject, line)
-    longest = next((far for volts, far in _REACH if nominal and nominal <= volts), _LONGEST)
+    longest = _longest(nominal)
     if length is not None and length > longest:
         at = f" at {amount(nominal, 'V')}" if nominal else ""
         text = f"{said(line.length)} is above the usual {longest / 1e3:g} km{at}"
@@ -85,14 +130,15 @@ def _line_values(subject: Subject, line: Line) -> None:
         value = _per_km(quantity, length)
         if value is None or value == 0:
             continue
-        if field == "z1":
+        if field == "z1" and not is_usual(value, _OHM_PER_KM):
             text = f"{said(quantity)} is {digits(value)} ohm/km, outside the usual 0.005 to 5 ohm/km"
             subject.usual(field, value, _OHM_PER_KM, text, 1e3)
         elif field[0] in "cb":
             if field[0] == "b":
                 value /= 2 * math.pi * (subject.site.case.frequency or 50.0)
-            text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 2 nF/km to 5 uF/km"
-            subject.usual(field, value, _FARAD_PER_KM, text, 1e3)
+            if not is_usual(value, _FARAD_PER_KM):
+                text = f"{said(quantity)} is {amount(value, 'F')}/km, outside the usual 2 nF/km to 5 uF/km"
+                subject.usual(field, value, _FARAD_PER_KM, text, 1e3)
 
 
 def _nominal(subject: Subject, line: Line) -> float | None:

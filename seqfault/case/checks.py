@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping
 from typing import Any
 
@@ -29,6 +30,8 @@ from seqfault.case.units import normalised
 from seqfault.errors import QuantityError, quoted
 
 RESERVED = ("base", "all")
+# Begins as no quantity does, without @, each on a line of its own.
+_PLAIN_NAMES = re.compile(r"(?:[A-Za-ik-z][A-Za-z0-9_ ./-]*\n)*[A-Za-ik-z][A-Za-z0-9_ ./-]*")
 _PREFAULT = (0.8, 1.2)
 _RULES: dict[str, Callable[[Subject, Any], None]] = {
     "infeeds": check_infeed,
@@ -53,7 +56,8 @@ def check(draft: Draft, findings: Findings) -> None:
     _names(draft, findings)
     _whole(draft, site)
     for name, bus in case.buses.items():
-        Subject(site, "buses", name).positive({"voltage": bus.voltage})
+        if not bus.voltage.value.real > 0:
+            Subject(site, "buses", name).positive({"voltage": bus.voltage})
     for table, rule in _RULES.items():
         for name, record in getattr(case, table).items():
             rule(Subject(site, table, name), record)
@@ -73,7 +77,7 @@ def check_file(draft: Draft, findings: Findings) -> None:
 
 
 def _names(draft: Draft, findings: Findings) -> None:
-    for table in TABLES:
+    for table in ("neutrals",) if _all_plain(draft) else TABLES:
         records = draft.tree.get(table)
         for name in records if isinstance(records, Mapping) else ():
             problem = name_problem(name)
@@ -84,6 +88,15 @@ def _names(draft: Draft, findings: Findings) -> None:
                 problem = _neutral_name(draft, name)
             if problem is not None:
                 findings.error(table, name, "", problem)
+
+
+def _all_plain(draft: Draft) -> bool:
+    """Tell whether no name can break a rule of all tables; quick, false where it takes more to know."""
+    names = draft.names
+    tables = [records for table in TABLES if isinstance(records := draft.tree.get(table), dict)]
+    if sum(map(len, tables)) != len(names) or not names.keys().isdisjoint(RESERVED):
+        return False
+    return _PLAIN_NAMES.fullmatch("\n".join(names)) is not None
 
 
 def name_problem(name: str) -> str | None:

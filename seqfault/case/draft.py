@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from seqfault.case.columns import convert_table
 from seqfault.case.conversion import STRAY, TOP_LEVEL, AnyStruct, convert_record
 from seqfault.case.fields import fields_of
 from seqfault.case.findings import Findings
@@ -48,12 +49,24 @@ def draft(tree: Mapping[str, Any], findings: Findings, source: str, earlier: Dra
     tables: dict[str, Any] = {}
     for table, kind in TABLES.items():
         raw = tree.get(table)
+        before = earlier.tree.get(table) if earlier else None
+        known: Mapping[str, Record] = getattr(earlier.case, table) if earlier else {}
+        entries = _entries(table, raw, findings)
+        whole: Mapping[str, Record] | None
+        if isinstance(before, Mapping):
+            whole = known if raw is before and len(known) == len(entries) else None
+        else:
+            before, whole = {}, _sound_table(kind, entries)
+        if whole is not None:
+            tables[table] = whole
+            owners = dict.fromkeys(entries, table)
+            for name in entries.keys() & names.keys():  # two tables, and the first keeps the name
+                owners[name] = names[name]
+            names |= owners
+            continue
         records: dict[str, Record] = {}
         tables[table] = records
-        before = earlier.tree.get(table) if earlier else None
-        before = before if isinstance(before, Mapping) else {}
-        known: Mapping[str, Record] = getattr(earlier.case, table) if earlier else {}
-        for name, value in _entries(table, raw, findings).items():
+        for name, value in entries.items():
             if name in TOP_LEVEL and not isinstance(value, Mapping):
                 findings.error("", "", f"[{table}], {name}", STRAY)
                 strays.add(name)
@@ -83,6 +96,21 @@ def draft(tree: Mapping[str, Any], findings: Findings, source: str, earlier: Dra
         **tables,
     )
     return Draft(case, tree, names, frozenset(broken))
+
+
+def _sound_table(kind: type[Record], entries: Mapping[str, Any]) -> dict[str, Record] | None:
+    """Return the records of a table without any fault, read as columns; None for any other."""
+    if kind is not Bus:
+        return convert_table(kind, entries)
+    if not entries.keys().isdisjoint(TOP_LEVEL):
+        return None
+    return convert_table(
+        kind,
+        {
+            name: {"voltage": value} if isinstance(value, (str, int, float)) else value
+            for name, value in entries.items()
+        },
+    )
 
 
 def _record(

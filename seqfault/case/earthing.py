@@ -155,11 +155,11 @@ def check_earthing_transformer(subject: Subject, unit: EarthingTransformer) -> N
 
 def star_points(case: Case) -> dict[str, tuple[float, ...]]:
     """Return the rated line-to-line voltages (V) of the star points on each neutral."""
-    users: dict[str, tuple[float, ...]] = {}
+    users: dict[str, list[float]] = {}
 
     def join(name: str | None, voltage: float | None) -> None:
         if name is not None and voltage and voltage > 0:
-            users[name] = (*users.get(name, ()), voltage)
+            users.setdefault(name, []).append(voltage)
 
     for unit in case.transformers.values():
         for winding in windings(unit).values():
@@ -170,7 +170,7 @@ def star_points(case: Case) -> dict[str, tuple[float, ...]]:
     for earthing in case.earthing_transformers.values():
         bus = case.buses.get(earthing.bus)
         join(earthing.neutral, real(bus.voltage) if bus else None)
-    return users
+    return {name: tuple(voltages) for name, voltages in users.items()}
 
 
 def star_point_named(case: Case, name: str) -> str | None:

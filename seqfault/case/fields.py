@@ -29,6 +29,7 @@ class Field:
     plain: bool  # whether a value that is no table may stand here
     keyed: bool
     required: bool
+    dimensions: Dimensions | None  # where it is a quantity and nothing else
 
 
 @cache
@@ -48,9 +49,21 @@ def fields_of(kind: type[msgspec.Struct]) -> dict[str, Field]:
         elif plain:
             convert = either(plain) if struct is None else _or_table(either(plain), struct)
         fields[info.encode_name] = Field(
-            info.name, hint, convert, struct, bool(plain) and not keyed, keyed, info.required
+            info.name,
+            hint,
+            convert,
+            struct,
+            bool(plain) and not keyed,
+            keyed,
+            info.required,
+            _dimensions(plain),
         )
     return fields
+
+
+def _dimensions(plain: list[Any]) -> Dimensions | None:
+    marks = [get_args(part)[1] for part in plain if get_origin(part) is Annotated]
+    return marks[0] if len(plain) == len(marks) == 1 and isinstance(marks[0], Dimensions) else None
 
 
 def _alternatives(hint: Any) -> list[Any]:

@@ -6,7 +6,7 @@ import math
 
 from seqfault.case.quantities import Quantity
 from seqfault.case.records import PairRatings, Pairs, Transformer, Winding
-from seqfault.case.subject import Subject, real, said
+from seqfault.case.subject import Subject, is_usual, real, said
 from seqfault.case.vector_group import VectorGroup
 from seqfault.case.wording import digits
 
@@ -45,8 +45,9 @@ def check_impedance(subject: Subject, unit: Transformer, group: VectorGroup | No
     rating, loss = real(unit.rating), real(unit.load_loss)
     if not sound or not part:
         return
-    text = f"{said(impedance)} is {digits(100 * part)} %, outside the usual 0.5 to 30 %"
-    subject.usual("impedance", part, _IMPEDANCE, text, 100)
+    if not is_usual(part, _IMPEDANCE):
+        text = f"{said(impedance)} is {digits(100 * part)} %, outside the usual 0.5 to 30 %"
+        subject.usual("impedance", part, _IMPEDANCE, text, 100)
     if rating and loss and 0 < loss / rating < part / _LARGEST_X_OVER_R:
         subject.warn(
             "load_loss",

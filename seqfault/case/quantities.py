@@ -9,6 +9,7 @@ from __future__ import annotations
 import cmath
 import math
 import re
+from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import lru_cache
 from typing import NoReturn
@@ -25,13 +26,16 @@ _TOO_SMALL = "the number is too small to be held; write 0 if zero is meant"
 _NUMBER = r"(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 _TERM = rf"(?:j ?)?{_NUMBER}(?: ?j(?![a-zA-Z]))?"
 _LEADING = re.compile(rf"([+-]? ?{_TERM})(?: ?([+-] ?{_TERM}))?")
+# What nearly every quantity looks like; whatever else reads, reads by the parts above.
+_COMMON_FORM = re.compile(r"([0-9]+(?:\.[0-9]*)?)(?:([+-])j([0-9]+(?:\.[0-9]*)?))? (\S+)")
+_NO_UNIT = ("", 0, 1.0)
 _ANGLE = re.compile(rf"([+-]? ?{_NUMBER}) ?(°|deg|rad)?(?![a-z])")
 _GROUPED = re.compile(r"(?<![0-9.,])[1-9][0-9]{0,2}(?:[ ,'][0-9]{3})+(?![0-9,])")
 _COMMA = re.compile(r"(?<=[0-9]),(?=[0-9])")
 _NOT_FINITE = re.compile(r"[+-]? ?(?:nan|inf|infinity|∞)\b", re.IGNORECASE)
 
 
-class Quantity(msgspec.Struct, frozen=True, array_like=True):
+class Quantity(msgspec.Struct, frozen=True, array_like=True, gc=False):
     """A value in SI units, its dimension, and the text it was read from.
 
     ``value`` is complex exactly when an imaginary part or an angle was written.
@@ -93,6 +97,32 @@ def read_quantity(text: str, dimensions: Dimensions) -> Quantity:
             f"is wanted, as in {_examples(dimensions)}"
         )
     return quantity
+
+
+def read_quantities(texts: Iterable[str], dimensions: Dimensions) -> dict[str, Quantity]:
+    """Return by its text what ``read_quantity`` makes of each, for many texts at once."""
+    match, units, names, smallest = _COMMON_FORM.fullmatch, UNITS, dimensions.names, 1 / LARGEST
+    known: dict[str, Quantity] = {}
+    for text in texts:
+        if text in known:
+            continue
+        found = match(text)
+        if found is not None:
+            first, sign, second, unit = found.groups()
+            dimension, power, factor = units.get(unit, _NO_UNIT)
+            if dimension in names:
+                value = float(f"{first}e{power}") * factor
+                if second is None:
+                    if smallest <= value < LARGEST:
+                        known[text] = Quantity(value, dimension, text)
+                        continue
+                elif dimensions.complex:
+                    other = float(f"{sign}{second}e{power}") * factor
+                    if value and other and smallest <= value + abs(other) < LARGEST:
+                        known[text] = Quantity(complex(value, other), dimension, text)
+                        continue
+        known[text] = read_quantity(text, dimensions)
+    return known
 
 
 def wanted(dimensions: Dimensions) -> str:

@@ -17,7 +17,7 @@ Angle = Annotated[Quantity, Dimensions("angle")]
 Duration = Annotated[Quantity, Dimensions("time")]
 
 
-class Record(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+class Record(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True, gc=False):
     """What every record may carry."""
 
     note: str = ""

@@ -118,7 +118,7 @@ class MutualCoupling(Record, frozen=True, kw_only=True):
     start: Mapping[LineName, Length] | None = None
 
 
-class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True, gc=False):
     """One side of a transformer; ``voltage`` is rated, line to line."""
 
     bus: BusName

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from seqfault.case.quantities import Quantity
 from seqfault.case.records import Generator, Infeed, Motor
-from seqfault.case.subject import ROOT3, Subject, real, said
+from seqfault.case.subject import ROOT3, Subject, is_usual, real, said
 from seqfault.case.wording import amount, digits
 from seqfault.errors import quoted
 
@@ -34,8 +34,12 @@ def check_infeed(subject: Subject, infeed: Infeed) -> None:
         z1 = _positive_sequence(infeed, nominal)
         if z1:
             level = nominal / ROOT3 / abs(z1)
-            text = f"the three-phase fault level is {amount(level, 'A')}, outside the usual 10 A to 100 kA"
-            subject.usual("three_phase" if infeed.three_phase else "z1", level, _FAULT_CURRENT, text, 1e3)
+            if not is_usual(level, _FAULT_CURRENT):
+                field = "three_phase" if infeed.three_phase else "z1"
+                text = (
+                    f"the three-phase fault level is {amount(level, 'A')}, outside the usual 10 A to 100 kA"
+                )
+                subject.usual(field, level, _FAULT_CURRENT, text, 1e3)
             _earth_fault_level(subject, infeed, z1, nominal)
 
 
@@ -144,7 +148,7 @@ def check_motor(subject: Subject, motor: Motor) -> None:
     _motor_rating(subject, motor)
     if motor.locked_rotor <= 0:
         subject.error("locked_rotor", f"{motor.locked_rotor:g}: this must be more than zero")
-    else:
+    elif not is_usual(motor.locked_rotor, _LOCKED_ROTOR):
         text = f"{motor.locked_rotor:g} times rated current is outside the usual 2 to 12"
         subject.usual("locked_rotor", motor.locked_rotor, _LOCKED_ROTOR, text, 100)
 

@@ -28,16 +28,15 @@ class Site:
         self.names = draft.names
         self.broken = draft.broken
         self.findings = findings
-        self._spelling = {
-            table: Spelling([name for name, of in draft.names.items() if of == table])
-            for table in ("buses", "lines", "neutrals", "relays", "current_transformers")
-        }
+        self._spelling: dict[str, Spelling] = {}
 
     def unknown(self, table: str, name: str) -> str:
         """Return what to say of a name that is not in ``table``."""
         other = self.names.get(name)
         if other is not None:
             return f"{quoted(name)} is {one_of(other)}; {one_of(table)} is wanted"
+        if table not in self._spelling:
+            self._spelling[table] = Spelling([name for name, of in self.names.items() if of == table])
         hint = self._spelling[table].hint(name)
         return f"there is no {SINGULAR[table]} {quoted(name)}{hint}"
 
@@ -188,15 +187,20 @@ class Subject:
         self, field: str, value: float, limits: tuple[float, float], text: str, factor: float
     ) -> None:
         """Doubt a magnitude outside its usual ``limits``; ``text`` says what it is and they are."""
-        low, high = limits
-        if low * (1 - 1e-9) <= value <= high * (1 + 1e-9):
+        if is_usual(value, limits):
             return
+        low, high = limits
         cure = ""
         if low <= value / factor <= high:
             cure = f"; a factor of {factor:g} too large?"
         elif low <= value * factor <= high:
             cure = f"; a factor of {factor:g} too small?"
         self.warn(field, text + cure)
+
+
+def is_usual(value: float, limits: tuple[float, float]) -> bool:
+    """Tell whether a magnitude is inside its ``limits``, rounding aside."""
+    return limits[0] * (1 - 1e-9) <= value <= limits[1] * (1 + 1e-9)
 
 
 def voltage_cure(ratio: float) -> str:

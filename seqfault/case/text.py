@@ -7,8 +7,11 @@ import os
 import re
 import sys
 import tomllib
+from collections import Counter
 from collections.abc import Mapping
 from typing import Any
+
+import msgspec
 
 from seqfault.case.wording import Spelling
 from seqfault.errors import CaseError, RequestError, quoted
@@ -66,7 +69,9 @@ def parse_text(content: bytes, source: str) -> Mapping[str, Any]:
     suffix = os.path.splitext(source)[1].lower()
     is_json = suffix == ".json" or (suffix != ".toml" and text.lstrip()[0] == "{")
     try:
-        return _json(text, source) if is_json else tomllib.loads(text)
+        if not is_json:
+            return tomllib.loads(text)
+        return _json_at_once(content) or _json(text, source)
     except tomllib.TOMLDecodeError as error:
         raise CaseError([_explained(error, text)], source) from None
     except json.JSONDecodeError as error:
@@ -77,14 +82,36 @@ def parse_text(content: bytes, source: str) -> Mapping[str, Any]:
         raise CaseError(["a number has too many digits to be read"], source) from None
 
 
+def _json_at_once(content: bytes) -> Mapping[str, Any] | None:
+    """Return the tree of good JSON in which no key stands twice; None where either is in doubt.
+
+    Two equal keys leave one in the tree, and each key of the text has a colon behind its quotes. So
+    no key is lost where the tree has as many as the text has colons, or colons after quotes.
+    """
+    try:
+        tree = msgspec.json.decode(content.removeprefix(b"\xef\xbb\xbf"))
+    except (msgspec.DecodeError, ValueError, RecursionError):
+        return None
+    if not isinstance(tree, dict):
+        return None
+    keys, tables = 0, [tree]
+    while tables:
+        table = tables.pop()
+        keys += len(table)
+        tables.extend([value for value in table.values() if type(value) is dict])
+    if keys == content.count(b":") or keys == len(re.findall(rb'"\s*:', content)):
+        return tree
+    return None
+
+
 def _json(text: str, source: str) -> Mapping[str, Any]:
     repeated: list[str] = []
 
     def table(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
         made = dict(pairs)
         if len(made) < len(pairs):
-            keys = [key for key, _ in pairs]
-            repeated.extend(key for key in made if keys.count(key) > 1)
+            counts = Counter(key for key, _ in pairs)
+            repeated.extend(key for key, count in counts.items() if count > 1)
         return made
 
     tree = json.loads(text, object_pairs_hook=table)

@@ -13,7 +13,7 @@ from seqfault.errors import RequestError, quoted
 
 if TYPE_CHECKING:
     from seqfault.faults.network import Network
-    from seqfault.report.data import Quantity
+    from seqfault.report.data import Quantity, QuantityColumn
     from seqfault.report.tables import Page
 
 
@@ -22,7 +22,7 @@ class Answer(NamedTuple):
 
     page: Callable[[], Page]
     tree: Callable[[], dict[str, Any]]
-    rows: Callable[[], Iterable[Quantity]]
+    rows: Callable[[], Iterable[Quantity | QuantityColumn]]
     warnings: Sequence[str] = ()
     state: str = ""
 
@@ -70,8 +70,9 @@ def deliver(options: argparse.Namespace, form: str, answers: Sequence[Answer]) -
     else:
         from seqfault.report.files import as_csv, as_json
 
+        content: Iterable[bytes]
         if form == "json":
-            content = as_json(_together([answer.tree() for answer in answers]))
+            content = (as_json(_together([answer.tree() for answer in answers])),)
         else:
             kept = told(warnings) if options.output is not None else ()
             content = as_csv(chain((row for answer in answers for row in answer.rows()), kept))
@@ -124,7 +125,7 @@ def _pages(options: argparse.Namespace, pages: list[Page], warnings: Sequence[st
         if warnings:  # a page that is kept has its warnings on it
             pages = [*pages, Page((Sentences("Warnings", tuple(warnings)),))]
         text = "\n\n".join(page_text(page, options.width) for page in pages)
-        _write(options, text.encode())
+        _write(options, (text.encode(),))
         return
     for number, page in enumerate(pages):
         if number:
@@ -133,7 +134,7 @@ def _pages(options: argparse.Namespace, pages: list[Page], warnings: Sequence[st
     sys.stdout.flush()  # before the warnings: an answer that cannot be written has none
 
 
-def _write(options: argparse.Namespace, content: bytes) -> None:
+def _write(options: argparse.Namespace, content: Iterable[bytes]) -> None:
     if options.output is not None:
         from seqfault.report.files import write_whole
 
@@ -143,7 +144,7 @@ def _write(options: argparse.Namespace, content: bytes) -> None:
     sys.stdout.flush()
     buffer = getattr(sys.stdout, "buffer", None)
     if buffer is None:
-        sys.stdout.write(content.decode())
+        sys.stdout.writelines(piece.decode() for piece in content)
     else:  # JSON and CSV are UTF-8 whatever the terminal speaks
-        buffer.write(content)
+        buffer.writelines(content)
         buffer.flush()

@@ -13,7 +13,7 @@ from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
     from seqfault.faults.network import Network
-    from seqfault.report.data import Quantity
+    from seqfault.report.data import QuantityColumn
     from seqfault.studies.contributions import Contributions
     from seqfault.studies.levels import Levels
 
@@ -73,7 +73,7 @@ def run(options: argparse.Namespace) -> int:
             networks.append(network)
             states.append(level)
 
-    def rows() -> Iterator[Quantity]:
+    def rows() -> Iterator[QuantityColumn]:
         also = (contributions_rows(n.model, each) for n, each in zip(networks, fed, strict=False))
         return chain(levels_rows(states), *also)
 

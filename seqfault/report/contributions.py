@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from typing import Any
 
 from seqfault.model.elements import Floats, Model
-from seqfault.report.data import Quantity
+from seqfault.report.data import QuantityColumn
 from seqfault.report.numbers import kilovolt
 from seqfault.report.tables import AMPERE, Block, Group, Row, Table
 from seqfault.studies.contributions import Contributions
@@ -79,14 +79,15 @@ def contributions_tree(model: Model, each: Contributions, bus: int) -> list[dict
     return out
 
 
-def contributions_rows(model: Model, each: Contributions) -> Iterator[Quantity]:
+def contributions_rows(model: Model, each: Contributions) -> Iterator[QuantityColumn]:
     """Contributions in long form; ``where`` is the terminal, ELEMENT@BUS."""
-    start, at = each.start.tolist(), each.bus.tolist()
-    where = [f"{element}@{model.buses[bus]}" for element, bus in zip(each.element, at, strict=True)]
+    counts = (each.start[1:] - each.start[:-1]).tolist()
+    places = [bus for bus, count in zip(model.buses, counts, strict=True) for _ in range(count)]
+    where = [
+        f"{element}@{model.buses[bus]}"
+        for element, bus in zip(each.element, each.bus.tolist(), strict=True)
+    ]
     for name, column in _columns(each).items():
         kind, quantity = QUANTITIES[name]
-        values = column.tolist()
-        for b, place in enumerate(model.buses):
-            for k in range(start[b], start[b + 1]):
-                value = values[k] if math.isfinite(values[k]) else None
-                yield Quantity(place, kind, quantity, "", value, "A", None, where[k], each.state)
+        values = [value if math.isfinite(value) else None for value in column.tolist()]
+        yield QuantityColumn(places, kind, quantity, values, "A", where, each.state)

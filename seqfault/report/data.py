@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import cmath
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from typing import Any
 
 import msgspec
@@ -37,6 +37,21 @@ class Quantity(msgspec.Struct, frozen=True):
     unit: str
     angle: float | None
     where: str
+    state: str
+
+
+class QuantityColumn(msgspec.Struct, frozen=True):
+    """One quantity of one kind of fault at many places, a line of the long form for each.
+
+    ``places``, ``values`` and ``where`` (n,) go together; a value is None where undefined.
+    """
+
+    places: Sequence[str]
+    kind: str
+    quantity: str
+    values: Sequence[float | None]
+    unit: str
+    where: Sequence[str]
     state: str
 
 

@@ -9,16 +9,21 @@ do. Strip that quote before comparing such a name with the case file.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Iterator
-from typing import Any
+from collections.abc import Iterable, Iterator, Sequence
+from itertools import islice
+from typing import TYPE_CHECKING, Any
 
 import msgspec
 
 from seqfault.errors import RequestError, quoted
-from seqfault.report.data import Quantity
+from seqfault.report.data import Quantity, QuantityColumn
+
+if TYPE_CHECKING:
+    import io
 
 SUFFIXES = {".json": "json", ".csv": "csv", ".txt": "table"}
 COLUMNS = ("place", "kind", "quantity", "phase", "value", "unit", "angle", "where", "state")
+_LINES, _CHUNK = 2000, 1 << 18  # lines made, and characters kept, before they are passed on
 FORMULA = ("=", "+", "-", "@", "\t", "\r")
 
 
@@ -53,8 +58,8 @@ def _scalar(value: Any) -> str:
     return msgspec.json.encode(value).decode()
 
 
-def as_csv(rows: Iterable[Quantity]) -> bytes:
-    """``rows`` under one line of column names."""
+def as_csv(rows: Iterable[Quantity | QuantityColumn]) -> Iterator[bytes]:
+    """``rows`` under one line of column names, some thousands of whole lines at a time."""
     import csv
     import io
 
@@ -62,8 +67,53 @@ def as_csv(rows: Iterable[Quantity]) -> bytes:
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow(COLUMNS)
     for row in rows:
-        writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
-    return text.getvalue().encode()
+        if isinstance(row, QuantityColumn):
+            yield _taken(text)
+            yield from (lines.encode() for lines in _column_lines(row))
+        else:
+            writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
+            if text.tell() >= _CHUNK:
+                yield _taken(text)
+    yield _taken(text)
+
+
+def _taken(text: io.StringIO) -> bytes:
+    written = text.getvalue().encode()
+    text.seek(0)
+    text.truncate()
+    return written
+
+
+def _column_lines(row: QuantityColumn) -> Iterator[str]:
+    places = _cells(row.places)
+    where = places if row.where is row.places else _cells(row.where)
+    kind, quantity, unit, state = _cells((row.kind, row.quantity, row.unit, row.state))
+    before, behind, end = f",{kind},{quantity},,", f",{unit},,", f",{state}\n"
+    lines = (
+        f"{place}{before}{'' if value is None else repr(value)}{behind}{at}{end}"
+        for place, value, at in zip(places, row.values, where, strict=True)
+    )
+    while block := "".join(islice(lines, _LINES)):
+        yield block
+
+
+def _cells(texts: Sequence[str]) -> list[str]:
+    """Each text as the writer of the standard library puts it between two commas."""
+    import csv
+    import io
+
+    text = io.StringIO()
+    write = csv.writer(text, lineterminator="\n").writerow
+    cells = []
+    for one in texts:
+        if one.isalnum():
+            cells.append(one)
+            continue
+        write((_field(one), ""))
+        cells.append(text.getvalue()[:-2])
+        text.seek(0)
+        text.truncate()
+    return cells
 
 
 def _field(value: float | str | None) -> str:
@@ -97,8 +147,10 @@ def check_target(path: str, overwrite: bool, case: str, option: str = "--output"
         raise RequestError(f"{option} {name}: the file exists; give another name, or --overwrite")
 
 
-def write_whole(path: str, content: bytes, overwrite: bool, option: str = "--output") -> None:
-    """Write ``content`` to ``path``, whole or not at all.
+def write_whole(
+    path: str, content: bytes | Iterable[bytes], overwrite: bool, option: str = "--output"
+) -> None:
+    """Write ``content``, its pieces as they come, to ``path``, whole or not at all.
 
     Raises ``RequestError`` where that fails, or where ``path`` has come to exist meanwhile.
     """
@@ -108,7 +160,7 @@ def write_whole(path: str, content: bytes, overwrite: bool, option: str = "--out
         descriptor = os.open(draft, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
         try:
             with open(descriptor, "wb") as file:
-                file.write(content)
+                file.writelines((content,) if isinstance(content, bytes) else content)
                 file.flush()
                 os.fsync(file.fileno())
             if overwrite:

@@ -13,7 +13,7 @@ from seqfault.faults.network import Network
 from seqfault.model.assumptions import Assumption
 from seqfault.model.elements import Floats
 from seqfault.report.contributions import contributions_table, contributions_tree
-from seqfault.report.data import Quantity, cartesian, header
+from seqfault.report.data import QuantityColumn, cartesian, header
 from seqfault.report.numbers import kilovolt
 from seqfault.report.tables import (
     AMPERE,
@@ -244,11 +244,11 @@ def _range_tree(states: Sequence[Levels]) -> list[dict[str, Any]]:
     return out
 
 
-def levels_rows(states: Sequence[Levels]) -> Iterator[Quantity]:
-    """Levels in long form, every state in turn."""
+def levels_rows(states: Sequence[Levels]) -> Iterator[QuantityColumn]:
+    """Levels in long form, every state in turn, a column at a time."""
     for each in states:
         for name, _, current in CURRENTS:
             kind, quantity = KINDS[name]
             unit = "" if name == "k1_over_k3" else "A"
-            for bus, value in zip(each.buses, np.asarray(current(each)).tolist(), strict=True):
-                yield Quantity(bus, kind, quantity, "", _finite(value), unit, None, bus, each.state)
+            values = list(map(_finite, np.asarray(current(each)).tolist()))
+            yield QuantityColumn(each.buses, kind, quantity, values, unit, each.buses, each.state)

@@ -5,6 +5,7 @@ import io
 import json
 import math
 import os
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from seqfault.errors import RequestError
-from seqfault.report.data import Quantity
+from seqfault.report.data import Quantity, QuantityColumn
 from seqfault.report.files import FORMULA, as_csv, as_json, write_whole
 
 TREES = st.recursive(
@@ -43,14 +44,47 @@ def quantity(place: str, value: float | None = -1.5) -> Quantity:
 
 @given(st.text(st.characters(exclude_categories=["Cs", "Cc"]), min_size=1))
 def test_csv_reads_back_and_no_text_is_a_formula(place: str) -> None:
-    (row,) = csv.DictReader(io.StringIO(as_csv([quantity(place)]).decode()))
+    (row,) = csv.DictReader(io.StringIO(b"".join(as_csv([quantity(place)])).decode()))
     assert not row["place"].startswith(FORMULA)
     assert row["place"].removeprefix("'") == place.removeprefix("'")
     assert float(row["value"]) == -1.5
 
 
+NAMES = st.text(st.characters(codec="utf-8")) | st.text("=-,\"'\n\r ab")
+
+
+@given(
+    st.lists(st.tuples(NAMES, NAMES, st.none() | st.floats(allow_nan=False)), max_size=5),
+    NAMES,
+)
+def test_csv_of_a_column_is_that_of_its_lines(
+    values: list[tuple[str, str, float | None]], kind: str
+) -> None:
+    rows = [Quantity(p, kind, "current", "", v, "A", None, w, "base") for p, w, v in values]
+    column = QuantityColumn(
+        [p for p, _, _ in values],
+        kind,
+        "current",
+        [v for _, _, v in values],
+        "A",
+        [w for _, w, _ in values],
+        "base",
+    )
+    assert b"".join(as_csv([*rows, column])) == b"".join(as_csv([*rows, *rows]))
+
+
+def test_long_csv_comes_in_pieces_of_whole_lines() -> None:
+    names = [f"B {k}, bay" for k in range(20_000)]
+    column = QuantityColumn(names, "three-phase", "current", [0.1] * len(names), "A", names, "base")
+    pieces = list(as_csv(column if k % 2 else quantity("x") for k in range(4)))
+    assert max(map(len, pieces)) < 1e6
+    assert all(piece.endswith(b"\n") for piece in pieces[:-1])
+    read = list(csv.DictReader(io.StringIO(b"".join(pieces).decode())))
+    assert [row["place"] for row in read] == ["x", *names] * 2
+
+
 def test_csv_leaves_what_is_undefined_empty() -> None:
-    (row,) = csv.DictReader(io.StringIO(as_csv([quantity("x", None)]).decode()))
+    (row,) = csv.DictReader(io.StringIO(b"".join(as_csv([quantity("x", None)])).decode()))
     assert row["value"] == ""
 
 
@@ -63,16 +97,26 @@ def test_a_write_that_fails_leaves_the_old_file(tmp_path: Path, monkeypatch: pyt
 
     monkeypatch.setattr(os, "fsync", fail)
     with pytest.raises(RequestError, match="No space left"):
-        write_whole(str(target), b"new", overwrite=True)
+        write_whole(str(target), [b"new"], overwrite=True)
     assert target.read_bytes() == b"old"
     assert [p.name for p in tmp_path.iterdir()] == ["answer.json"]
+
+
+def test_a_file_whose_last_piece_fails_is_not_begun(tmp_path: Path) -> None:
+    def pieces() -> Iterator[bytes]:
+        yield b"half"
+        raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        write_whole(str(tmp_path / "answer.csv"), pieces(), overwrite=False)
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_a_file_that_appears_meanwhile_is_kept(tmp_path: Path) -> None:
     target = tmp_path / "answer.json"
     target.write_bytes(b"of another")
     with pytest.raises(RequestError, match="exists"):
-        write_whole(str(target), b"new", overwrite=False)
+        write_whole(str(target), [b"new"], overwrite=False)
     assert target.read_bytes() == b"of another"
     assert len(list(tmp_path.iterdir())) == 1
 
@@ -83,7 +127,7 @@ def test_without_hard_links(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> 
 
     monkeypatch.setattr(os, "link", fail)
     target = tmp_path / "answer.json"
-    write_whole(str(target), b"new", overwrite=False)
+    write_whole(str(target), [b"new"], overwrite=False)
     assert target.read_bytes() == b"new"
     with pytest.raises(RequestError, match="exists"):
-        write_whole(str(target), b"newer", overwrite=False)
+        write_whole(str(target), [b"newer"], overwrite=False)
