@@ -9,21 +9,18 @@ do. Strip that quote before comparing such a name with the case file.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from itertools import islice
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import msgspec
 
 from seqfault.errors import RequestError, quoted
 from seqfault.report.data import Quantity, QuantityColumn
 
-if TYPE_CHECKING:
-    import io
-
 SUFFIXES = {".json": "json", ".csv": "csv", ".txt": "table"}
 COLUMNS = ("place", "kind", "quantity", "phase", "value", "unit", "angle", "where", "state")
-_LINES, _CHUNK = 2000, 1 << 18  # lines made, and characters kept, before they are passed on
+_LINES = 2000  # lines made before they are passed on
 FORMULA = ("=", "+", "-", "@", "\t", "\r")
 
 
@@ -60,28 +57,41 @@ def _scalar(value: Any) -> str:
 
 def as_csv(rows: Iterable[Quantity | QuantityColumn]) -> Iterator[bytes]:
     """``rows`` under one line of column names, some thousands of whole lines at a time."""
+    line = _line_writer()
+    held = [line(COLUMNS)]
+    for row in rows:
+        if isinstance(row, QuantityColumn):
+            yield _taken(held)
+            yield from (lines.encode() for lines in _column_lines(row))
+        else:
+            held.append(line([_field(getattr(row, column)) for column in COLUMNS]))
+            if len(held) >= _LINES:
+                yield _taken(held)
+    yield _taken(held)
+
+
+def _taken(held: list[str]) -> bytes:
+    written = "".join(f"{line}\n" for line in held).encode()
+    held.clear()
+    return written
+
+
+def _line_writer() -> Callable[[Sequence[str]], str]:
+    """What makes a line, without its end, of cells; one with a lone carriage return is quoted as well."""
     import csv
     import io
 
     text = io.StringIO()
-    writer = csv.writer(text, lineterminator="\n")
-    writer.writerow(COLUMNS)
-    for row in rows:
-        if isinstance(row, QuantityColumn):
-            yield _taken(text)
-            yield from (lines.encode() for lines in _column_lines(row))
-        else:
-            writer.writerow([_field(getattr(row, column)) for column in COLUMNS])
-            if text.tell() >= _CHUNK:
-                yield _taken(text)
-    yield _taken(text)
+    write = csv.writer(text, lineterminator="\r\n").writerow  # what ends a line decides what is quoted
 
+    def line(cells: Sequence[str]) -> str:
+        write(cells)
+        made = text.getvalue()[:-2]
+        text.seek(0)
+        text.truncate()
+        return made
 
-def _taken(text: io.StringIO) -> bytes:
-    written = text.getvalue().encode()
-    text.seek(0)
-    text.truncate()
-    return written
+    return line
 
 
 def _column_lines(row: QuantityColumn) -> Iterator[str]:
@@ -98,22 +108,9 @@ def _column_lines(row: QuantityColumn) -> Iterator[str]:
 
 
 def _cells(texts: Sequence[str]) -> list[str]:
-    """Each text as the writer of the standard library puts it between two commas."""
-    import csv
-    import io
-
-    text = io.StringIO()
-    write = csv.writer(text, lineterminator="\n").writerow
-    cells = []
-    for one in texts:
-        if one.isalnum():
-            cells.append(one)
-            continue
-        write((_field(one), ""))
-        cells.append(text.getvalue()[:-2])
-        text.seek(0)
-        text.truncate()
-    return cells
+    """Each text as it stands between two commas."""
+    line = _line_writer()
+    return [one if one.isalnum() else line((_field(one), ""))[:-1] for one in texts]
 
 
 def _field(value: float | str | None) -> str:
