@@ -89,7 +89,8 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
     if any(relay.direction for relay in relays):
         out.append(
             "a directional relay acts where its current lies within 90 degrees either side of its"
-            " characteristic angle ahead of what polarises it, however small that is (common practice)"
+            " characteristic angle ahead of what polarises it, however small that is, and keeps still where"
+            " nothing polarises it (common practice)"
         )
     if any(relay.polarisation in study.states[0].sites.stars for relay in relays):
         out.append("the current of a star point that polarises counts from earth into the star point")
