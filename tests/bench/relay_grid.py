@@ -109,7 +109,9 @@ def _neighbourhood(tree: Tree, k: int, line: Any) -> None:
         half = LENGTH // 2 if f < RELAYS - 1 - FEEDERS else LENGTH
         heads.append(f"R{k}-{f}")
         behind = [f"R{k}-{f}-far"] if half < LENGTH else []
-        _relay(tree, heads[-1], f"L{k}-{f}-0@{board}", f, 0.45 if behind else 0.1, names, half, behind, k, f, 0)
+        _relay(
+            tree, heads[-1], f"L{k}-{f}-0@{board}", f, 0.45 if behind else 0.1, names, half, behind, k, f, 0
+        )
         if behind:
             at = f"L{k}-{f}-{half}@{names[half]}"
             _relay(tree, behind[0], at, f, 0.1, names[half:], LENGTH - half, [], k, f, half)
