@@ -167,7 +167,7 @@ def _grades(found: Settings) -> Iterator[Part]:
                 seconds(each.time),
                 seconds(each.backup_time),
                 seconds(each.margin),
-                seconds(each.required),
+                seconds(each.required) if each.required < math.inf else "-",
                 each.verdict,
             ),
         )
@@ -227,7 +227,9 @@ def _blind(found: Settings) -> Iterator[Part]:
     for relay in found.blind_relays:
         apart.setdefault((relay.places, relay.reason), []).append(relay.relay)
     for (buses, reason), relays in apart.items():
-        said.append(f"nothing of {', '.join(buses)} shows at {', '.join(once(relays))}: {reason}")
+        every = {each.relay for each in found.still} <= set(relays)
+        where = "any relay" if every else ", ".join(once(relays))
+        said.append(f"nothing of {', '.join(buses)} shows at {where}: {reason}")
     yield Sentences("What does no relay see?", tuple(said) or ("every place studied is seen by a relay",))
 
 

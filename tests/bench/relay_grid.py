@@ -9,6 +9,7 @@ directional residual one, and two of these again half way out.
 from __future__ import annotations
 
 import random
+from itertools import pairwise
 from typing import Any
 
 Tree = dict[str, Any]
@@ -102,7 +103,7 @@ def _neighbourhood(tree: Tree, k: int, line: Any) -> None:
     heads = []
     for f in range(FEEDERS):
         names = [board, *(f"B{k}-{f}-{n}" for n in range(LENGTH))]
-        ends = list(zip(names, names[1:], strict=False))
+        ends = list(pairwise(names))
         for n, (start, end) in enumerate(ends):
             tree["buses"][end] = "11 kV"
             line(f"L{k}-{f}-{n}", start, end, False)

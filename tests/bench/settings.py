@@ -2,10 +2,10 @@
 
 ``python -m tests.bench.settings`` from the root of the repository, or with numbers of neighbourhoods (20
 buses, 6 relays each) behind it. Factorisations are counted where they are made; a place is faulted in
-four ways at least, two kinds of fault and resistors cold and hot, in every state. The study is timed from the
-case in memory to its verdicts, and bare factorisations of the three sequence networks of the base state
-in turns with it. Ends with 1 where a fault costs a factorisation or the second size more than 20 times
-the first. The larger size takes minutes.
+two kinds and through several resistances, resistors cold and hot, in every state. The study is timed
+from the case in memory to its verdicts, bare factorisations of the base state's three networks before
+and after it. Ends with 1 where a fault costs a factorisation, or the second size more than 20 times the
+first. The larger size takes minutes.
 """
 
 from __future__ import annotations
