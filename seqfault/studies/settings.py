@@ -109,6 +109,25 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
     return tuple(out)
 
 
+def asked(study: States) -> tuple[str, ...]:
+    """What the demands ask, and in which states."""
+    demands = study.states[0].protection.demands
+    rest = [state.name for state in study.states if state.name not in demands.least]
+    ohms = ", ".join(f"{ohm:g}" for ohm in demands.fault_resistances)
+    seen = (
+        f"to see {demands.see:g} times the pickup through {ohms} ohm in the states"
+        f" {', '.join(demands.least)}" + (f"; not asked in {', '.join(rest)}" if rest else "")
+    )
+    share = f"(2 × {100 * demands.relay_error:g} % + {100 * demands.ct_error:g} %)"
+    return (
+        seen,
+        f"to keep still, in all states: a pickup of {demands.keep_still:g} times the most elsewhere",
+        f"to wait, in all states: {share} of the time of the relay in front, and its breaker's,"
+        f" {demands.overshoot:g} s overshoot and {demands.safety:g} s safety",
+        f"tight is what holds by less than {100 * demands.tight:g} %",
+    )
+
+
 def relay_doubts(study: States, name: str) -> tuple[str, ...]:
     """What the earth currents that ``name`` sees rest on and nobody has stated."""
     zone = zone_of(name, study.relays).whole

@@ -96,13 +96,13 @@ def unfed(model: Model, line: str, bus: str) -> bool:
 def tied(network: Network, buses: Ints, sequences: Sequence[int] = ALL) -> Bools:
     """Which of ``buses`` lie, in all of ``sequences``, where something fixes the potential."""
     nodes = network.model.node[buses]
-    out = np.ones(len(buses), bool)
+    fixed = np.ones(len(buses), bool)
     for s in sequences if len(buses) else ():
-        free = network.sequences[s].free.part[nodes]
-        slacks = network.sequences[s].slacks
-        inside = free >= 0
-        out[inside] &= slacks[free[inside]] == 0
-    return out
+        factor = network.sequences[s]
+        part = factor.free.part[nodes]
+        inside = part >= 0
+        fixed[inside] = fixed[inside] & (factor.slacks[part[inside]] == 0)
+    return fixed
 
 
 def columns(

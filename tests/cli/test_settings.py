@@ -249,6 +249,9 @@ def test_the_plant_has_two_mistakes_and_the_written_proposal_none(run: Run, tmp_
     assert page.code == 1
     assert page.row("water-earth", "Does it keep still")[-1] == "fail"
     assert page.row("ring-2-south behind ring-1-north", "Does it wait")[-1] == "fail"
+    assert "in the states base, t1-out, t2-out; not asked in ring-open" in page.flat
+    assert "it would keep still with a pickup of 10 A or more" in page.flat  # 1.3 x 7.69 A
+    assert "the backup acts 0.11 s too early" in page.flat
     target = tmp_path / "mended.toml"
     assert run("settings", MILL, "--propose", "--write", target).code == 0
     assert run("settings", target).code == 0
