@@ -81,7 +81,7 @@ def unfed(model: Model, line: str, bus: str) -> bool:
     rows = [k for k, name in enumerate(lines.names) if name == line]
     if len(rows) != 1 or lines.count[rows[0]] != 1:
         return False
-    through = (lines.nodes >= 0).all(axis=0)
+    through: Bools = np.logical_and(*(lines.nodes >= 0))
     through[rows] = False
     first, second = [lines.nodes[0, through]], [lines.nodes[1, through]]
     for sets in model.winding_sets:
