@@ -72,6 +72,10 @@ def test_case_opens_with_what_it_shows(name: str) -> None:
 
 # The states that are there to show a warning of the trade.
 EXPECTED = {
+    ("mill", None): (
+        'neutrals "NER-A", "NER-B" earth the same network in this state: 800 A, 800 A each alone,'
+        " 1600 A together",
+    ),
     ("quarry", "ring-closed"): (
         'neutrals "NER-A", "NER-B" earth the same network in this state: 400 A, 399 A each alone,'
         " 799 A together",
@@ -312,3 +316,19 @@ def test_moor_turbines_feed_their_limit_nearby_only() -> None:
     assert 0.9 * limit < more < limit
     assert any('"turbines" feeds its limit' in note for note in near.notes)
     assert any('"turbines" stays silent' in note for note in far.notes)
+
+
+def test_mill_both_resistors_feed_a_fault_on_the_ring() -> None:
+    each = []
+    for place in ("north", "south", "ring-2@50%"):
+        solution = fault("mill", place)
+        paths = home(solution)
+        each += [abs(paths["NER-A"]), abs(paths["NER-B"])]
+        assert abs(solution.residual) == pytest.approx(each[-2] + each[-1], rel=0.01)
+    assert 650 < min(each) < max(each) < 760
+    for state, left in (("t1-out", "NER-B"), ("t2-out", "NER-A")):
+        solution = fault("mill", "south", state=state)
+        assert left in home(solution)
+        assert abs(solution.residual) == pytest.approx(700, rel=0.05)
+    open_ring = fault("mill", "south", state="ring-open")
+    assert "NER-A" not in home(open_ring)

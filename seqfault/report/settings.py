@@ -7,7 +7,7 @@ from collections import Counter
 from collections.abc import Iterator, Sequence
 
 from seqfault.report.numbers import counted, figures
-from seqfault.report.settings_words import ohms_up_to, over, seconds, size
+from seqfault.report.settings_words import no_less, no_more, ohms_up_to, over, seconds, size
 from seqfault.report.tables import (
     CAUTION,
     TEXT,
@@ -24,7 +24,7 @@ from seqfault.report.tables import (
     Title,
     once,
 )
-from seqfault.studies.settings import Settings, method
+from seqfault.studies.settings import Settings, asked, method
 from seqfault.studies.settings_blind import BlindPlace
 from seqfault.studies.settings_places import Spot
 from seqfault.studies.settings_states import States
@@ -36,7 +36,7 @@ MANY = 60
 
 def settings_page(study: States, found: Settings) -> Page:
     """The page of ``found``, judged on ``study``."""
-    parts: list[Part] = [_title(study, found)]
+    parts: list[Part] = [_title(study, found), Sentences("What is asked", asked(study))]
     parts += _sees(found)
     parts += _reach(found)
     parts += _still(found)
@@ -93,7 +93,12 @@ def _sees(found: Settings) -> Iterator[Part]:
     ]
     columns = (("what it",), ("least", "seen"), ("pickup",), ("times,", "wanted"), ("verdict",))
     yield _table("Does it see what it must?", columns, rows)
-    said = [_why(f"{each.relay}, {each.duty}", each.limit, each.reasons) for each in found.sees]
+    said = []
+    for each in found.sees:
+        mend: tuple[str, ...] = ()
+        if each.verdict == "fail" and each.greatest_pickup > 0:
+            mend = (f"it would see with a pickup of {no_more(each.greatest_pickup, each.unit)} or less",)
+        said.append(_why(f"{each.relay}, {each.duty}", each.limit, (*each.reasons, *mend)))
     said += [
         f"{each.relay} covers {100 * cover.share:.1f} % of the winding {cover.winding}, counted from its"
         f" terminals (state {cover.state}, resistors {cover.resistors})"
@@ -152,6 +157,10 @@ def _still(found: Settings) -> Iterator[Part]:
     said = []
     for each in found.still:
         text = _why(each.relay, each.limit if each.current else "nothing reaches it", each.reasons)
+        if each.verdict == "fail" and 0 < each.least_pickup < math.inf:
+            text += (
+                f"; it would keep still with a pickup of {no_less(each.least_pickup, each.unit)} or more"
+            )
         if each.held_back:
             text += f"; its direction alone holds it back from {size(each.held_back, each.unit)}"
         said.append(text)
@@ -168,7 +177,7 @@ def _grades(found: Settings) -> Iterator[Part]:
                 seconds(each.time),
                 seconds(each.backup_time),
                 seconds(each.margin),
-                seconds(each.required),
+                seconds(each.required) if each.required < math.inf else "-",
                 each.verdict,
             ),
         )
@@ -185,7 +194,9 @@ def _grades(found: Settings) -> Iterator[Part]:
                 f" {each.backup} {size(each.backup_current, each.units[1])}"
             )
         limit = None if each.limit is None else f"{each.limit}{seen}"
-        said.append(_why(f"{each.backup} behind {each.first}", limit, each.reasons))
+        short = each.required - each.margin
+        early = (f"the backup acts {no_less(short, 's')} too early",) if 0 < short < math.inf else ()
+        said.append(_why(f"{each.backup} behind {each.first}", limit, (*each.reasons, *early)))
     yield Sentences("The least margin is left in", tuple(said))
 
 
@@ -244,7 +255,9 @@ def _blind(found: Settings) -> Iterator[Part]:
     for relay in found.blind_relays:
         apart.setdefault((relay.places, relay.reason), []).append(relay.relay)
     for (buses, reason), relays in apart.items():
-        said.append(f"nothing of {', '.join(buses)} shows at {', '.join(once(relays))}: {reason}")
+        every = {each.relay for each in found.still} <= set(relays)
+        where = "any relay" if every else ", ".join(once(relays))
+        said.append(f"nothing of {', '.join(buses)} shows at {where}: {reason}")
     yield Sentences("What does no relay see?", tuple(said) or ("every place studied is seen by a relay",))
 
 

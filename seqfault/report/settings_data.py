@@ -9,7 +9,7 @@ import msgspec
 
 from seqfault.report.data import FORMAT, Quantity
 from seqfault.report.settings_words import plain
-from seqfault.studies.settings import Settings, method
+from seqfault.studies.settings import Settings, asked, method
 from seqfault.studies.settings_states import States
 from seqfault.studies.settings_verdicts import Situation
 
@@ -27,6 +27,7 @@ def settings_tree(study: States, found: Settings) -> dict[str, Any]:
         "case": {"title": study.case.title, "sha256": study.case.sha256},
         **tree,
         "assumptions": list(study.assumptions),
+        "asked": list(asked(study)),
         "method": list(method(study, found)),
         "warnings": list(study.warnings),
     }

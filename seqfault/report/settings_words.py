@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 
 from seqfault.report.numbers import figures
 
@@ -21,6 +22,21 @@ def setting(value: float | None, unit: str) -> str:
     if value is None:
         return "to be set"
     return f"{float(f'{value:.5g}'):.15g} {unit}".strip()
+
+
+def no_less(value: float, unit: str) -> str:
+    """Three figures, rounded up: what a setting is to be at least."""
+    return _rounded(value, unit, math.ceil)
+
+
+def no_more(value: float, unit: str) -> str:
+    """Three figures, rounded down: what a setting is to be at most."""
+    return _rounded(value, unit, math.floor)
+
+
+def _rounded(value: float, unit: str, towards: Callable[[float], int]) -> str:
+    step = 10.0 ** (math.floor(math.log10(value)) - 2)
+    return f"{float(f'{towards(round(value / step, 9)) * step:.3g}'):g} {unit}"
 
 
 def seconds(value: float) -> str:

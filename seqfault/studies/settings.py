@@ -95,7 +95,8 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
     if any(relay.direction for relay in relays):
         out.append(
             "a directional relay acts where its current lies within 90 degrees either side of its"
-            " characteristic angle ahead of what polarises it, however small that is (common practice)"
+            " characteristic angle ahead of what polarises it, however small that is, and keeps still where"
+            " nothing polarises it (common practice)"
         )
     if any(relay.polarisation in study.states[0].sites.stars for relay in relays):
         out.append("the current of a star point that polarises counts from earth into the star point")
@@ -120,6 +121,25 @@ def method(study: States, found: Settings) -> tuple[str, ...]:
         shown = ", ".join(quoted(name) for name in bare[:6]) + more
         out.append(f"lines {shown}: screen_current not stated, so what a screen withstands was not checked")
     return tuple(out)
+
+
+def asked(study: States) -> tuple[str, ...]:
+    """What the demands ask, and in which states."""
+    demands = study.states[0].protection.demands
+    rest = [state.name for state in study.states if state.name not in demands.least]
+    ohms = ", ".join(f"{ohm:g}" for ohm in demands.fault_resistances)
+    seen = (
+        f"to see {demands.see:g} times the pickup through {ohms} ohm in the states"
+        f" {', '.join(demands.least)}" + (f"; not asked in {', '.join(rest)}" if rest else "")
+    )
+    share = f"(2 × {100 * demands.relay_error:g} % + {100 * demands.ct_error:g} %)"
+    return (
+        seen,
+        f"to keep still, in all states: a pickup of {demands.keep_still:g} times the most elsewhere",
+        f"to wait, in all states: {share} of the time of the relay in front, and its breaker's,"
+        f" {demands.overshoot:g} s overshoot and {demands.safety:g} s safety",
+        f"tight is what holds by less than {100 * demands.tight:g} %",
+    )
 
 
 def relay_doubts(study: States, name: str) -> tuple[str, ...]:

@@ -201,14 +201,17 @@ def _told(pair: Pair, case: int, ohm: float, units: tuple[str, str], doubts: tup
 def _rests(pair: Pair, case: int) -> str:
     """What to say where the backup acts and the first rests."""
     reach = [float(view.reach()[0][case]) for view in (pair.first, pair.backup)]
-    shown = [
-        "no fault" if math.isnan(r) else "any resistance" if math.isinf(r) else f"{r:.4g} ohm"
-        for r in reach
-    ]
-    return (
-        f"{pair.first.relay.name} sees faults there up to {shown[0]}, {pair.backup.relay.name} up to"
-        f" {shown[1]}: between them the backup acts alone"
+    first, backup = (
+        "sees none there" if math.isnan(r) else f"sees faults there up to {_upto(r)}" for r in reach
     )
+    return (
+        f"{pair.first.relay.name} {first}, {pair.backup.relay.name} {backup}: where {pair.first.relay.name}"
+        " rests the backup acts alone"
+    )
+
+
+def _upto(ohm: float) -> str:
+    return "any resistance" if math.isinf(ohm) else f"{ohm:.4g} ohm"
 
 
 def pairs(study: States) -> Iterator[tuple[str, str]]:

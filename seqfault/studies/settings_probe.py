@@ -19,6 +19,7 @@ from seqfault.faults.network import Network
 from seqfault.faults.solution import FaultSolution
 from seqfault.model.context import Machine
 from seqfault.model.elements import Bools, Complex, Floats, Ints
+from seqfault.studies.settings_columns import ALL, Columns, buses_of, columns, lost_behind, tied, unfed
 from seqfault.studies.settings_places import Spot
 
 PROBE = "line-line-ground"
@@ -97,22 +98,71 @@ def flat(case: Case) -> tuple[Case, tuple[str, ...]]:
     return case, tuple(said)
 
 
-def probe(network: Network, spots: Iterable[Spot], sites: Sites) -> Probe:
-    """Probe ``network``, flat and without converters, at those of ``spots`` that are live."""
+def probe(network: Network, spots: Iterable[Spot], sites: Sites, sequences: Sequence[int] = ALL) -> Probe:
+    """Probe ``network``, flat and without converters, at those of ``spots`` that are live.
+
+    Of other than these ``sequences`` nothing is told.
+    """
     together: dict[str, list[Spot]] = {}
     for spot in spots:
         together.setdefault(spot.opened, []).append(spot)
-    kept: list[Spot] = []
-    solved: list[FaultSolution] = []
+    first = 0
+    order: list[int] = []
+    parts = [_by_solutions(network, (), (), sites)]
     for opened, group in together.items():
         breaks = [opened] if opened else []
+        if opened and unfed(network.model, *_other_end(network.case, opened)):
+            continue
         here = network.located([spot.place for spot in group], breaks)
+        buses = buses_of(here, [spot.place for spot in group])
+        lost = lost_behind(here, opened)
+        fed = np.flatnonzero(~lost[buses])
+        quick = tied(here, buses[fed], sequences)
+        some = fed[quick]
+        if some.size:
+            made = columns(here, buses[some], lost, sites, sequences)
+            live = some[made.live].tolist()
+            parts.append(_by_columns(network, [group[k] for k in live], made, sites))
+            order += [first + k for k in live]
         also = [fault_at(place, "open-three") for place in breaks]
-        for spot in group:
-            solution = here.solve([fault_at(spot.place, PROBE), *also])
+        kept: list[Spot] = []
+        solved: list[FaultSolution] = []
+        for k in fed[~quick].tolist():
+            solution = here.solve([fault_at(group[k].place, PROBE), *also])
             if solution.prefault > 0 and np.abs(solution.current_sequence[1]) > 0:
-                kept.append(spot)
+                order.append(first + k)
+                kept.append(group[k])
                 solved.append(solution)
+        parts.append(_by_solutions(network, kept, solved, sites))
+        first += len(group)
+    return _joined(parts, np.argsort(np.array(order, np.int64), kind="stable"), sites)
+
+
+def _by_columns(network: Network, spots: Sequence[Spot], made: Columns, sites: Sites) -> Probe:
+    live = made.live
+    p = len(spots)
+
+    def clipped(values: Complex) -> Complex:
+        return np.asarray(np.where(np.abs(values) > _NOTHING, values, 0))
+
+    return Probe(
+        spots=tuple(spots),
+        voltage=made.voltage[live],
+        impedance=made.impedance[:, live],
+        terminal=clipped(made.terminal[:, live]),
+        star=clipped(made.star[live]),
+        drop=clipped(made.drop[:, live]),
+        stood=made.stood[live],
+        share=np.zeros((p, len(sites.buses)), complex),
+        star_drop=clipped(made.star_drop[live]),
+        star_share=np.zeros((p, len(sites.stars)), complex),
+        galvanic=_galvanic(network, spots),
+    )
+
+
+def _by_solutions(
+    network: Network, kept: Sequence[Spot], solved: Sequence[FaultSolution], sites: Sites
+) -> Probe:
     p = len(kept)
     current = np.array([s.current_sequence for s in solved], complex).reshape(p, 3).T
     impedance = np.array([s.impedance for s in solved], complex).reshape(p, 3).T
@@ -125,8 +175,39 @@ def probe(network: Network, spots: Iterable[Spot], sites: Sites) -> Probe:
         terminal=_terminals(solved, current, sites),
         star=_stars(solved, current, sites),
         **_voltages(solved, current, path, sites),
-        galvanic=tuple(int(network.model.galvanic[network.model.node[_home(network, s)]]) for s in kept),
+        galvanic=_galvanic(network, kept),
     )
+
+
+def _joined(parts: Sequence[Probe], order: Ints, sites: Sites) -> Probe:
+    """The parts as one, in ``order`` of their places one after the other."""
+
+    def by(name: str, axis: int) -> Complex:
+        return np.asarray(np.concatenate([getattr(x, name) for x in parts], axis).take(order, axis))
+
+    spots = [spot for part in parts for spot in part.spots]
+    galvanic = [label for part in parts for label in part.galvanic]
+    second = {name: by(name, 1) for name in ("impedance", "terminal", "drop")}
+    first = {name: by(name, 0) for name in ("star", "stood", "share", "star_drop", "star_share")}
+    return Probe(
+        spots=tuple(spots[k] for k in order.tolist()),
+        voltage=np.asarray(by("voltage", 0), float),
+        galvanic=tuple(galvanic[k] for k in order.tolist()),
+        **second,
+        **first,
+    )
+
+
+def _galvanic(network: Network, spots: Sequence[Spot]) -> tuple[int, ...]:
+    model = network.model
+    return tuple(int(model.galvanic[model.node[_home(network, spot)]]) for spot in spots)
+
+
+def _other_end(case: Case, opened: str) -> tuple[str, str]:
+    """The line of a terminal, and the bus at its other end."""
+    name, _, bus = opened.rpartition("@")
+    line = case.lines[name]
+    return name, line.to if line.from_ == bus else line.from_
 
 
 def _home(network: Network, spot: Spot) -> int:

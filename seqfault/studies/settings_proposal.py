@@ -200,12 +200,12 @@ def _pickup_binds(task: Task, found: Found, name: str) -> str:
     free = {n for n, relay in task.relays.items() if relay.curve == "definite"}
     pickups = {n: float(s.pickup or 0) for n, s in found.settings.items() if n not in free}
     pickups[name] = window.pickups[at + step]
+    which = "higher" if definite else "lower"
     try:
         other = times_for(task, pickups)
     except Conflict as conflict:
-        return str(conflict)
+        return f"one step {which} and {conflict}"
     more = other.total - found.total
-    which = "higher" if definite else "lower"
     if more > 0:
         return f"one step {which} and the times add up to {more:.3g} s more"
     return f"one step {which} gains nothing"

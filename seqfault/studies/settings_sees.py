@@ -16,6 +16,8 @@ from seqfault.studies.settings_states import State, States, breakers_of, inside,
 from seqfault.studies.settings_verdicts import Situation, Verdict, doubted, judged, situation
 from seqfault.studies.settings_view import View
 
+BELOW = "this is below its pickup: the relay rests, and its curve has no time for it"
+
 
 class Reach(msgspec.Struct, frozen=True):
     """The greatest fault resistance (ohm) still seen at ``spot``: NaN none, infinite any; its case."""
@@ -113,7 +115,7 @@ def _sees(
         reasons: tuple[str, ...] = ("its pickup is still to be set",)
     else:
         verdict = doubted(judged(ratio, demands.see, demands.tight), doubts)
-        reasons = ()
+        reasons = (BELOW,) if ratio < 1 else ()
     unsure = [f"{r.spot}: not even a bolted fault" for r in reach.values() if math.isnan(r.resistance)]
     if verdict == "fail" and len(unsure) <= 4:
         reasons = (*unsure, *reasons)

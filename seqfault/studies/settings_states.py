@@ -119,11 +119,11 @@ def _state(case: Case, points: int) -> tuple[State, list[str]]:
     worlds = [first]
     if warm is not None:
         at = _near(flat_case, warm, first, sites)
-        hot = probe(Network(warm), [first.spots[k] for k in at.tolist()], sites)
+        hot = probe(Network(warm), [first.spots[k] for k in at.tolist()], sites, (0,))
         worlds.append(first.with_zero_sequence_of(hot, at))
     probes = [worlds]
     for machine in machines[1:]:
-        own = probe(Network(flat_case, machine=machine), first.spots, sites)
+        own = probe(Network(flat_case, machine=machine), first.spots, sites, (1, 2))
         probes.append([own.with_zero_sequence_of(world) for world in worlds])
     forms = forms_of(case.state, machines, probes)
     views, at_home = {}, {}

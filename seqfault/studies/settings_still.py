@@ -159,7 +159,8 @@ def _of_state(
         whole = np.abs(at_resistance(some.top, some.bottom[:, :, None], bolted)).max(axis=2)[:, :, 0]
         phases = at_resistance(some.through, some.bottom[:, :, None], bolted)[..., 0]
         error = _error(some, np.moveaxis(phases, 2, 0), ct)
-        turned = error >= whole  # its error may then turn the direction too
+        # An error above the current may turn the direction too, where anything polarises it.
+        turned = (error >= whole) & some.polarised(bolted)[:, :, 0]
         error = np.where((allowed > 0) | turned | (some.towards is None), error, 0)
         residual = np.where(turned, whole, allowed)
         held_back = float(np.where(residual < whole, whole, 0).max(initial=0.0))

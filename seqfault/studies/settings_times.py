@@ -240,8 +240,8 @@ def _pickups(task: Task, given: Mapping[str, float], limits: Mapping[str, float]
         gap, backup, first, ratio = max(apart)
         raise Conflict(
             f"{backup} at {chosen[backup]:.4g} {task.relays[backup].unit} acts on faults that {first} at"
-            f" {chosen[first]:.4g} {task.relays[first].unit} does not see: its pickup would have to be no"
-            f" less than {ratio:.4g} times that of {first}",
+            f" {chosen[first]:.4g} {task.relays[first].unit} does not see: {backup} would have to pick up"
+            f" at no less than {ratio:.4g} times what {first} does",
             gap,
         )
     return chosen

@@ -75,6 +75,13 @@ class View(msgspec.Struct, frozen=True, eq=False):
             (np.abs(by) > self.floor[:, None, None]) & (work >= -1e-12 * np.abs(value) * np.abs(by))
         )
 
+    def polarised(self, resistance: Floats) -> Bools:
+        """Whether anything polarises the relay (m, n, r); of one without a direction always true."""
+        if self.towards is None:
+            return np.ones((*self.bottom.shape[:2], np.shape(resistance)[-1]), bool)
+        by = at_resistance(self.towards, self.bottom[:, :, None], resistance)
+        return np.asarray((np.abs(by) > self.floor[:, None, None]).any(axis=2))
+
     def seen(self, resistance: Floats) -> tuple[Floats, Ints]:
         """What is measured (n, r) with the reactance of the relay's own time, and which (n, r).
 

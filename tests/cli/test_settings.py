@@ -183,3 +183,75 @@ def test_names_with_any_characters(run: Run, tmp_path: Path) -> None:
     target = tmp_path / "out.toml"
     assert run("settings", path, "--propose", "--write", target).code == 0
     assert run("settings", target).code == 0
+
+
+MILL = Path(__file__).parents[2] / "cases" / "mill.toml"
+
+
+def changed(tmp_path: Path, relay: str, *changes: tuple[str, str]) -> Path:
+    """The plant with lines of one relay replaced."""
+    head, tail = MILL.read_text(encoding="utf-8").split(f"[relays.{relay}]")
+    for old, new in changes:
+        assert old in tail
+        tail = tail.replace(old, new, 1)
+    path = tmp_path / "changed.toml"
+    path.write_text(f"{head}[relays.{relay}]{tail}", encoding="utf-8")
+    return path
+
+
+def test_a_curve_asked_below_its_pickup_says_so_and_fails(run: Run, tmp_path: Path) -> None:
+    path = changed(
+        tmp_path, "T1-neutral", ('pickup = "0.2 In"', 'pickup = "0.6 In"')
+    )  # 180 A, and 5 ohm leave less
+    page = run("settings", path, "--points", "2", "--width", "100")
+    assert page.code == 1
+    assert "below its pickup: the relay rests, and its curve has no time" in page.flat
+    assert page.row("T1-neutral", "Does it see")[-1] == "fail"
+    sheet = run("settings", path, "--points", "2", "--width", "100", "--sheet")
+    assert "never" in sheet.row("T1-neutral", "When it acts")
+
+
+def test_a_relay_that_sees_nothing_at_all_leaves_its_backup_alone(run: Run, tmp_path: Path) -> None:
+    path = changed(tmp_path, "water-earth", ('pickup = "0.1 In"', 'pickup = "40 In"'))
+    page = run("settings", path, "--points", "2", "--width", "100")
+    assert page.code == 1
+    assert "water-earth sees none there, ring-3-south sees faults there up to" in page.flat
+    assert "not even a bolted fault" in page.flat or "below its pickup" in page.flat
+
+
+def test_a_pickup_under_the_error_of_its_transformers_says_so_and_fails(run: Run, tmp_path: Path) -> None:
+    path = changed(
+        tmp_path,
+        "ring-3-south",
+        ('vt = "11 kV/110 V"\n', ""),
+        ('direction = "forward"\n', ""),
+        ('characteristic_angle = "-15 deg"\n', ""),
+        ('polarisation = "residual-voltage"\n', ""),
+    )
+    page = run("settings", path, "--points", "2", "--width", "100")
+    assert page.code == 1
+    assert "the errors of its current transformers alone may show" in page.flat
+    assert page.row("ring-3-south", "Does it keep still")[-1] == "fail"
+
+
+def test_a_relay_on_a_dead_element_says_so_and_fails(run: Run, tmp_path: Path) -> None:
+    path = tmp_path / "dead.toml"
+    text = MILL.read_text(encoding="utf-8")
+    path.write_text(text.replace("[lines.f-water] ", "[lines.f-water]\nout = true "), encoding="utf-8")
+    page = run("settings", path, "--points", "2", "--width", "100")
+    assert page.code == 1
+    assert 'state base: "f-water" is out' in page.flat
+    assert page.row("water-earth", "Does it see")[-1] == "fail"
+
+
+def test_the_plant_has_two_mistakes_and_the_written_proposal_none(run: Run, tmp_path: Path) -> None:
+    page = run("settings", MILL, "--points", "2", "--width", "100")
+    assert page.code == 1
+    assert page.row("water-earth", "Does it keep still")[-1] == "fail"
+    assert page.row("ring-2-south behind ring-1-north", "Does it wait")[-1] == "fail"
+    assert "in the states base, t1-out, t2-out; not asked in ring-open" in page.flat
+    assert "it would keep still with a pickup of 10 A or more" in page.flat  # 1.3 x 7.69 A
+    assert "the backup acts 0.11 s too early" in page.flat
+    target = tmp_path / "mended.toml"
+    assert run("settings", MILL, "--propose", "--write", target).code == 0
+    assert run("settings", target).code == 0

@@ -233,11 +233,20 @@ def case_of(text: str = RING, *changes: tuple[str, str]) -> Case:
 
 
 def heated(case: Case, ratio: float) -> Case:
-    """``case`` with its neutral resistor ``ratio`` times its ohms."""
-    record = case.neutrals["NER"]
-    assert record.resistance is not None
-    ohm = Quantity(record.resistance.value * ratio, "impedance", "")
-    return replace(case, neutrals={**case.neutrals, "NER": replace(record, resistance=ohm)})
+    """``case`` with the neutral resistors that have a temperature rise ``ratio`` times their ohms."""
+    hot = {}
+    for name, record in case.neutrals.items():
+        if record.temperature_rise is None:
+            continue
+        if record.resistance is not None:
+            ohm = record.resistance.value
+        else:
+            assert record.current is not None
+            assert record.voltage is not None
+            ohm = record.voltage.value / math.sqrt(3) / record.current.value
+        own = Quantity(ohm * ratio, "impedance", "")
+        hot[name] = replace(record, resistance=own, current=None, voltage=None)
+    return replace(case, neutrals={**case.neutrals, **hot})
 
 
 class Referee:

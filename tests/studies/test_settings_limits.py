@@ -12,6 +12,7 @@ from seqfault.case.records import Case
 from seqfault.case.text import parse_text
 from seqfault.equations.relay_curves import CURVES, multiple_for, operate_time
 from seqfault.faults.network import Network
+from seqfault.networks.factors import SequenceFactor
 from seqfault.studies.relays import operate_times
 from seqfault.studies.settings import study_settings
 from seqfault.studies.settings_proposal import propose_settings
@@ -390,3 +391,23 @@ def test_a_proposed_pickup_is_one_that_its_own_delay_still_sees(least: str, x1: 
     assert row.setting.pickup == math.floor(min(single, double) / 1.5)
     assert proposal.proof is not None
     assert all(seen.verdict in ("pass", "tight") for seen in proposal.proof.sees)
+
+
+def test_more_places_and_resistances_cost_no_further_factorisation(monkeypatch: pytest.MonkeyPatch) -> None:
+    made = []
+    own = SequenceFactor._factorise
+
+    def counting(self: SequenceFactor) -> object:
+        made.append(self)
+        return own(self)
+
+    monkeypatch.setattr(SequenceFactor, "_factorise", counting)
+    counts = []
+    for points, ohms in ((3, '["0 ohm"]'), (9, '["0 ohm", "1 ohm", "2 ohm", "3 ohm", "4 ohm", "5 ohm"]')):
+        made.clear()
+        study, _ = study_settings(case_of(RING, ('["0 ohm", "12 ohm"]', ohms)), points=points)
+        counts.append(len(made))
+        assert len(study.states) == 2
+    assert counts[0] == counts[1] > 0
+    # three sequences, of a state cold and hot and two reactances more; the network, its places, 6 line ends
+    assert counts[0] <= 2 * (3 + 1 + 2 * 2) * (1 + 1 + 6)
