@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import argparse
-import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
 from seqfault.cli.options import read_states
+from seqfault.cli.progress import bar
 from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
@@ -59,7 +59,7 @@ def over_states(
         return run_batch(items)
     from seqfault.cli.run import say
 
-    with _bar(len(items)) as done, _executor(options) as (executor, again):
+    with bar("states", len(items)) as done, _executor(options) as (executor, again):
         return run_batch(items, executor, done=done, lost=say, again=again)
 
 
@@ -145,18 +145,3 @@ def _cluster(address: str) -> Iterator[Callable[[], Executor]]:
         ) from error
     with client:
         yield lambda: client.get_executor(pure=False)
-
-
-@contextmanager
-def _bar(count: int) -> Iterator[Callable[[int], None] | None]:
-    """A bar on standard error where that is a terminal; nothing in a pipe."""
-    if sys.stderr is None or not sys.stderr.isatty():
-        yield None
-        return
-    from rich.console import Console
-    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
-
-    columns = (TextColumn("states"), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
-    with Progress(*columns, console=Console(stderr=True), transient=True) as progress:
-        task = progress.add_task("states", total=count)
-        yield lambda _: progress.advance(task)

@@ -6,6 +6,7 @@ import argparse
 from typing import TYPE_CHECKING
 
 from seqfault.cli.options import read_states, with_prefault
+from seqfault.cli.progress import bar
 from seqfault.errors import RequestError, quoted
 
 if TYPE_CHECKING:
@@ -58,7 +59,8 @@ def run_outages(options: argparse.Namespace) -> int:
     outages = single_outages(network, options.outages) if listed is None else listed
     if not outages:
         raise RequestError(f"--outages {options.outages}: there are none in service")
-    survey = survey_outages(network, outages, options.at, rebuilt)
+    with bar("outages", len(outages)) as done:
+        survey = survey_outages(network, outages, options.at, rebuilt, done)
     answer = Answer(
         partial(outages_page, network, survey),
         partial(outages_tree, network, survey),

@@ -6,6 +6,7 @@ import argparse
 from typing import TYPE_CHECKING
 
 from seqfault.cli.options import Commands, add_command, add_curves, add_output
+from seqfault.cli.progress import bar
 from seqfault.errors import RequestError
 
 if TYPE_CHECKING:
@@ -87,7 +88,8 @@ def run(options: argparse.Namespace) -> int:
         from seqfault.studies.settings_sheet import setting_sheet
         from seqfault.studies.settings_states import study_states
 
-        study = study_states(case, options.points)
+        with bar("states", 1 + len(case.scenarios)) as done:
+            study = study_states(case, options.points, done)
         draw_settings(options, plot, study)
         sheet = Answer(
             partial(sheet_page, study),
@@ -100,7 +102,8 @@ def run(options: argparse.Namespace) -> int:
     from seqfault.report.settings_data import settings_rows, settings_tree
     from seqfault.studies.settings import study_settings
 
-    study, found = study_settings(case, options.points)
+    with bar("states", 1 + len(case.scenarios)) as done:
+        study, found = study_settings(case, options.points, done)
     draw_settings(options, plot, study)
     answer = Answer(
         partial(settings_page, study, found),
@@ -137,7 +140,8 @@ def _propose(options: argparse.Namespace, form: str, case: Case, plot: str) -> i
     from seqfault.studies.settings_proposal import changes_of, propose_settings
     from seqfault.studies.settings_states import study_states
 
-    study = study_states(case, options.points)
+    with bar("states", 1 + len(case.scenarios)) as done:
+        study = study_states(case, options.points, done)
     proposal = propose_settings(study, options.keep)
     draw_settings(options, plot, proposal.study or study)
     content = None

@@ -74,17 +74,19 @@ def survey_outages(
     outages: Sequence[Outage],
     at: Sequence[str] | None = None,
     rebuild: Callable[[Outage], Case] | None = None,
+    done: Callable[[int], None] | None = None,
 ) -> OutageSurvey:
     """Fault levels at the buses ``at`` (all where None) with each of ``outages`` in turn.
 
     ``rebuild`` gives the case without an outage, for those that no update answers; by default that of
-    the scenario ``network`` is in. Raises ``RequestError`` for buses and elements that are not there.
+    the scenario ``network`` is in. ``done`` is told of each outage by its number.
+    Raises ``RequestError`` for buses and elements that are not there.
     """
     buses = tuple(network.buses if at is None else dict.fromkeys(at))
     _check(network, outages, buses)
     work = _Survey(network, buses, rebuild or _rebuild_of(network))
     for start in range(0, len(outages), TOGETHER):
-        work.run(outages[start : start + TOGETHER])
+        work.run(outages[start : start + TOGETHER], done)
     model = network.model
     return OutageSurvey(
         state=model.state,
@@ -165,12 +167,14 @@ class _Survey:
         self.failed: list[tuple[Outage, str]] = []
         self.warnings: list[str] = []
 
-    def run(self, outages: Sequence[Outage]) -> None:
+    def run(self, outages: Sequence[Outage], done: Callable[[int], None] | None) -> None:
         """Answer ``outages`` and keep what they give."""
         can = [] if self._network.loading is not None else [o for o in outages if self._updatable(o)]
         for removal in self._removals:
             removal.prepare(can)
         for outage in outages:
+            if done is not None:
+                done(len(self.current))
             if outage not in can:
                 loaded = self._network.loading is not None
                 self._whole(outage, "the loaded state changes" if loaded else "no line or transformer")

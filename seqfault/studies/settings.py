@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import msgspec
 
 from seqfault.case.records import Case
@@ -38,12 +40,16 @@ class Settings(msgspec.Struct, frozen=True, eq=False):
     verdict: Verdict
 
 
-def study_settings(case: Case, points: int = POINTS) -> tuple[States, Settings]:
+def study_settings(
+    case: Case, points: int = POINTS, done: Callable[[int], None] | None = None
+) -> tuple[States, Settings]:
     """Study the relays of ``case`` in all its states, with ``points`` places along each line.
+
+    ``done`` is told of each state.
 
     Raises ``RequestError`` for a case without relays, ``CaseError`` where a state makes no network.
     """
-    study = study_states(case, points)
+    study = study_states(case, points, done)
     return study, judge(study)
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import msgspec
 import numpy as np
 from msgspec.structs import replace
@@ -84,8 +86,8 @@ class States(msgspec.Struct, frozen=True, eq=False):
         return tuple(dict.fromkeys(out))
 
 
-def study_states(case: Case, points: int = POINTS) -> States:
-    """The states of ``case`` with ``points`` places along each line.
+def study_states(case: Case, points: int = POINTS, done: Callable[[int], None] | None = None) -> States:
+    """The states of ``case`` with ``points`` places along each line; ``done`` is told of each state.
 
     Raises ``RequestError`` for a case without relays, ``CaseError`` where a state makes no network.
     """
@@ -93,10 +95,12 @@ def study_states(case: Case, points: int = POINTS) -> States:
         raise RequestError("this case has no relays; state them in [relays.NAME], see docs/case-format.md")
     assumed: dict[str, None] = {}
     states = []
-    for name in ("base", *case.scenarios):
+    for k, name in enumerate(("base", *case.scenarios)):
         state, said = _state(in_state(case, name), points)
         states.append(state)
         assumed |= dict.fromkeys(said)
+        if done is not None:
+            done(k)
     return States(case, tuple(states), tuple(assumed))
 
 
