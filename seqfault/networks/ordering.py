@@ -102,10 +102,15 @@ def peel(pattern: UnionPattern, mirror: Ints) -> Peeled:
 
 
 class Order(msgspec.Struct, frozen=True, eq=False):
-    """``place`` (n,) of each node in the elimination; ``lower`` the CSC pattern of L, rows ascending."""
+    """``place`` (n,) of each node in the elimination; ``lower`` the CSC pattern of L, rows ascending;
+    ``entries`` the matrix in that order, CSC with the numbers of its entries, and ``mirror`` (e,) that of
+    the mirror of each of them.
+    """
 
     place: Ints
     lower: Any
+    entries: Any
+    mirror: Ints
 
 
 def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
@@ -128,7 +133,13 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     lower = lu.L
     if not lower.has_sorted_indices:
         lower.sort_indices()
-    return Order(place, lower)
+    turned = np.argsort(place)
+    counts = count[turned]
+    begin = np.concatenate([[0], np.cumsum(counts)])
+    number = np.repeat(start[turned] - begin[:-1], counts) + np.arange(len(row))
+    by_row = csc_array((number.astype(np.int32), place[row[number]].astype(np.int32), begin), (n, n)).tocsr()
+    entries = by_row.tocsc()  # turned twice, its rows ascend
+    return Order(place, lower, entries, by_row.data)
 
 
 def _cancelled(row: Ints, column: Ints, value: Complex, n: int) -> Bools:

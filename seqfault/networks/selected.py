@@ -57,55 +57,49 @@ def _core(row: Ints, column: Ints, value: Complex, n: int) -> Complex:
     start = np.concatenate([[0], np.cumsum(np.bincount(column, minlength=n))])
     elimination = order(start, row, column, value)
     structure = supernodes(elimination.lower)
-    factor, pivot = _factorised(row, column, value, elimination, structure)
+    entries = elimination.entries
+    factor, pivot = _factorised(value.take(entries.data, axis=1), elimination, structure)
     inverse = invert(structure, factor, pivot)
-    lower = np.flatnonzero(row > column)  # L stores one of a pair
-    a, b = elimination.place[row[lower]], elimination.place[column[lower]]
+    below = np.repeat(np.arange(n), np.diff(entries.indptr))
+    lower = np.flatnonzero(entries.indices > below)  # L stores one of a pair; these ascend
     place = np.empty(len(row), np.int64)
-    place[lower] = structure.find(a, b)
-    place[mirrored(start, row)[lower]] = place[lower]
+    place[entries.data[lower]] = structure.find(entries.indices[lower], below[lower])
+    place[elimination.mirror[lower]] = place[entries.data[lower]]
     place[row == column] = structure.own[elimination.place]
     return inverse.take(place, axis=1)
 
 
-def _factorised(
-    row: Ints, column: Ints, value: Complex, elimination: Order, structure: Supernodes
-) -> tuple[Complex, Complex]:
+def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tuple[Complex, Complex]:
     """L below the diagonal and D⁻¹ on it, (sequences, size) each, as the blocks lie."""
     from scipy.sparse import csc_array
     from scipy.sparse.linalg import splu
 
-    n, place = len(elimination.place), elimination.place.astype(np.int32)
-    entries = csc_array(
-        (
-            np.arange(len(row), dtype=np.int32),
-            (place[row], place[column]),
-        ),
-        shape=(n, n),
-    )
-    entries.sort_indices()
+    entries = elimination.entries
     factor = np.zeros((len(value), structure.size), complex)
     pivot = np.zeros_like(factor)
     pattern = elimination.lower
     strict = np.ones(len(pattern.indices), bool)
     strict[pattern.indptr[:-1]] = False
+    below = np.flatnonzero(strict)
+    into = structure.entry[below]
     for k, each in enumerate(value):
-        matrix = csc_array((each.take(entries.data), entries.indices, entries.indptr), shape=(n, n))
+        matrix = csc_array((each, entries.indices, entries.indptr), shape=entries.shape)
         lu = splu(matrix, permc_spec="NATURAL", **SETTINGS)
         if not np.array_equal(lu.perm_r, lu.perm_c):
             raise RuntimeError("a pivot is off the diagonal")
         pivot[k, structure.own] = 1 / lu.U.diagonal()
-        _lay(factor[k], lu.L, pattern, strict, structure)
+        lower = lu.L
+        if not lower.has_sorted_indices:
+            lower.sort_indices()
+        if lower.nnz == pattern.nnz:
+            factor[k, into] = lower.data[below]
+        else:
+            _lay(factor[k], lower, structure)
     return factor, pivot
 
 
-def _lay(into: Complex, lower: Any, pattern: Any, strict: Any, structure: Supernodes) -> None:
-    """Values of ``lower`` into the blocks; an entry that is exactly zero is not stored in it."""
-    if not lower.has_sorted_indices:
-        lower.sort_indices()
-    if lower.nnz == pattern.nnz:
-        into[structure.entry[strict]] = lower.data[strict]
-        return
+def _lay(into: Complex, lower: Any, structure: Supernodes) -> None:
+    """Values of ``lower``, in which an entry that is exactly zero is not stored, into the blocks."""
     n = lower.shape[0]
     key = np.repeat(np.arange(n), np.diff(lower.indptr)) * n + lower.indices
     below = np.ones(lower.nnz, bool)
@@ -138,33 +132,48 @@ def _invert_some(
     c, w = shape.below, shape.width
     rows, m = w + c, len(factor)
     at = shape.value + begin * rows * w
-    here = slice(at, at + count * rows * w)
-    z = inverse[:, here].reshape(m, count, rows, w)  # a view: D⁻¹ on the diagonal, zero elsewhere
-    lower = factor[:, here].reshape(m, count, rows, w)
-    links = slice(shape.link + begin * c, shape.link + (begin + count) * c)
-    front = structure.base[links].reshape(count, c, 1) + structure.position[links].reshape(count, 1, c)
-    among = fronts.take(front)  # where Z_ss lies
+    end = at + count * rows * w
+    z = inverse[:, at:end].reshape(m, count, rows, w)  # a view: D⁻¹ on the diagonal, zero elsewhere
+    lower = factor[:, at:end].reshape(m, count, rows, w)
+    if c:
+        links = slice(shape.link + begin * c, shape.link + (begin + count) * c)
+        front = structure.base[links].reshape(count, c, 1) + structure.position[links].reshape(count, 1, c)
+        among = fronts.take(front)  # where Z_ss lies
+        known = inverse.take(among, axis=1)
     if w == 1:
         if c:
-            column = lower[:, :, 1:, 0]
-            known = inverse.take(among, axis=1)
-            product = known[..., 0] * column if c == 1 else np.matmul(known, column[..., None])[..., 0]
-            np.negative(product, out=z[:, :, 1:, 0])
-            z[:, :, 0, 0] += (product * column).sum(axis=-1)
+            column = lower[:, :, 1:]
+            product = known * column if c == 1 else np.matmul(known, column)
+            np.negative(product, out=z[:, :, 1:])
+            product *= column
+            z[:, :, 0] += product.sum(axis=2)
     else:
-        x = np.linalg.inv(lower[:, :, :w] + np.eye(w))
-        middle = z[:, :, :w].copy()
+        x = _unit_inverse(lower[:, :, :w])
+        middle = z[:, :, :w]
         if c:
             under = lower[:, :, w:]
-            product = np.matmul(inverse.take(among, axis=1), under)
-            middle += np.matmul(under.swapaxes(-1, -2), product)
+            product = np.matmul(known, under)
+            middle = middle + np.matmul(under.swapaxes(-1, -2), product)
             np.negative(np.matmul(product, x), out=z[:, :, w:])
         z[:, :, :w] = np.matmul(np.matmul(x.swapaxes(-1, -2), middle), x)
     if shape.leaf:
         return
     start = shape.front + begin * rows**2
     square = fronts[start : start + count * rows**2].reshape(count, rows, rows)
-    places = np.arange(here.start, here.stop, dtype=np.int32).reshape(count, rows, w)
+    places = np.arange(at, end, dtype=np.int32).reshape(count, rows, w)
     square[:, :, :w] = places
-    square[:, :w, w:] = places[:, w:].swapaxes(1, 2)
-    square[:, w:, w:] = among
+    if c:
+        square[:, :w, w:] = places[:, w:].swapaxes(1, 2)
+        square[:, w:, w:] = among
+
+
+def _unit_inverse(lower: Complex) -> Complex:
+    """Inverses of unit triangular matrices (…, w, w), whose diagonals are not stored."""
+    w = lower.shape[-1]
+    x = np.eye(w) - lower
+    if w == 2:
+        return np.asarray(x)
+    if w == 3:
+        x[..., 2, 0] += lower[..., 2, 1] * lower[..., 1, 0]
+        return np.asarray(x)
+    return np.asarray(np.linalg.inv(lower + np.eye(w)))
