@@ -124,7 +124,7 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     stand_in = csc_array((dummy, row.astype(np.int32), start.astype(np.int32)), shape=(n, n))
     lu = splu(stand_in, permc_spec="MMD_AT_PLUS_A", **SETTINGS)
     place = np.asarray(lu.perm_c, np.int64)
-    waiting = _cancelled(row, column, value, n)
+    waiting = _cancelled(start, row, column, value)
     if waiting.any():
         place = _after_a_neighbour(place, waiting, row, column)
         turned = np.argsort(place)
@@ -142,15 +142,12 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     return Order(place, lower, entries, by_row.data)
 
 
-def _cancelled(row: Ints, column: Ints, value: Complex, n: int) -> Bools:
+def _cancelled(start: Ints, row: Ints, column: Ints, value: Complex) -> Bools:
     """Nodes whose own admittance is next to nothing in one sequence."""
-    own = row == column
-    out = np.zeros(n, bool)
-    for each in value:
-        size = np.abs(each)
-        across = np.bincount(column[~own], weights=size[~own], minlength=n)
-        out |= size[own] < CANCELLED * across
-    return out
+    size = np.abs(value)
+    own = size.take(np.flatnonzero(row == column), axis=1)
+    across = np.add.reduceat(size, start[:-1], axis=1) - own
+    return np.asarray((own < CANCELLED * across).any(axis=0))
 
 
 def _after_a_neighbour(place: Ints, waiting: Bools, row: Ints, column: Ints) -> Ints:

@@ -33,22 +33,31 @@ def selected_inverse(pattern: UnionPattern) -> Complex:
 
     Raises ``RuntimeError`` where a matrix cannot be factorised with its pivots on the diagonal.
     """
-    mirror = mirrored(pattern.start, pattern.row)
-    peeled = peel(pattern, mirror)
-    out = np.empty(pattern.value.shape, complex)
-    core = peeled.core
-    number = np.full(pattern.size, -1)
+    peeled = peel(pattern, mirrored(pattern.start, pattern.row))
+    core, n = peeled.core, pattern.size
+    number = np.full(n, -1)
     number[core] = np.arange(len(core))
-    kept = np.flatnonzero((number[pattern.row] >= 0) & (number[pattern.column] >= 0))
-    row, column = number[pattern.row[kept]], number[pattern.column[kept]]
-    value = pattern.value[:, kept]
-    value[:, row == column] = peeled.own[:, core]
-    out[:, kept] = _core(row, column, value, len(core))
+    row, column = number[pattern.row], number[pattern.column]
+    kept = np.flatnonzero((row >= 0) & (column >= 0))
+    row, column = row[kept], column[kept]
+    value = pattern.value.take(kept, axis=1)
+    own = np.flatnonzero(row == column)
+    value[:, own] = peeled.own[:, core]
+    inner = _core(row, column, value, len(core))
+    diagonal = np.empty((len(value), n), complex)
+    diagonal[:, core] = inner.take(own, axis=1)
+    across = []
     for turn in reversed(peeled.rounds):
-        above = out[:, pattern.diagonal[turn.parent]]
-        across = -above * turn.factor
-        out[:, turn.entry] = out[:, turn.mirror] = across
-        out[:, pattern.diagonal[turn.node]] = 1 / turn.pivot - across * turn.factor
+        z = -diagonal.take(turn.parent, axis=1) * turn.factor
+        diagonal[:, turn.node] = 1 / turn.pivot - z * turn.factor
+        across.append(z)
+    entry = [turn.entry for turn in reversed(peeled.rounds)]
+    mirror = [turn.mirror for turn in reversed(peeled.rounds)]
+    place = np.concatenate([kept, *entry, *mirror, pattern.diagonal])
+    out = np.empty(pattern.value.shape, complex)
+    for k, each in enumerate(out):
+        ends = [z[k] for z in across]
+        each[place] = np.concatenate([inner[k], *ends, *ends, diagonal[k]])
     return out
 
 
@@ -77,11 +86,8 @@ def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tu
     entries = elimination.entries
     factor = np.zeros((len(value), structure.size), complex)
     pivot = np.zeros_like(factor)
-    pattern = elimination.lower
-    strict = np.ones(len(pattern.indices), bool)
-    strict[pattern.indptr[:-1]] = False
-    below = np.flatnonzero(strict)
-    into = structure.entry[below]
+    last = elimination.lower
+    below, place = _places(last, structure)
     for k, each in enumerate(value):
         matrix = csc_array((each, entries.indices, entries.indptr), shape=entries.shape)
         lu = splu(matrix, permc_spec="NATURAL", **SETTINGS)
@@ -91,20 +97,23 @@ def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tu
         lower = lu.L
         if not lower.has_sorted_indices:
             lower.sort_indices()
-        if lower.nnz == pattern.nnz:
-            factor[k, into] = lower.data[below]
-        else:
-            _lay(factor[k], lower, structure)
+        if lower.nnz != last.nnz or not np.array_equal(lower.indices, last.indices):
+            below, place = _places(lower, structure)
+            last = lower
+        factor[k, place] = lower.data[below]
     return factor, pivot
 
 
-def _lay(into: Complex, lower: Any, structure: Supernodes) -> None:
-    """Values of ``lower``, in which an entry that is exactly zero is not stored, into the blocks."""
-    n = lower.shape[0]
-    key = np.repeat(np.arange(n), np.diff(lower.indptr)) * n + lower.indices
+def _places(lower: Any, structure: Supernodes) -> tuple[Ints, Ints]:
+    """Which values of ``lower`` are below its diagonal, and where they go; what is exactly zero lacks."""
     below = np.ones(lower.nnz, bool)
     below[lower.indptr[:-1]] = False
-    into[structure.entry[np.searchsorted(structure.key, key[below])]] = lower.data[below]
+    kept = np.flatnonzero(below)
+    if lower.nnz == len(structure.key):
+        return kept, structure.entry[kept]
+    n = lower.shape[0]
+    key = (np.repeat(np.arange(n), np.diff(lower.indptr)) * n + lower.indices)[kept]
+    return kept, structure.entry[np.searchsorted(structure.key, key)]
 
 
 def invert(structure: Supernodes, factor: Complex, pivot: Complex) -> Complex:
