@@ -31,7 +31,7 @@ _COMMA = re.compile(r"(?<=[0-9]),(?=[0-9])")
 _NOT_FINITE = re.compile(r"[+-]? ?(?:nan|inf|infinity|∞)\b", re.IGNORECASE)
 
 
-class Quantity(msgspec.Struct, frozen=True, array_like=True):
+class Quantity(msgspec.Struct, frozen=True, array_like=True, gc=False):
     """A value in SI units, its dimension, and the text it was read from.
 
     ``value`` is complex exactly when an imaginary part or an angle was written.

@@ -21,28 +21,37 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     An open end is a node of its own, numbered from ``common`` on: its capacitance stays on the line.
     A line out of service and earthed at both ends stands between earth and earth.
     """
-    at = c.case.buses
-    every: Mapping[str, Line] = {
+    kept: Mapping[str, Line] = {
         name: r
         for name, r in c.case.lines.items()
-        if r.earthed or (not r.out and r.from_ in c.index and r.to in c.index)
+        if r.earthed
+        or (
+            not r.out
+            and r.from_ in c.index
+            and r.to in c.index
+            and not (r.open and r.from_ in r.open and r.to in r.open)
+        )
     }
-    kept = {name: r for name, r in every.items() if r.earthed or not {r.from_, r.to} <= set(r.open)}
     rows = list(kept.values())
-    length = np.array([r.length.value.real if r.length else 1.0 for r in rows])
+    length = np.array([1.0 if r.length is None else r.length.value.real for r in rows], float)
     count = np.array([r.count for r in rows], np.int64)
     earthed = np.array([r.earthed for r in rows], bool)
-    ends = np.array([[c.index.get(r.from_, -1), c.index.get(r.to, -1)] for r in rows], np.int64)
-    ends = ends.reshape(-1, 2).T
-    closed = np.array([[r.from_ not in r.open, r.to not in r.open] for r in rows], bool)
-    closed = closed.reshape(-1, 2).T & ~earthed
+    index = c.index.get
+    ends = np.array([[index(r.from_, -1) for r in rows], [index(r.to, -1) for r in rows]], np.int64)
+    closed = np.tile(~earthed, (2, 1))
+    for k, r in enumerate(rows):
+        if r.open:
+            closed[:, k] &= (r.from_ not in r.open, r.to not in r.open)
 
     def total(quantities: list[Any]) -> Complex:
-        value = np.array([q.value if q else 0 for q in quantities], complex)
-        scaled = [bool(q) and q.dimension.endswith("/length") for q in quantities]
-        return np.where(scaled, value * length, value)
+        value = np.array([0 if q is None else q.value for q in quantities], complex)
+        dimensions = ["" if q is None else q.dimension for q in quantities]
+        along = {d: d.endswith("/length") for d in set(dimensions)}
+        return np.where([along[d] for d in dimensions], value * length, value)
 
-    z_base = np.array([at[r.from_].voltage.value.real ** 2 / c.power for r in rows], float)
+    z_base = c.nominal[ends[0]] ** 2 / c.power if len(c.nominal) else np.zeros(len(rows))
+    for k in np.flatnonzero(ends[0] < 0).tolist():
+        z_base[k] = c.case.buses[rows[k].from_].voltage.value.real ** 2 / c.power
     z1 = total([r.z1 for r in rows]) / z_base / count
     z0 = total([r.z0 for r in rows]) / z_base / count
     b1 = (c.omega * total([r.c1 for r in rows]) + total([r.b1 for r in rows])) * count * z_base
@@ -50,11 +59,11 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     for k, (name, r) in enumerate(kept.items()):
         if r.earthed:
             continue
-        stated1, stated0 = r.c1 or r.b1, r.c0 or r.b0
-        if stated0 and not stated1:
-            b1[k] = b0[k]
-            c.ledger.note("line", name, "c1 not stated, taken equal to c0")
-        elif not stated0:
+        if r.c0 is not None or r.b0 is not None:
+            if r.c1 is None and r.b1 is None:
+                b1[k] = b0[k]
+                c.ledger.note("line", name, "c1 not stated, taken equal to c0")
+        else:
             c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
     nodes = np.where(ends >= 0, c.node[ends], -1)
     open_ends = ~closed & ~earthed
