@@ -49,7 +49,7 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         along = {d: d.endswith("/length") for d in set(dimensions)}
         return np.where([along[d] for d in dimensions], value * length, value)
 
-    z_base = c.nominal[ends[0]] ** 2 / c.power if len(c.nominal) else np.zeros(len(rows))
+    z_base: Floats = c.nominal[ends[0]] ** 2 / c.power if len(c.nominal) else np.zeros(len(rows))
     for k in np.flatnonzero(ends[0] < 0).tolist():
         z_base[k] = c.case.buses[rows[k].from_].voltage.value.real ** 2 / c.power
     z1 = total([r.z1 for r in rows]) / z_base / count

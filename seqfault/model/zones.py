@@ -45,35 +45,31 @@ def displacements(
     ``zone`` (n,) labels buses joined by lines; unit ``names[k]`` joins zone ``hv[k]`` to ``lv[k]``,
     whose voltages lag by ``clock[k]`` twelfths of a turn.
     """
-    graph = nx.MultiGraph()
-    graph.add_nodes_from(range(int(zone.max()) + 1 if len(zone) else 0))
-    for k in range(len(names)):
-        graph.add_edge(int(hv[k]), int(lv[k]), key=k)
-    at: dict[int, int] = {}
+    zones = int(zone.max()) + 1 if len(zone) else 0
+    beyond: list[list[tuple[int, int, int]]] = [[] for _ in range(zones)]  # neighbour, unit, its clock
+    for k, (a, b, lag) in enumerate(zip(hv.tolist(), lv.tolist(), clock.tolist(), strict=True)):
+        beyond[a].append((b, k, lag))
+        beyond[b].append((a, k, -lag))
+    at: list[int | None] = [None] * zones
     above: dict[int, tuple[int, int]] = {}
-    used: set[int] = set()
-    for root in graph:
-        if root in at:
+    for root in range(zones):
+        if at[root] is not None:
             continue
         at[root] = 0
-        queue = [root]
-        for here in queue:
-            for _, there, k in graph.edges(here, keys=True):
-                if there not in at:
-                    step = int(clock[k]) if int(hv[k]) == here else -int(clock[k])
-                    at[there] = (at[here] + step) % 12
+        queue = [(root, 0)]
+        for here, turn in queue:
+            for there, k, step in beyond[here]:
+                if at[there] is None:
+                    at[there] = (turn + step) % 12
                     above[there] = (here, k)
-                    used.add(k)
-                    queue.append(there)
+                    queue.append((there, (turn + step) % 12))
+    turns = np.array(at, np.int64)
+    misfits = (turns[hv] + clock - turns[lv]) % 12 if zones else np.zeros(0, np.int64)
     complaints = []
-    for k, name in enumerate(names):
-        if k in used:
-            continue
-        misfit = (at[int(hv[k])] + int(clock[k]) - at[int(lv[k])]) % 12
-        if misfit:
-            others = _between(int(hv[k]), int(lv[k]), above)
-            complaints.append(_misfit([names[o] for o in others] + [name], misfit))
-    return np.array([at[z] for z in zone.tolist()], np.int64), complaints
+    for k in np.flatnonzero(misfits).tolist():
+        others = _between(int(hv[k]), int(lv[k]), above)
+        complaints.append(_misfit([names[o] for o in others] + [names[k]], int(misfits[k])))
+    return turns[zone], complaints
 
 
 def _between(a: int, b: int, above: dict[int, tuple[int, int]]) -> list[int]:

@@ -83,8 +83,8 @@ def contributions(network: Network) -> Contributions:
     return Contributions(
         state=model.state,
         start=start,
-        element=tuple(terminals.element[k] for k in shown.tolist()),
-        side=tuple(terminals.side[k] for k in shown.tolist()),
+        element=tuple(map(terminals.element.__getitem__, shown.tolist())),
+        side=tuple(map(terminals.side.__getitem__, shown.tolist())),
         bus=terminals.bus[shown],
         share=part,
         **out,
