@@ -24,9 +24,6 @@ import scipy.sparse
 import scipy.sparse.linalg
 
 import seqfault
-from seqfault.faults.kinds import fault_at
-from seqfault.faults.solve import solve_fault
-from seqfault.model.build import build_model
 from seqfault.networks.factors import SequenceFactor, SequenceNetworks
 
 ROOT = Path(__file__).parents[2]
@@ -85,11 +82,13 @@ class Turns:
     def once(self, turn: int) -> SequenceNetworks:
         """Every stage, from the file to a fault somewhere."""
         case = self.timed("read", lambda: seqfault.read_case(self.path))
-        model = self.timed("model", lambda: build_model(case))
-        networks = SequenceNetworks(model)
-        self.timed("networks", lambda: [networks[s] for s in range(3)])
-        fault = fault_at(model.buses[(turn * 7919) % len(model.buses)], "line-ground")
-        self.timed("fault", lambda: solve_fault(networks, fault))
+        network = self.timed("model", lambda: seqfault.Network(case))
+        networks = network.sequences
+        # Each is factorised when it is first solved.
+        first = np.zeros(1, np.int64)
+        self.timed("networks", lambda: [networks[s].columns(first) for s in range(3)])
+        bus = network.buses[(turn * 7919) % len(network.buses)]
+        self.timed("fault", lambda: network.fault(bus, "line-ground"))
         return networks
 
     def reference(self) -> None:
