@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import networkx as nx
@@ -11,6 +11,7 @@ import numpy as np
 from seqfault.case.records import Line, MutualCoupling, SeriesReactor
 from seqfault.equations.transformers import split_by_ratio
 from seqfault.errors import quoted
+from seqfault.model.columns import field, values
 from seqfault.model.context import Context
 from seqfault.model.elements import Complex, CoupledLines, Floats, Lines
 
@@ -33,37 +34,31 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         )
     }
     rows = list(kept.values())
-    length = np.array([1.0 if r.length is None else r.length.value.real for r in rows], float)
-    count = np.array([r.count for r in rows], np.int64)
-    earthed = np.array([r.earthed for r in rows], bool)
-    index = c.index.get
-    ends = np.array([[index(r.from_, -1) for r in rows], [index(r.to, -1) for r in rows]], np.int64)
+    length = values(field(rows, "length"), 1)[0].real
+    count = np.array(field(rows, "count"), np.int64)
+    earthed = np.array(field(rows, "earthed"), bool)
+    sides = field(rows, "from_"), field(rows, "to")
+    ends = np.array([[c.index.get(bus, -1) for bus in side] for side in sides], np.int64)
     closed = np.tile(~earthed, (2, 1))
-    for k, r in enumerate(rows):
-        if r.open:
-            closed[:, k] &= (r.from_ not in r.open, r.to not in r.open)
+    for k, is_open in enumerate(field(rows, "open")):
+        if is_open:
+            closed[:, k] &= [side[k] not in is_open for side in sides]
 
-    def total(quantities: list[Any]) -> Complex:
-        value = np.array([0 if q is None else q.value for q in quantities], complex)
-        dimensions = ["" if q is None else q.dimension for q in quantities]
-        along = {d: d.endswith("/length") for d in set(dimensions)}
-        return np.where([along[d] for d in dimensions], value * length, value)
-
-    z_base: Floats = c.nominal[ends[0]] ** 2 / c.power if len(c.nominal) else np.zeros(len(rows))
-    for k in np.flatnonzero(ends[0] < 0).tolist():
-        z_base[k] = c.case.buses[rows[k].from_].voltage.value.real ** 2 / c.power
-    z1 = total([r.z1 for r in rows]) / z_base / count
-    z0 = total([r.z0 for r in rows]) / z_base / count
-    b1 = (c.omega * total([r.c1 for r in rows]) + total([r.b1 for r in rows])) * count * z_base
-    b0 = (c.omega * total([r.c0 for r in rows]) + total([r.b0 for r in rows])) * count * z_base
+    z_base = np.zeros(len(rows))
+    inside = ends[0] >= 0
+    z_base[inside] = c.base_z[ends[0, inside]]
+    for k in np.flatnonzero(~inside).tolist():
+        z_base[k] = c.case.buses[sides[0][k]].voltage.value.real ** 2 / c.power
+    z1 = _total(rows, "z1", length) / z_base / count
+    z0 = _total(rows, "z0", length) / z_base / count
+    b1 = (c.omega * _total(rows, "c1", length) + _total(rows, "b1", length)) * count * z_base
+    b0 = (c.omega * _total(rows, "c0", length) + _total(rows, "b0", length)) * count * z_base
     for k, (name, r) in enumerate(kept.items()):
-        if r.earthed:
-            continue
         if r.c0 is not None or r.b0 is not None:
-            if r.c1 is None and r.b1 is None:
+            if r.c1 is None and r.b1 is None and not r.earthed:
                 b1[k] = b0[k]
                 c.ledger.note("line", name, "c1 not stated, taken equal to c0")
-        else:
+        elif not r.earthed:
             c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
     nodes = np.where(ends >= 0, c.node[ends], -1)
     open_ends = ~closed & ~earthed
@@ -85,6 +80,12 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         coupled=_coupled(c, kept, z0, z_base, length),
     )
     return whole, common + int(open_ends.sum())
+
+
+def _total(rows: Sequence[Line], name: str, length: Floats) -> Complex:
+    """The quantity ``name`` of whole lines (m,), 0 where it is not stated."""
+    value, along = values(field(rows, name))
+    return np.where(along, value * length, value)
 
 
 def _reactors(c: Context) -> Lines:

@@ -11,8 +11,9 @@ import numpy as np
 from seqfault.case.records import Transformer, Winding
 from seqfault.case.vector_group import parse_vector_group
 from seqfault.equations.transformers import delta_sense, two_winding_leakage
+from seqfault.model.columns import field
 from seqfault.model.context import Context
-from seqfault.model.elements import DELTA, STAR, ZIGZAG, Complex, Ints, WindingSets
+from seqfault.model.elements import DELTA, STAR, ZIGZAG, Ints, WindingSets
 from seqfault.model.impedances import (
     positive_leakage,
     two_winding_impedances,
@@ -119,41 +120,44 @@ def _set(
     joints, star_base, sign, sense = [], [], [], []
     leakage = np.zeros((3, m, w, w), complex)
     magnetised = np.zeros(m, bool)
-    bus = np.array([[c.index[v.bus] for v in _windings(r)] for r in records.values()], np.int64)
-    bus = bus.reshape(m, w)
-    rated = np.array([[v.voltage.value.real for v in _windings(r)] for r in records.values()], float)
-    rated = rated.reshape(m, w)
-    series = two_winding_impedances(list(records.values())) if w == 2 else None
-    zero_series = np.ones(m, complex)
-    whole: list[tuple[int, Complex]] = []  # zero-sequence matrices that are more than a series impedance
+    rows = list(records.values())
+    windings = [field(rows, side) for side in SIDES[:w]]
+    bus = np.array([[c.index[v.bus] for v in column] for column in windings], np.int64).T
+    rated = np.array([[v.voltage.value.real for v in column] for column in windings], float).T.copy()
+    buses = bus.tolist()
+    series = two_winding_impedances(rows) if w == 2 else None
+    impedances: list[complex | None] = [None] * m if series is None else series.tolist()
+    zero_series = [1 + 0j] * m
+    whole: list[int] = []  # units whose zero-sequence matrix is more than a series impedance
     for k, (name, r) in enumerate(records.items()):
         scheme = _scheme(r)
-        at = bus[k].tolist()
+        at, z1 = buses[k], impedances[k]
         here = [_joint(c, name, r, v, scheme, at, zigzags) for v in range(w)]
-        joints.append(here)
-        star_base.append([c.stars.base(star) if star >= 0 else 1.0 for _, star in here])
+        joints += here
+        star_base += [c.stars.base(star) if star >= 0 else 1.0 for _, star in here]
         sign.append(scheme.sign)
         sense.append(scheme.sense)
         if scheme.auto:
             c.metal.append((at[0], at[1]))
-        z1 = None if series is None else complex(series[k])
         if z1 is None:
             leakage[1:, k] = positive_leakage(c, name, r)
-        zero, magnetised[k] = zero_leakage(c, name, r, scheme.connections, z1)
+        zero, magnetic = zero_leakage(c, name, r, scheme.connections, z1)
         if isinstance(zero, complex):
             zero_series[k] = zero
         else:
-            whole.append((k, zero))
+            leakage[0, k], magnetised[k] = zero, magnetic
+            whole.append(k)
         if r.tap is not None:
             rated[k, 0] *= 1 + r.tap.value.real
-        _assume_core(c, name, r, [kind for kind, _ in here], bool(magnetised[k]))
+        if not magnetic and STAR in (kinds := [kind for kind, _ in here]) and DELTA not in kinds:
+            _assume_core(c, name, r)
     if series is not None:
         leakage[1:] = two_winding_leakage(series)
-        leakage[0] = two_winding_leakage(zero_series)
-    for k, zero in whole:
-        leakage[0, k] = zero
-    count = np.array([r.count for r in records.values()], np.int64)
-    rating = np.array([r.rating.value.real for r in records.values()], float)
+        plain = np.ones(m, bool)
+        plain[whole] = False
+        leakage[0, plain] = two_winding_leakage(np.array(zero_series)[plain])
+    count = np.array(field(rows, "count"), np.int64)
+    rating = np.array([r.rating.value.real for r in rows], float)
     leakage *= (rating * count / c.power)[:, None, None]
     kind, star = np.moveaxis(np.array(joints, np.int64).reshape(m, w, 2), 2, 0)
     return WindingSets(
@@ -218,9 +222,7 @@ def _polarity(
     return tuple(sign), tuple(sense)
 
 
-def _assume_core(c: Context, name: str, r: Transformer, kinds: list[int], magnetised: bool) -> None:
-    if magnetised or DELTA in kinds or STAR not in kinds:
-        return
+def _assume_core(c: Context, name: str, r: Transformer) -> None:
     what = "zero-sequence magnetising branch left out (taken as open)"
     if r.magnetic_circuit == "three-limb":
         what += "; a three-limb core really has one of finite impedance"
