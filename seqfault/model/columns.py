@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from operator import attrgetter
+from types import NoneType
 from typing import Any
 
 import numpy as np
 
 from seqfault.case.quantities import Quantity
-from seqfault.model.elements import Bools, Complex, Ints
+from seqfault.model.elements import Bools, Complex
 
 _value, _dimension = attrgetter("value"), attrgetter("dimension")
 
@@ -19,25 +20,20 @@ def field(records: Sequence[Any], name: str) -> list[Any]:
     return list(map(attrgetter(name), records))
 
 
-def stated(quantities: Sequence[Quantity | None]) -> tuple[Ints, list[Quantity]]:
-    """Places of the ``quantities`` that are stated, and these."""
-    if None not in quantities:
-        return np.arange(len(quantities)), list(quantities)  # type: ignore[arg-type]  # none is None
-    there = [k for k, q in enumerate(quantities) if q is not None]
-    return np.array(there, np.int64), [q for q in quantities if q is not None]
-
-
-def values(quantities: Sequence[Quantity | None], missing: complex = 0) -> tuple[Complex, Bools]:
-    """Values (m,) in SI units, ``missing`` where nothing is stated, and which are per length."""
-    m = len(quantities)
-    out, along = np.full(m, missing, complex), np.zeros(m, bool)
-    at, there = stated(quantities)
-    if there:
-        out[at] = list(map(_value, there))
-        dimensions = list(map(_dimension, there))
-        per_length = {name: name.endswith("/length") for name in set(dimensions)}
-        if all(per_length.values()):
-            along[at] = True
-        elif any(per_length.values()):
-            along[at] = list(map(per_length.__getitem__, dimensions))
-    return out, along
+def values(quantities: Sequence[Quantity | None]) -> tuple[Complex, Bools, Bools]:
+    """Values (m,) in SI units, 0 where nothing is stated; which are per length; which are stated."""
+    m, kinds = len(quantities), set(map(type, quantities))
+    if kinds <= {NoneType}:
+        return np.zeros(m, complex), np.zeros(m, bool), np.zeros(m, bool)
+    if NoneType in kinds:
+        value = [0 if q is None else q.value for q in quantities]
+        dimension = ["" if q is None else q.dimension for q in quantities]
+        stated = np.array([q is not None for q in quantities], bool)
+    else:
+        value, dimension = list(map(_value, quantities)), list(map(_dimension, quantities))
+        stated = np.ones(m, bool)
+    per_length = {name: name.endswith("/length") for name in set(dimension)}
+    along = stated  # most often all or none of those stated are
+    if not all(per_length[name] for name in per_length if name):
+        along = np.array(list(map(per_length.__getitem__, dimension)), bool)
+    return np.array(value, complex), along, stated

@@ -13,7 +13,7 @@ from seqfault.equations.transformers import split_by_ratio
 from seqfault.errors import quoted
 from seqfault.model.columns import field, values
 from seqfault.model.context import Context
-from seqfault.model.elements import Complex, CoupledLines, Floats, Lines
+from seqfault.model.elements import Bools, Complex, CoupledLines, Floats, Lines
 
 
 def lines(c: Context, common: int) -> tuple[Lines, int]:
@@ -34,7 +34,8 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         )
     }
     rows = list(kept.values())
-    length = values(field(rows, "length"), 1)[0].real
+    measured, _, stated = values(field(rows, "length"))
+    length: Floats = np.where(stated, measured.real, 1.0)
     count = np.array(field(rows, "count"), np.int64)
     earthed = np.array(field(rows, "earthed"), bool)
     sides = field(rows, "from_"), field(rows, "to")
@@ -49,17 +50,20 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     z_base[inside] = c.base_z[ends[0, inside]]
     for k in np.flatnonzero(~inside).tolist():
         z_base[k] = c.case.buses[sides[0][k]].voltage.value.real ** 2 / c.power
-    z1 = _total(rows, "z1", length) / z_base / count
-    z0 = _total(rows, "z0", length) / z_base / count
-    b1 = (c.omega * _total(rows, "c1", length) + _total(rows, "b1", length)) * count * z_base
-    b0 = (c.omega * _total(rows, "c0", length) + _total(rows, "b0", length)) * count * z_base
-    for k, (name, r) in enumerate(kept.items()):
-        if r.c0 is not None or r.b0 is not None:
-            if r.c1 is None and r.b1 is None and not r.earthed:
-                b1[k] = b0[k]
-                c.ledger.note("line", name, "c1 not stated, taken equal to c0")
-        elif not r.earthed:
-            c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
+    z1 = _total(rows, "z1", length)[0] / z_base / count
+    z0 = _total(rows, "z0", length)[0] / z_base / count
+    (c1, has_c1), (direct1, has_b1) = _total(rows, "c1", length), _total(rows, "b1", length)
+    (c0, has_c0), (direct0, has_b0) = _total(rows, "c0", length), _total(rows, "b0", length)
+    b1 = (c.omega * c1 + direct1) * count * z_base
+    b0 = (c.omega * c0 + direct0) * count * z_base
+    stated1, stated0 = has_c1 | has_b1, has_c0 | has_b0
+    names = tuple(kept)
+    for k in np.flatnonzero(~(stated1 & stated0) & ~earthed).tolist():
+        if not stated0[k]:
+            c.ledger.note("line", names[k], "c0 not stated, taken as 0: no charging current to earth")
+        else:
+            b1[k] = b0[k]
+            c.ledger.note("line", names[k], "c1 not stated, taken equal to c0")
     nodes = np.where(ends >= 0, c.node[ends], -1)
     open_ends = ~closed & ~earthed
     nodes[open_ends] = common + np.arange(int(open_ends.sum()))
@@ -67,7 +71,7 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     reactors = _reactors(c)
     m = len(reactors.names)
     whole = Lines(
-        names=tuple(kept) + reactors.names,
+        names=names + reactors.names,
         kinds=("line",) * len(kept) + reactors.kinds,
         ends=np.concatenate([ends, reactors.ends], axis=1),
         nodes=np.concatenate([nodes, reactors.nodes], axis=1),
@@ -82,10 +86,10 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     return whole, common + int(open_ends.sum())
 
 
-def _total(rows: Sequence[Line], name: str, length: Floats) -> Complex:
-    """The quantity ``name`` of whole lines (m,), 0 where it is not stated."""
-    value, along = values(field(rows, name))
-    return np.where(along, value * length, value)
+def _total(rows: Sequence[Line], name: str, length: Floats) -> tuple[Complex, Bools]:
+    """The quantity ``name`` of whole lines (m,), 0 where it is not stated, and where it is stated."""
+    value, along, stated = values(field(rows, name))
+    return np.where(along, value * length, value), stated
 
 
 def _reactors(c: Context) -> Lines:
@@ -137,6 +141,8 @@ def _coupled(
     Between lines of different voltages the base impedance is U_a U_b/S. Source: P. M. Anderson,
     "Analysis of Faulted Power Systems", ch. 5 (mutual impedance of parallel lines).
     """
+    if not c.case.mutual_couplings:
+        return ()
     position = {name: k for k, name in enumerate(kept)}
     pairs: list[tuple[int, int, complex]] = []
     for coupling in c.case.mutual_couplings.values():

@@ -10,7 +10,7 @@ import numpy as np
 from seqfault.errors import quoted
 from seqfault.model.elements import Bools, Ints
 
-LARGE = 2000
+LARGE = 300
 
 
 def components(n: int, first: Ints, second: Ints) -> Ints:

@@ -56,13 +56,13 @@ def survey_of(networks: Sequence[SequenceFactor], size: int) -> Survey:
             inverse = None
     if inverse is None:
         inverse = np.zeros(pattern.value.shape, complex)
-        sound = [False] * 3
+        worst = np.full(3, np.inf)
     else:
-        sound = [bool(error <= TOLERANCE) for error in _errors(pattern, inverse, networks)]
+        worst = np.array([_error(pattern, s, inverse[s], network) for s, network in enumerate(networks)])
     for s, network in enumerate(networks):
-        if not sound[s]:
+        if not worst[s] <= TOLERANCE:
             inverse[s] = _by_columns(network, pattern)
-    worst = _errors(pattern, inverse, networks)
+            worst[s] = _error(pattern, s, inverse[s], network)
     if not (worst <= TOLERANCE).all():
         s = int(np.argmax(~(worst <= TOLERANCE)))
         raise CheckError(
@@ -84,19 +84,16 @@ def _held(network: SequenceFactor, size: int) -> Bools:
     return held
 
 
-def _errors(pattern: UnionPattern, inverse: Complex, networks: Sequence[SequenceFactor]) -> Floats:
-    """Largest error of any column, a sequence each; nan where something is not finite."""
-    out = np.zeros(len(networks))
-    for s, network in enumerate(networks):
-        product = pattern.value[s] * inverse[s]
-        left = np.abs(np.add.reduceat(product, pattern.start[:-1]) - 1)
-        own = np.abs(inverse[s, pattern.diagonal])
-        terms = np.add.reduceat(np.abs(pattern.value[s]), pattern.start[:-1]) * own
-        terms = np.maximum(terms, np.add.reduceat(np.abs(product), pattern.start[:-1]))
-        free = ~_held(network, pattern.size)
-        with np.errstate(invalid="ignore", divide="ignore"):
-            out[s] = (left / terms)[free].max(initial=0.0)
-    return out
+def _error(pattern: UnionPattern, s: int, inverse: Complex, network: SequenceFactor) -> float:
+    """Largest error of any column of the inverse of sequence ``s``; nan where something is not finite."""
+    start, value = pattern.start[:-1], pattern.value[s]
+    product = value * inverse
+    left = np.abs(np.add.reduceat(product, start) - 1)
+    terms = np.add.reduceat(np.abs(value), start) * np.abs(inverse[pattern.diagonal])
+    terms = np.maximum(terms, np.add.reduceat(np.abs(product), start))
+    free = ~_held(network, pattern.size)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return float((left / terms)[free].max(initial=0.0))
 
 
 def _by_columns(network: SequenceFactor, pattern: UnionPattern) -> Complex:

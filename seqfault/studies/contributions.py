@@ -51,8 +51,8 @@ def contributions(network: Network) -> Contributions:
     rows = len(terminals.shown)
     used = np.flatnonzero((terminals.row >= 0) & (terminals.node >= 0))
     share = np.zeros((3, rows), complex)
-    for s in range(3):
-        np.add.at(share[s], terminals.row[used], terminal_shares(model, survey, s)[used])
+    for s, of in enumerate(terminal_shares(model, survey)):
+        np.add.at(share[s], terminals.row[used], of[used])
     # Rows by node, then a slice a bus.
     kept = np.flatnonzero(terminals.closed[terminals.shown])
     node = terminals.node[terminals.shown[kept]]
