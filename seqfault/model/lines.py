@@ -39,11 +39,10 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     count = np.array(field(rows, "count"), np.int64)
     earthed = np.array(field(rows, "earthed"), bool)
     sides = field(rows, "from_"), field(rows, "to")
-    ends = np.array([[c.index.get(bus, -1) for bus in side] for side in sides], np.int64)
+    ends = np.array([np.array([c.index.get(bus, -1) for bus in side], np.int64) for side in sides])
     closed = np.tile(~earthed, (2, 1))
-    for k, is_open in enumerate(field(rows, "open")):
-        if is_open:
-            closed[:, k] &= [side[k] not in is_open for side in sides]
+    for k in [k for k, buses in enumerate(field(rows, "open")) if buses]:
+        closed[:, k] &= [side[k] not in rows[k].open for side in sides]
 
     z_base = np.zeros(len(rows))
     inside = ends[0] >= 0

@@ -117,7 +117,8 @@ def _set(
     c: Context, records: Mapping[str, Transformer], w: int, zigzags: list[ZigzagWinding]
 ) -> WindingSets:
     m = len(records)
-    joints, star_base, sign, sense = [], [], [], []
+    kinds, stars = [], []  # winding by winding: small lists of lists would busy the garbage collector
+    star_base, sign, sense = [], [], []
     leakage = np.zeros((3, m, w, w), complex)
     magnetised = np.zeros(m, bool)
     rows = list(records.values())
@@ -132,9 +133,11 @@ def _set(
     for k, (name, r) in enumerate(records.items()):
         scheme = _scheme(r)
         at, z1 = buses[k], impedances[k]
-        here = [_joint(c, name, r, v, scheme, at, zigzags) for v in range(w)]
-        joints += here
-        star_base += [c.stars.base(star) if star >= 0 else 1.0 for _, star in here]
+        for v in range(w):
+            joint, star = _joint(c, name, r, v, scheme, at, zigzags)
+            kinds.append(joint)
+            stars.append(star)
+            star_base.append(c.stars.base(star) if star >= 0 else 1.0)
         sign.append(scheme.sign)
         sense.append(scheme.sense)
         if scheme.auto:
@@ -149,7 +152,7 @@ def _set(
             whole.append(k)
         if r.tap is not None:
             rated[k, 0] *= 1 + r.tap.value.real
-        if not magnetic and STAR in (kinds := [kind for kind, _ in here]) and DELTA not in kinds:
+        if not magnetic and STAR in kinds[-w:] and DELTA not in kinds[-w:]:
             _assume_core(c, name, r)
     if series is not None:
         leakage[1:] = two_winding_leakage(series)
@@ -159,7 +162,6 @@ def _set(
     count = np.array(field(rows, "count"), np.int64)
     rating = np.array([r.rating.value.real for r in rows], float)
     leakage *= (rating * count / c.power)[:, None, None]
-    kind, star = np.moveaxis(np.array(joints, np.int64).reshape(m, w, 2), 2, 0)
     return WindingSets(
         kind_of_record="transformer",
         names=tuple(records),
@@ -167,8 +169,8 @@ def _set(
         leakage=leakage,
         bus=bus,
         node=c.node[bus],
-        kind=kind,
-        star=star,
+        kind=np.array(kinds, np.int64).reshape(m, w),
+        star=np.array(stars, np.int64).reshape(m, w),
         ratio=c.nominal[bus] / rated,
         star_ratio=np.array(star_base, float).reshape(m, w) / rated,
         sign=np.array(sign, float).reshape(m, w),

@@ -46,41 +46,41 @@ def displacements(
     whose voltages lag by ``clock[k]`` twelfths of a turn.
     """
     zones = int(zone.max()) + 1 if len(zone) else 0
-    beyond: list[list[tuple[int, int, int]]] = [[] for _ in range(zones)]  # neighbour, unit, its clock
-    for k, (a, b, lag) in enumerate(zip(hv.tolist(), lv.tolist(), clock.tolist(), strict=True)):
-        beyond[a].append((b, k, lag))
-        beyond[b].append((a, k, -lag))
-    at: list[int | None] = [None] * zones
-    above: dict[int, tuple[int, int]] = {}
+    near, far = np.stack([hv, lv], axis=1).ravel(), np.stack([lv, hv], axis=1).ravel()
+    order = np.argsort(near, kind="stable")
+    start = np.searchsorted(near[order], np.arange(zones + 1)).tolist()
+    beyond, unit = far[order].tolist(), (order // 2).tolist()
+    step = np.stack([clock, -clock], axis=1).ravel()[order].tolist()
+    at, from_, by = [-1] * zones, [-1] * zones, [-1] * zones  # clock, and the way there
     for root in range(zones):
-        if at[root] is not None:
+        if at[root] >= 0:
             continue
         at[root] = 0
-        queue = [(root, 0)]
-        for here, turn in queue:
-            for there, k, step in beyond[here]:
-                if at[there] is None:
-                    at[there] = (turn + step) % 12
-                    above[there] = (here, k)
-                    queue.append((there, (turn + step) % 12))
+        queue = [root]
+        for here in queue:
+            for k in range(start[here], start[here + 1]):
+                there = beyond[k]
+                if at[there] < 0:
+                    at[there] = (at[here] + step[k]) % 12
+                    from_[there], by[there] = here, unit[k]
+                    queue.append(there)
     turns = np.array(at, np.int64)
     misfits = (turns[hv] + clock - turns[lv]) % 12 if zones else np.zeros(0, np.int64)
     complaints = []
     for k in np.flatnonzero(misfits).tolist():
-        others = _between(int(hv[k]), int(lv[k]), above)
+        others = _between(int(hv[k]), int(lv[k]), from_, by)
         complaints.append(_misfit([names[o] for o in others] + [names[k]], int(misfits[k])))
     return turns[zone], complaints
 
 
-def _between(a: int, b: int, above: dict[int, tuple[int, int]]) -> list[int]:
-    """Units on the way from zone ``a`` to zone ``b`` in the walked tree."""
+def _between(a: int, b: int, from_: list[int], by: list[int]) -> list[int]:
+    """Units on the way from zone ``a`` to zone ``b`` in the tree walked ``from_`` zones ``by`` units."""
 
     def up(zone: int) -> list[tuple[int, int]]:
         path = []
-        while zone in above:
-            parent, unit = above[zone]
-            path.append((parent, unit))
-            zone = parent
+        while from_[zone] >= 0:
+            path.append((from_[zone], by[zone]))
+            zone = from_[zone]
         return path
 
     left, right = up(a), up(b)

@@ -48,8 +48,8 @@ class Supernodes(msgspec.Struct, frozen=True, eq=False):
     """Where everything lies. ``size`` values in all, ``front_size`` places in fronts.
 
     ``own`` (n,) place of the diagonal value of a column, ``entry`` (e,) of each entry of L (the
-    diagonal too). ``position`` and ``base`` one a row below: its row in the parent's front, and where
-    that row of the front begins. ``key`` (e,) column · n + row, ascending.
+    diagonal too). ``position`` and ``base`` one a row below, of 32 bits: its row in the parent's front,
+    and where that row of the front begins. ``key`` (e,) column · n + row, ascending.
     """
 
     shapes: tuple[Shape, ...]
@@ -57,8 +57,8 @@ class Supernodes(msgspec.Struct, frozen=True, eq=False):
     front_size: int
     own: Ints
     entry: Ints
-    position: Ints
-    base: Ints
+    position: Any
+    base: Any
     key: Ints
 
     def find(self, a: Ints, b: Ints) -> Ints:
