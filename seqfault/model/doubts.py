@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
+import msgspec
 import numpy as np
 
 from seqfault.case.records import Case
@@ -46,9 +47,19 @@ def _carrying(sets: WindingSets) -> Bools:
     return np.asarray((single | (others > 0) | sets.magnetised)[:, None])
 
 
-def _earthing(model: Model) -> Mapping[int, list[tuple[str, complex]]]:
-    """Ways to earth of each metallically joined network: name and ohm; infeeds count as solid."""
-    out: dict[int, list[tuple[str, complex]]] = {}
+class _Earthing(msgspec.Struct, frozen=True):
+    """Networks joined to earth by label: ``solid`` ones, infeeds count as such; and of every one the ways
+    that have an ``impedance``: name and ohm.
+    """
+
+    solid: set[int]
+    impedance: dict[int, list[tuple[str, complex]] | None]
+
+
+def _earthing(model: Model) -> _Earthing:
+    """Ways to earth of each metallically joined network."""
+    impeded: dict[int, list[tuple[str, complex]] | None] = {}
+    solid: set[int] = set()
     stars = model.stars
     used = np.zeros(len(stars.names), bool)
     for sets in model.winding_sets:
@@ -56,12 +67,19 @@ def _earthing(model: Model) -> Mapping[int, list[tuple[str, complex]]]:
     at = np.flatnonzero(used & np.isfinite(stars.impedance))
     labels = model.galvanic[model.node[stars.bus[at]]].tolist()
     for k, z, label in zip(at.tolist(), stars.impedance[at].tolist(), labels, strict=True):
-        out.setdefault(label, []).append((stars.names[k], z))
+        ways = impeded.setdefault(label)
+        if z == 0:
+            solid.add(label)
+        elif ways is None:
+            impeded[label] = [(stars.names[k], z)]
+        else:
+            ways.append((stars.names[k], z))
     sources = model.sources
-    at = np.flatnonzero(sources.admittance[0] != 0)
-    for k, label in zip(at.tolist(), model.galvanic[sources.node[at]].tolist(), strict=True):
-        out.setdefault(label, []).append((sources.names[k], 0j))
-    return out
+    fed = model.galvanic[sources.node[sources.admittance[0] != 0]].tolist()
+    solid.update(fed)
+    for label in fed:
+        impeded.setdefault(label)
+    return _Earthing(solid, impeded)
 
 
 def idle_star_points(model: Model) -> dict[int, list[str]]:
@@ -80,10 +98,10 @@ def idle_star_points(model: Model) -> dict[int, list[str]]:
     return out
 
 
-def _idle_star_points(model: Model, earthed: Mapping[int, list[tuple[str, complex]]]) -> Iterator[str]:
+def _idle_star_points(model: Model, earthed: _Earthing) -> Iterator[str]:
     live = set(model.galvanic[model.node][model.live].tolist())
     for label, names in idle_star_points(model).items():
-        if earthed.get(label) or label not in live:
+        if label in earthed.impedance or label not in live:
             continue
         shown = ", ".join(quoted(name) for name in dict.fromkeys(names))
         buses = [model.buses[k] for k in np.flatnonzero(model.galvanic[model.node] == label)]
@@ -122,12 +140,10 @@ def _small_resistors(model: Model, case: Case, charging: Mapping[int, float]) ->
             )
 
 
-def _parallel_neutrals(
-    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
-) -> Iterator[str]:
+def _parallel_neutrals(model: Model, case: Case, earthed: _Earthing) -> Iterator[str]:
     voltage = _phase_voltages(model)
-    for label, ways in earthed.items():
-        impeded = [(n, z) for n, z in ways if z != 0 and case.neutrals[n].kind != ARC_SUPPRESSION]
+    for label, ways in earthed.impedance.items():
+        impeded = [(n, z) for n, z in ways or () if case.neutrals[n].kind != ARC_SUPPRESSION]
         if len(impeded) < 2:
             continue
         v = voltage[label]
@@ -142,7 +158,7 @@ def _parallel_neutrals(
 
 def _unearthed(
     model: Model,
-    earthed: Mapping[int, list[tuple[str, complex]]],
+    earthed: _Earthing,
     charging: Mapping[int, float],
 ) -> Iterator[str]:
     """A live network of deltas only; bare transformer terminals and infeeds stated open are meant."""
@@ -153,7 +169,7 @@ def _unearthed(
     wired -= set(label_of[sources.node[~motors]].tolist())
     idle = idle_star_points(model)
     for label in dict.fromkeys(label_of[model.node][model.live].tolist()):
-        if earthed.get(label) or charging.get(label, 0.0) > 0 or label not in wired:
+        if label in earthed.impedance or charging.get(label, 0.0) > 0 or label not in wired:
             continue
         if label in idle:
             continue  # told with its star point
@@ -168,21 +184,21 @@ def _unearthed(
 
 def unearthed_buses(model: Model) -> tuple[str, ...]:
     """Live buses whose network no star point, earthing transformer or infeed joins to earth."""
-    earthed = _earthing(model)
+    earthed = _earthing(model).impedance
     label = model.galvanic[model.node]
     return tuple(
-        name for k, name in enumerate(model.buses) if model.live[k] and not earthed.get(int(label[k]))
+        name for k, name in enumerate(model.buses) if model.live[k] and int(label[k]) not in earthed
     )
 
 
 def lost_earth(model: Model, bare: tuple[str, ...], base: Model) -> tuple[str, ...]:
     """Networks of the ``bare`` buses that are earthed in the ``base`` case and not in this state."""
-    earthed = _earthing(base)
+    earthed = _earthing(base).impedance
     charging = earth_susceptance(model, model.galvanic)
     lost: dict[int, list[str]] = {}
     for name in bare:
         k = base.index.get(name)
-        if k is not None and base.live[k] and earthed.get(int(base.galvanic[base.node[k]])):
+        if k is not None and base.live[k] and int(base.galvanic[base.node[k]]) in earthed:
             label = int(model.galvanic[model.node[model.index[name]]])
             lost.setdefault(label, []).append(name)
     out, voltage = [], _phase_voltages(model)
@@ -241,15 +257,12 @@ def _matters(model: Model) -> set[str]:
     return out
 
 
-def _missing_capacitance(
-    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
-) -> Iterator[str]:
+def _missing_capacitance(model: Model, case: Case, earthed: _Earthing) -> Iterator[str]:
     lines = model.lines
     bare: dict[int, list[str]] = {}
-    solid = {label for label, ways in earthed.items() if any(z == 0 for _, z in ways)}
     at = np.flatnonzero(~lines.earthed & (lines.shunt[0] == 0))
     for k, label in zip(at.tolist(), model.galvanic[lines.nodes[0, at]].tolist(), strict=True):
-        if label not in solid and lines.names[k] in case.lines:
+        if label not in earthed.solid and lines.names[k] in case.lines:
             bare.setdefault(label, []).append(lines.names[k])
     voltage = _phase_voltages(model)
     for label, names in bare.items():

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+import msgspec
 import networkx as nx
 import numpy as np
 
@@ -13,7 +14,10 @@ from seqfault.equations.transformers import split_by_ratio
 from seqfault.errors import quoted
 from seqfault.model.columns import field, values
 from seqfault.model.context import Context
-from seqfault.model.elements import Bools, Complex, CoupledLines, Floats, Lines
+from seqfault.model.elements import Bools, Complex, CoupledLines, Floats, Ints, Lines
+
+BLOCK = 4096
+"""Records read at once: they stay in the processor's cache from field to field."""
 
 
 def lines(c: Context, common: int) -> tuple[Lines, int]:
@@ -22,41 +26,32 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     An open end is a node of its own, numbered from ``common`` on: its capacitance stays on the line.
     A line out of service and earthed at both ends stands between earth and earth.
     """
-    kept: Mapping[str, Line] = {
-        name: r
-        for name, r in c.case.lines.items()
-        if r.earthed
-        or (
-            not r.out
-            and r.from_ in c.index
-            and r.to in c.index
-            and not (r.open and r.from_ in r.open and r.to in r.open)
-        )
-    }
-    rows = list(kept.values())
-    measured, _, stated = values(field(rows, "length"))
-    length: Floats = np.where(stated, measured.real, 1.0)
-    count = np.array(field(rows, "count"), np.int64)
-    earthed = np.array(field(rows, "earthed"), bool)
-    sides = field(rows, "from_"), field(rows, "to")
-    ends = np.array([np.array([c.index.get(bus, -1) for bus in side], np.int64) for side in sides])
+    names, rows, near, far = [], [], [], []
+    index = c.index.get
+    for name, r in c.case.lines.items():
+        i, j = index(r.from_, -1), index(r.to, -1)
+        standing = not r.out and i >= 0 and j >= 0
+        if r.earthed or (standing and not (r.open and r.from_ in r.open and r.to in r.open)):
+            names.append(name)
+            rows.append(r)
+            near.append(i)
+            far.append(j)
+    ends = np.array([np.array(near, np.int64), np.array(far, np.int64)])
+    t = _totals(rows)
+    earthed, count = t.earthed, t.count
     closed = np.tile(~earthed, (2, 1))
-    for k in [k for k, buses in enumerate(field(rows, "open")) if buses]:
-        closed[:, k] &= [side[k] not in rows[k].open for side in sides]
+    for k in np.flatnonzero(t.opened).tolist():
+        closed[:, k] &= [rows[k].from_ not in rows[k].open, rows[k].to not in rows[k].open]
 
     z_base = np.zeros(len(rows))
     inside = ends[0] >= 0
     z_base[inside] = c.base_z[ends[0, inside]]
     for k in np.flatnonzero(~inside).tolist():
-        z_base[k] = c.case.buses[sides[0][k]].voltage.value.real ** 2 / c.power
-    z1 = _total(rows, "z1", length)[0] / z_base / count
-    z0 = _total(rows, "z0", length)[0] / z_base / count
-    (c1, has_c1), (direct1, has_b1) = _total(rows, "c1", length), _total(rows, "b1", length)
-    (c0, has_c0), (direct0, has_b0) = _total(rows, "c0", length), _total(rows, "b0", length)
-    b1 = (c.omega * c1 + direct1) * count * z_base
-    b0 = (c.omega * c0 + direct0) * count * z_base
-    stated1, stated0 = has_c1 | has_b1, has_c0 | has_b0
-    names = tuple(kept)
+        z_base[k] = c.case.buses[rows[k].from_].voltage.value.real ** 2 / c.power
+    z1, z0 = t.z1 / z_base / count, t.z0 / z_base / count
+    b1 = (c.omega * t.c1 + t.b1) * count * z_base
+    b0 = (c.omega * t.c0 + t.b0) * count * z_base
+    stated1, stated0 = t.has_c1 | t.has_b1, t.has_c0 | t.has_b0
     for k in np.flatnonzero(~(stated1 & stated0) & ~earthed).tolist():
         if not stated0[k]:
             c.ledger.note("line", names[k], "c0 not stated, taken as 0: no charging current to earth")
@@ -70,8 +65,8 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     reactors = _reactors(c)
     m = len(reactors.names)
     whole = Lines(
-        names=names + reactors.names,
-        kinds=("line",) * len(kept) + reactors.kinds,
+        names=tuple(names) + reactors.names,
+        kinds=("line",) * len(rows) + reactors.kinds,
         ends=np.concatenate([ends, reactors.ends], axis=1),
         nodes=np.concatenate([nodes, reactors.nodes], axis=1),
         closed=np.concatenate([closed, reactors.closed], axis=1),
@@ -80,15 +75,47 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         shunt=np.concatenate([0.5j * np.stack([b0, b1, b1]), reactors.shunt], axis=1),
         count=np.concatenate([count, reactors.count]),
         voltage=np.concatenate([np.sqrt(z_base * c.power), reactors.voltage]),
-        coupled=_coupled(c, kept, z0, z_base, length),
+        coupled=_coupled(c, names, z0, z_base, t.length),
     )
     return whole, common + int(open_ends.sum())
 
 
-def _total(rows: Sequence[Line], name: str, length: Floats) -> tuple[Complex, Bools]:
-    """The quantity ``name`` of whole lines (m,), 0 where it is not stated, and where it is stated."""
-    value, along, stated = values(field(rows, name))
-    return np.where(along, value * length, value), stated
+class _Totals(msgspec.Struct, frozen=True, eq=False):
+    """What records of lines (m,) state, of their whole length, 0 where nothing is stated."""
+
+    earthed: Bools
+    opened: Bools
+    count: Ints
+    length: Floats
+    z1: Complex
+    z0: Complex
+    c1: Complex
+    has_c1: Bools
+    b1: Complex
+    has_b1: Bools
+    c0: Complex
+    has_c0: Bools
+    b0: Complex
+    has_b0: Bools
+
+
+def _totals(rows: Sequence[Line]) -> _Totals:
+    blocks = [_block(rows[k : k + BLOCK]) for k in range(0, max(len(rows), 1), BLOCK)]
+    return _Totals(*map(np.concatenate, zip(*blocks, strict=True)))
+
+
+def _block(rows: Sequence[Line]) -> list[Any]:
+    measured, _, stated = values(field(rows, "length"))
+    length = np.where(stated, measured.real, 1.0)
+    opened = np.array([bool(buses) for buses in field(rows, "open")], bool)
+    out: list[Any] = [np.array(field(rows, "earthed"), bool), opened]
+    out += [np.array(field(rows, "count"), np.int64), length]
+    for name in ("z1", "z0", "c1", "b1", "c0", "b0"):
+        value, along, stated = values(field(rows, name))
+        out.append(np.where(along, value * length, value))
+        if name[0] != "z":
+            out.append(stated)
+    return out
 
 
 def _reactors(c: Context) -> Lines:
@@ -133,7 +160,7 @@ def _reactors(c: Context) -> Lines:
 
 
 def _coupled(
-    c: Context, kept: Mapping[str, Line], z0: Complex, z_base: Floats, length: Floats
+    c: Context, names: Sequence[str], z0: Complex, z_base: Floats, length: Floats
 ) -> tuple[CoupledLines, ...]:
     """Groups of lines that couplings join, the series block of each inverted once.
 
@@ -142,7 +169,7 @@ def _coupled(
     """
     if not c.case.mutual_couplings:
         return ()
-    position = {name: k for k, name in enumerate(kept)}
+    position = {name: k for k, name in enumerate(names)}
     pairs: list[tuple[int, int, complex]] = []
     for coupling in c.case.mutual_couplings.values():
         if not coupling.out:

@@ -137,7 +137,9 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     counts = count[turned]
     begin = np.concatenate([[0], np.cumsum(counts)])
     number = np.repeat(start[turned] - begin[:-1], counts) + np.arange(len(row))
-    by_row = csc_array((number.astype(np.int32), place[row[number]].astype(np.int32), begin), (n, n)).tocsr()
+    by_row = csc_array(
+        (number.astype(np.int32), place[row[number]].astype(np.int32), begin), (n, n)
+    ).tocsr()
     entries = by_row.tocsc()  # turned twice, its rows ascend
     return Order(place, lower, entries, by_row.data)
 
