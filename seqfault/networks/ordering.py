@@ -102,7 +102,7 @@ def peel(pattern: UnionPattern, mirror: Ints) -> Peeled:
 
 
 class Order(msgspec.Struct, frozen=True, eq=False):
-    """``place`` (n,) of each node in the elimination; ``lower`` the CSC pattern of L, rows ascending;
+    """``place`` (n,) of each node in the elimination; ``lower`` the pattern of L (``sorted_pattern``);
     ``entries`` the matrix in that order, CSC with the numbers of its entries, and ``mirror`` (e,) that of
     the mirror of each of them.
     """
@@ -130,9 +130,7 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
         turned = np.argsort(place)
         lu = splu(csc_array(stand_in[turned][:, turned]), permc_spec="NATURAL", **SETTINGS)
         place = np.asarray(lu.perm_c, np.int64)[place]  # it still sorts children before their parents
-    lower = lu.L
-    if not lower.has_sorted_indices:
-        lower.sort_indices()
+    lower = sorted_pattern(lu.L)
     turned = np.argsort(place)
     counts = count[turned]
     begin = np.concatenate([[0], np.cumsum(counts)])
@@ -142,6 +140,16 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     ).tocsr()
     entries = by_row.tocsc()  # turned twice, its rows ascend
     return Order(place, lower, entries, by_row.data)
+
+
+def sorted_pattern(matrix: Any) -> Any:
+    """The CSC pattern of ``matrix``, rows ascending; its data say which value of ``matrix`` each one is."""
+    from scipy.sparse import csc_array
+
+    number = np.arange(matrix.nnz, dtype=np.int32)
+    out = csc_array((number, matrix.indices.copy(), matrix.indptr), shape=matrix.shape)
+    out.sort_indices()
+    return out
 
 
 def _cancelled(start: Ints, row: Ints, column: Ints, value: Complex) -> Bools:

@@ -20,7 +20,7 @@ from typing import Any
 import numpy as np
 
 from seqfault.model.elements import Complex, Ints
-from seqfault.networks.ordering import SETTINGS, Order, mirrored, order, peel
+from seqfault.networks.ordering import SETTINGS, Order, mirrored, order, peel, sorted_pattern
 from seqfault.networks.pattern import UnionPattern
 from seqfault.networks.supernodes import Shape, Supernodes, supernodes
 
@@ -86,8 +86,7 @@ def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tu
     entries = elimination.entries
     factor = np.zeros((len(value), structure.size), complex)
     pivot = np.zeros_like(factor)
-    last = elimination.lower
-    below, place = _places(last, structure)
+    last: Any = None
     for k, each in enumerate(value):
         matrix = csc_array((each, entries.indices, entries.indptr), shape=entries.shape)
         lu = splu(matrix, permc_spec="NATURAL", **SETTINGS)
@@ -95,25 +94,25 @@ def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tu
             raise RuntimeError("a pivot is off the diagonal")
         pivot[k, structure.own] = 1 / lu.U.diagonal()
         lower = lu.L
-        if not lower.has_sorted_indices:
-            lower.sort_indices()
-        if lower.nnz != last.nnz or not np.array_equal(lower.indices, last.indices):
-            below, place = _places(lower, structure)
+        if last is None or lower.nnz != last.nnz or not np.array_equal(lower.indices, last.indices):
+            number, place = _places(lower, structure)
             last = lower
-        factor[k, place] = lower.data[below]
+        factor[k, place] = lower.data.take(number)
     return factor, pivot
 
 
 def _places(lower: Any, structure: Supernodes) -> tuple[Ints, Ints]:
     """Which values of ``lower`` are below its diagonal, and where they go; what is exactly zero lacks."""
+    pattern = sorted_pattern(lower)
     below = np.ones(lower.nnz, bool)
-    below[lower.indptr[:-1]] = False
+    below[pattern.indptr[:-1]] = False
     kept = np.flatnonzero(below)
+    number = pattern.data[kept]
     if lower.nnz == len(structure.key):
-        return kept, structure.entry[kept]
+        return number, structure.entry[kept]
     n = lower.shape[0]
-    key = (np.repeat(np.arange(n), np.diff(lower.indptr)) * n + lower.indices)[kept]
-    return kept, structure.entry[np.searchsorted(structure.key, key)]
+    key = (np.repeat(np.arange(n), np.diff(pattern.indptr)) * n + pattern.indices)[kept]
+    return number, structure.entry[np.searchsorted(structure.key, key)]
 
 
 def invert(structure: Supernodes, factor: Complex, pivot: Complex) -> Complex:
