@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Sequence
 
 import networkx as nx
@@ -10,7 +11,8 @@ import numpy as np
 from seqfault.errors import quoted
 from seqfault.model.elements import Bools, Ints
 
-LARGE = 300
+LARGE, SMALL = 2000, 300
+"""Graphs of more nodes go through scipy; those between where it is imported already."""
 
 
 def components(n: int, first: Ints, second: Ints) -> Ints:
@@ -19,7 +21,7 @@ def components(n: int, first: Ints, second: Ints) -> Ints:
     Labels follow the first node of each component. Small graphs go through networkx, large ones
     through scipy.sparse.csgraph, whose import alone costs more than a small case.
     """
-    if n > LARGE:
+    if n > LARGE or (n > SMALL and "scipy.sparse" in sys.modules):
         from scipy.sparse import coo_array
         from scipy.sparse.csgraph import connected_components
 
