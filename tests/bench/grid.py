@@ -21,7 +21,7 @@ from typing import Any
 
 Tree = dict[str, Any]
 MESH = 0.12
-COUPLED, SHARED = 0.03, 0.3  # lines of the mesh; star-star transformers
+COUPLED, SHARED = 0.03, 0.2  # lines of the mesh; star-star transformers under 33 kV
 INFEED, GENERATOR, MOTOR = 0.10, 0.025, 0.06  # shares of the mesh, of 33 kV buses, of all others
 
 
@@ -47,9 +47,13 @@ LEVELS = {
 
 @dataclass
 class _Maker:
-    """A tree in the making; ``left`` buses may still be added."""
+    """A tree in the making; ``left`` buses may still be added.
+
+    ``extra`` chooses couplings and shared star points: the rest is the same without them.
+    """
 
     chance: random.Random
+    extra: random.Random
     left: int
     tree: Tree = field(
         default_factory=lambda: {
@@ -107,7 +111,7 @@ class _Maker:
         along = [""]
         for k in range(1, len(names)):
             along.append(self.line(110, names[k - 1], names[k]))
-            if k > width and self.maybe(COUPLED):  # with the line beside it in the row below
+            if k > width and self.extra.random() < COUPLED:  # with the line beside it in the row below
                 pair = {"lines": [along[k - width], along[k]], "z0": "0.1+j0.3 ohm/km"}
                 self.add("mutual_couplings", "K", pair)
             if k >= width and self.maybe(0.55):
@@ -164,8 +168,9 @@ class _Maker:
                 low["voltage"] = f"{kilovolt * self.chance.choice((0.98, 1.025, 1.05)):.6g} kV"
             if group.startswith("YN"):
                 high["neutral"] = self.chance.choice(("solid", "solid", "isolated"))
-            if group == "YNyn0" and self.maybe(SHARED):
-                low["neutral"] = high["neutral"] = self.resistor(of.volt)
+            if group == "YNyn0" and above == 33 and self.extra.random() < SHARED:
+                both = {"current": f"{self.extra.randint(50, 800)} A", "voltage": of.volt}
+                low["neutral"] = high["neutral"] = self.add("neutrals", "N", both)
             elif "yn" in group:
                 low["neutral"] = shared or (self.resistor(of.volt) if lv_star == "resistor" else lv_star)
             record: Tree = {
@@ -222,7 +227,7 @@ def grid(buses: int, seed: int = 1, meshed: bool = False) -> Tree:
 
     All of them are of the mesh where it is ``meshed``.
     """
-    make = _Maker(random.Random(seed), buses)
+    make = _Maker(random.Random(seed), random.Random(seed + 1), buses)
     mesh = make.mesh(buses if meshed else max(2, round(MESH * buses)))
     while make.left:
         start = make.chance.randrange(len(mesh))

@@ -45,6 +45,15 @@ def awkward(seed: int) -> dict[str, Any]:
             "hv": {"bus": mesh[ends[k]], "voltage": "110 kV", "neutral": "solid"},
             "lv": {"bus": f"{LONE} {k}", "voltage": "11 kV"},
         }
+        # Both star points of a star-star unit on one resistor.
+        tree["buses"][f"shared {k}"] = "11 kV"
+        tree["neutrals"][f"common {k}"] = {"current": "400 A", "voltage": "11 kV"}
+        tree["transformers"][f"to shared {k}"] = tree["transformers"][f"to {LONE} {k}"] | {
+            "vector_group": "YNyn0",
+            "magnetic_circuit": "five-limb",
+            "hv": {"bus": mesh[ends[k]], "voltage": "110 kV", "neutral": f"common {k}"},
+            "lv": {"bus": f"shared {k}", "voltage": "11 kV", "neutral": f"common {k}"},
+        }
     return tree
 
 
