@@ -42,8 +42,10 @@ def terminal_shares(model: Model, survey: Survey) -> Complex:
     for s, (share, above, whole) in enumerate(zip(out, survey.above, survey.impedance, strict=True)):
         own = above[diagonal]
         y = 1 / lines.series[s, standing]
-        for group in lines.coupled if s == 0 else ():
-            y[np.isin(standing, group.line)] = 0
+        if s == 0 and lines.coupled:
+            alone = np.ones(m, bool)
+            alone[np.concatenate([group.line for group in lines.coupled])] = False
+            y[~alone[standing]] = 0
         share[standing] = y * (own[i] - above[back])
         share[m + standing] = y * (own[j] - above[forth])
         for end, nodes in enumerate(lines.nodes):

@@ -115,17 +115,19 @@ def _bordered(network: SequenceFactor, pattern: UnionPattern, above: Complex) ->
     impedance = above[pattern.diagonal]
     infinite = np.zeros(pattern.size, bool)
     part = network.free.part
-    at = np.flatnonzero(part >= 0)
-    if not len(at):
-        return impedance, infinite
-    lift = np.zeros((pattern.size, network.free.basis.shape[1]), complex)  # σ⁻¹ d
-    lift[at] = np.einsum("ikl,il->ik", network.compliance[part[at]], network.direction[at])
-    impedance[at] += (network.direction[at] * lift[at]).sum(axis=1)
-    seen = np.einsum("ik,ikx->ix", network.direction[at], network.slack[part[at]])
-    infinite[at] = (np.abs(seen) > SEEN).any(axis=1)
     label = np.full(pattern.size, -1)
     label[: network.size] = part
-    inside = np.flatnonzero((label[pattern.row] >= 0) & (label[pattern.row] == label[pattern.column]))
-    drop = network.drop[pattern.row[inside]]
-    above[inside] -= (drop * lift[pattern.column[inside]]).sum(axis=1)
+    for k in sorted(set(network.free.dimension.tolist())):  # most parts have one free vector
+        chosen = np.append(network.free.dimension == k, False)  # part −1 is none
+        at = np.flatnonzero(chosen[part])
+        direction = network.direction[at, :k]
+        lift = np.zeros((pattern.size, k), complex)  # σ⁻¹ d
+        lift[at] = np.einsum("ikl,il->ik", network.compliance[part[at], :k, :k], direction)
+        impedance[at] += (direction * lift[at]).sum(axis=1)
+        seen = np.einsum("ik,ikx->ix", direction, network.slack[part[at], :k, :k])
+        infinite[at] = (np.abs(seen) > SEEN).any(axis=1)
+        inside = chosen[label[pattern.row]] & (label[pattern.row] == label[pattern.column])
+        entry = np.flatnonzero(inside)
+        drop = network.drop[pattern.row[entry], :k]
+        above[entry] -= (drop * lift[pattern.column[entry]]).sum(axis=1)
     return impedance, infinite
