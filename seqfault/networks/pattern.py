@@ -99,7 +99,7 @@ def union(matrices: Sequence[Any]) -> UnionPattern:
         matrix.sort_indices()
     whole, places = matrices[0], [np.arange(matrices[0].nnz)]
     for k, matrix in enumerate(matrices[1:], 1):
-        same = (j for j in range(k) if _alike(matrices[j], matrix))
+        same = (j for j in range(k) if alike(matrices[j], matrix))
         twin = next(same, None)
         if twin is not None:
             places.append(places[twin])
@@ -114,8 +114,8 @@ def union(matrices: Sequence[Any]) -> UnionPattern:
     return UnionPattern(start, row, column, np.flatnonzero(row == column), value)
 
 
-def _alike(a: Any, b: Any) -> bool:
-    """Whether two CSC matrices have the same pattern."""
+def alike(a: Any, b: Any) -> bool:
+    """Whether two CSC matrices have their entries at the same places, in the same order."""
     return a.nnz == b.nnz and np.array_equal(a.indptr, b.indptr) and np.array_equal(a.indices, b.indices)
 
 

@@ -21,7 +21,7 @@ import numpy as np
 
 from seqfault.model.elements import Complex, Ints
 from seqfault.networks.ordering import SETTINGS, Order, mirrored, order, peel, sorted_pattern
-from seqfault.networks.pattern import UnionPattern
+from seqfault.networks.pattern import UnionPattern, alike
 from seqfault.networks.supernodes import Shape, Supernodes, supernodes
 
 TOGETHER = 40_000
@@ -79,7 +79,7 @@ def _core(row: Ints, column: Ints, value: Complex, n: int) -> Complex:
 
 
 def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tuple[Complex, Complex]:
-    """L below the diagonal and D⁻¹ on it, (sequences, size) each, as the blocks lie."""
+    """L, and D⁻¹ where its diagonal lies, (sequences, size) each, as the blocks lie."""
     from scipy.sparse import csc_array
     from scipy.sparse.linalg import splu
 
@@ -94,25 +94,24 @@ def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tu
             raise RuntimeError("a pivot is off the diagonal")
         pivot[k, structure.own] = 1 / lu.U.diagonal()
         lower = lu.L
-        if last is None or lower.nnz != last.nnz or not np.array_equal(lower.indices, last.indices):
-            number, place = _places(lower, structure)
+        if last is None or not alike(lower, last):
+            place = _places(lower, structure)
             last = lower
-        factor[k, place] = lower.data.take(number)
+        factor[k, place] = lower.data
     return factor, pivot
 
 
-def _places(lower: Any, structure: Supernodes) -> tuple[Ints, Ints]:
-    """Which values of ``lower`` are below its diagonal, and where they go; what is exactly zero lacks."""
+def _places(lower: Any, structure: Supernodes) -> Ints:
+    """Where the values of ``lower`` go, in which those that are exactly zero are not stored."""
     pattern = sorted_pattern(lower)
-    below = np.ones(lower.nnz, bool)
-    below[pattern.indptr[:-1]] = False
-    kept = np.flatnonzero(below)
-    number = pattern.data[kept]
-    if lower.nnz == len(structure.key):
-        return number, structure.entry[kept]
-    n = lower.shape[0]
-    key = (np.repeat(np.arange(n), np.diff(pattern.indptr)) * n + pattern.indices)[kept]
-    return number, structure.entry[np.searchsorted(structure.key, key)]
+    entry = structure.entry
+    if lower.nnz != len(entry):
+        n = lower.shape[0]
+        key = np.repeat(np.arange(n) * n, np.diff(pattern.indptr)) + pattern.indices
+        entry = entry[np.searchsorted(structure.key, key)]
+    place = np.empty(lower.nnz, np.int64)
+    place[pattern.data] = entry
+    return place
 
 
 def invert(structure: Supernodes, factor: Complex, pivot: Complex) -> Complex:
@@ -176,12 +175,11 @@ def _invert_some(
 
 
 def _unit_inverse(lower: Complex) -> Complex:
-    """Inverses of unit triangular matrices (…, w, w), whose diagonals are not stored."""
+    """Inverses of unit triangular matrices (…, w, w)."""
     w = lower.shape[-1]
-    x = np.eye(w) - lower
-    if w == 2:
-        return np.asarray(x)
+    if w > 3:
+        return np.asarray(np.linalg.inv(lower))
+    x = 2 * np.eye(w) - lower  # with N below the diagonal, 1 − N + N²
     if w == 3:
         x[..., 2, 0] += lower[..., 2, 1] * lower[..., 1, 0]
-        return np.asarray(x)
-    return np.asarray(np.linalg.inv(lower + np.eye(w)))
+    return np.asarray(x)
