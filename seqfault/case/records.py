@@ -126,7 +126,7 @@ class Winding(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=T
     neutral: StarPoint | None = None
 
 
-class Pairs(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+class Pairs(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True, gc=False):
     """Short-circuit impedances of the three pairs of windings of a three-winding transformer."""
 
     hv_lv: OhmsOrRatio
@@ -134,7 +134,7 @@ class Pairs(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=Tru
     lv_tv: OhmsOrRatio
 
 
-class PairRatings(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+class PairRatings(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True, gc=False):
     """Ratings that the per cent impedances of the pairs refer to."""
 
     hv_lv: Power | None = None
@@ -142,7 +142,7 @@ class PairRatings(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fiel
     lv_tv: Power | None = None
 
 
-class ZeroTests(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+class ZeroTests(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True, gc=False):
     """Zero-sequence tests of IEC 60076-1: other sides open, and lv shorted; any delta closed."""
 
     from_hv: OhmsOrRatio

@@ -73,7 +73,8 @@ def terminal_map(model: Model) -> TerminalMap:
     shares = np.full(len(element), -1, np.int64)
     wanted = {(element[k], side[k]) for a, b in blocks for k in range(a, b)}
     owner: dict[tuple[str, str], int] = {}
-    for k, key in enumerate(zip(element, side, strict=True)):
+    for k in range(2 * len(lines.names), len(element)) if wanted else ():  # no line has such a side
+        key = (element[k], side[k])
         if key in wanted and owner.setdefault(key, k) != k:
             shares[k] = owner[key]
     alone = (shares < 0) & (np.concatenate(bus) >= 0)

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
+import msgspec
 import numpy as np
 
 from seqfault.case.records import Case
 from seqfault.equations.per_unit import base_current
 from seqfault.errors import quoted
 from seqfault.model.coils import ARC_SUPPRESSION, earth_susceptance
-from seqfault.model.elements import DELTA, STAR, Model, WindingSets
+from seqfault.model.elements import DELTA, STAR, Bools, Model, WindingSets
 
 RULE = "common practice"
 
@@ -39,31 +40,46 @@ def _network_of(model: Model, star: int) -> int:
     return int(model.galvanic[model.node[model.stars.bus[star]]])
 
 
-def _carrying(sets: WindingSets, unit: int) -> bool:
-    """Whether an earthed winding of a unit really is a way to earth for zero sequence."""
-    kinds = sets.kind[unit]
-    others = int(((kinds == STAR) | (kinds == DELTA)).sum()) - 1
-    return len(kinds) == 1 or others > 0 or bool(sets.magnetised[unit])
+def _carrying(sets: WindingSets) -> Bools:
+    """Whether an earthed winding of each unit (m, 1) really is a way to earth for zero sequence."""
+    others = ((sets.kind == STAR) | (sets.kind == DELTA)).sum(axis=1) - 1
+    single = sets.kind.shape[1] == 1
+    return np.asarray((single | (others > 0) | sets.magnetised)[:, None])
 
 
-def _earthing(model: Model) -> Mapping[int, list[tuple[str, complex]]]:
-    """Ways to earth of each metallically joined network: name and ohm; infeeds count as solid."""
-    out: dict[int, list[tuple[str, complex]]] = {}
+class _Earthing(msgspec.Struct, frozen=True):
+    """Networks joined to earth by label: ``solid`` ones, infeeds count as such; and of every one the ways
+    that have an ``impedance``: name and ohm.
+    """
+
+    solid: set[int]
+    impedance: dict[int, list[tuple[str, complex]] | None]
+
+
+def _earthing(model: Model) -> _Earthing:
+    """Ways to earth of each metallically joined network."""
+    impeded: dict[int, list[tuple[str, complex]] | None] = {}
+    solid: set[int] = set()
     stars = model.stars
-    used: set[int] = set()
+    used = np.zeros(len(stars.names), bool)
     for sets in model.winding_sets:
-        for unit, winding in zip(*np.nonzero((sets.kind == STAR) & (sets.star >= 0)), strict=True):
-            if _carrying(sets, int(unit)):
-                used.add(int(sets.star[unit, winding]))
-    for k in sorted(used):
-        if np.isfinite(stars.impedance[k]):
-            way = (stars.names[k], complex(stars.impedance[k]))
-            out.setdefault(_network_of(model, k), []).append(way)
+        used[sets.star[(sets.kind == STAR) & (sets.star >= 0) & _carrying(sets)]] = True
+    at = np.flatnonzero(used & np.isfinite(stars.impedance))
+    labels = model.galvanic[model.node[stars.bus[at]]].tolist()
+    for k, z, label in zip(at.tolist(), stars.impedance[at].tolist(), labels, strict=True):
+        ways = impeded.setdefault(label)
+        if z == 0:
+            solid.add(label)
+        elif ways is None:
+            impeded[label] = [(stars.names[k], z)]
+        else:
+            ways.append((stars.names[k], z))
     sources = model.sources
-    for k in np.flatnonzero(sources.admittance[0] != 0).tolist():
-        label = int(model.galvanic[sources.node[k]])
-        out.setdefault(label, []).append((sources.names[k], 0j))
-    return out
+    fed = model.galvanic[sources.node[sources.admittance[0] != 0]].tolist()
+    solid.update(fed)
+    for label in fed:
+        impeded.setdefault(label)
+    return _Earthing(solid, impeded)
 
 
 def idle_star_points(model: Model) -> dict[int, list[str]]:
@@ -74,18 +90,18 @@ def idle_star_points(model: Model) -> dict[int, list[str]]:
     out: dict[int, list[str]] = {}
     stars = model.stars
     for sets in model.winding_sets:
-        for unit, winding in zip(*np.nonzero((sets.kind == STAR) & (sets.star >= 0)), strict=True):
-            star = int(sets.star[unit, winding])
-            if not _carrying(sets, int(unit)) and np.isfinite(stars.impedance[star]):
-                label = int(model.galvanic[sets.node[unit, winding]])
+        idle = np.nonzero((sets.kind == STAR) & (sets.star >= 0) & ~_carrying(sets))
+        labels = model.galvanic[sets.node[idle]].tolist()
+        for star, label in zip(sets.star[idle].tolist(), labels, strict=True):
+            if np.isfinite(stars.impedance[star]):
                 out.setdefault(label, []).append(stars.names[star])
     return out
 
 
-def _idle_star_points(model: Model, earthed: Mapping[int, list[tuple[str, complex]]]) -> Iterator[str]:
+def _idle_star_points(model: Model, earthed: _Earthing) -> Iterator[str]:
     live = set(model.galvanic[model.node][model.live].tolist())
     for label, names in idle_star_points(model).items():
-        if earthed.get(label) or label not in live:
+        if label in earthed.impedance or label not in live:
             continue
         shown = ", ".join(quoted(name) for name in dict.fromkeys(names))
         buses = [model.buses[k] for k in np.flatnonzero(model.galvanic[model.node] == label)]
@@ -97,16 +113,20 @@ def _idle_star_points(model: Model, earthed: Mapping[int, list[tuple[str, comple
         )
 
 
-def _phase_voltage(model: Model, label: int) -> float:
-    buses = np.flatnonzero(model.galvanic[model.node] == label)
-    return float(model.nominal[buses].max() / np.sqrt(3))
+def _phase_voltages(model: Model) -> list[float]:
+    """Largest nominal voltage to earth of each metallically joined network, V."""
+    out = np.zeros(int(model.galvanic.max(initial=-1)) + 1)
+    np.maximum.at(out, model.galvanic[model.node], model.nominal)
+    return list((out / np.sqrt(3)).tolist())
 
 
 def _small_resistors(model: Model, case: Case, charging: Mapping[int, float]) -> Iterator[str]:
     stars = model.stars
-    for k, name in enumerate(stars.names):
-        z = complex(stars.impedance[k])
-        if stars.kinds[k] != "neutral" or not np.isfinite(z) or z.real <= abs(z.imag):
+    size = stars.impedance
+    resistive = np.isfinite(size) & (size.real > np.abs(size.imag))
+    for k in np.flatnonzero(resistive).tolist():
+        name, z = stars.names[k], complex(size[k])
+        if stars.kinds[k] != "neutral":
             continue
         if case.neutrals[name].kind == ARC_SUPPRESSION:
             continue
@@ -120,14 +140,13 @@ def _small_resistors(model: Model, case: Case, charging: Mapping[int, float]) ->
             )
 
 
-def _parallel_neutrals(
-    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
-) -> Iterator[str]:
-    for label, ways in earthed.items():
-        impeded = [(n, z) for n, z in ways if z != 0 and case.neutrals[n].kind != ARC_SUPPRESSION]
+def _parallel_neutrals(model: Model, case: Case, earthed: _Earthing) -> Iterator[str]:
+    voltage = _phase_voltages(model)
+    for label, ways in earthed.impedance.items():
+        impeded = [(n, z) for n, z in ways or () if case.neutrals[n].kind != ARC_SUPPRESSION]
         if len(impeded) < 2:
             continue
-        v = _phase_voltage(model, label)
+        v = voltage[label]
         names = ", ".join(quoted(name) for name, _ in impeded)
         total = abs(sum(v / z for _, z in impeded))
         alone = ", ".join(f"{_round(v / abs(z))} A" for _, z in impeded)
@@ -139,18 +158,18 @@ def _parallel_neutrals(
 
 def _unearthed(
     model: Model,
-    earthed: Mapping[int, list[tuple[str, complex]]],
+    earthed: _Earthing,
     charging: Mapping[int, float],
 ) -> Iterator[str]:
     """A live network of deltas only; bare transformer terminals and infeeds stated open are meant."""
-    sources = model.sources
-    motors = [kind == "motor" for kind in sources.kinds]
-    wired = {int(model.galvanic[k]) for k in model.lines.nodes[model.lines.nodes >= 0].tolist()}
-    wired |= {int(model.galvanic[k]) for k in sources.node[np.array(motors, bool)].tolist()}
-    fed = {int(model.galvanic[k]) for k in sources.node[~np.array(motors, bool)].tolist()}
+    sources, label_of = model.sources, model.galvanic
+    motors = np.array([kind == "motor" for kind in sources.kinds], bool)
+    wired = set(label_of[model.lines.nodes[model.lines.nodes >= 0]].tolist())
+    wired |= set(label_of[sources.node[motors]].tolist())
+    wired -= set(label_of[sources.node[~motors]].tolist())
     idle = idle_star_points(model)
-    for label in dict.fromkeys(model.galvanic[model.node][model.live].tolist()):
-        if earthed.get(label) or charging.get(label, 0.0) > 0 or label not in wired - fed:
+    for label in dict.fromkeys(label_of[model.node][model.live].tolist()):
+        if label in earthed.impedance or charging.get(label, 0.0) > 0 or label not in wired:
             continue
         if label in idle:
             continue  # told with its star point
@@ -165,30 +184,30 @@ def _unearthed(
 
 def unearthed_buses(model: Model) -> tuple[str, ...]:
     """Live buses whose network no star point, earthing transformer or infeed joins to earth."""
-    earthed = _earthing(model)
+    earthed = _earthing(model).impedance
     label = model.galvanic[model.node]
     return tuple(
-        name for k, name in enumerate(model.buses) if model.live[k] and not earthed.get(int(label[k]))
+        name for k, name in enumerate(model.buses) if model.live[k] and int(label[k]) not in earthed
     )
 
 
 def lost_earth(model: Model, bare: tuple[str, ...], base: Model) -> tuple[str, ...]:
     """Networks of the ``bare`` buses that are earthed in the ``base`` case and not in this state."""
-    earthed = _earthing(base)
+    earthed = _earthing(base).impedance
     charging = earth_susceptance(model, model.galvanic)
     lost: dict[int, list[str]] = {}
     for name in bare:
         k = base.index.get(name)
-        if k is not None and base.live[k] and earthed.get(int(base.galvanic[base.node[k]])):
+        if k is not None and base.live[k] and int(base.galvanic[base.node[k]]) in earthed:
             label = int(model.galvanic[model.node[model.index[name]]])
             lost.setdefault(label, []).append(name)
-    out = []
+    out, voltage = [], _phase_voltages(model)
     for label, names in lost.items():
         if charging[label] <= 0:  # bare terminals; wired networks have a warning of their own
             continue
         shown = ", ".join(quoted(name) for name in names[:6])
         more = f" and {len(names) - 6} more" if len(names) > 6 else ""
-        ampere = 3 * charging[label] * _phase_voltage(model, label)
+        ampere = 3 * charging[label] * voltage[label]
         out.append(
             f"bus {shown}{more}: this state takes away what earths the network in the base case; only its"
             f" capacitance is left ({_round(ampere)} A in an earth fault)"
@@ -217,7 +236,7 @@ def _assumed_zero_sequence(model: Model) -> Iterator[str]:
     for entry in model.assumptions:
         if entry.record != "transformer" or not entry.text.startswith("z0 not stated"):
             continue
-        names = set(entry.names) & _matters(model)
+        names = _matters(model).intersection(entry.names)
         kept = [quoted(name) for name in entry.names if name in names]
         if kept:
             shown = ", ".join(kept[:6]) + (f" and {len(kept) - 6} more" if len(kept) > 6 else "")
@@ -229,32 +248,25 @@ def _assumed_zero_sequence(model: Model) -> Iterator[str]:
 
 def _matters(model: Model) -> set[str]:
     """Transformers whose zero-sequence impedance carries current."""
-    out = set()
+    out: set[str] = set()
     for sets in model.winding_sets:
         if sets.kind_of_record == "transformer" and len(sets.sides) > 1:
-            for unit, name in enumerate(sets.names):
-                kinds = sets.kind[unit]
-                stars = int((kinds == STAR).sum())
-                if stars > 1 or (stars == 1 and (kinds == DELTA).any()):
-                    out.add(name)
+            stars = (sets.kind == STAR).sum(axis=1)
+            carries = (stars > 1) | ((stars == 1) & (sets.kind == DELTA).any(axis=1))
+            out.update(sets.names[unit] for unit in np.flatnonzero(carries).tolist())
     return out
 
 
-def _missing_capacitance(
-    model: Model, case: Case, earthed: Mapping[int, list[tuple[str, complex]]]
-) -> Iterator[str]:
+def _missing_capacitance(model: Model, case: Case, earthed: _Earthing) -> Iterator[str]:
     lines = model.lines
     bare: dict[int, list[str]] = {}
-    for k, name in enumerate(lines.names):
-        record = case.lines.get(name)
-        if record is None or lines.earthed[k] or lines.shunt[0, k] != 0:
-            continue
-        at = int(lines.nodes[0, k])
-        label = int(model.galvanic[at])
-        if not any(z == 0 for _, z in earthed.get(label, [])):
-            bare.setdefault(label, []).append(name)
+    at = np.flatnonzero(~lines.earthed & (lines.shunt[0] == 0))
+    for k, label in zip(at.tolist(), model.galvanic[lines.nodes[0, at]].tolist(), strict=True):
+        if label not in earthed.solid and lines.names[k] in case.lines:
+            bare.setdefault(label, []).append(lines.names[k])
+    voltage = _phase_voltages(model)
     for label, names in bare.items():
-        v = _phase_voltage(model, label) * np.sqrt(3) / 1000
+        v = voltage[label] * np.sqrt(3) / 1000
         shown = ", ".join(quoted(name) for name in names[:6])
         more = f" and {len(names) - 6} more" if len(names) > 6 else ""
         yield (

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 
@@ -13,14 +14,10 @@ from seqfault.equations.transformers import (
     split_by_loss,
     split_by_ratio,
     three_winding_leakage,
-    two_winding_leakage,
 )
 from seqfault.errors import quoted
 from seqfault.model.context import Context
 from seqfault.model.elements import Complex
-
-if TYPE_CHECKING:
-    from seqfault.model.transformers import Side
 
 
 def _per_unit(r: Transformer, q: Any, winding: Winding, on: Any = None) -> float | complex:
@@ -55,54 +52,72 @@ def _pairs(r: Transformer, pairs: Pairs) -> tuple[float | complex, ...]:
     )
 
 
+def two_winding_impedances(records: Sequence[Transformer]) -> Complex:
+    """Short-circuit impedances (m,) of units of two windings."""
+    stated = [_per_unit(r, r.impedance, r.hv) for r in records]
+    out = np.array(stated, complex)
+    sizes = [k for k, z in enumerate(stated) if not isinstance(z, complex)]
+    by_loss = [(k, r.load_loss.value.real) for k in sizes if (r := records[k]).load_loss is not None]
+    by_ratio = [(k, r.x_over_r) for k in sizes if (r := records[k]).load_loss is None]
+    if by_loss:
+        at = [k for k, _ in by_loss]
+        rating = np.array([records[k].rating.value.real for k in at])
+        out[at] = split_by_loss(out[at].real, np.array([loss for _, loss in by_loss]), rating)
+    if by_ratio:
+        at = [k for k, _ in by_ratio]
+        out[at] = split_by_ratio(out[at].real, np.array([ratio for _, ratio in by_ratio], float))
+    return out
+
+
 def positive_leakage(c: Context, name: str, r: Transformer) -> Complex:
-    """Leakage admittance matrix (w, w) in positive and negative sequence."""
-    if isinstance(r.impedance, Pairs):
-        if r.load_loss is not None and any(not isinstance(z, complex) for z in _pairs(r, r.impedance)):
-            c.complaints.append(
-                f"transformer {quoted(name)}, load_loss: three windings have three load losses; state"
-                " x_over_r, or complex impedances of the pairs"
-            )
-            return np.eye(3, dtype=complex)
-        return three_winding_leakage(*(_split(r, z) for z in _pairs(r, r.impedance)))
-    return np.asarray(two_winding_leakage(np.array([_split(r, _per_unit(r, r.impedance, r.hv))]))[0])
+    """Leakage admittance matrix (3, 3) of three windings in positive and negative sequence."""
+    assert isinstance(r.impedance, Pairs)
+    if r.load_loss is not None and any(not isinstance(z, complex) for z in _pairs(r, r.impedance)):
+        c.complaints.append(
+            f"transformer {quoted(name)}, load_loss: three windings have three load losses; state"
+            " x_over_r, or complex impedances of the pairs"
+        )
+        return np.eye(3, dtype=complex)
+    return three_winding_leakage(*(_split(r, z) for z in _pairs(r, r.impedance)))
 
 
-def zero_leakage(c: Context, name: str, r: Transformer, sides: tuple[Side, ...]) -> tuple[Complex, bool]:
+def zero_leakage(
+    c: Context, name: str, r: Transformer, connections: tuple[str, ...], z1: complex | None
+) -> tuple[Complex | complex, bool]:
     """Zero-sequence admittance matrix (w, w), and whether it holds a magnetising branch.
 
-    A zigzag winding's own ``z0`` is not of this matrix (see ``zigzag_impedance``).
+    A single series impedance stands for the matrix of two windings that hold none; ``z1`` is that of
+    positive sequence, None of three windings. A zigzag winding's own ``z0`` is not of this matrix (see
+    ``zigzag_impedance``).
     """
-    if len(sides) == 3 and r.z0_magnetising is not None:
+    if len(connections) == 3 and r.z0_magnetising is not None:
         c.complaints.append(
             f"transformer {quoted(name)}, z0_magnetising: it goes with two windings; of three state z0 of"
             " the pairs, or zero_tests with a delta tv"
         )
-    if r.zero_tests is not None and len(sides) == 3 and sides[2].connection != "delta":
+    if r.zero_tests is not None and len(connections) == 3 and connections[2] != "delta":
         c.complaints.append(
             f"transformer {quoted(name)}, zero_tests: with three windings they need a delta tv, which is"
             " closed in the tests; state z0 of the pairs"
         )
         return np.eye(3, dtype=complex), False
     if r.zero_tests is not None:
-        return _from_tests(c, name, r, r.zero_tests, len(sides)), True
-    zigzag = any(side.connection == "zigzag" for side in sides)
-    first: Complex | complex
+        return _from_tests(c, name, r, r.zero_tests, len(connections)), True
+    zigzag = "zigzag" in connections
     if isinstance(r.z0, Pairs):
         ones = [_split(r, z) for z in _pairs(r, r.impedance)] if isinstance(r.impedance, Pairs) else []
         z = [_angled(c, name, a, b) for a, b in zip(_pairs(r, r.z0), ones, strict=True)]
         return three_winding_leakage(*z), False
     if r.z0 is not None and not zigzag:
-        assert not isinstance(r.impedance, Pairs)
-        z1 = _split(r, _per_unit(r, r.impedance, r.hv))
+        assert z1 is not None
         first = _angled(c, name, _per_unit(r, r.z0, r.hv), z1)
     else:
-        if r.z0_over_z1 is None and not (zigzag and len(sides) == 2):
+        if r.z0_over_z1 is None and not (zigzag and len(connections) == 2):
             c.ledger.note("transformer", name, "z0 not stated, taken equal to z1 (z0_over_z1 = 1)")
         share = 1.0 if r.z0_over_z1 is None else r.z0_over_z1
-        if isinstance(r.impedance, Pairs):
+        if z1 is None:
             return positive_leakage(c, name, r) / share, False
-        first = _split(r, _per_unit(r, r.impedance, r.hv)) * share
+        first = z1 * share
     if r.z0_magnetising is not None:
         zm = _per_unit(r, r.z0_magnetising, r.hv)
         if not isinstance(zm, complex):
@@ -110,7 +125,7 @@ def zero_leakage(c: Context, name: str, r: Transformer, sides: tuple[Side, ...])
             zm = 1j * zm
         c.ledger.note("transformer", name, "z0 split in halves on either side of z0_magnetising")
         return magnetised_leakage(first / 2, first / 2, complex(zm)), True
-    return two_winding_leakage(np.array([first]))[0], False
+    return complex(first), False
 
 
 def zigzag_impedance(c: Context, name: str, r: Transformer, winding: Winding) -> complex:

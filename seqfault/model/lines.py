@@ -2,17 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
+import msgspec
 import networkx as nx
 import numpy as np
 
 from seqfault.case.records import Line, MutualCoupling, SeriesReactor
 from seqfault.equations.transformers import split_by_ratio
 from seqfault.errors import quoted
+from seqfault.model.columns import field, values
 from seqfault.model.context import Context
-from seqfault.model.elements import Complex, CoupledLines, Floats, Lines
+from seqfault.model.elements import Bools, Complex, CoupledLines, Floats, Ints, Lines
+
+BLOCK = 4096
+"""Records read at once: they stay in the processor's cache from field to field."""
 
 
 def lines(c: Context, common: int) -> tuple[Lines, int]:
@@ -21,41 +26,38 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     An open end is a node of its own, numbered from ``common`` on: its capacitance stays on the line.
     A line out of service and earthed at both ends stands between earth and earth.
     """
-    at = c.case.buses
-    every: Mapping[str, Line] = {
-        name: r
-        for name, r in c.case.lines.items()
-        if r.earthed or (not r.out and r.from_ in c.index and r.to in c.index)
-    }
-    kept = {name: r for name, r in every.items() if r.earthed or not {r.from_, r.to} <= set(r.open)}
-    rows = list(kept.values())
-    length = np.array([r.length.value.real if r.length else 1.0 for r in rows])
-    count = np.array([r.count for r in rows], np.int64)
-    earthed = np.array([r.earthed for r in rows], bool)
-    ends = np.array([[c.index.get(r.from_, -1), c.index.get(r.to, -1)] for r in rows], np.int64)
-    ends = ends.reshape(-1, 2).T
-    closed = np.array([[r.from_ not in r.open, r.to not in r.open] for r in rows], bool)
-    closed = closed.reshape(-1, 2).T & ~earthed
+    names, rows, near, far = [], [], [], []
+    index = c.index.get
+    for name, r in c.case.lines.items():
+        i, j = index(r.from_, -1), index(r.to, -1)
+        standing = not r.out and i >= 0 and j >= 0
+        if r.earthed or (standing and not (r.open and r.from_ in r.open and r.to in r.open)):
+            names.append(name)
+            rows.append(r)
+            near.append(i)
+            far.append(j)
+    ends = np.array([np.array(near, np.int64), np.array(far, np.int64)])
+    t = _totals(rows)
+    earthed, count = t.earthed, t.count
+    closed = np.tile(~earthed, (2, 1))
+    for k in np.flatnonzero(t.opened).tolist():
+        closed[:, k] &= [rows[k].from_ not in rows[k].open, rows[k].to not in rows[k].open]
 
-    def total(quantities: list[Any]) -> Complex:
-        value = np.array([q.value if q else 0 for q in quantities], complex)
-        scaled = [bool(q) and q.dimension.endswith("/length") for q in quantities]
-        return np.where(scaled, value * length, value)
-
-    z_base = np.array([at[r.from_].voltage.value.real ** 2 / c.power for r in rows], float)
-    z1 = total([r.z1 for r in rows]) / z_base / count
-    z0 = total([r.z0 for r in rows]) / z_base / count
-    b1 = (c.omega * total([r.c1 for r in rows]) + total([r.b1 for r in rows])) * count * z_base
-    b0 = (c.omega * total([r.c0 for r in rows]) + total([r.b0 for r in rows])) * count * z_base
-    for k, (name, r) in enumerate(kept.items()):
-        if r.earthed:
-            continue
-        stated1, stated0 = r.c1 or r.b1, r.c0 or r.b0
-        if stated0 and not stated1:
+    z_base = np.zeros(len(rows))
+    inside = ends[0] >= 0
+    z_base[inside] = c.base_z[ends[0, inside]]
+    for k in np.flatnonzero(~inside).tolist():
+        z_base[k] = c.case.buses[rows[k].from_].voltage.value.real ** 2 / c.power
+    z1, z0 = t.z1 / z_base / count, t.z0 / z_base / count
+    b1 = (c.omega * t.c1 + t.b1) * count * z_base
+    b0 = (c.omega * t.c0 + t.b0) * count * z_base
+    stated1, stated0 = t.has_c1 | t.has_b1, t.has_c0 | t.has_b0
+    for k in np.flatnonzero(~(stated1 & stated0) & ~earthed).tolist():
+        if not stated0[k]:
+            c.ledger.note("line", names[k], "c0 not stated, taken as 0: no charging current to earth")
+        else:
             b1[k] = b0[k]
-            c.ledger.note("line", name, "c1 not stated, taken equal to c0")
-        elif not stated0:
-            c.ledger.note("line", name, "c0 not stated, taken as 0: no charging current to earth")
+            c.ledger.note("line", names[k], "c1 not stated, taken equal to c0")
     nodes = np.where(ends >= 0, c.node[ends], -1)
     open_ends = ~closed & ~earthed
     nodes[open_ends] = common + np.arange(int(open_ends.sum()))
@@ -63,8 +65,8 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
     reactors = _reactors(c)
     m = len(reactors.names)
     whole = Lines(
-        names=tuple(kept) + reactors.names,
-        kinds=("line",) * len(kept) + reactors.kinds,
+        names=tuple(names) + reactors.names,
+        kinds=("line",) * len(rows) + reactors.kinds,
         ends=np.concatenate([ends, reactors.ends], axis=1),
         nodes=np.concatenate([nodes, reactors.nodes], axis=1),
         closed=np.concatenate([closed, reactors.closed], axis=1),
@@ -73,9 +75,47 @@ def lines(c: Context, common: int) -> tuple[Lines, int]:
         shunt=np.concatenate([0.5j * np.stack([b0, b1, b1]), reactors.shunt], axis=1),
         count=np.concatenate([count, reactors.count]),
         voltage=np.concatenate([np.sqrt(z_base * c.power), reactors.voltage]),
-        coupled=_coupled(c, kept, z0, z_base, length),
+        coupled=_coupled(c, names, z0, z_base, t.length),
     )
     return whole, common + int(open_ends.sum())
+
+
+class _Totals(msgspec.Struct, frozen=True, eq=False):
+    """What records of lines (m,) state, of their whole length, 0 where nothing is stated."""
+
+    earthed: Bools
+    opened: Bools
+    count: Ints
+    length: Floats
+    z1: Complex
+    z0: Complex
+    c1: Complex
+    has_c1: Bools
+    b1: Complex
+    has_b1: Bools
+    c0: Complex
+    has_c0: Bools
+    b0: Complex
+    has_b0: Bools
+
+
+def _totals(rows: Sequence[Line]) -> _Totals:
+    blocks = [_block(rows[k : k + BLOCK]) for k in range(0, max(len(rows), 1), BLOCK)]
+    return _Totals(*map(np.concatenate, zip(*blocks, strict=True)))
+
+
+def _block(rows: Sequence[Line]) -> list[Any]:
+    measured, _, stated = values(field(rows, "length"))
+    length = np.where(stated, measured.real, 1.0)
+    opened = np.array([bool(buses) for buses in field(rows, "open")], bool)
+    out: list[Any] = [np.array(field(rows, "earthed"), bool), opened]
+    out += [np.array(field(rows, "count"), np.int64), length]
+    for name in ("z1", "z0", "c1", "b1", "c0", "b0"):
+        value, along, stated = values(field(rows, name))
+        out.append(np.where(along, value * length, value))
+        if name[0] != "z":
+            out.append(stated)
+    return out
 
 
 def _reactors(c: Context) -> Lines:
@@ -120,14 +160,16 @@ def _reactors(c: Context) -> Lines:
 
 
 def _coupled(
-    c: Context, kept: Mapping[str, Line], z0: Complex, z_base: Floats, length: Floats
+    c: Context, names: Sequence[str], z0: Complex, z_base: Floats, length: Floats
 ) -> tuple[CoupledLines, ...]:
     """Groups of lines that couplings join, the series block of each inverted once.
 
     Between lines of different voltages the base impedance is U_a U_b/S. Source: P. M. Anderson,
     "Analysis of Faulted Power Systems", ch. 5 (mutual impedance of parallel lines).
     """
-    position = {name: k for k, name in enumerate(kept)}
+    if not c.case.mutual_couplings:
+        return ()
+    position = {name: k for k, name in enumerate(names)}
     pairs: list[tuple[int, int, complex]] = []
     for coupling in c.case.mutual_couplings.values():
         if not coupling.out:

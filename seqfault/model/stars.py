@@ -18,7 +18,11 @@ class StarRegister:
     def __init__(self, impedances: Mapping[str, complex]) -> None:
         self._impedances = impedances
         self._at: dict[str, int] = {}
-        self._rows: list[tuple[str, str, complex, float, int, bool]] = []
+        self._kinds: list[str] = []
+        self._ohms: list[complex] = []
+        self._bases: list[float] = []
+        self._buses: list[int] = []
+        self._nodes: list[bool] = []
 
     def join(
         self, winding: str, neutral: str, bus: int, nominal: float, *, shared: bool = False
@@ -36,25 +40,28 @@ class StarRegister:
             name, kind, z = neutral, "neutral", self._impedances[neutral]
         k = self._at.get(name)
         if k is None:
-            k = self._at[name] = len(self._rows)
-            node = (kind == "neutral" and z != 0) or (kind == "isolated" and shared)
-            self._rows.append((name, kind, z, nominal, bus, node))
+            k = self._at[name] = len(self._kinds)
+            self._kinds.append(kind)
+            self._ohms.append(z)
+            self._bases.append(nominal)
+            self._buses.append(bus)
+            self._nodes.append((kind == "neutral" and z != 0) or (kind == "isolated" and shared))
         return (ISOLATED if kind == "isolated" and not shared else STAR), k
 
     def base(self, star: int) -> float:
         """Base voltage (V, line to line) of a star point."""
-        return self._rows[star][3]
+        return self._bases[star]
 
     def columns(self, common: int) -> StarPoints:
         """All star points; those that are nodes are numbered from ``common`` on."""
-        node = np.full(len(self._rows), -1, np.int64)
-        own = np.array([row[5] for row in self._rows], bool)
+        node = np.full(len(self._kinds), -1, np.int64)
+        own = np.array(self._nodes, bool)
         node[own] = common + np.arange(own.sum())
         return StarPoints(
-            names=tuple(row[0] for row in self._rows),
-            kinds=tuple(row[1] for row in self._rows),
-            impedance=np.array([row[2] for row in self._rows], complex),
+            names=tuple(self._at),
+            kinds=tuple(self._kinds),
+            impedance=np.array(self._ohms, complex),
             node=node,
-            base=np.array([row[3] for row in self._rows], float),
-            bus=np.array([row[4] for row in self._rows], np.int64),
+            base=np.array(self._bases, float),
+            bus=np.array(self._buses, np.int64),
         )

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Sequence
 
 import networkx as nx
@@ -10,7 +11,8 @@ import numpy as np
 from seqfault.errors import quoted
 from seqfault.model.elements import Bools, Ints
 
-LARGE = 2000
+LARGE, SMALL = 2000, 300
+"""Graphs of more nodes go through scipy; those between where it is imported already."""
 
 
 def components(n: int, first: Ints, second: Ints) -> Ints:
@@ -19,7 +21,7 @@ def components(n: int, first: Ints, second: Ints) -> Ints:
     Labels follow the first node of each component. Small graphs go through networkx, large ones
     through scipy.sparse.csgraph, whose import alone costs more than a small case.
     """
-    if n > LARGE:
+    if n > LARGE or (n > SMALL and "scipy.sparse" in sys.modules):
         from scipy.sparse import coo_array
         from scipy.sparse.csgraph import connected_components
 
@@ -45,46 +47,42 @@ def displacements(
     ``zone`` (n,) labels buses joined by lines; unit ``names[k]`` joins zone ``hv[k]`` to ``lv[k]``,
     whose voltages lag by ``clock[k]`` twelfths of a turn.
     """
-    graph = nx.MultiGraph()
-    graph.add_nodes_from(range(int(zone.max()) + 1 if len(zone) else 0))
-    for k in range(len(names)):
-        graph.add_edge(int(hv[k]), int(lv[k]), key=k)
-    at: dict[int, int] = {}
-    above: dict[int, tuple[int, int]] = {}
-    used: set[int] = set()
-    for root in graph:
-        if root in at:
+    zones = int(zone.max()) + 1 if len(zone) else 0
+    near, far = np.stack([hv, lv], axis=1).ravel(), np.stack([lv, hv], axis=1).ravel()
+    order = np.argsort(near, kind="stable")
+    start = np.searchsorted(near[order], np.arange(zones + 1)).tolist()
+    beyond, unit = far[order].tolist(), (order // 2).tolist()
+    step = np.stack([clock, -clock], axis=1).ravel()[order].tolist()
+    at, from_, by = [-1] * zones, [-1] * zones, [-1] * zones  # clock, and the way there
+    for root in range(zones):
+        if at[root] >= 0:
             continue
         at[root] = 0
         queue = [root]
         for here in queue:
-            for _, there, k in graph.edges(here, keys=True):
-                if there not in at:
-                    step = int(clock[k]) if int(hv[k]) == here else -int(clock[k])
-                    at[there] = (at[here] + step) % 12
-                    above[there] = (here, k)
-                    used.add(k)
+            for k in range(start[here], start[here + 1]):
+                there = beyond[k]
+                if at[there] < 0:
+                    at[there] = (at[here] + step[k]) % 12
+                    from_[there], by[there] = here, unit[k]
                     queue.append(there)
+    turns = np.array(at, np.int64)
+    misfits = (turns[hv] + clock - turns[lv]) % 12 if zones else np.zeros(0, np.int64)
     complaints = []
-    for k, name in enumerate(names):
-        if k in used:
-            continue
-        misfit = (at[int(hv[k])] + int(clock[k]) - at[int(lv[k])]) % 12
-        if misfit:
-            others = _between(int(hv[k]), int(lv[k]), above)
-            complaints.append(_misfit([names[o] for o in others] + [name], misfit))
-    return np.array([at[z] for z in zone.tolist()], np.int64), complaints
+    for k in np.flatnonzero(misfits).tolist():
+        others = _between(int(hv[k]), int(lv[k]), from_, by)
+        complaints.append(_misfit([names[o] for o in others] + [names[k]], int(misfits[k])))
+    return turns[zone], complaints
 
 
-def _between(a: int, b: int, above: dict[int, tuple[int, int]]) -> list[int]:
-    """Units on the way from zone ``a`` to zone ``b`` in the walked tree."""
+def _between(a: int, b: int, from_: list[int], by: list[int]) -> list[int]:
+    """Units on the way from zone ``a`` to zone ``b`` in the tree walked ``from_`` zones ``by`` units."""
 
     def up(zone: int) -> list[tuple[int, int]]:
         path = []
-        while zone in above:
-            parent, unit = above[zone]
-            path.append((parent, unit))
-            zone = parent
+        while from_[zone] >= 0:
+            path.append((from_[zone], by[zone]))
+            zone = from_[zone]
         return path
 
     left, right = up(a), up(b)

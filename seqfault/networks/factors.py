@@ -14,6 +14,7 @@ and currents obey dᵀ i = 0. Bordering of a nearly singular system: the method 
 
 from __future__ import annotations
 
+from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -49,9 +50,8 @@ class SequenceFactor:
         self._kept = np.ones(stamps.size, bool)
         self._kept[free.reference] = False
         self._position = np.cumsum(self._kept) - 1
-        self._solver = self._factorise()
         load = stamps.weak[:, None] * free.basis
-        self.drop = self.solve(load)
+        self.drop: Complex = self.solve(load) if load.any() else np.zeros(load.shape, complex)
         self.direction: Complex = free.basis - self.drop
         self._border(load)
 
@@ -60,7 +60,9 @@ class SequenceFactor:
         """Number of nodes."""
         return self.stamps.size
 
-    def _factorise(self) -> Any:
+    @cached_property
+    def _solver(self) -> Any:
+        """Made when first asked for: the survey of all buses has factors of its own."""
         s = self.stamps
         n = int(self._kept.sum())
         both = self._kept[s.row] & self._kept[s.column]

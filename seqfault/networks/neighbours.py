@@ -10,7 +10,7 @@ from __future__ import annotations
 import msgspec
 import numpy as np
 
-from seqfault.model.elements import Bools, Complex, Ints, Model, WindingSets
+from seqfault.model.elements import Complex, Ints, Model, WindingSets
 from seqfault.model.windings import incidence
 from seqfault.networks.survey import Survey
 
@@ -24,59 +24,48 @@ class _Rows(msgspec.Struct, frozen=True, eq=False):
     value: Complex
 
 
-def terminal_shares(model: Model, survey: Survey, sequence: int) -> Complex:
-    """Current (t,) from its bus into each terminal for a unit current into that bus, nothing elsewhere.
+def terminal_shares(model: Model, survey: Survey) -> Complex:
+    """Current (3, t) from its bus into each terminal for a unit current into that bus, nothing elsewhere.
 
     Zero at a terminal without a node. Over the terminals of one node they add to 1, except where no
     path to earth takes the current.
     """
     lines = model.lines
-    m = len(lines.names)
-    whole = survey.impedance[sequence]
-    above = survey.above[sequence]
-    own = above[survey.pattern.diagonal]
-    i, j = lines.nodes
-    standing = (lines.nodes >= 0).all(axis=0)
-    single: Bools = np.asarray(standing)
-    for group in lines.coupled if sequence == 0 else ():
-        single[group.line] = False
-    at = np.flatnonzero(single)
-    here, there = i[at], j[at]
-    forth, back = _between(survey, here, there, above)
-    y = 1 / lines.series[sequence, at]
-    out = np.zeros((2, m), complex)
-    out[0, at] = y * (own[here] - back)
-    out[1, at] = y * (own[there] - forth)
-    for end, nodes in enumerate(lines.nodes):
-        known = nodes >= 0
-        out[end, known] += lines.shunt[sequence, known] * whole[nodes[known]]
-    flat = [out.ravel()]
-    rows = [_coupled_rows(model)] if sequence == 0 and lines.coupled else []
-    start = 2 * m
-    for sets in model.winding_sets:
-        rows.append(_winding_rows(model, sets, sequence, start))
-        start += sets.bus.size
-        flat.append(np.zeros(sets.bus.size, complex))
-    for shunts, potential in ((model.sources, own), (model.capacitances, whole)):
-        flat.append(shunts.admittance[sequence] * potential[shunts.node])
-    shares = np.concatenate(flat)
-    for each in rows:
-        apart = each.own != each.other
-        w = own[each.own]
-        w[apart] = above[survey.pattern.find(each.other[apart], each.own[apart])]
-        shares += _summed(each.terminal, each.value * w, len(shares))
-    return shares
-
-
-def _summed(at: Ints, value: Complex, size: int) -> Complex:
-    real = np.bincount(at, weights=value.real, minlength=size)
-    return np.asarray(real + 1j * np.bincount(at, weights=value.imag, minlength=size))
-
-
-def _between(survey: Survey, here: Ints, there: Ints, above: Complex) -> tuple[Complex, Complex]:
-    """Potentials of ``here`` for a current into ``there``, and the other way."""
+    standing = np.flatnonzero((lines.nodes >= 0).all(axis=0))
     find = survey.pattern.find
-    return above[find(here, there)], above[find(there, here)]
+    (i, j), diagonal = lines.nodes[:, standing], survey.pattern.diagonal
+    forth, back = find(i, j), find(j, i)
+    m = len(lines.names)
+    terminals = 2 * m + sum(s.bus.size for s in model.winding_sets)
+    terminals += len(model.sources.names) + len(model.capacitances.names)
+    out = np.zeros((3, terminals), complex)
+    for s, (share, above, whole) in enumerate(zip(out, survey.above, survey.impedance, strict=True)):
+        own = above[diagonal]
+        y = 1 / lines.series[s, standing]
+        if s == 0 and lines.coupled:
+            alone = np.ones(m, bool)
+            alone[np.concatenate([group.line for group in lines.coupled])] = False
+            y[~alone[standing]] = 0
+        share[standing] = y * (own[i] - above[back])
+        share[m + standing] = y * (own[j] - above[forth])
+        for end, nodes in enumerate(lines.nodes):
+            known = np.flatnonzero(nodes >= 0)
+            share[end * m + known] += lines.shunt[s, known] * whole[nodes[known]]
+        rows = [_coupled_rows(model)] if s == 0 and lines.coupled else []
+        start = 2 * m
+        for sets in model.winding_sets:
+            rows.append(_winding_rows(model, sets, s, start))
+            start += sets.bus.size
+        for shunts, potential in ((model.sources, own), (model.capacitances, whole)):
+            end = start + len(shunts.names)
+            share[start:end] = shunts.admittance[s] * potential[shunts.node]
+            start = end
+        for each in rows:
+            apart = np.flatnonzero(each.own != each.other)
+            w = own[each.own]
+            w[apart] = above[find(each.other[apart], each.own[apart])]
+            np.add.at(share, each.terminal, each.value * w)
+    return out
 
 
 def _coupled_rows(model: Model) -> _Rows:

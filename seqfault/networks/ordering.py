@@ -102,10 +102,15 @@ def peel(pattern: UnionPattern, mirror: Ints) -> Peeled:
 
 
 class Order(msgspec.Struct, frozen=True, eq=False):
-    """``place`` (n,) of each node in the elimination; ``lower`` the CSC pattern of L, rows ascending."""
+    """``place`` (n,) of each node in the elimination; ``lower`` the pattern of L (``sorted_pattern``);
+    ``entries`` the matrix in that order, CSC with the numbers of its entries, and ``mirror`` (e,) that of
+    the mirror of each of them.
+    """
 
     place: Ints
     lower: Any
+    entries: Any
+    mirror: Ints
 
 
 def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
@@ -119,27 +124,40 @@ def order(start: Ints, row: Ints, column: Ints, value: Complex) -> Order:
     stand_in = csc_array((dummy, row.astype(np.int32), start.astype(np.int32)), shape=(n, n))
     lu = splu(stand_in, permc_spec="MMD_AT_PLUS_A", **SETTINGS)
     place = np.asarray(lu.perm_c, np.int64)
-    waiting = _cancelled(row, column, value, n)
+    waiting = _cancelled(start, row, column, value)
     if waiting.any():
         place = _after_a_neighbour(place, waiting, row, column)
         turned = np.argsort(place)
         lu = splu(csc_array(stand_in[turned][:, turned]), permc_spec="NATURAL", **SETTINGS)
         place = np.asarray(lu.perm_c, np.int64)[place]  # it still sorts children before their parents
-    lower = lu.L
-    if not lower.has_sorted_indices:
-        lower.sort_indices()
-    return Order(place, lower)
+    lower = sorted_pattern(lu.L)
+    turned = np.argsort(place)
+    counts = count[turned]
+    begin = np.concatenate([[0], np.cumsum(counts)])
+    number = np.repeat(start[turned] - begin[:-1], counts) + np.arange(len(row))
+    by_row = csc_array(
+        (number.astype(np.int32), place[row[number]].astype(np.int32), begin), (n, n)
+    ).tocsr()
+    entries = by_row.tocsc()  # turned twice, its rows ascend
+    return Order(place, lower, entries, by_row.data)
 
 
-def _cancelled(row: Ints, column: Ints, value: Complex, n: int) -> Bools:
-    """Nodes whose own admittance is next to nothing in one sequence."""
-    own = row == column
-    out = np.zeros(n, bool)
-    for each in value:
-        size = np.abs(each)
-        across = np.bincount(column[~own], weights=size[~own], minlength=n)
-        out |= size[own] < CANCELLED * across
+def sorted_pattern(matrix: Any) -> Any:
+    """The CSC pattern of ``matrix``, rows ascending; its data say which value of ``matrix`` each one is."""
+    from scipy.sparse import csc_array
+
+    number = np.arange(matrix.nnz, dtype=np.int32)
+    out = csc_array((number, matrix.indices.copy(), matrix.indptr), shape=matrix.shape)
+    out.sort_indices()
     return out
+
+
+def _cancelled(start: Ints, row: Ints, column: Ints, value: Complex) -> Bools:
+    """Nodes whose own admittance is next to nothing in one sequence."""
+    size = np.abs(value)
+    own = size.take(np.flatnonzero(row == column), axis=1)
+    across = np.add.reduceat(size, start[:-1], axis=1) - own
+    return np.asarray((own < CANCELLED * across).any(axis=0))
 
 
 def _after_a_neighbour(place: Ints, waiting: Bools, row: Ints, column: Ints) -> Ints:

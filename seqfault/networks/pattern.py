@@ -95,24 +95,36 @@ def grounded(stamps: Stamps, reference: Ints, size: int) -> Any:
 
 def union(matrices: Sequence[Any]) -> UnionPattern:
     """Square CSC ``matrices`` of one size, symmetric and with every diagonal entry, on one pattern."""
-    from scipy.sparse import csc_array
-
-    n = matrices[0].shape[0]
-    whole = None
     for matrix in matrices:
         matrix.sort_indices()
-        ones = csc_array((np.ones(matrix.nnz, np.int8), matrix.indices, matrix.indptr), shape=(n, n))
-        whole = ones if whole is None else whole.maximum(ones)
-    assert whole is not None
-    whole.sort_indices()
+    whole, places = matrices[0], [np.arange(matrices[0].nnz)]
+    for k, matrix in enumerate(matrices[1:], 1):
+        same = (j for j in range(k) if alike(matrices[j], matrix))
+        twin = next(same, None)
+        if twin is not None:
+            places.append(places[twin])
+            continue
+        whole, before, here = _merged(whole, matrix)
+        places = [before[place] for place in places] + [here]
     start, row = whole.indptr.astype(np.int64), whole.indices.astype(np.int64)
-    column = np.repeat(np.arange(n), np.diff(start))
+    column = np.repeat(np.arange(len(start) - 1), np.diff(start))
     value = np.zeros((len(matrices), len(row)), complex)
-    key = column * n + row
-    for sequence, matrix in zip(value, matrices, strict=True):
-        if matrix.nnz == len(row):
-            sequence[:] = matrix.data
-        else:
-            at = np.repeat(np.arange(n), np.diff(matrix.indptr)) * n + matrix.indices
-            sequence[np.searchsorted(key, at)] = matrix.data
+    for sequence, matrix, place in zip(value, matrices, places, strict=True):
+        sequence[place] = matrix.data
     return UnionPattern(start, row, column, np.flatnonzero(row == column), value)
+
+
+def alike(a: Any, b: Any) -> bool:
+    """Whether two CSC matrices have their entries at the same places, in the same order."""
+    return a.nnz == b.nnz and np.array_equal(a.indptr, b.indptr) and np.array_equal(a.indices, b.indices)
+
+
+def _merged(a: Any, b: Any) -> tuple[Any, Ints, Ints]:
+    """The union of two sorted CSC patterns, and where it holds the entries of each."""
+    from scipy.sparse import csc_array
+
+    # An entry of the sum is 1 where only a has it, 2 where only b, 3 where both: rows ascend in all three.
+    one, two = (np.full(each.nnz, tag, np.int8) for each, tag in ((a, 1), (b, 2)))
+    both = csc_array((one, a.indices, a.indptr), shape=a.shape)
+    both = both + csc_array((two, b.indices, b.indptr), shape=b.shape)
+    return both, np.flatnonzero(both.data & 1), np.flatnonzero(both.data & 2)

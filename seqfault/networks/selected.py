@@ -20,8 +20,8 @@ from typing import Any
 import numpy as np
 
 from seqfault.model.elements import Complex, Ints
-from seqfault.networks.ordering import SETTINGS, Order, mirrored, order, peel
-from seqfault.networks.pattern import UnionPattern
+from seqfault.networks.ordering import SETTINGS, Order, mirrored, order, peel, sorted_pattern
+from seqfault.networks.pattern import UnionPattern, alike
 from seqfault.networks.supernodes import Shape, Supernodes, supernodes
 
 TOGETHER = 40_000
@@ -33,22 +33,31 @@ def selected_inverse(pattern: UnionPattern) -> Complex:
 
     Raises ``RuntimeError`` where a matrix cannot be factorised with its pivots on the diagonal.
     """
-    mirror = mirrored(pattern.start, pattern.row)
-    peeled = peel(pattern, mirror)
-    out = np.empty(pattern.value.shape, complex)
-    core = peeled.core
-    number = np.full(pattern.size, -1)
+    peeled = peel(pattern, mirrored(pattern.start, pattern.row))
+    core, n = peeled.core, pattern.size
+    number = np.full(n, -1)
     number[core] = np.arange(len(core))
-    kept = np.flatnonzero((number[pattern.row] >= 0) & (number[pattern.column] >= 0))
-    row, column = number[pattern.row[kept]], number[pattern.column[kept]]
-    value = pattern.value[:, kept]
-    value[:, row == column] = peeled.own[:, core]
-    out[:, kept] = _core(row, column, value, len(core))
+    row, column = number[pattern.row], number[pattern.column]
+    kept = np.flatnonzero((row >= 0) & (column >= 0))
+    row, column = row[kept], column[kept]
+    value = pattern.value.take(kept, axis=1)
+    own = np.flatnonzero(row == column)
+    value[:, own] = peeled.own[:, core]
+    inner = _core(row, column, value, len(core))
+    diagonal = np.empty((len(value), n), complex)
+    diagonal[:, core] = inner.take(own, axis=1)
+    across = []
     for turn in reversed(peeled.rounds):
-        above = out[:, pattern.diagonal[turn.parent]]
-        across = -above * turn.factor
-        out[:, turn.entry] = out[:, turn.mirror] = across
-        out[:, pattern.diagonal[turn.node]] = 1 / turn.pivot - across * turn.factor
+        z = -diagonal.take(turn.parent, axis=1) * turn.factor
+        diagonal[:, turn.node] = 1 / turn.pivot - z * turn.factor
+        across.append(z)
+    entry = [turn.entry for turn in reversed(peeled.rounds)]
+    mirror = [turn.mirror for turn in reversed(peeled.rounds)]
+    place = np.concatenate([kept, *entry, *mirror, pattern.diagonal])
+    out = np.empty(pattern.value.shape, complex)
+    for k, each in enumerate(out):
+        ends = [z[k] for z in across]
+        each[place] = np.concatenate([inner[k], *ends, *ends, diagonal[k]])
     return out
 
 
@@ -57,60 +66,52 @@ def _core(row: Ints, column: Ints, value: Complex, n: int) -> Complex:
     start = np.concatenate([[0], np.cumsum(np.bincount(column, minlength=n))])
     elimination = order(start, row, column, value)
     structure = supernodes(elimination.lower)
-    factor, pivot = _factorised(row, column, value, elimination, structure)
+    entries = elimination.entries
+    factor, pivot = _factorised(value.take(entries.data, axis=1), elimination, structure)
     inverse = invert(structure, factor, pivot)
-    lower = np.flatnonzero(row > column)  # L stores one of a pair
-    a, b = elimination.place[row[lower]], elimination.place[column[lower]]
+    below = np.repeat(np.arange(n), np.diff(entries.indptr))
+    lower = np.flatnonzero(entries.indices > below)  # L stores one of a pair; these ascend
     place = np.empty(len(row), np.int64)
-    place[lower] = structure.find(a, b)
-    place[mirrored(start, row)[lower]] = place[lower]
+    place[entries.data[lower]] = structure.find(entries.indices[lower], below[lower])
+    place[elimination.mirror[lower]] = place[entries.data[lower]]
     place[row == column] = structure.own[elimination.place]
     return inverse.take(place, axis=1)
 
 
-def _factorised(
-    row: Ints, column: Ints, value: Complex, elimination: Order, structure: Supernodes
-) -> tuple[Complex, Complex]:
-    """L below the diagonal and D⁻¹ on it, (sequences, size) each, as the blocks lie."""
+def _factorised(value: Complex, elimination: Order, structure: Supernodes) -> tuple[Complex, Complex]:
+    """L, and D⁻¹ where its diagonal lies, (sequences, size) each, as the blocks lie."""
     from scipy.sparse import csc_array
     from scipy.sparse.linalg import splu
 
-    n, place = len(elimination.place), elimination.place.astype(np.int32)
-    entries = csc_array(
-        (
-            np.arange(len(row), dtype=np.int32),
-            (place[row], place[column]),
-        ),
-        shape=(n, n),
-    )
-    entries.sort_indices()
+    entries = elimination.entries
     factor = np.zeros((len(value), structure.size), complex)
     pivot = np.zeros_like(factor)
-    pattern = elimination.lower
-    strict = np.ones(len(pattern.indices), bool)
-    strict[pattern.indptr[:-1]] = False
+    last: Any = None
     for k, each in enumerate(value):
-        matrix = csc_array((each.take(entries.data), entries.indices, entries.indptr), shape=(n, n))
+        matrix = csc_array((each, entries.indices, entries.indptr), shape=entries.shape)
         lu = splu(matrix, permc_spec="NATURAL", **SETTINGS)
         if not np.array_equal(lu.perm_r, lu.perm_c):
             raise RuntimeError("a pivot is off the diagonal")
         pivot[k, structure.own] = 1 / lu.U.diagonal()
-        _lay(factor[k], lu.L, pattern, strict, structure)
+        lower = lu.L
+        if last is None or not alike(lower, last):
+            place = _places(lower, structure)
+            last = lower
+        factor[k, place] = lower.data
     return factor, pivot
 
 
-def _lay(into: Complex, lower: Any, pattern: Any, strict: Any, structure: Supernodes) -> None:
-    """Values of ``lower`` into the blocks; an entry that is exactly zero is not stored in it."""
-    if not lower.has_sorted_indices:
-        lower.sort_indices()
-    if lower.nnz == pattern.nnz:
-        into[structure.entry[strict]] = lower.data[strict]
-        return
-    n = lower.shape[0]
-    key = np.repeat(np.arange(n), np.diff(lower.indptr)) * n + lower.indices
-    below = np.ones(lower.nnz, bool)
-    below[lower.indptr[:-1]] = False
-    into[structure.entry[np.searchsorted(structure.key, key[below])]] = lower.data[below]
+def _places(lower: Any, structure: Supernodes) -> Ints:
+    """Where the values of ``lower`` go, in which those that are exactly zero are not stored."""
+    pattern = sorted_pattern(lower)
+    entry = structure.entry
+    if lower.nnz != len(entry):
+        n = lower.shape[0]
+        key = np.repeat(np.arange(n) * n, np.diff(pattern.indptr)) + pattern.indices
+        entry = entry[np.searchsorted(structure.key, key)]
+    place = np.empty(lower.nnz, np.int64)
+    place[pattern.data] = entry
+    return place
 
 
 def invert(structure: Supernodes, factor: Complex, pivot: Complex) -> Complex:
@@ -138,33 +139,47 @@ def _invert_some(
     c, w = shape.below, shape.width
     rows, m = w + c, len(factor)
     at = shape.value + begin * rows * w
-    here = slice(at, at + count * rows * w)
-    z = inverse[:, here].reshape(m, count, rows, w)  # a view: D⁻¹ on the diagonal, zero elsewhere
-    lower = factor[:, here].reshape(m, count, rows, w)
-    links = slice(shape.link + begin * c, shape.link + (begin + count) * c)
-    front = structure.base[links].reshape(count, c, 1) + structure.position[links].reshape(count, 1, c)
-    among = fronts.take(front)  # where Z_ss lies
+    end = at + count * rows * w
+    z = inverse[:, at:end].reshape(m, count, rows, w)  # a view: D⁻¹ on the diagonal, zero elsewhere
+    lower = factor[:, at:end].reshape(m, count, rows, w)
+    if c:
+        links = slice(shape.link + begin * c, shape.link + (begin + count) * c)
+        front = structure.base[links].reshape(count, c, 1) + structure.position[links].reshape(count, 1, c)
+        among = fronts.take(front)  # where Z_ss lies
+        known = inverse.take(among, axis=1)
     if w == 1:
         if c:
-            column = lower[:, :, 1:, 0]
-            known = inverse.take(among, axis=1)
-            product = known[..., 0] * column if c == 1 else np.matmul(known, column[..., None])[..., 0]
-            np.negative(product, out=z[:, :, 1:, 0])
-            z[:, :, 0, 0] += (product * column).sum(axis=-1)
+            column = lower[:, :, 1:]
+            product = known * column if c == 1 else np.matmul(known, column)
+            np.negative(product, out=z[:, :, 1:])
+            product *= column
+            z[:, :, 0] += product.sum(axis=2)
     else:
-        x = np.linalg.inv(lower[:, :, :w] + np.eye(w))
-        middle = z[:, :, :w].copy()
+        x = _unit_inverse(lower[:, :, :w])
+        middle = z[:, :, :w]
         if c:
             under = lower[:, :, w:]
-            product = np.matmul(inverse.take(among, axis=1), under)
-            middle += np.matmul(under.swapaxes(-1, -2), product)
+            product = np.matmul(known, under)
+            middle = middle + np.matmul(under.swapaxes(-1, -2), product)
             np.negative(np.matmul(product, x), out=z[:, :, w:])
         z[:, :, :w] = np.matmul(np.matmul(x.swapaxes(-1, -2), middle), x)
     if shape.leaf:
         return
     start = shape.front + begin * rows**2
     square = fronts[start : start + count * rows**2].reshape(count, rows, rows)
-    places = np.arange(here.start, here.stop, dtype=np.int32).reshape(count, rows, w)
+    places = np.arange(at, end, dtype=np.int32).reshape(count, rows, w)
     square[:, :, :w] = places
-    square[:, :w, w:] = places[:, w:].swapaxes(1, 2)
-    square[:, w:, w:] = among
+    if c:
+        square[:, :w, w:] = places[:, w:].swapaxes(1, 2)
+        square[:, w:, w:] = among
+
+
+def _unit_inverse(lower: Complex) -> Complex:
+    """Inverses of unit triangular matrices (…, w, w)."""
+    w = lower.shape[-1]
+    if w > 3:
+        return np.asarray(np.linalg.inv(lower))
+    x = 2 * np.eye(w) - lower  # with N below the diagonal, 1 − N + N²
+    if w == 3:
+        x[..., 2, 0] += lower[..., 2, 1] * lower[..., 1, 0]
+    return np.asarray(x)

@@ -16,7 +16,7 @@ from typing import Any
 import msgspec
 import numpy as np
 
-from seqfault.model.elements import Ints
+from seqfault.model.elements import Bools, Ints
 
 BELOW = np.array(
     (
@@ -26,6 +26,8 @@ BELOW = np.array(
 )
 """Numbers of rows below are rounded up to these: a few zeros buy fewer shapes."""
 FEW = 40
+TOP = 48
+"""Up to so many columns at the top of the tree are one supernode."""
 
 
 class Shape(msgspec.Struct, frozen=True, eq=False):
@@ -46,8 +48,8 @@ class Supernodes(msgspec.Struct, frozen=True, eq=False):
     """Where everything lies. ``size`` values in all, ``front_size`` places in fronts.
 
     ``own`` (n,) place of the diagonal value of a column, ``entry`` (e,) of each entry of L (the
-    diagonal too). ``position`` and ``base`` one a row below: its row in the parent's front, and where
-    that row of the front begins. ``key`` (e,) column · n + row, ascending.
+    diagonal too). ``position`` and ``base`` one a row below, of 32 bits: its row in the parent's front,
+    and where that row of the front begins. ``key`` (e,) column · n + row, ascending.
     """
 
     shapes: tuple[Shape, ...]
@@ -55,8 +57,8 @@ class Supernodes(msgspec.Struct, frozen=True, eq=False):
     front_size: int
     own: Ints
     entry: Ints
-    position: Ints
-    base: Ints
+    position: Any
+    base: Any
     key: Ints
 
     def find(self, a: Ints, b: Ints) -> Ints:
@@ -69,6 +71,82 @@ def supernodes(lower: Any) -> Supernodes:
     """The supernodes of ``lower``, the CSC pattern of L with its diagonal, rows ascending."""
     n = lower.shape[0]
     start, row = lower.indptr.astype(np.int64), lower.indices.astype(np.int64)
+    column = np.repeat(np.arange(n), np.diff(start))
+    tree = _tree(start, row)
+    unit, within, width, exact, parent = tree.unit, tree.within, tree.width, tree.exact, tree.parent
+    units = len(width)
+    below = BELOW[np.searchsorted(BELOW, exact)]
+    above = np.where(parent >= 0, unit[parent], units)
+
+    key = ((tree.height.max(initial=0) - tree.height) * 65536 + below) * 65536 + width
+    turn = np.argsort(key, kind="stable")
+    bounds = np.append(np.flatnonzero(np.diff(key[turn], prepend=-1)), units)
+    rows = width + below
+    value, size = _offsets(rows * width, turn)
+    front, front_size = _offsets(np.where(tree.leaf, 0, rows * rows), turn)
+    link, links = _offsets(below, turn)
+
+    own = value[unit] + within * (width[unit] + 1)
+    down = np.arange(len(row)) - start[column]  # rows of a supernode are without gaps
+    if tree.top >= 0:
+        inside = np.flatnonzero(unit[column] == tree.top)  # but not those of the topmost
+        down[inside] = within[row[inside]] - within[column[inside]]
+    entry = own[column] + down * width[unit][column]
+
+    whose = np.repeat(np.arange(units), exact)
+    step = np.arange(len(whose)) - np.repeat(np.cumsum(exact) - exact, exact)
+    head, wanted = parent[whose], row[start[tree.last][whose] + 1 + step]
+    keys = column * n + row
+    found = np.searchsorted(keys, head * n + wanted)
+    position = found - start[head] + within[head]
+    uppermost = above[whose] == tree.top
+    position[uppermost] = within[wanted[uppermost]]
+    missing = row[np.minimum(found, len(row) - 1)] != wanted
+    if (np.where(uppermost, unit[wanted] != tree.top, missing)).any():
+        raise AssertionError("the pattern of the factor is not closed")  # rows of a child are its parent's
+    places, bases = np.zeros(links, np.int32), np.append(front, 0)[np.repeat(above[turn], below[turn])]
+    at = link[whose] + step
+    places[at] = position
+    bases[at] += position * rows[above[whose]]
+    begin = turn[bounds[:-1]]
+    shapes = zip(
+        *(each[begin].tolist() for each in (below, width, tree.leaf)),
+        np.diff(bounds).tolist(),
+        *(each[begin].tolist() for each in (value, front, link)),
+        strict=True,
+    )
+    return Supernodes(
+        tuple(Shape(*shape) for shape in shapes),
+        size,
+        front_size,
+        own,
+        entry,
+        places,
+        bases.astype(np.int32),
+        keys,
+    )
+
+
+class _Tree(msgspec.Struct, frozen=True, eq=False):
+    """``unit`` (n,) supernode of each column, ``within`` (n,) its place there. One a supernode: ``width``;
+    ``exact`` rows below; ``last`` its last column and ``parent`` the first row below that, −1 without
+    one; ``height`` over the deepest leaf; ``leaf``. ``top`` is the topmost one, −1 where there is none.
+    """
+
+    unit: Ints
+    within: Ints
+    width: Ints
+    exact: Ints
+    last: Ints
+    parent: Ints
+    height: Ints
+    leaf: Bools
+    top: int
+
+
+def _tree(start: Ints, row: Ints) -> _Tree:
+    """Fundamental supernodes; the topmost of the tree, each a step by itself, are one without gaps."""
+    n = len(start) - 1
     count = np.diff(start) - 1
     parent = np.full(n, -1)
     parent[count > 0] = row[start[:-1][count > 0] + 1]
@@ -76,49 +154,33 @@ def supernodes(lower: Any) -> Supernodes:
     merged[:-1] = (parent[:-1] == np.arange(1, n)) & (count[:-1] == count[1:] + 1) & (count[:-1] > 1)
     first = np.flatnonzero(np.concatenate([[True], ~merged[:-1]]))
     last = np.append(first[1:], n) - 1
-    width, units = last - first + 1, len(first)
-    unit = np.repeat(np.arange(units), width)
-    exact = count[last]
-    below = BELOW[np.searchsorted(BELOW, exact)]
-    above = np.where(parent[last] >= 0, unit[parent[last]], units)
-    height, leaf = _heights(above, units)
-
-    key = ((height.max(initial=0) - height) * 65536 + below) * 65536 + width
-    turn = np.argsort(key, kind="stable")
-    bounds = np.append(np.flatnonzero(np.diff(key[turn], prepend=-1)), units)
-    rows = width + below
-    value, size = _offsets(rows * width, turn)
-    front, front_size = _offsets(np.where(leaf, 0, rows * rows), turn)
-    link, links = _offsets(below, turn)
-
-    within = np.arange(n) - first[unit]  # place of a column in its supernode
-    column = np.repeat(np.arange(n), count + 1)
-    own = value[unit] + within * (width[unit] + 1)
-    entry = own[column] + (np.arange(len(row)) - start[column]) * width[unit][column]
-
-    whose = np.repeat(np.arange(units), exact)
-    step = np.arange(len(whose)) - np.repeat(np.cumsum(exact) - exact, exact)
-    head = parent[last][whose]
-    keys = column * n + row
-    target = head * n + row[start[last][whose] + 1 + step]
-    found = np.searchsorted(keys, target)
-    if not np.array_equal(keys[np.minimum(found, len(keys) - 1)], target):
-        raise AssertionError("the pattern of the factor is not closed")  # rows of a child are its parent's
-    position = np.zeros(links, np.int64)
-    at = link[whose] + step
-    position[at] = found - start[head] + within[head]
-    every = np.repeat(turn, below[turn])
-    base = np.append(front, 0)[above[every]]
-    base[at] += position[at] * rows[above[whose]]
-    begin = turn[bounds[:-1]]
-    shapes = zip(
-        *(each[begin].tolist() for each in (below, width, leaf)),
-        np.diff(bounds).tolist(),
-        *(each[begin].tolist() for each in (value, front, link)),
-        strict=True,
-    )
-    return Supernodes(
-        tuple(Shape(*shape) for shape in shapes), size, front_size, own, entry, position, base, keys
+    width = last - first + 1
+    unit = np.repeat(np.arange(len(first)), width)
+    within = np.arange(n) - first[unit]
+    above = np.where(parent[last] >= 0, unit[parent[last]], len(first))
+    height, leaf = _heights(above, len(first))
+    columns = np.cumsum(np.bincount(height, weights=width)[::-1])[::-1]  # at this height and above
+    lowest = int(np.searchsorted(-columns, -TOP))
+    high = height >= lowest
+    if high.sum() < 2:
+        return _Tree(unit, within, width, count[last], last, parent[last], height, leaf, -1)
+    kept = np.flatnonzero(~high)
+    number = np.full(len(first), len(kept))
+    number[kept] = np.arange(len(kept))
+    unit = number[unit]
+    inside = np.flatnonzero(unit == len(kept))
+    within[inside] = np.arange(len(inside))
+    last = np.append(last[kept], inside[-1])
+    return _Tree(
+        unit,
+        within,
+        np.append(width[kept], len(inside)),
+        np.append(count[last[:-1]], 0),
+        last,
+        np.append(parent[last[:-1]], -1),
+        np.append(height[kept], lowest),
+        np.append(leaf[kept], lowest == 0),
+        len(kept),
     )
 
 

@@ -56,13 +56,13 @@ def survey_of(networks: Sequence[SequenceFactor], size: int) -> Survey:
             inverse = None
     if inverse is None:
         inverse = np.zeros(pattern.value.shape, complex)
-        sound = [False] * 3
+        worst = np.full(3, np.inf)
     else:
-        sound = [bool(error <= TOLERANCE) for error in _errors(pattern, inverse, networks)]
+        worst = np.array([_error(pattern, s, inverse[s], network) for s, network in enumerate(networks)])
     for s, network in enumerate(networks):
-        if not sound[s]:
+        if not worst[s] <= TOLERANCE:
             inverse[s] = _by_columns(network, pattern)
-    worst = _errors(pattern, inverse, networks)
+            worst[s] = _error(pattern, s, inverse[s], network)
     if not (worst <= TOLERANCE).all():
         s = int(np.argmax(~(worst <= TOLERANCE)))
         raise CheckError(
@@ -84,19 +84,16 @@ def _held(network: SequenceFactor, size: int) -> Bools:
     return held
 
 
-def _errors(pattern: UnionPattern, inverse: Complex, networks: Sequence[SequenceFactor]) -> Floats:
-    """Largest error of any column, a sequence each; nan where something is not finite."""
-    out = np.zeros(len(networks))
-    for s, network in enumerate(networks):
-        product = pattern.value[s] * inverse[s]
-        left = np.abs(np.add.reduceat(product, pattern.start[:-1]) - 1)
-        own = np.abs(inverse[s, pattern.diagonal])
-        terms = np.add.reduceat(np.abs(pattern.value[s]), pattern.start[:-1]) * own
-        terms = np.maximum(terms, np.add.reduceat(np.abs(product), pattern.start[:-1]))
-        free = ~_held(network, pattern.size)
-        with np.errstate(invalid="ignore", divide="ignore"):
-            out[s] = (left / terms)[free].max(initial=0.0)
-    return out
+def _error(pattern: UnionPattern, s: int, inverse: Complex, network: SequenceFactor) -> float:
+    """Largest error of any column of the inverse of sequence ``s``; nan where something is not finite."""
+    start, value = pattern.start[:-1], pattern.value[s]
+    product = value * inverse
+    left = np.abs(np.add.reduceat(product, start) - 1)
+    terms = np.add.reduceat(np.abs(value), start) * np.abs(inverse[pattern.diagonal])
+    terms = np.maximum(terms, np.add.reduceat(np.abs(product), start))
+    free = ~_held(network, pattern.size)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return float((left / terms)[free].max(initial=0.0))
 
 
 def _by_columns(network: SequenceFactor, pattern: UnionPattern) -> Complex:
@@ -118,17 +115,19 @@ def _bordered(network: SequenceFactor, pattern: UnionPattern, above: Complex) ->
     impedance = above[pattern.diagonal]
     infinite = np.zeros(pattern.size, bool)
     part = network.free.part
-    at = np.flatnonzero(part >= 0)
-    if not len(at):
-        return impedance, infinite
-    lift = np.zeros((pattern.size, network.free.basis.shape[1]), complex)  # σ⁻¹ d
-    lift[at] = np.einsum("ikl,il->ik", network.compliance[part[at]], network.direction[at])
-    impedance[at] += (network.direction[at] * lift[at]).sum(axis=1)
-    seen = np.einsum("ik,ikx->ix", network.direction[at], network.slack[part[at]])
-    infinite[at] = (np.abs(seen) > SEEN).any(axis=1)
     label = np.full(pattern.size, -1)
     label[: network.size] = part
-    inside = np.flatnonzero((label[pattern.row] >= 0) & (label[pattern.row] == label[pattern.column]))
-    drop = network.drop[pattern.row[inside]]
-    above[inside] -= (drop * lift[pattern.column[inside]]).sum(axis=1)
+    for k in sorted(set(network.free.dimension.tolist())):  # most parts have one free vector
+        chosen = np.append(network.free.dimension == k, False)  # part −1 is none
+        at = np.flatnonzero(chosen[part])
+        direction = network.direction[at, :k]
+        lift = np.zeros((pattern.size, k), complex)  # σ⁻¹ d
+        lift[at] = np.einsum("ikl,il->ik", network.compliance[part[at], :k, :k], direction)
+        impedance[at] += (direction * lift[at]).sum(axis=1)
+        seen = np.einsum("ik,ikx->ix", direction, network.slack[part[at], :k, :k])
+        infinite[at] = (np.abs(seen) > SEEN).any(axis=1)
+        inside = chosen[label[pattern.row]] & (label[pattern.row] == label[pattern.column])
+        entry = np.flatnonzero(inside)
+        drop = network.drop[pattern.row[entry], :k]
+        above[entry] -= (drop * lift[pattern.column[entry]]).sum(axis=1)
     return impedance, infinite

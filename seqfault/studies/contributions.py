@@ -51,13 +51,13 @@ def contributions(network: Network) -> Contributions:
     rows = len(terminals.shown)
     used = np.flatnonzero((terminals.row >= 0) & (terminals.node >= 0))
     share = np.zeros((3, rows), complex)
-    for s in range(3):
-        np.add.at(share[s], terminals.row[used], terminal_shares(model, survey, s)[used])
+    for s, of in enumerate(terminal_shares(model, survey)):
+        np.add.at(share[s], terminals.row[used], of[used])
     # Rows by node, then a slice a bus.
     kept = np.flatnonzero(terminals.closed[terminals.shown])
     node = terminals.node[terminals.shown[kept]]
     kept = kept[np.argsort(node, kind="stable")]
-    first = np.searchsorted(np.sort(node), np.arange(model.common + 1))
+    first = np.concatenate([[0], np.cumsum(np.bincount(node, minlength=model.common))])
     size = (first[1:] - first[:-1])[model.node]
     start = np.concatenate([[0], np.cumsum(size)])
     whose = np.repeat(np.arange(len(model.buses)), size)
@@ -68,23 +68,24 @@ def contributions(network: Network) -> Contributions:
     fault = _fault_currents(network)
     out = {name: np.zeros(len(whose)) for name in ("k3", "k2", "k2e", "earth", "k1", "k1_earth")}
     for name, sequence in fault.items():
-        i0, i1, i2 = (current[whose] * of for current, of in zip(sequence, part, strict=True))
-        if name in ("k3", "k2"):
-            i0 = np.zeros_like(i0)
-        b, c = i0 + A.conjugate() * i1 + A * i2, i0 + A * i1 + A.conjugate() * i2
         if name == "k3":
-            out[name] = np.abs(i1)
-        elif name == "k1":
+            out[name] = np.abs(sequence[1][whose] * part[1])
+            continue
+        i0, i1, i2 = (current[whose] * of for current, of in zip(sequence, part, strict=True))
+        if name == "k1":
             out[name], out["k1_earth"] = np.abs(i0 + i1 + i2), 3 * np.abs(i0)
-        else:
-            out[name] = np.maximum(np.abs(b), np.abs(c))
+            continue
+        if name == "k2":
+            i0[:] = 0
+        b, c = i0 + A.conjugate() * i1 + A * i2, i0 + A * i1 + A.conjugate() * i2
+        out[name] = np.maximum(np.abs(b), np.abs(c))
         if name == "k2e":
             out["earth"] = 3 * np.abs(i0)
     return Contributions(
         state=model.state,
         start=start,
-        element=tuple(terminals.element[k] for k in shown.tolist()),
-        side=tuple(terminals.side[k] for k in shown.tolist()),
+        element=tuple(map(terminals.element.__getitem__, shown.tolist())),
+        side=tuple(map(terminals.side.__getitem__, shown.tolist())),
         bus=terminals.bus[shown],
         share=part,
         **out,

@@ -1,10 +1,13 @@
 """Seeded synthetic grids of any size, as case trees.
 
-``python -m tests.bench.grid 20000 grid.json`` writes one. About a tenth of the buses form a 110 kV mesh.
+``python -m tests.bench.grid 20000 grid.json`` writes one, with ``meshed`` behind it one that is all mesh
+and has no radial ends. Of the usual ones about a tenth of the buses form a 110 kV mesh.
 Zones of 33 kV hang from it by one to three transformers, zones of 11 kV from those, ends of 0.4 kV
 from these: rings, chords and radial tails, 2.6 branch ends a bus in all. Delta windings break zero
 sequence everywhere; zones are earthed solidly, through resistors or not at all, and what is not
-earthed has capacitance, or in a few zones not even that. Seven buses of a hundred have a source.
+earthed has capacitance, or in a few zones not even that. Some lines of the mesh are coupled to one they
+share no bus with; some star-star transformers have both star points on one resistor. Seven buses of a
+hundred have a source.
 """
 
 from __future__ import annotations
@@ -18,6 +21,7 @@ from typing import Any
 
 Tree = dict[str, Any]
 MESH = 0.12
+COUPLED, SHARED = 0.03, 0.2  # lines of the mesh; star-star transformers under 33 kV
 INFEED, GENERATOR, MOTOR = 0.10, 0.025, 0.06  # shares of the mesh, of 33 kV buses, of all others
 
 
@@ -43,14 +47,27 @@ LEVELS = {
 
 @dataclass
 class _Maker:
-    """A tree in the making; ``left`` buses may still be added."""
+    """A tree in the making; ``left`` buses may still be added.
+
+    ``extra`` chooses couplings and shared star points: the rest is the same without them.
+    """
 
     chance: random.Random
+    extra: random.Random
     left: int
     tree: Tree = field(
         default_factory=lambda: {
             table: {}
-            for table in ("buses", "infeeds", "generators", "motors", "lines", "transformers", "neutrals")
+            for table in (
+                "buses",
+                "infeeds",
+                "generators",
+                "motors",
+                "lines",
+                "mutual_couplings",
+                "transformers",
+                "neutrals",
+            )
         }
     )
 
@@ -70,7 +87,7 @@ class _Maker:
         self.left -= count
         return [self.add("buses", "B", LEVELS[level].volt) for _ in range(count)]
 
-    def line(self, level: int, i: str, j: str, charged: bool = True, may_open: bool = False) -> None:
+    def line(self, level: int, i: str, j: str, charged: bool = True, may_open: bool = False) -> str:
         of, c = LEVELS[level], self.chance
         r, x = of.z1[0] * c.uniform(0.7, 1.5), of.z1[1] * c.uniform(0.9, 1.1)
         record: Tree = {
@@ -85,14 +102,18 @@ class _Maker:
             record |= {"c1": f"{1.6 * farad * 1e9:.4g} nF/km", "c0": f"{farad * 1e9:.4g} nF/km"}
         if may_open and self.maybe(0.5):
             record["open"] = [j]
-        self.add("lines", "L", record)
+        return self.add("lines", "L", record)
 
     def mesh(self, count: int) -> list[str]:
         """A lattice: every bus joined to the next, half of them to the row below."""
         names = self.buses(110, count)
         width = max(2, round(len(names) ** 0.5))
+        along = [""]
         for k in range(1, len(names)):
-            self.line(110, names[k - 1], names[k])
+            along.append(self.line(110, names[k - 1], names[k]))
+            if k > width and self.extra.random() < COUPLED:  # with the line beside it in the row below
+                pair = {"lines": [along[k - width], along[k]], "z0": "0.1+j0.3 ohm/km"}
+                self.add("mutual_couplings", "K", pair)
             if k >= width and self.maybe(0.55):
                 self.line(110, names[k - width], names[k])
         for k, name in enumerate(names):
@@ -147,7 +168,10 @@ class _Maker:
                 low["voltage"] = f"{kilovolt * self.chance.choice((0.98, 1.025, 1.05)):.6g} kV"
             if group.startswith("YN"):
                 high["neutral"] = self.chance.choice(("solid", "solid", "isolated"))
-            if "yn" in group:
+            if group == "YNyn0" and above == 33 and self.extra.random() < SHARED:
+                both = {"current": f"{self.extra.randint(50, 800)} A", "voltage": of.volt}
+                low["neutral"] = high["neutral"] = self.add("neutrals", "N", both)
+            elif "yn" in group:
                 low["neutral"] = shared or (self.resistor(of.volt) if lv_star == "resistor" else lv_star)
             record: Tree = {
                 "vector_group": group,
@@ -198,10 +222,13 @@ def _hang(make: _Maker, above: int, hv: list[str], level: int, size: tuple[int, 
     return names
 
 
-def grid(buses: int, seed: int = 1) -> Tree:
-    """The tree of a case file with exactly ``buses`` buses, the same for the same ``seed``."""
-    make = _Maker(random.Random(seed), buses)
-    mesh = make.mesh(max(2, round(MESH * buses)))
+def grid(buses: int, seed: int = 1, meshed: bool = False) -> Tree:
+    """The tree of a case file with exactly ``buses`` buses, the same for the same ``seed``.
+
+    All of them are of the mesh where it is ``meshed``.
+    """
+    make = _Maker(random.Random(seed), random.Random(seed + 1), buses)
+    mesh = make.mesh(buses if meshed else max(2, round(MESH * buses)))
     while make.left:
         start = make.chance.randrange(len(mesh))
         ends = mesh[start : start + make.chance.choice((1, 2, 2, 3))]
@@ -220,13 +247,13 @@ def grid(buses: int, seed: int = 1) -> Tree:
 
 def degree(tree: Tree) -> float:
     """Branch ends a bus."""
-    return 2 * (len(tree["lines"]) + len(tree["transformers"])) / len(tree["buses"])
+    return 2 * (len(tree["lines"]) + len(tree.get("transformers", ()))) / len(tree["buses"])
 
 
-def write_json(path: Path, buses: int, seed: int = 1) -> None:
+def write_json(path: Path, buses: int, seed: int = 1, meshed: bool = False) -> None:
     """Write the grid as the JSON form of a case file."""
-    path.write_text(json.dumps(grid(buses, seed)), encoding="utf-8")
+    path.write_text(json.dumps(grid(buses, seed, meshed)), encoding="utf-8")
 
 
 if __name__ == "__main__":
-    write_json(Path(sys.argv[2]), int(sys.argv[1]))
+    write_json(Path(sys.argv[2]), int(sys.argv[1]), meshed="meshed" in sys.argv[3:])

@@ -24,7 +24,6 @@ import scipy.sparse
 import scipy.sparse.linalg
 
 import seqfault
-from seqfault.faults.network import Network
 from seqfault.networks.factors import SequenceFactor, SequenceNetworks
 
 ROOT = Path(__file__).parents[2]
@@ -83,9 +82,11 @@ class Turns:
     def once(self, turn: int) -> SequenceNetworks:
         """Every stage, from the file to a fault somewhere."""
         case = self.timed("read", lambda: seqfault.read_case(self.path))
-        network: Network = self.timed("model", lambda: Network(case))
+        network = self.timed("model", lambda: seqfault.Network(case))
         networks = network.sequences
-        self.timed("networks", lambda: [networks[s] for s in range(3)])
+        # Each is factorised when it is first solved.
+        first = np.zeros(1, np.int64)
+        self.timed("networks", lambda: [networks[s].columns(first) for s in range(3)])
         bus = network.buses[(turn * 7919) % len(network.buses)]
         self.timed("fault", lambda: network.fault(bus, "line-ground"))
         return networks

@@ -36,9 +36,9 @@ def seconds(work: Callable[[], object]) -> float:
     return time.perf_counter() - start
 
 
-def report(buses: int) -> None:
+def report(buses: int, meshed: bool = False) -> None:
     """Measure one grid and print a line for each stage."""
-    case = seqfault.case_from_tree(grid(buses))
+    case = seqfault.case_from_tree(grid(buses, meshed=meshed))
     loaded = peak()
     first = seqfault.Network(case)
     seqfault.levels(first)
@@ -68,7 +68,8 @@ def report(buses: int) -> None:
         for name, work in stages.items():
             found[name].append(seconds(work))
     medians = {name: statistics.median(times) for name, times in found.items()}
-    print(f"{buses} buses: three splu {1e3 * medians['reference']:.1f} ms")
+    kind = ", all of them mesh" if meshed else ""
+    print(f"{buses} buses{kind}: three splu {1e3 * medians['reference']:.1f} ms")
     for name in ("inverse", "checked", "model", "survey"):
         print(f"  {name:<9}{medians[name] / medians['reference']:8.2f} x  {medians[name]:8.3f} s")
     print(f"  peak memory over the loaded case {over / 2**20:.0f} MiB", flush=True)
@@ -97,5 +98,6 @@ def command(buses: int) -> None:
 
 if __name__ == "__main__":
     for size in [int(text) for text in sys.argv[1:]] or SIZES:
-        report(size)
+        for meshed in (False, True):
+            report(size, meshed)
     command(COMMAND)
