@@ -3,19 +3,23 @@
 import pytest
 from hypothesis import settings
 
+EXAMPLES = 300
+
 
 def pytest_addoption(parser: pytest.Parser) -> None:
     parser.addoption(
         "--referee-examples",
         type=int,
-        default=300,
-        help="random networks that are judged by the referee (default 300)",
+        default=None,
+        help=f"random networks judged by the referee, drawn anew (default: the same {EXAMPLES} each time)",
     )
 
 
 def pytest_configure(config: pytest.Config) -> None:
-    settings.register_profile("referee", max_examples=config.getoption("--referee-examples"), deadline=None)
-    few = max(1, config.getoption("--referee-examples") // 2)
-    settings.register_profile("anywhere", max_examples=few, deadline=None)
-    settings.register_profile("seqfault", deadline=None)
+    wanted = config.getoption("--referee-examples")
+    same = wanted is None  # the default run draws the same examples every time
+    many = EXAMPLES if wanted is None else wanted
+    settings.register_profile("referee", max_examples=many, deadline=None, derandomize=same)
+    settings.register_profile("anywhere", max_examples=max(1, many // 2), deadline=None, derandomize=same)
+    settings.register_profile("seqfault", deadline=None, derandomize=same)
     settings.load_profile("seqfault")

@@ -21,9 +21,10 @@ from collections.abc import Sequence
 import msgspec
 import numpy as np
 
-from seqfault.model.elements import Bools, Complex, Floats, Ints, Model
+from seqfault.model.elements import Bools, Complex, CoupledLines, Floats, Ints, Model
 from seqfault.model.windings import Incidence, incidence
-from seqfault.networks.connectivity import held_windings, joined_parts
+from seqfault.networks.connectivity import joined_parts
+from seqfault.networks.edges import coupled_edges, couplings, once_each, strong_edges
 from seqfault.networks.factors import SequenceFactor
 from seqfault.networks.parting import Joined, components_of
 
@@ -45,89 +46,6 @@ class _Branches(msgspec.Struct, frozen=True, eq=False):
     drop: Complex
     admittance: Complex
     shunt: Complex
-
-
-class Edges(msgspec.Struct, frozen=True, eq=False):
-    """What strong elements join, earth as the last node: ``ends`` (2, e), the ``owners`` (e,) of the edges,
-    and ``hard`` (e,) edges of conditions on more than two nodes."""
-
-    ends: Ints
-    owners: tuple[str, ...]
-    hard: Bools
-
-
-def strong_edges(model: Model, sequence: int) -> Edges:
-    """The strong elements of sequence 0, 1 or 2 as edges between nodes and earth."""
-    earth = model.nodes if sequence == 0 else model.common
-    firsts: list[Ints] = []
-    seconds: list[Ints] = []
-    owners: list[str] = []
-    hard: list[Bools] = []
-
-    def join(names: Sequence[str], first: Ints, second: Ints, difficult: Bools) -> None:
-        firsts.append(np.where(first < 0, earth, first))
-        seconds.append(np.where(second < 0, earth, second))
-        owners.extend(names)
-        hard.append(difficult)
-
-    sources = model.sources
-    fed = sources.admittance[sequence] != 0
-    names = [name for name, there in zip(sources.names, fed, strict=True) if there]
-    join(names, sources.node[fed], np.full(len(names), earth), np.zeros(len(names), bool))
-    lines = model.lines
-    stands = np.flatnonzero((lines.nodes >= 0).all(axis=0))
-    first, second = lines.nodes[:, stands]
-    join([lines.names[k] for k in stands.tolist()], first, second, np.zeros(len(stands), bool))
-    for sets in model.winding_sets:
-        inc = incidence(sets, sequence, model.stars.node)
-        for unit, winding, other in held_windings(sets, sequence):
-            if not len(unit):
-                continue
-            which = [winding] if other is None else [winding, other]
-            node = np.where(inc.weight[unit][:, which] != 0, inc.node[unit][:, which], -1)
-            node = np.sort(node.reshape(len(unit), -1), axis=1)[:, ::-1]
-            count = (node >= 0).sum(axis=1)
-            named = [sets.names[k] for k in unit.tolist()]
-            for j in range(1, node.shape[1]):
-                needed = (count > j) if j > 1 else (count > 0)
-                join(
-                    [name for name, there in zip(named, needed, strict=True) if there],
-                    node[needed, 0],
-                    node[needed, j],
-                    (count > 2)[needed],
-                )
-    ends = np.stack([np.concatenate(firsts), np.concatenate(seconds)])
-    return Edges(ends, tuple(owners), np.concatenate(hard))
-
-
-def coupled_edges(model: Model, sequence: int) -> Edges:
-    """Edges between all nodes of one unit: its windings share a core, joined or not."""
-    firsts, seconds = [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
-    owners: list[str] = []
-    for sets in model.winding_sets:
-        inc = incidence(sets, sequence, model.stars.node)
-        carries = (inc.admittance != 0).any(axis=2)[:, :, None]
-        node = np.where((inc.weight != 0) & carries, inc.node, -1).reshape(
-            len(sets.names), 2 * carries.shape[1]
-        )
-        head = node.max(axis=1, initial=-1)[:, None]
-        unit, place = np.nonzero((node >= 0) & (node != head))
-        firsts.append(head[unit, 0])
-        seconds.append(node[unit, place])
-        owners += [sets.names[k] for k in unit.tolist()]
-    ends = np.stack([np.concatenate(firsts), np.concatenate(seconds)])
-    return Edges(ends, tuple(owners), np.zeros(len(owners), bool))
-
-
-def _once(*each: Edges) -> tuple[Ints, list[str]]:
-    """Ends (2, e) and owners (e,) of all edges, every pair of nodes once for each owner."""
-    ends = np.concatenate([edges.ends for edges in each], axis=1)
-    owners = [name for edges in each for name in edges.owners]
-    first: dict[tuple[str, int, int], int] = {}
-    for k, (i, j) in enumerate(ends.T.tolist()):
-        first.setdefault((owners[k], min(i, j), max(i, j)), k)
-    kept = list(first.values())
-    return ends[:, kept], [owners[k] for k in kept]
 
 
 def driving_points(factor: SequenceFactor, nodes: Ints) -> tuple[Complex, Bools]:
@@ -157,11 +75,7 @@ class SequenceRemovals:
         self._joined = Joined(self._size, self._edges.ends, self._edges.owners)
         self._label = self._joined.label
         cores = coupled_edges(model, sequence)
-        ends, owners = (
-            np.concatenate([self._edges.ends, cores.ends], axis=1),
-            self._edges.owners + cores.owners,
-        )
-        self._near = Joined(self._size, ends, owners)
+        self._near = Joined(self._size, *once_each(self._edges, cores, couplings(model, sequence)))
         metal = (self._edges.ends != factor.size).all(axis=0)
         every = np.arange(factor.size)
         beside = np.stack([every, self._size + joined_parts(model, sequence, every, factor.size)])
@@ -175,9 +89,7 @@ class SequenceRemovals:
             for k, name in enumerate(sets.names):
                 self._units.setdefault(name, []).append((s, k))
         groups = model.lines.coupled if sequence == 0 else ()
-        self._coupled = {model.lines.names[k] for group in groups for k in group.line.tolist()}
-        coupled = [model.lines.nodes[:, group.line].ravel() for group in groups]
-        self._beside = np.concatenate(coupled) if coupled else np.zeros(0, np.int64)
+        self._group = {k: group for group in groups for k in group.line.tolist()}
         self.whole, self.infinite = _driving_points(factor, chosen, self._columns)
         part = factor.free.part[chosen]
         bare = (factor.free.dimension == 1) & ~factor.resonant  # nothing taken out can earth these
@@ -229,17 +141,24 @@ class SequenceRemovals:
         blocks: list[Complex] = []
         shunts: dict[int, complex] = {}
         lines = self._model.lines
+        groups: dict[int, CoupledLines] = {}
         for name in names:
             if name in self._line:
                 k = self._line[name]
                 ends = lines.nodes[:, k].tolist()
-                if ends[0] != ends[1]:  # a closed tie beside it carries all
+                if k in self._group:
+                    groups[id(self._group[k])] = self._group[k]
+                elif ends[0] != ends[1]:  # a closed tie beside it carries all
                     drops.append({ends[0]: 1, ends[1]: -1})
                     blocks.append(np.array([[1 / lines.series[self._sequence, k]]]))
                 for end in ends:
                     shunts[end] = shunts.get(end, 0) + complex(lines.shunt[self._sequence, k])
             for s, k in self._units.get(name, ()):
                 _of_unit(self._incidence[s], k, drops, blocks)
+        for group in groups.values():
+            gone = np.array([lines.names[k] in names for k in group.line.tolist()], bool)
+            blocks.append(_change(group.admittance, gone))
+            drops += [_drop(*lines.nodes[:, k].tolist()) for k in group.line.tolist()]
         for node, y in shunts.items():
             if y:
                 drops.append({node: 1})
@@ -264,8 +183,6 @@ class SequenceRemovals:
 
         Infinite where ``infinite`` says so of the whole. Text says why there is no update.
         """
-        if any(name in self._coupled for name in names):
-            return "it is coupled with other lines"
         out = self.whole.copy()
         b = self._made[tuple(names)]
         if not len(b.nodes):
@@ -314,9 +231,6 @@ class SequenceRemovals:
         label = self._label
         if after is label and (label[b.nodes] == label[-1]).all():
             return ""
-        split = len(set(after[np.isin(label, label[b.nodes])].tolist())) > len(set(label[b.nodes].tolist()))
-        if split and len(self._beside) and np.isin(label[self._beside], label[b.nodes]).any():
-            return "what it cuts off may be coupled with other lines"
         weak = self._factor.stamps.weak
         inside = np.isin(near[:-1], near[self.chosen[touched]]) & np.isin(label[:-1], label[b.nodes])
         for piece in set(after[:-1][inside].tolist()):
@@ -330,6 +244,23 @@ class SequenceRemovals:
             if abs(left) < LEFT * np.abs(weak[before]).sum():
                 return "it takes the earth from a part"
         return ""
+
+
+def _change(admittance: Complex, gone: Bools) -> Complex:
+    """What the series block (g, g) of coupled lines loses with those that are ``gone`` (g,)."""
+    left = np.zeros_like(admittance)
+    stays = np.ix_(~gone, ~gone)
+    left[stays] = np.linalg.inv(np.linalg.inv(admittance)[stays])
+    return np.asarray(admittance - left)
+
+
+def _drop(start: int, end: int) -> dict[int, complex]:
+    """The nodes that the voltage along a line is taken between; earth, −1, is none."""
+    drop: dict[int, complex] = {}
+    for node, weight in ((start, 1), (end, -1)):
+        if node >= 0:
+            drop[node] = drop.get(node, 0) + weight
+    return drop
 
 
 def _of_unit(inc: Incidence, k: int, drops: list[dict[int, complex]], blocks: list[Complex]) -> None:

@@ -155,26 +155,21 @@ def test_what_cuts_off_and_what_takes_the_earth_is_told() -> None:
     assert value[k1, 1] == survey.current[1, k1, 1]
 
 
-def test_a_coupled_line_is_built_anew() -> None:
-    lines = {
-        name: {
-            "from": "main",
-            "to": "end",
-            "length": "2 km",
-            "z1": "0.2+j0.1 ohm/km",
-            "z0": "0.5+j0.3 ohm/km",
-        }
-        for name in ("one", "two")
-    }
-    tree = station(lines=lines) | {
-        "mutual_couplings": {"both": {"lines": ["one", "two"], "z0": "0.1+j0.2 ohm/km", "length": "2 km"}}
-    }
-    try:
-        case = case_from_tree(tree)
-    except CaseError as error:  # pragma: no cover
-        raise AssertionError(error.complaints) from error
-    survey = survey_outages(Network(case), [("one",), ("other",)])
-    assert survey.rebuilt == ((("one",), "it is coupled with other lines"),) or survey.failed
+def test_coupled_lines_are_left_coupled_with_one_another() -> None:
+    line = {"from": "main", "to": "end", "length": "2 km", "z1": "0.2+j0.1 ohm/km", "z0": "0.5+j0.3 ohm/km"}
+    names = ("one", "two", "three")
+    pairs = {"a": ("one", "two"), "b": ("two", "three"), "c": ("one", "three")}
+    tree = station(
+        lines=dict.fromkeys(names, line),
+        mutual_couplings={
+            name: {"lines": list(pair), "z0": f"0.1+j0.1{k} ohm/km", "length": "2 km"}
+            for k, (name, pair) in enumerate(pairs.items(), 1)
+        },
+    )
+    network = Network(case_from_tree(tree))
+    survey = survey_outages(network, [(name,) for name in names] + [("one", "three"), names])
+    assert survey.rebuilt == ((names, "it takes the earth from a part"),)
+    assert against_rebuilt(network.case, survey, [1, 2, 3, 4, 5]) == 4
 
 
 def test_an_infeed_out_is_built_anew_and_the_loaded_state_always() -> None:

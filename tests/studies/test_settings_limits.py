@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import cached_property
 
 import numpy as np
 import pytest
@@ -395,13 +396,15 @@ def test_a_proposed_pickup_is_one_that_its_own_delay_still_sees(least: str, x1: 
 
 def test_more_places_and_resistances_cost_no_further_factorisation(monkeypatch: pytest.MonkeyPatch) -> None:
     made = []
-    own = SequenceFactor._factorise
+    own = SequenceFactor._solver.func
 
     def counting(self: SequenceFactor) -> object:
         made.append(self)
         return own(self)
 
-    monkeypatch.setattr(SequenceFactor, "_factorise", counting)
+    counted = cached_property(counting)
+    counted.__set_name__(SequenceFactor, "_solver")
+    monkeypatch.setattr(SequenceFactor, "_solver", counted)
     counts = []
     for points, ohms in ((3, '["0 ohm"]'), (9, '["0 ohm", "1 ohm", "2 ohm", "3 ohm", "4 ohm", "5 ohm"]')):
         made.clear()
